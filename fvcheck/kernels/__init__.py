@@ -1,0 +1,1 @@
+"""Compiled loops: arrays in, arrays out. Imports numpy and numba, nothing else (checked in CI)."""

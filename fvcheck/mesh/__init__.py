@@ -1,0 +1,1 @@
+"""Points, cells, edges, patches, reduction to the plane."""

@@ -1,0 +1,77 @@
+"""The plane mesh: polygons over points, and its boundary."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass, field
+from functools import cached_property
+
+import numpy as np
+
+Array = np.ndarray
+
+
+@dataclass(frozen=True, eq=False)
+class Boundary:
+    """Edges that belong to one cell only, fluid on their left.
+
+    edges : (e, 2) int64, start and end point, so that the outward normal is
+        (dy, -dx)
+    cells : (e,) int64, the cell each edge belongs to
+    patch : (e,) int64, index into ``names``
+    names : patch names, in a fixed order
+    """
+
+    edges: Array
+    cells: Array
+    patch: Array
+    names: tuple[str, ...]
+
+
+@dataclass(frozen=True, eq=False)
+class Mesh:
+    """Plane polygonal mesh, conforming and counter-clockwise.
+
+    points : (n, 2) float64
+    offsets : (m+1,) int64
+    nodes : (k,) int64; cell i is the simple polygon
+        ``nodes[offsets[i]:offsets[i+1]]``, counter-clockwise, mid-edge and
+        hanging nodes included
+    boundary : the domain boundary, every edge in exactly one patch
+    bodies : names of those patches that close a hole in the domain
+
+    Arrays are never edited; a change makes a new mesh.
+    """
+
+    points: Array
+    offsets: Array
+    nodes: Array
+    boundary: Boundary
+    bodies: tuple[str, ...] = ()
+    kinds: dict[str, str] = field(default_factory=dict)
+    """patch name -> type stated by the file (``BCWall`` …), where it states one."""
+
+    @property
+    def n_points(self) -> int:
+        return len(self.points)
+
+    @property
+    def n_cells(self) -> int:
+        return len(self.offsets) - 1
+
+    @cached_property
+    def bounds(self) -> tuple[float, float, float, float]:
+        """(x0, y0, x1, y1) of all points."""
+        low, high = self.points.min(axis=0), self.points.max(axis=0)
+        return float(low[0]), float(low[1]), float(high[0]), float(high[1])
+
+    @cached_property
+    def areas(self) -> Array:
+        """(m,) cell areas, positive."""
+        from fvcheck.kernels.cells import polygon_areas
+
+        return polygon_areas(self.points, self.offsets, self.nodes)
+
+    def patch_edges(self, name: str) -> Array:
+        """(e, 2) directed edges of one patch, fluid on their left."""
+        index = self.boundary.names.index(name)
+        return self.boundary.edges[self.boundary.patch == index]

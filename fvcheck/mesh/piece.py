@@ -1,0 +1,100 @@
+"""What a reader hands over: the cells and data of a file, as stored.
+
+Every format is brought to one vocabulary, the cell types and node orders of
+the open VTK file formats (https://docs.vtk.org, "VTK File Formats"), so that
+everything behind the readers knows one kind of mesh only.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Sequence
+from dataclasses import dataclass, field
+from pathlib import Path
+
+import numpy as np
+
+from fvcheck.hints import Hint
+
+Array = np.ndarray
+
+
+@dataclass(frozen=True, eq=False)
+class Faces:
+    """Faces of the polyhedral cells of a piece (VTK type 42).
+
+    ``face_offsets`` (f+1,), ``face_nodes``: nodes of face j are
+    ``face_nodes[face_offsets[j]:face_offsets[j+1]]``.
+    ``cell_offsets`` (m+1,), ``cell_faces``: faces of cell i; an empty range
+    for cells that are no polyhedra.
+    """
+
+    face_offsets: Array
+    face_nodes: Array
+    cell_offsets: Array
+    cell_faces: Array
+
+
+@dataclass(frozen=True, eq=False)
+class NamedFaces:
+    """A boundary patch as the file names it, by the nodes of its faces.
+
+    In a plane file a face is an edge (two nodes, or two ends and a mid-node);
+    in a file one cell thick it is a polygon. Face j has the nodes
+    ``nodes[offsets[j]:offsets[j+1]]`` (numbers of this piece's points, from 0).
+    When the file lists vertices only, ``by_vertex`` is set, each face holds one
+    node, and an edge belongs to the patch if all its nodes do.
+    """
+
+    offsets: Array
+    nodes: Array
+    by_vertex: bool = False
+    kind: str = ""
+    """Type the file states (a CGNS BCType such as ``BCWallViscous``), else empty."""
+
+
+@dataclass(frozen=True, eq=False)
+class Piece:
+    """One block, zone or partition of an export, unchecked.
+
+    points : (n, 3) float32 or float64
+    types : (m,) uint8, VTK cell types
+    offsets : (m+1,) int64; nodes of cell i are ``nodes[offsets[i]:offsets[i+1]]``
+    nodes : (k,) int64, from 0, in VTK's node order
+    point_data, cell_data : name -> (n,) or (n, c) array; cell arrays run over
+        *all* cells of the piece, line cells included
+    ghost : (m,) bool or None; cells that another partition owns
+    tag_names : array name -> {id: name}, for integer cell arrays whose ids mark
+        patches (physical groups, families)
+    """
+
+    points: Array
+    types: Array
+    offsets: Array
+    nodes: Array
+    point_data: dict[str, Array] = field(default_factory=dict)
+    cell_data: dict[str, Array] = field(default_factory=dict)
+    name: str = ""
+    ghost: Array | None = None
+    faces: Faces | None = None
+    patches: dict[str, NamedFaces] = field(default_factory=dict)
+    tag_names: dict[str, dict[int, str]] = field(default_factory=dict)
+
+
+@dataclass(frozen=True)
+class Export:
+    """A file, opened: what it is, its times, and how to load one step.
+
+    ``load(step)`` returns the pieces of step ``step`` (0 … steps-1).
+    ``times`` is empty when the file holds a single state without a time.
+    """
+
+    path: Path
+    format: str
+    load: Callable[[int], Sequence[Piece]]
+    times: tuple[float, ...] = ()
+    hints: tuple[Hint, ...] = ()
+
+    @property
+    def steps(self) -> int:
+        """Number of stored states, at least 1."""
+        return max(1, len(self.times))
