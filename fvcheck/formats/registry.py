@@ -1,0 +1,96 @@
+"""The readable formats, and which of them a file is.
+
+The content decides, never the ending of the name. A reader module is loaded
+when a file is asked about, not before, and exposes
+
+    sniff(head: bytes, path: Path) -> bool   head: the first 4096 bytes of the file
+    open_export(path: Path) -> Export
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from dataclasses import dataclass
+from importlib import import_module
+from pathlib import Path
+
+from fvcheck.errors import FormatError
+from fvcheck.mesh.piece import Export
+
+HEAD_BYTES = 4096
+
+
+@dataclass(frozen=True)
+class Format:
+    """A family of files: what it is called, usual endings, how to know it and open it."""
+
+    name: str
+    suffixes: tuple[str, ...]
+    sniff: Callable[[bytes, Path], bool]
+    open: Callable[[Path], Export]
+
+
+def _entry(module: str, name: str, *suffixes: str) -> Format:
+    """A `Format` whose reader, ``fvcheck.formats.<module>``, is imported at its first use."""
+    where = f"fvcheck.formats.{module}"
+    # Until every reader is written: a module that is not there yet knows no file.
+    there = (Path(__file__).parent / f"{module}.py").exists()
+    return Format(
+        name,
+        suffixes,
+        lambda head, path: there and import_module(where).sniff(head, path),
+        lambda path: import_module(where).open_export(path),
+    )
+
+
+# The HDF5 families stand together; each looks at the root groups of the file.
+FORMATS: tuple[Format, ...] = (
+    _entry("pvd", "PVD", ".pvd"),
+    _entry("vtk_xml", "VTK XML", ".vtu", ".vtp", ".vts", ".vtr", ".vti", ".vtm", ".pvtu", ".pvtp"),
+    _entry("vtk_legacy", "legacy VTK", ".vtk"),
+    _entry("vtkhdf", "VTKHDF", ".vtkhdf", ".hdf"),
+    _entry("cgns", "CGNS", ".cgns"),
+    _entry("exodus", "Exodus II", ".exo", ".e", ".ex2", ".g"),
+    _entry("med", "MED", ".med"),
+    _entry("xdmf", "XDMF", ".xdmf", ".xmf"),
+    _entry("msh", "Gmsh MSH", ".msh"),
+)
+
+
+def readable() -> str:
+    """The readable formats in one phrase, for messages."""
+    return ", ".join(f"{form.name} ({' '.join(form.suffixes)})" for form in FORMATS)
+
+
+def head_of(path: Path) -> bytes:
+    """The first bytes of a file that exists, is a file and is not empty.
+
+    Raises `FormatError` otherwise.
+    """
+    if not path.exists():
+        raise FormatError("there is no such file", where=path, mend="Check the path.")
+    if path.is_dir():
+        raise FormatError("this is a directory, not a file", where=path, mend="Name one of the files in it.")
+    if not path.is_file():
+        raise FormatError("this is no regular file", where=path, mend="Save the export to a file first.")
+    try:
+        with path.open("rb") as stream:
+            head = stream.read(HEAD_BYTES)
+    except OSError as error:
+        raise FormatError(f"the file cannot be opened: {error.strerror}", where=path) from None
+    if not head:
+        raise FormatError("the file is empty", where=path, mend="Export it again.")
+    return head
+
+
+def open_export(path: str | Path) -> Export:
+    """Open a file with the reader that its content asks for.
+
+    Raises `FormatError` when it cannot be opened or no reader knows it.
+    """
+    path = Path(path)
+    head = head_of(path)
+    for form in FORMATS:
+        if form.sniff(head, path):
+            return form.open(path)
+    raise FormatError("no readable format", where=path, mend=f"Export the case as one of: {readable()}.")
