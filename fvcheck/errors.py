@@ -13,6 +13,8 @@ exit status.
 
 from __future__ import annotations
 
+from collections.abc import Iterable
+
 
 class FvcheckError(Exception):
     """An error that says what is wrong, where, and how to mend it.
@@ -49,3 +51,12 @@ class SurfaceError(FvcheckError):
 
 class SetupError(FvcheckError):
     """An option, a law, a fluid or a check file cannot be used."""
+
+
+def nearest(word: str, known: Iterable[str]) -> str:
+    """``Did you mean 'x'?`` for the spelling in ``known`` closest to ``word``, else an empty text."""
+    from difflib import get_close_matches
+
+    by_lower = {name.lower(): name for name in known}
+    close = get_close_matches(word.lower(), by_lower, n=1, cutoff=0.5)
+    return f"Did you mean {by_lower[close[0]]!r}?" if close else ""
