@@ -34,9 +34,10 @@ def finite(values: Sequence[Any], what: str) -> tuple[float, ...]:
 
 def signed_area(ring: Array) -> float:
     """Shoelace area, positive counter-clockwise."""
-    # Relative to one corner: far from the origin the products would cancel digits away.
+    # From one corner and with differences of neighbours: far from the origin, and for thin
+    # outlines, whole products x y would cancel digits away.
     x, y = (ring - ring[0]).T
-    return 0.5 * float(np.dot(x, np.roll(y, -1)) - np.dot(y, np.roll(x, -1)))
+    return 0.5 * float(np.dot(x, np.roll(y, -1) - np.roll(y, 1)))
 
 
 def path_length(points: Array, closed: bool) -> float:
