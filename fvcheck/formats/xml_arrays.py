@@ -1,0 +1,230 @@
+"""Data arrays of a VTK XML file: text, base64, raw; plain or in compressed blocks.
+
+The layout is that of the published file formats (https://docs.vtk.org, "VTK File
+Formats"). A size is never believed: the number of values that the mesh asks for,
+the size in the array's header and the bytes in the file have to agree before
+memory is taken.
+"""
+
+from __future__ import annotations
+
+import binascii
+import lzma
+import re
+import zlib
+from bisect import bisect_right
+from collections.abc import Callable
+
+import numpy as np
+
+from fvcheck.errors import FormatError
+from fvcheck.formats.number_text import parse
+from fvcheck.formats.xml_scan import Document, Element
+from fvcheck.mesh.piece import Array
+
+TYPES = {
+    f"{kind}{bits}": f"{code}{bits // 8}"
+    for kind, code in (("Int", "i"), ("UInt", "u"))
+    for bits in (8, 16, 32, 64)
+}
+TYPES |= {"Float32": "f4", "Float64": "f8"}
+MOST_COMPONENTS = 1000
+# A block cannot shrink to less than this share of its size (deflate 1032:1, lz4 255:1, xz about 7000:1).
+MOST_RATIO = 10_000
+
+
+def _inflate(block: bytes, size: int) -> bytes:
+    machine = zlib.decompressobj()
+    data = machine.decompress(block, size + 1)
+    return data if machine.eof else b""
+
+
+def _unxz(block: bytes, size: int) -> bytes:
+    machine = lzma.LZMADecompressor(format=lzma.FORMAT_XZ, memlimit=1 << 28)
+    data = machine.decompress(block, max_length=size + 1)
+    return data if machine.eof else b""
+
+
+def _unlz4(block: bytes, size: int) -> bytes:
+    from vtkmodules.util.numpy_support import vtk_to_numpy
+    from vtkmodules.vtkIOCore import vtkLZ4DataCompressor
+
+    machine = vtkLZ4DataCompressor()
+    # With an observer the message goes there, and not to standard error.
+    machine.AddObserver("ErrorEvent", lambda *_event: None)
+    data = machine.Uncompress(block, len(block), size)
+    return b"" if data is None else vtk_to_numpy(data).tobytes()
+
+
+COMPRESSORS: dict[str, Callable[[bytes, int], bytes]] = {
+    "vtkZLibDataCompressor": _inflate,
+    "vtkLZMADataCompressor": _unxz,
+    "vtkLZ4DataCompressor": _unlz4,
+}
+
+
+class ArrayReader:
+    """Reads the data arrays of one scanned document."""
+
+    def __init__(self, document: Document) -> None:
+        self.document = document
+        self.path = document.path
+        attributes = document.root.attributes
+        order = attributes.get("byte_order", "LittleEndian")
+        header = attributes.get("header_type", "UInt32")
+        compressor = attributes.get("compressor", "")
+        if order not in ("LittleEndian", "BigEndian"):
+            raise FormatError(f"unknown byte order '{order}'", where=self.path)
+        if header not in ("UInt32", "UInt64"):
+            raise FormatError(f"unknown header type '{header}'", where=self.path)
+        if compressor and compressor not in COMPRESSORS:
+            raise FormatError(
+                f"unknown compressor '{compressor}'", where=self.path, mend="Export with zlib, lz4 or lzma."
+            )
+        self.order = "<" if order == "LittleEndian" else ">"
+        self.word = np.dtype(self.order + TYPES[header])
+        self.expand = COMPRESSORS.get(compressor)
+        self.starts = sorted(
+            {
+                self._offset(element)
+                for element in document.root.walk()
+                if element.tag == "DataArray" and element.attributes.get("format") == "appended"
+            }
+        )
+
+    def values(self, element: Element, tuples: int | None) -> Array:
+        """The array, (n,) or (n, c), in native byte order.
+
+        ``tuples`` is the n that the mesh asks for; None when only the array itself
+        can tell. Raises `FormatError` when what is stored differs from it.
+        """
+        where = f"{self.path}, array '{element.attributes.get('Name', '')}'"
+        kind = element.attributes.get("type", "")
+        if kind not in TYPES:
+            raise FormatError(f"values of the type '{kind}' cannot be read", where=where)
+        dtype = np.dtype(TYPES[kind])
+        components = attribute_int(element, "NumberOfComponents", where, 1)
+        if not 1 <= components <= MOST_COMPONENTS:
+            raise FormatError(f"the array declares {components} components", where=where)
+        want = None if tuples is None else tuples * components
+        form = element.attributes.get("format", "ascii")
+        if form == "ascii":
+            flat = parse("".join(element.text), dtype, where)
+        elif form == "binary":
+            flat = self._binary(self._base64("".join(element.text), where), dtype, want, where)
+        elif form == "appended":
+            flat = self._binary(self._region(element, where), dtype, want, where)
+        else:
+            raise FormatError(f"unknown data format '{form}'", where=where)
+        if want is not None:
+            _demand(len(flat), want, where)
+        if len(flat) % components:
+            raise FormatError(f"{len(flat)} values do not fill tuples of {components}", where=where)
+        return flat if components == 1 else flat.reshape(-1, components)
+
+    def _offset(self, element: Element) -> int:
+        offset = attribute_int(element, "offset", str(self.path))
+        appended = self.document.appended
+        if appended is None:
+            raise FormatError("arrays refer to appended data, which are missing", where=self.path)
+        if not 0 <= offset < appended.end - appended.start:
+            name = element.attributes.get("Name", "")
+            raise FormatError(f"array '{name}' starts at byte {offset}, beyond the data", where=self.path)
+        return offset
+
+    def _region(self, element: Element, where: str) -> bytes:
+        """The bytes from the array's start to that of the next one, base64 undone."""
+        appended = self.document.appended
+        assert appended is not None  # the constructor has refused it otherwise
+        offset = self._offset(element)
+        place = bisect_right(self.starts, offset)
+        stop = appended.start + self.starts[place] if place < len(self.starts) else appended.end
+        with self.path.open("rb") as stream:
+            stream.seek(appended.start + offset)
+            region = stream.read(stop - appended.start - offset)
+        if appended.raw:
+            return region
+        return self._base64(region.decode("latin-1"), where)
+
+    def _base64(self, text: str, where: str) -> bytes:
+        """Header and data may be encoded apart, each with its own padding."""
+        parts = re.findall(r"[^=]+={0,2}|=+", "".join(text.split()))
+        try:
+            return b"".join(binascii.a2b_base64(part, strict_mode=True) for part in parts)
+        except (binascii.Error, ValueError) as error:
+            raise FormatError(f"the data are no base64: {error}", where=where) from None
+
+    def _binary(self, blob: bytes, dtype: np.dtype, want: int | None, where: str) -> Array:
+        if not blob and want == 0:
+            return np.empty(0, dtype=dtype)
+        decode = self._plain if self.expand is None else self._blocks
+        data = decode(blob, dtype, want, where)
+        return np.frombuffer(data, dtype=dtype.newbyteorder(self.order)).astype(dtype)
+
+    def _words(self, blob: bytes, count: int, where: str) -> list[int]:
+        if len(blob) < count * self.word.itemsize:
+            raise FormatError("the data end within their header", where=where, mend="Export the file again.")
+        return np.frombuffer(blob, dtype=self.word, count=count).tolist()
+
+    def _plain(self, blob: bytes, dtype: np.dtype, want: int | None, where: str) -> bytes:
+        (size,) = self._words(blob, 1, where)
+        _demand_size(size, dtype, want, where)
+        data = blob[self.word.itemsize : self.word.itemsize + size]
+        if len(data) != size:
+            raise FormatError(f"{size} bytes are declared, {len(data)} are there", where=where)
+        return data
+
+    def _blocks(self, blob: bytes, dtype: np.dtype, want: int | None, where: str) -> bytes:
+        (count,) = self._words(blob, 1, where)
+        if count == 0:
+            _demand_size(0, dtype, want, where)
+            return b""
+        if count > len(blob):
+            raise FormatError(f"{count} blocks are declared, more than there are bytes", where=where)
+        _count, full, last, *packed = self._words(blob, 3 + count, where)
+        sizes = [full] * (count - 1) + [last or full]
+        _demand_size(sum(sizes), dtype, want, where)
+        at = (3 + count) * self.word.itemsize
+        if at + sum(packed) > len(blob) or sum(sizes) > MOST_RATIO * len(blob):
+            raise FormatError("the blocks declare more than the file holds", where=where)
+        parts = []
+        for size, length in zip(sizes, packed):
+            parts.append(self._block(blob[at : at + length], size, where))
+            at += length
+        return b"".join(parts)
+
+    def _block(self, block: bytes, size: int, where: str) -> bytes:
+        assert self.expand is not None
+        try:
+            data = self.expand(block, size)
+        except (zlib.error, lzma.LZMAError) as error:
+            raise FormatError(f"a compressed block is damaged: {error}", where=where) from None
+        if len(data) != size:
+            raise FormatError("a compressed block is damaged or of another size", where=where)
+        return data
+
+
+def attribute_int(element: Element, name: str, where: str, default: int | None = None) -> int:
+    """A whole number among the attributes. Raises `FormatError` if it is none or missing."""
+    text = element.attributes.get(name)
+    if text is None and default is not None:
+        return default
+    if text is None or not re.fullmatch(r"\s*[-+]?[0-9]{1,18}\s*", text):
+        raise FormatError(f"<{element.tag}> has {name}='{text or ''}', no whole number", where=where)
+    return int(text)
+
+
+def _demand(found: int, want: int, where: str) -> None:
+    if found != want:
+        raise FormatError(
+            f"the array holds {found} values, the mesh asks for {want}",
+            where=where,
+            mend="The file is damaged or incomplete; export it again.",
+        )
+
+
+def _demand_size(size: int, dtype: np.dtype, want: int | None, where: str) -> None:
+    if size % dtype.itemsize:
+        raise FormatError(f"{size} bytes are no whole number of {dtype.name} values", where=where)
+    if want is not None:
+        _demand(size // dtype.itemsize, want, where)
