@@ -8,6 +8,8 @@ Formats".
 
 from __future__ import annotations
 
+from collections.abc import Sequence
+
 import numpy as np
 
 from fvcheck.errors import FormatError
@@ -30,8 +32,11 @@ _POLY_TYPES: dict[str, tuple[int, dict[int, int]]] = {
 Cells = tuple[Array, Array, Array]
 """types (m,) uint8, offsets (m+1,) int64, nodes (k,) int64."""
 
+Group = tuple[Array, Array]
+"""offsets (m+1,) int64, nodes (k,) int64 of cells of one kind."""
 
-def poly_cells(groups: dict[str, tuple[Array, Array]]) -> Cells:
+
+def poly_cells(groups: dict[str, Group]) -> Cells:
     """Cells of poly data from the (offsets, nodes) of its four groups.
 
     ``groups`` may hold "verts", "lines", "polys", "strips"; cell data run over
@@ -63,7 +68,7 @@ def running_offsets(ends: Array, total: int, what: str, where: str) -> Array:
     return offsets
 
 
-def listed_cells(stream: Array, count: int, where: str) -> tuple[Array, Array]:
+def listed_cells(stream: Array, count: int, where: str) -> Group:
     """(offsets, nodes) of ``count`` cells from a list "n, id, …, id, n, id, …".
 
     Raises `FormatError` when the counts do not fill the list exactly.
@@ -83,29 +88,29 @@ def listed_cells(stream: Array, count: int, where: str) -> tuple[Array, Array]:
     return starts - np.arange(count + 1), stream[keep].astype(np.int64, copy=False)
 
 
-def streamed_faces(stream: Array, starts: Array, solid: Array, where: str) -> Faces:
+def streamed_faces(stream: Array, starts: Array, ends: Array, solid: Array, where: str) -> Faces:
     """Faces of polyhedra from the lists "faces, n, id, …, n, id, …" of the cells.
 
-    ``starts`` (m,) is where the list of a cell begins in ``stream``; it is used where
-    ``solid`` (m,) says that the cell is a polyhedron. Raises `FormatError` when a
-    list leaves the stream.
+    The list of a cell is ``stream[starts[cell]:ends[cell]]``, where ``solid`` (m,)
+    says that the cell is a polyhedron. Raises `FormatError` when the faces do not
+    fill it exactly.
     """
     numbers = stream.tolist()
     begin: list[int] = []
     sizes: list[int] = []
     counts = np.zeros(len(solid), dtype=np.int64)
     for cell in np.flatnonzero(solid).tolist():
-        at = int(starts[cell])
-        if not 0 <= at < len(numbers) or not 0 < numbers[at] < len(numbers):
-            raise FormatError(f"the faces of polyhedron {cell} are damaged", where=where)
-        counts[cell] = numbers[at]
+        at, end = int(starts[cell]), int(ends[cell])
+        left = numbers[at] if 0 <= at < end <= len(numbers) else 0
+        counts[cell] = left
         at += 1
-        for _face in range(int(counts[cell])):
-            if at >= len(numbers) or numbers[at] < 3 or at + numbers[at] >= len(numbers):
-                raise FormatError(f"the faces of polyhedron {cell} are damaged", where=where)
+        while left > 0 and at < end and numbers[at] >= 3:
             begin.append(at + 1)
             sizes.append(numbers[at])
             at += numbers[at] + 1
+            left -= 1
+        if left or not counts[cell] or at != end:
+            raise FormatError(f"the faces of polyhedron {cell} are damaged", where=where)
     offsets = np.concatenate([[0], np.cumsum(sizes)]).astype(np.int64)
     inside = np.arange(offsets[-1]) - np.repeat(offsets[:-1], sizes) + np.repeat(begin, sizes)
     nodes = stream[inside.astype(np.int64)].astype(np.int64)
@@ -130,3 +135,9 @@ def ghost_cells(point_data: dict[str, Array], cell_data: dict[str, Array], cells
         blanked = (hidden[nodes] & HIDDEN_POINT) != 0
         ghost[full] |= np.logical_or.reduceat(blanked, offsets[:-1][full])
     return ghost if ghost.any() else None
+
+
+def lattice(axes: Sequence[Array]) -> Array:
+    """The points (nx·ny·nz, 3) of three coordinate lists, x running fastest."""
+    z, y, x = np.meshgrid(*(np.ravel(axis) for axis in reversed(axes)), indexing="ij")
+    return np.stack([x.ravel(), y.ravel(), z.ravel()], axis=1)

@@ -47,11 +47,12 @@ def _unxz(block: bytes, size: int) -> bytes:
 
 def _unlz4(block: bytes, size: int) -> bytes:
     from vtkmodules.util.numpy_support import vtk_to_numpy
+    from vtkmodules.vtkCommonCore import vtkCommand
     from vtkmodules.vtkIOCore import vtkLZ4DataCompressor
 
     machine = vtkLZ4DataCompressor()
     # With an observer the message goes there, and not to standard error.
-    machine.AddObserver("ErrorEvent", lambda *_event: None)
+    machine.AddObserver(vtkCommand.ErrorEvent, lambda *_event: None)
     data = machine.Uncompress(block, len(block), size)
     return b"" if data is None else vtk_to_numpy(data).tobytes()
 
@@ -159,7 +160,7 @@ class ArrayReader:
             return np.empty(0, dtype=dtype)
         decode = self._plain if self.expand is None else self._blocks
         data = decode(blob, dtype, want, where)
-        return np.frombuffer(data, dtype=dtype.newbyteorder(self.order)).astype(dtype)
+        return np.frombuffer(data, dtype=np.dtype(self.order + dtype.str[1:])).astype(dtype)
 
     def _words(self, blob: bytes, count: int, where: str) -> list[int]:
         if len(blob) < count * self.word.itemsize:

@@ -10,14 +10,22 @@ from __future__ import annotations
 
 import math
 import re
-from collections.abc import Callable, Sequence
+from collections.abc import Callable
 
 import numpy as np
 
 from fvcheck.errors import FormatError
 from fvcheck.formats.check import check_piece
 from fvcheck.formats.structured import block_cells
-from fvcheck.formats.vtk_cells import Cells, ghost_cells, poly_cells, running_offsets, streamed_faces
+from fvcheck.formats.vtk_cells import (
+    Cells,
+    Group,
+    ghost_cells,
+    lattice,
+    poly_cells,
+    running_offsets,
+    streamed_faces,
+)
 from fvcheck.formats.xml_arrays import ArrayReader, attribute_int
 from fvcheck.formats.xml_scan import Document, Element
 from fvcheck.mesh.piece import Array, Faces, Piece
@@ -85,9 +93,7 @@ def _named(section: Element | None) -> dict[str, Element]:
     return {e.attributes.get("Name", ""): e for e in (section.all("DataArray") if section else [])}
 
 
-def _connectivity(
-    arrays: ArrayReader, found: dict[str, Element], count: int, what: str
-) -> tuple[Array, Array]:
+def _connectivity(arrays: ArrayReader, found: dict[str, Element], count: int, what: str) -> Group:
     for name in ("connectivity", "offsets"):
         if name not in found:
             raise FormatError(f"there is no array '{name}' in <{what}>", where=arrays.path)
@@ -138,13 +144,7 @@ def _faces(arrays: ArrayReader, found: dict[str, Element], solid: Array) -> Face
         starts = np.zeros(len(solid), dtype=np.int64)
         starts[solid] = np.concatenate([[0], ends[solid][:-1]])
         running_offsets(ends[solid], len(stream), "face offsets", where)
-        faces = streamed_faces(stream, starts, solid, where)
-        spans = np.diff(faces.face_offsets) + 1
-        owner = np.repeat(np.arange(len(solid)), np.diff(faces.cell_offsets))
-        used = np.bincount(owner, weights=spans, minlength=len(solid))[solid] + 1
-        if (used != np.diff(np.concatenate([[0], ends[solid]]))).any():
-            raise FormatError("the faces of a polyhedron do not fill its part of the list", where=where)
-        return faces
+        return streamed_faces(stream, starts, ends, solid, where)
     wanted = ("face_connectivity", "face_offsets", "polyhedron_to_faces", "polyhedron_offsets")
     if not all(name in found for name in wanted):
         raise FormatError("there are polyhedra, but no arrays of their faces", where=where)
@@ -162,7 +162,7 @@ def _faces(arrays: ArrayReader, found: dict[str, Element], solid: Array) -> Face
 
 def _poly(arrays: ArrayReader, piece: Element) -> Piece | None:
     points = _count(arrays, piece, "NumberOfPoints")
-    groups: dict[str, tuple[Array, Array]] = {}
+    groups: dict[str, Group] = {}
     for tag in ("Verts", "Lines", "Polys", "Strips"):
         count = _count(arrays, piece, f"NumberOf{tag}")
         if count:
@@ -217,12 +217,6 @@ def _rectilinear(arrays: ArrayReader, piece: Element) -> Piece | None:
         return lattice([arrays.values(element, size) for element, size in zip(elements, sizes)])
 
     return _structured(arrays, piece, locate)
-
-
-def lattice(axes: Sequence[Array]) -> Array:
-    """The points (nx·ny·nz, 3) of three coordinate lists, x running fastest."""
-    z, y, x = np.meshgrid(*(np.ravel(axis) for axis in reversed(axes)), indexing="ij")
-    return np.stack([x.ravel(), y.ravel(), z.ravel()], axis=1)
 
 
 def _image(arrays: ArrayReader, piece: Element) -> Piece | None:
