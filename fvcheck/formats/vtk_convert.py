@@ -9,7 +9,7 @@ import numpy as np
 from fvcheck.errors import FormatError
 from fvcheck.formats.check import check_piece
 from fvcheck.formats.structured import block_cells
-from fvcheck.formats.vtk_cells import Group, ghost_cells, poly_cells
+from fvcheck.formats.vtk_cells import Group, ghost_cells, lattice, poly_cells
 from fvcheck.mesh.piece import Array, Faces, Piece
 
 
@@ -59,10 +59,17 @@ def _demand_cells(dataset: Any, where: str) -> None:
 def _points(dataset: Any) -> Array:
     from vtkmodules.util.numpy_support import vtk_to_numpy
 
-    if hasattr(dataset, "GetPoints") and dataset.IsA("vtkPointSet"):
+    if dataset.IsA("vtkPointSet"):
         return np.array(vtk_to_numpy(dataset.GetPoints().GetData()))
-    count = dataset.GetNumberOfPoints()
-    return np.array([dataset.GetPoint(point) for point in range(count)])
+    if dataset.IsA("vtkRectilinearGrid"):
+        axes = dataset.GetXCoordinates(), dataset.GetYCoordinates(), dataset.GetZCoordinates()
+        return lattice([vtk_to_numpy(axis) for axis in axes])
+    first = dataset.GetExtent()[::2]
+    counts = dataset.GetDimensions()
+    steps = [(low + np.arange(n)) * step for low, n, step in zip(first, counts, dataset.GetSpacing())]
+    turn = dataset.GetDirectionMatrix()
+    rows = [[turn.GetElement(row, column) for column in range(3)] for row in range(3)]
+    return lattice(steps) @ np.array(rows).T + np.array(dataset.GetOrigin())
 
 
 def _group(cells: Any) -> Group:

@@ -10,7 +10,7 @@ import numpy as np
 
 from fvcheck.errors import FormatError
 from fvcheck.formats.check import check_piece
-from fvcheck.formats.legacy_keywords import AXES, LegacyScan
+from fvcheck.formats.legacy_keywords import AXES, MOST_POINTS, LegacyScan
 from fvcheck.formats.legacy_scan import END, Cursor
 from fvcheck.formats.structured import block_cells
 from fvcheck.formats.vtk_cells import Cells, ghost_cells, lattice, poly_cells, streamed_faces
