@@ -72,7 +72,7 @@ def rankine_half_body(strength: float = 1.0, speed: float = 1.0) -> ExactFlow:
     """A source at the origin in a stream, whose dividing line is a blunt body.
 
     Nose m/2πU ahead of the source, half-width m/4U beside it, m/2U far behind;
-    largest speed on the body 1.2595905 U at 62.957° from upstream. The disc left out
+    largest speed on the body 1.2595905 U at 62.957° from downstream. The disc left out
     lies inside the body and passes through its nose.
     """
     flow = source(strength, 0.0, 0.0, speed)
