@@ -26,4 +26,15 @@ class Page:
     do: str
 
 
-PAGES: dict[str, Page] = {}
+PAGES: dict[str, Page] = {
+    "one-step-array": Page(
+        "An array is stored at one step only, others at several.",
+        "Its values are taken at every step. If it changes in time, all steps but one are wrong.",
+        "Export every array that changes at each step.",
+    ),
+    "array-not-read": Page(
+        "An array holds values at the corners or at Gauss points of elements.",
+        "Such values have no single number per point or cell, so the array is left out.",
+        "Export it at points or as one value per cell if a law needs it.",
+    ),
+}
