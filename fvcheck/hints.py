@@ -27,6 +27,37 @@ class Page:
 
 
 PAGES: dict[str, Page] = {
+    "cell-data-preferred": Page(
+        "An array of the same name is stored at points and at cells.",
+        "Point copies of a finite-volume run are averages of its cells: they smooth the field, and fluxes "
+        "taken from them balance worse than the run itself.",
+        "Nothing for a finite-volume run. For one that solves at points: --field ROLE=point:NAME.",
+    ),
+    "nan-values": Page(
+        "An array in use holds values that are NaN or infinite.",
+        "Near such a value nothing can be sampled; often they mark blanked cells, or a run that blew up.",
+        "Look where they are. If they lie where the surfaces pass, export the field again.",
+    ),
+    "ambiguous-field": Page(
+        "An array has a name with more than one common meaning, and is left alone.",
+        "A guess could be wrong without a sign of it: k is a turbulence energy here, a conductivity there.",
+        "If it is what the hint says, tell so: --field ROLE=NAME, in the unit of the role.",
+    ),
+    "reduced-pressure": Page(
+        "There is no pressure but an array that may be the pressure less its hydrostatic part.",
+        "Taken for the static pressure, it would leave the weight of the fluid out of the momentum balance.",
+        "--field pressure=NAME --pressure-kind reduced, with --gravity and --density; or export it.",
+    ),
+    "same-values": Page(
+        "Two arrays that claim one role hold the same values.",
+        "It does not matter which is used.",
+        "Nothing.",
+    ),
+    "lone-component": Page(
+        "An array looks like one component of a vector whose other components are missing.",
+        "A vector is put together only from components with like names.",
+        "--field ROLE=VX,VY names them; or export all components.",
+    ),
     "one-step-array": Page(
         "An array is stored at one step only, others at several.",
         "Its values are taken at every step. If it changes in time, all steps but one are wrong.",
