@@ -1,0 +1,216 @@
+"""VTKHDF files, versions 1.0 to 2.x, by their published layout.
+
+Layout: "VTKHDF format specification", https://docs.vtk.org. Partitions and time
+steps lie one after the other in the same datasets; only the rows of the
+step asked for are read.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass, replace
+from pathlib import Path
+from typing import Any
+
+import numpy as np
+
+from fvcheck.errors import FormatError
+from fvcheck.formats import hdf5_safe as safe
+from fvcheck.formats.check import check_piece
+from fvcheck.formats.vtkhdf_mesh import unstructured_parts
+from fvcheck.formats.vtkhdf_steps import Part, Steps
+from fvcheck.formats.vtkhdf_surfaces import image_parts, poly_parts
+from fvcheck.mesh.piece import Array, Export, Piece
+
+_COMPOSITE = ("PartitionedDataSetCollection", "MultiBlockDataSet")
+_PARTS = {"UnstructuredGrid": unstructured_parts, "PolyData": poly_parts, "ImageData": image_parts}
+# Marks of vtkGhostType that take a cell out: owned by another partition, refined, hidden.
+_GHOST_BITS = 1 | 8 | 32
+
+
+@dataclass(frozen=True)
+class _Block:
+    path: str
+    name: str
+    kind: str
+
+
+def sniff(head: bytes, path: Path) -> bool:
+    """Whether the file is HDF5 with a root group ``VTKHDF``."""
+    return safe.is_hdf5(head) and safe.has_root(path, "VTKHDF")
+
+
+def open_export(path: Path) -> Export:
+    """Open a VTKHDF file: UnstructuredGrid, PolyData, ImageData or a collection of them.
+
+    Raises `FormatError` when it is none of these, damaged, or stored in several files.
+    """
+    path = Path(path)
+    with safe.open_hdf5(path) as file:
+        root = safe.group(file, "VTKHDF", path)
+        _check_version(root, path)
+        blocks = _blocks(root, path)
+        all_times = [_steps(safe.group(file, block.path, path), path).times for block in blocks]
+    times = max(all_times, key=len)
+    if any(other not in ((), times) for other in all_times):
+        raise FormatError(
+            "the blocks have different time steps", where=path, mend="Export all blocks at the same times."
+        )
+    cache: dict[str, tuple[object, Piece]] = {}
+
+    def load(step: int) -> Sequence[Piece]:
+        with safe.open_hdf5(path) as file:
+            pieces = [piece for block in blocks for piece in _load(file, block, step, path, cache)]
+        if not pieces:
+            raise FormatError("there are no cells", where=path, mend="Export the mesh with its cells.")
+        return pieces
+
+    return Export(path, "VTKHDF", load, times)
+
+
+def _check_version(root: Any, path: Path) -> None:
+    version = safe.attribute(root, "Version", path)
+    if version is None or isinstance(version, str) or np.size(version) < 1 or version.dtype.kind not in "iu":
+        raise FormatError("the group VTKHDF has no version", where=path, mend=safe.DAMAGED)
+    if int(np.ravel(version)[0]) not in (1, 2):
+        text = ".".join(str(part) for part in np.ravel(version))
+        raise FormatError(f"VTKHDF version {text} is not known", where=path, mend="Export version 1 or 2.")
+
+
+def _blocks(root: Any, path: Path) -> list[_Block]:
+    kind = _kind(root, path)
+    if kind not in _COMPOSITE:
+        return [_Block("/VTKHDF", "", kind)]
+    blocks = []
+    for name in safe.names(root, path):
+        if name == "Assembly":
+            continue
+        node = safe.member(root, name, path)
+        if node is None or not safe.is_group(node) or safe.attribute(node, "Type", path) is None:
+            continue
+        index = safe.attribute(node, "Index", path)
+        order = int(np.ravel(index)[0]) if isinstance(index, np.ndarray) and index.dtype.kind in "iu" else 0
+        blocks.append((order, _Block(f"/VTKHDF/{name}", name, _kind(node, path))))
+    if not blocks:
+        raise FormatError("the collection has no blocks", where=path, mend=safe.DAMAGED)
+    return [block for _, block in sorted(blocks, key=lambda pair: pair[0])]
+
+
+def _kind(group: Any, path: Path) -> str:
+    kind = safe.attribute(group, "Type", path)
+    if kind in _PARTS or (kind in _COMPOSITE and group.name == "/VTKHDF"):
+        return str(kind)
+    raise FormatError(
+        f"the data set type '{kind}' cannot be read",
+        where=f"{path}, {group.name}",
+        mend="Export an unstructured grid, polygonal data, an image, or a collection of them.",
+    )
+
+
+def _steps(group: Any, path: Path) -> Steps:
+    node = safe.member(group, "Steps", path)
+    where = f"{path}, {group.name}/Steps"
+    if node is None:
+        return Steps(None, (), where)
+    if not safe.is_group(node):
+        raise FormatError("Steps is no group", where=where, mend=safe.DAMAGED)
+    values = safe.read(safe.dataset(node, "Values", where), where).reshape(-1)
+    count = safe.attribute(node, "NSteps", where)
+    if not isinstance(count, np.ndarray) or count.size != 1 or int(count.reshape(-1)[0]) != len(values):
+        raise FormatError(
+            f"NSteps is {count}, but there are {len(values)} times", where=where, mend=safe.DAMAGED
+        )
+    if len(values) == 0 or not np.isfinite(values).all():
+        raise FormatError("the times are no finite numbers", where=where, mend=safe.DAMAGED)
+    return Steps(node, tuple(float(value) for value in values), where)
+
+
+def _load(
+    file: Any, block: _Block, step: int, path: Path, cache: dict[str, tuple[object, Piece]]
+) -> list[Piece]:
+    group = safe.group(file, block.path, path)
+    steps = _steps(group, path)
+    step = min(step, max(0, len(steps.times) - 1))
+    pieces = []
+    parts = _PARTS[block.kind](group, steps, step)
+    for number, part in enumerate(parts):
+        if part.cells == 0:
+            continue
+        name = block.name if len(parts) == 1 else f"{block.name}#{number}" if block.name else f"part {number}"
+        known = cache.get(name)
+        if known is not None and known[0] == part.key:
+            mesh = known[1]
+        else:
+            mesh = check_piece(replace(part.mesh(), name=name), path)
+            cache[name] = (part.key, mesh)
+        points = _data(group, "PointData", steps, step, part, f"{path}, {block.path}")
+        cells = _data(group, "CellData", steps, step, part, f"{path}, {block.path}")
+        points.pop("vtkGhostType", None)
+        marks = cells.pop("vtkGhostType", None)
+        ghost = None
+        if marks is not None:
+            if marks.dtype.kind not in "iu" or marks.ndim != 1:
+                raise FormatError("vtkGhostType holds no marks", where=path, mend=safe.DAMAGED)
+            ghost = (marks & _GHOST_BITS) != 0
+        pieces.append(check_piece(replace(mesh, point_data=points, cell_data=cells, ghost=ghost), path))
+    return pieces
+
+
+def _data(group: Any, kind: str, steps: Steps, step: int, part: Part, where: str) -> dict[str, Array]:
+    """The point or cell arrays of one part at one step."""
+    node = safe.member(group, kind, where)
+    if node is None:
+        return {}
+    if not safe.is_group(node):
+        raise FormatError(f"{kind} is no group", where=where, mend=safe.DAMAGED)
+    count = part.points if kind == "PointData" else part.cells
+    start, total = (
+        (part.first_point, part.all_points) if kind == "PointData" else (part.first_cell, part.all_cells)
+    )
+    arrays = {}
+    for name in safe.names(node, where):
+        data = safe.member(node, name, where)
+        if not safe.is_dataset(data) or not safe.is_numeric(data, where):
+            continue
+        if part.shape is not None:
+            arrays[name] = _image_array(data, part, kind, steps, step, where)
+            continue
+        shape = safe.shape(data, where)
+        if len(shape) not in (1, 2):
+            raise FormatError(f"the array '{name}' has {len(shape)} axes", where=where, mend=safe.DAMAGED)
+        first = start
+        if steps.group is None:
+            if shape[0] != total:
+                raise FormatError(
+                    f"the array '{name}' has {shape[0]} values for {total} {kind[:-4].lower()}s",
+                    where=where,
+                    mend="Export the array again for the whole mesh.",
+                )
+        else:
+            own = steps.data_start(kind, name, step, total)
+            first = start if own is None else own + part.before(kind)
+        arrays[name] = safe.read(data, where, (first, first + count))
+    return arrays
+
+
+def _image_array(data: Any, part: Part, kind: str, steps: Steps, step: int, where: str) -> Array:
+    """An array of an image: axes (time,) z, y, x(, component), flat axes present or not."""
+    count = part.points if kind == "PointData" else part.cells
+    found = safe.shape(data, where)
+    rows = None
+    if steps.group is not None:
+        first = steps.data_start(kind, data.name.rsplit("/", 1)[-1], step, 1)
+        first = step if first is None else first
+        rows = (first, first + 1)
+        found = found[1:]
+    assert part.shape is not None
+    sizes = part.shape if kind == "PointData" else tuple(max(1, n - 1) for n in part.shape)
+    flat = [n for n in sizes if n > 1]
+    for components in (False, True):
+        axes = found[:-1] if components else found
+        if [n for n in axes if n > 1] == flat and (not components or found[-1] <= 9):
+            values = safe.read(data, where, rows)
+            return values.reshape((count, found[-1]) if components else (count,))
+    raise FormatError(
+        f"the array '{data.name}' has the shape {found} for {sizes} values", where=where, mend=safe.DAMAGED
+    )
