@@ -42,7 +42,8 @@ def write_case(
     depth : makes the case one cell thick, wedges and hexahedra along the third axis
         (``.vtu``, ``.vtk``, ``.xdmf``); ``polyhedra`` stores all cells as polyhedra (``.vtu``)
     float32 : points and data in single precision
-    version : ``.vtk``: ``4.2`` or ``5.1``; ``.msh``: ``2.2`` or ``4.1``
+    version : ``.vtk``: ``4.2`` or ``5.1``; ``.msh``: ``2.2`` (the default) or ``4.1``
+        (one kind of cell, no patches)
     patches : name -> (e, 2) edges, stored as lines of a named physical group (``.msh``)
 
     Raises ValueError for what the format or its writer cannot hold.
@@ -180,20 +181,24 @@ def _write_meshio(path, points, cells, at_points, at_cells, prisms, ascii, versi
         for name, values in at_cells.items():
             split[name].append(values[chosen])
     tags = {}
-    if patches:
+    if path.suffix == ".msh" and version == "4.1":
+        if patches or len(blocks) > 1:
+            raise ValueError("meshio's writer of MSH 4.1 holds one kind of cell and no patches; use 2.2")
+    elif path.suffix == ".msh":
         split["gmsh:physical"] = [np.full(len(table), 1) for _, table in blocks]
-        tags["fluid"] = np.array([1, 2])
-    for number, (patch, edges) in enumerate(patches.items(), start=2):
-        tags[patch] = np.array([number, 1])
-        blocks.append(("line", np.asarray(edges)))
-        for name in split:
-            like = split[name][0]
-            value = number if name == "gmsh:physical" else 0
-            split[name].append(np.full((len(edges), *like.shape[1:]), value, like.dtype))
-    if patches:
+        tags["fluid"] = np.array([1, 2 if prisms is None else 3])
+        for number, (patch, edges) in enumerate(patches.items(), start=2):
+            tags[patch] = np.array([number, 1])
+            blocks.append(("line", np.asarray(edges)))
+            for name, parts in split.items():
+                value = number if name == "gmsh:physical" else 0
+                parts.append(np.full((len(edges), *parts[0].shape[1:]), value, parts[0].dtype))
         split["gmsh:geometrical"] = [a.copy() for a in split["gmsh:physical"]]
     mesh = meshio.Mesh(points, blocks, point_data=dict(at_points), cell_data=split, field_data=tags)
     if path.suffix == ".xdmf":
         meshio.write(path, mesh, file_format="xdmf", data_format="XML" if ascii else "HDF")
     else:
-        meshio.write(path, mesh, file_format="gmsh22" if version == "2.2" else "gmsh", binary=not ascii)
+        # meshio 5.3.5 writes repr() of numpy numbers, which numpy 2 spells np.float64(1.0)
+        with np.printoptions(legacy="1.25"):
+            kind = "gmsh" if version == "4.1" else "gmsh22"
+            meshio.write(path, mesh, file_format=kind, binary=not ascii)
