@@ -1,0 +1,174 @@
+"""Matching the half-edges of polygons, and following boundary edges.
+
+Half-edge ``h`` runs from ``nodes[h]`` to the next node of the same cell.
+"""
+
+from __future__ import annotations
+
+import numpy as np
+from numba import njit
+
+ALONE = -1
+CROWDED = -2
+_SORT_ABOVE = 24
+"""Buckets longer than this are sorted: pairwise search would be quadratic at the hub of a fan."""
+
+
+@njit(cache=True)
+def half_edges(offsets, nodes):
+    """Cell and end point of each half-edge: offsets (m+1,), nodes (k,) -> (k,), (k,)."""
+    cell = np.empty(len(nodes), np.int64)
+    end = np.empty(len(nodes), np.int64)
+    for i in range(len(offsets) - 1):
+        first, last = offsets[i], offsets[i + 1]
+        for h in range(first, last):
+            cell[h] = i
+            end[h] = nodes[h + 1] if h + 1 < last else nodes[first]
+    return cell, end
+
+
+@njit(cache=True)
+def twins(start, end, n_points):
+    """The half-edge that runs the other way along the same two points.
+
+    start, end (k,) point numbers below n_points -> (k,): the twin's number,
+    `ALONE`, or `CROWDED` where more than two half-edges share the points or
+    two run the same way. Counting sort on the lower point, then a search
+    within its few edges: linear time.
+    """
+    k = len(start)
+    first = np.zeros(n_points + 1, np.int64)
+    for h in range(k):
+        first[min(start[h], end[h]) + 1] += 1
+    for p in range(n_points):
+        first[p + 1] += first[p]
+    fill = first[:-1].copy()
+    order = np.empty(k, np.int64)
+    high = np.empty(k, np.int64)
+    for h in range(k):
+        low = min(start[h], end[h])
+        order[fill[low]] = h
+        high[fill[low]] = max(start[h], end[h])
+        fill[low] += 1
+    twin = np.full(k, ALONE, np.int64)
+    for p in range(n_points):
+        a, b = first[p], first[p + 1]
+        if b - a > _SORT_ABOVE:
+            rank = np.argsort(high[a:b])
+            order[a:b] = order[a:b][rank]
+            high[a:b] = high[a:b][rank]
+        for i in range(a, b):
+            for j in range(i + 1, b):
+                if high[j] != high[i]:
+                    if b - a > _SORT_ABOVE:
+                        break
+                    continue
+                g, h = order[i], order[j]
+                if twin[g] == ALONE and twin[h] == ALONE and start[g] == end[h] and start[g] != end[g]:
+                    twin[g], twin[h] = h, g
+                else:
+                    for e in (g, h):
+                        if twin[e] >= 0:
+                            twin[twin[e]] = CROWDED
+                        twin[e] = CROWDED
+                    if b - a > _SORT_ABOVE:
+                        break
+    return twin
+
+
+@njit(cache=True)
+def successors(start, end, x, y):
+    """The edge that follows each directed edge, or -1 at an open end.
+
+    start, end (e,) point numbers; x, y coordinates by point number. Where
+    several edges leave a point, the one reached first when turning clockwise
+    from the edge just walked: with the fluid on the left this stays with the
+    same fan of cells. Two edges never get the same successor.
+    """
+    e = len(start)
+    order = np.argsort(start, kind="mergesort")
+    sorted_start = start[order]
+    out = np.full(e, -1, np.int64)
+    taken = np.zeros(e, np.bool_)
+    for i in range(e):
+        p = end[i]
+        a = np.searchsorted(sorted_start, p)
+        b = a
+        while b < e and sorted_start[b] == p:
+            b += 1
+        if b - a == 1:
+            if not taken[order[a]]:
+                out[i] = order[a]
+                taken[order[a]] = True
+            continue
+        back = np.arctan2(y[start[i]] - y[p], x[start[i]] - x[p])
+        best, best_turn = -1, 1e300
+        for s in range(a, b):
+            j = order[s]
+            if taken[j]:
+                continue
+            turn = back - np.arctan2(y[end[j]] - y[p], x[end[j]] - x[p])
+            while turn <= 1e-12:
+                turn += 2 * np.pi
+            if turn < best_turn:
+                best, best_turn = j, turn
+        if best >= 0:
+            out[i] = best
+            taken[best] = True
+    return out
+
+
+@njit(cache=True)
+def walk(start, end, following):
+    """Cut the graph of `successors` into simple chains.
+
+    Returns (edges, offsets, closed): chain c is ``edges[offsets[c]:offsets[c+1]]``
+    in walking order; a chain that comes back to one of its points is cut there,
+    so that no chain passes a point twice.
+    """
+    e = len(start)
+    has_before = np.zeros(e, np.bool_)
+    for i in range(e):
+        if following[i] >= 0:
+            has_before[following[i]] = True
+    done = np.zeros(e, np.bool_)
+    out = np.empty(e, np.int64)
+    offsets = np.zeros(e + 1, np.int64)
+    closed = np.zeros(e, np.bool_)
+    n_chains, filled = 0, 0
+    stack = np.empty(e, np.int64)
+    top = 0
+    n_points = 0
+    for i in range(e):
+        n_points = max(n_points, max(start[i], end[i]) + 1)
+    place = np.full(n_points, -1, np.int64)  # place of a point as a start in the stack
+    for sweep in range(2):  # open chains from their beginnings first, then the closed ones
+        for seed in range(e):
+            if done[seed] or (sweep == 0 and has_before[seed]):
+                continue
+            i = seed
+            while i >= 0 and not done[i]:
+                done[i] = True
+                place[start[i]] = top
+                stack[top] = i
+                top += 1
+                back = place[end[i]]
+                if back >= 0:
+                    for s in range(back, top):
+                        out[filled] = stack[s]
+                        filled += 1
+                        place[start[stack[s]]] = -1
+                    top = back
+                    closed[n_chains] = True
+                    n_chains += 1
+                    offsets[n_chains] = filled
+                i = following[i]
+            if top > 0:
+                for s in range(top):
+                    out[filled] = stack[s]
+                    filled += 1
+                    place[start[stack[s]]] = -1
+                top = 0
+                n_chains += 1
+                offsets[n_chains] = filled
+    return out, offsets[: n_chains + 1], closed[:n_chains]

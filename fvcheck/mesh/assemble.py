@@ -1,0 +1,152 @@
+"""From raw pieces to the plane mesh."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass
+
+import numpy as np
+
+from fvcheck.errors import MeshError
+from fvcheck.hints import Hint
+from fvcheck.mesh.boundary import is_hole, walks
+from fvcheck.mesh.celltypes import polygons_of
+from fvcheck.mesh.claims import FACE, LINE, collect
+from fvcheck.mesh.extrusion import flatten
+from fvcheck.mesh.finder import Finder
+from fvcheck.mesh.gather import Polygons, Raw, expand_cells, gather
+from fvcheck.mesh.hanging import insert_hanging
+from fvcheck.mesh.mesh import Boundary, Mesh
+from fvcheck.mesh.piece import Piece
+from fvcheck.mesh.plane import check_name, plane_of
+from fvcheck.mesh.sides import name_all
+from fvcheck.mesh.stitch import stitch
+from fvcheck.mesh.tidy import tidy
+
+Array = np.ndarray
+
+
+@dataclass(frozen=True, eq=False)
+class Assembly:
+    """The plane mesh of an export, and where its points, cells and axes come from.
+
+    point_source : (n_points,) raw point (points of all pieces behind one
+        another) that gives each mesh point its data
+    cell_source : (n_cells,) raw cell, likewise; several mesh cells share one
+        where a cell was split
+    plane : "xy", "xz", "yz" or "rotated"
+    axes : (3, 3), rows e1, e2 and normal n = e1 × e2; a vector becomes ``axes @ vector``
+    origin : (3,); plane coordinates are (raw - origin) @ e1, e2. It has no
+        in-plane part, so that coordinates stay those of the file
+    thickness : of a one-cell-thick export, else 0
+    """
+
+    mesh: Mesh
+    point_source: Array
+    cell_source: Array
+    plane: str
+    axes: Array
+    origin: Array
+    thickness: float
+    hints: tuple[Hint, ...]
+
+
+def assemble(pieces: Sequence[Piece], *, plane: str = "auto", keep_centres: bool = False) -> Assembly:
+    """Build the plane mesh of ``pieces``.
+
+    ``plane`` forces a coordinate plane. ``keep_centres`` (for point data) splits
+    quadratic cells with a node inside, so that its value is kept; otherwise
+    that node is dropped.
+
+    Raises MeshError where the cells make no plane mesh: no 2D cells, not flat,
+    not one cell thick, crossing outlines, overlapping cells, damaged lists;
+    SetupError for an unknown ``plane``.
+    """
+    check_name(plane)
+    hints: list[Hint] = []
+    raw = gather(pieces)
+    front, thickness = None, 0.0
+    solid = bool((raw.dimension == 3).any())
+    if solid:
+        layer = flatten(pieces, raw, plane)
+        where, cells, front, thickness = layer.plane, layer.cells, layer.front, layer.thickness
+    else:
+        flat = raw.cells_of(2)
+        if len(flat) == 0:
+            raise MeshError(
+                "there are no 2D cells" + (", only lines" if (raw.dimension == 1).any() else ""),
+                mend="Export the cells of the flow domain.",
+            )
+        cells = expand_cells(raw, flat, lambda kind, size: polygons_of(kind, size, keep_centres))
+        used = np.zeros(len(raw.points), bool)
+        used[cells.nodes] = True
+        where = plane_of(raw.points[used], plane, raw.precision)
+    points = where.coordinates(raw.points)
+    cells = tidy(points, cells, raw.precision, hints, flat_file=not solid)
+    claims = collect(pieces, raw, front)
+    seams = stitch(points, cells, raw, pieces, claims, hints)
+    number, finder = seams.number, seams.finder
+    if (number != np.arange(len(number))).any():
+        merged = Polygons(cells.offsets, number[cells.nodes], cells.source)
+        cells = tidy(points, merged, raw.precision, hints, flat_file=False)
+    cells = insert_hanging(points, cells, finder, number, raw.precision, hints)
+    mesh, point_source = _mesh(points, cells, raw, finder, number, hints)
+    return Assembly(
+        mesh, point_source, cells.source, where.name, where.axes, where.origin, thickness, tuple(hints)
+    )
+
+
+def _mesh(
+    points: Array, cells: Polygons, raw: Raw, finder: Finder, number: Array, hints: list[Hint]
+) -> tuple[Mesh, Array]:
+    """Number the points, find the boundary and its patches."""
+    from fvcheck.kernels.edges import ALONE, CROWDED, half_edges, twins
+    from fvcheck.kernels.polygons import renumber
+
+    cell, end = half_edges(cells.offsets, cells.nodes)
+    twin = twins(cells.nodes, end, len(points))
+    if (twin == CROWDED).any():
+        h = int(np.argmax(twin == CROWDED))
+        x, y = 0.5 * (points[cells.nodes[h]] + points[end[h]])
+        raise MeshError(
+            f"cells overlap: an edge of cell {cells.source[cell[h]]} has more than one cell on a side",
+            where=f"near x = {x:.6g}, y = {y:.6g}",
+            mend="Leave out blocks that lie on one another, or repair the mesh.",
+        )
+    open_ = twin == ALONE
+    start, end, owner = cells.nodes[open_], end[open_], cell[open_]
+    patch, met = finder.find(start, end, number)
+    _hint_unmet(finder, met, hints)
+    new_number, source, nodes = renumber(cells.nodes, len(points))
+    edges = np.column_stack([new_number[start], new_number[end]])
+    xy = np.ascontiguousarray(points[source])
+    present = [name for i, name in enumerate(finder.claims.names) if (patch == i).any()]
+    index = np.array([present.index(n) if n in present else -1 for n in finder.claims.names] + [-1])
+    patch, names = name_all(xy, edges, index[patch], present)
+    kinds = {name: kind for name, kind in finder.claims.kinds.items() if name in names}
+    boundary = Boundary(edges, owner, patch, names)
+    bodies = _bodies(xy, edges, patch, names)
+    return Mesh(xy, cells.offsets, nodes, boundary, bodies, kinds), source
+
+
+def _bodies(points: Array, edges: Array, patch: Array, names: Sequence[str]) -> tuple[str, ...]:
+    """Patches whose every edge lies on a hole that is theirs alone."""
+    alone = np.ones(len(names), bool)
+    for chain, closed in walks(edges, points):
+        around = np.unique(patch[chain])
+        if len(around) > 1 or not closed or not is_hole(points[edges[chain, 0]]):
+            alone[around] = False
+    return tuple(name for name, good in zip(names, alone) if good)
+
+
+def _hint_unmet(finder: Finder, met: Array, hints: list[Hint]) -> None:
+    """Say how many line cells and named faces are no edge of the boundary."""
+    claims = finder.claims
+    for origin, code, text in (
+        (LINE, "inner-lines", "line cells lie inside the domain and mark no patch"),
+        (FACE, "unknown-faces", "faces of named patches are no edges of the boundary"),
+    ):
+        mine = claims.origin == origin
+        faces = np.setdiff1d(claims.face[mine], claims.face[mine & met])
+        if len(faces):
+            hints.append(Hint(code, f"{len(faces)} {text}"))

@@ -1,0 +1,95 @@
+"""Hanging nodes: points of one cell on the edge of another."""
+
+from __future__ import annotations
+
+import numpy as np
+
+from fvcheck.hints import Hint
+from fvcheck.mesh.finder import Finder
+from fvcheck.mesh.gather import Polygons
+from fvcheck.mesh.stitch import NEAR, SPACINGS
+
+Array = np.ndarray
+
+_BATCH = 4_000_000
+"""Candidate pairs looked at together; bounds the memory."""
+
+
+def insert_hanging(
+    points: Array, cells: Polygons, finder: Finder, number: Array, precision: float, hints: list[Hint]
+) -> Polygons:
+    """Put points that lie on an open edge of a cell into that cell's outline.
+
+    Edges that belong to a patch of the file are walls and stay as they are. Adds
+    the hint "hanging-nodes".
+    """
+    from fvcheck.kernels.edges import ALONE, half_edges, twins
+    from fvcheck.kernels.polygons import insert_nodes
+
+    cell, end = half_edges(cells.offsets, cells.nodes)
+    alone = np.flatnonzero(twins(cells.nodes, end, len(points)) == ALONE)
+    rim = np.unique(cells.nodes[alone])
+    patch, _ = finder.find(cells.nodes[alone], end[alone], number)
+    alone = alone[patch < 0]
+    edge, node, along = _on_edges(points, cells.nodes[alone], end[alone], rim, precision)
+    edge = alone[edge]
+    own = _cell_has(cells, cell[edge], node)
+    edge, node, along = edge[~own], node[~own], along[~own]
+    if len(edge) == 0:
+        return cells
+    order = np.lexsort((along, edge))
+    edge, node, along = edge[order], node[order], along[order]
+    # Two points kept apart at one place: one of them is enough for this side.
+    twice = np.zeros(len(edge), bool)
+    twice[1:] = (edge[1:] == edge[:-1]) & (along[1:] - along[:-1] < NEAR)
+    edge, node = edge[~twice], node[~twice]
+    offsets, nodes = insert_nodes(cells.offsets, cells.nodes, edge, node)
+    hints.append(Hint("hanging-nodes", f"{len(edge)} hanging nodes are put into the cells they lie on"))
+    return Polygons(offsets, nodes, cells.source)
+
+
+def _on_edges(
+    points: Array, start: Array, end: Array, rim: Array, precision: float
+) -> tuple[Array, Array, Array]:
+    """Rim points between the ends of edges: edge number, point, share of the way."""
+    from scipy.spatial import cKDTree
+
+    step = points[end] - points[start]
+    length = np.hypot(*step.T)
+    tolerance = np.maximum(
+        NEAR * length, SPACINGS * precision * np.abs(points[start]).max(axis=1, initial=0.0)
+    )
+    tolerance = np.minimum(tolerance, 0.01 * length)
+    none = np.zeros(0, np.int64)
+    if len(rim) == 0 or len(start) == 0:
+        return none, none, np.zeros(0)
+    tree = cKDTree(points[rim])
+    middle, radius = points[start] + 0.5 * step, 0.5 * length
+    count = tree.query_ball_point(middle, radius, return_length=True)
+    busy = np.flatnonzero(count > 0)
+    edges, nodes, shares = [none], [none], [np.zeros(0)]
+    batch = np.cumsum(count[busy]) // _BATCH
+    for b in np.unique(batch).tolist():
+        rows = busy[batch == b]
+        lists = tree.query_ball_point(middle[rows], radius[rows], return_sorted=False)
+        row = np.repeat(rows, [len(found) for found in lists])
+        node = rim[np.concatenate([np.asarray(found, np.int64) for found in lists])]
+        away = points[node] - points[start[row]]
+        along = (away * step[row]).sum(axis=1) / length[row] ** 2
+        off = np.abs(away[:, 0] * step[row, 1] - away[:, 1] * step[row, 0]) / length[row]
+        slack = tolerance[row]
+        good = (off <= slack) & (along * length[row] > slack) & ((1 - along) * length[row] > slack)
+        edges.append(row[good])
+        nodes.append(node[good])
+        shares.append(along[good])
+    return np.concatenate(edges), np.concatenate(nodes), np.concatenate(shares)
+
+
+def _cell_has(cells: Polygons, cell: Array, node: Array) -> Array:
+    """(p,) whether cell[j] has node[j] already."""
+    first, size = cells.offsets[cell], cells.offsets[cell + 1] - cells.offsets[cell]
+    out = np.zeros(len(cell), bool)
+    for step in range(int(size.max(initial=0))):
+        inside = step < size
+        out[inside] |= cells.nodes[first[inside] + step] == node[inside]
+    return out

@@ -1,0 +1,56 @@
+"""Polygons made simple and counter-clockwise."""
+
+from __future__ import annotations
+
+import numpy as np
+
+from fvcheck.errors import MeshError
+from fvcheck.hints import Hint
+from fvcheck.mesh.gather import Polygons
+
+Array = np.ndarray
+
+
+def tidy(points: Array, cells: Polygons, precision: float, hints: list[Hint], *, flat_file: bool) -> Polygons:
+    """Drop repeated nodes and cells without area, turn clockwise cells, refuse crossing outlines.
+
+    points (n, 2). Adds the hints "zero-area-cells" and, where only some cells
+    are clockwise and the order is the file's own (``flat_file``), "clockwise-cells".
+    """
+    from fvcheck.kernels.polygons import outline_faults, select, shape_measures, without_repeats
+
+    offsets, nodes = without_repeats(cells.offsets, cells.nodes)
+    area, perimeter, size = shape_measures(points, offsets, nodes)
+    # A stored coordinate is off by up to half a spacing; what that does to the area is no area.
+    rounding = precision * size
+    solid = np.abs(area) > rounding * perimeter
+    if not solid.all():
+        lost = int(np.count_nonzero(~solid))
+        if lost == len(solid):
+            raise MeshError("no cell has an area", mend="Export the cells of a plane mesh.")
+        hints.append(Hint("zero-area-cells", f"{lost} cells without area are left out"))
+    clockwise = area < 0
+    turned = int(np.count_nonzero(clockwise & solid))
+    if flat_file and 0 < turned < np.count_nonzero(solid):
+        few = min(turned, int(np.count_nonzero(solid)) - turned)
+        hints.append(Hint("clockwise-cells", f"{few} cells run the other way round than the rest; turned"))
+    if turned or not solid.all():
+        offsets, nodes = select(offsets, nodes, solid, clockwise)
+    faults = outline_faults(points, offsets, nodes, 2 * rounding[solid])
+    source = cells.source[solid]
+    for cell in np.flatnonzero(faults).tolist():
+        ring = points[nodes[offsets[cell] : offsets[cell + 1]]]
+        if faults[cell] == 2 and _valid(ring):
+            continue
+        raise MeshError(
+            f"the outline of cell {source[cell]} crosses or touches itself",
+            where=f"near x = {ring[:, 0].mean():.6g}, y = {ring[:, 1].mean():.6g}",
+            mend="Its nodes are in a wrong order, or the mesh is folded: repair the export.",
+        )
+    return Polygons(offsets, nodes, source)
+
+
+def _valid(ring: Array) -> bool:
+    from shapely import Polygon
+
+    return bool(Polygon(ring).is_valid)
