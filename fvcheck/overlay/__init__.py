@@ -1,0 +1,1 @@
+"""Where the control surface cuts the mesh."""

@@ -1,0 +1,1 @@
+"""Operators: data at points or in cells → values and gradients anywhere."""

@@ -1,0 +1,332 @@
+"""A flow: the plane mesh of an export, the fields with a role, the fluid."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass, replace
+from functools import cached_property
+from pathlib import Path
+from typing import Any, Literal
+
+import numpy as np
+
+from fvcheck.errors import FieldError, SetupError, nearest
+from fvcheck.fields import Field, choose_fields
+from fvcheck.fieldnames import VECTORS
+from fvcheck.fluid import Fluid
+from fvcheck.hints import Hint
+from fvcheck.mesh.assemble import Assembly, assemble
+from fvcheck.mesh.mesh import Mesh
+from fvcheck.mesh.piece import Export, Piece
+
+Array = np.ndarray
+CellValues = Literal["average", "centroid"]
+FieldNames = Mapping[str, str | Sequence[str]]
+
+
+@dataclass(frozen=True)
+class Case:
+    """Where a flow comes from and how it is read; ``depth`` None means results per metre."""
+
+    file: str
+    format: str
+    step: int
+    steps: int
+    time: float | None
+    plane: str
+    symmetry: str = "planar"
+    depth: float | None = None
+    cell_values: CellValues = "average"
+
+
+@dataclass(frozen=True, eq=False)
+class Flow:
+    """One state of a run, in its plane.
+
+    mesh : the plane mesh
+    fields : role -> `Field`, values (n,) for scalars, (n, 3) for vectors in the
+        axes of the plane (two in it, one out of it), at points or cells of
+        ``mesh``, in the precision of the file
+    fluid : properties
+    case : where it comes from
+    walls : patch -> velocity of a no-slip wall
+    hints : what was noticed on the way
+    """
+
+    mesh: Mesh
+    fields: Mapping[str, Field]
+    fluid: Fluid
+    case: Case
+    walls: Mapping[str, tuple[float, float]]
+    hints: tuple[Hint, ...]
+    assembly: Assembly
+
+    @property
+    def location(self) -> str:
+        """Where the leading field lives: "point" or "cell"."""
+        first = self.fields.get("velocity") or next(iter(self.fields.values()))
+        return first.location
+
+    @property
+    def out_of_plane(self) -> bool:
+        """Whether a velocity out of the plane is there and not negligible."""
+        return self._swirl_ratio > 1e-6
+
+    @cached_property
+    def _swirl_ratio(self) -> float:
+        field = self.fields.get("velocity") or self.fields.get("momentum")
+        if field is None:
+            return 0.0
+        speed = np.nanmax(np.abs(field.values[:, :2]), initial=0.0)
+        normal = np.nanmax(np.abs(field.values[:, 2]), initial=0.0)
+        return float(normal / speed) if speed > 0 else float(normal > 0)
+
+    def _repr_html_(self) -> str:
+        roles = ", ".join(f"{role} = {field.name}" for role, field in self.fields.items())
+        return f"<b>{self.case.file}</b>: {self.mesh.n_cells} cells, {roles}"
+
+    @classmethod
+    def from_arrays(
+        cls,
+        points: Array,
+        cells: Sequence[Sequence[int]] | tuple[Array, Array],
+        *,
+        point_data: Mapping[str, Array] | None = None,
+        cell_data: Mapping[str, Array] | None = None,
+        **settings: Any,
+    ) -> Flow:
+        """A flow from arrays: points (n, 2 or 3); cells a list of point lists, or (offsets, nodes).
+
+        ``settings`` are those of `open_flow`.
+        """
+        points = np.atleast_2d(np.asarray(points))
+        if points.shape[1] == 2:
+            points = np.column_stack([points, np.zeros(len(points), points.dtype)])
+        if isinstance(cells, tuple) and len(cells) == 2:
+            offsets, nodes = (np.asarray(part, np.int64) for part in cells)
+        else:
+            counts = [len(cell) for cell in cells]
+            offsets = np.concatenate([[0], np.cumsum(counts)]).astype(np.int64)
+            nodes = np.concatenate([np.asarray(cell, np.int64) for cell in cells])
+        polygon = 7
+        piece = Piece(
+            points=points,
+            types=np.full(len(offsets) - 1, polygon, np.uint8),
+            offsets=offsets,
+            nodes=nodes,
+            point_data={k: np.asarray(v) for k, v in (point_data or {}).items()},
+            cell_data={k: np.asarray(v) for k, v in (cell_data or {}).items()},
+        )
+        return cls._from_piece(piece, "arrays", settings)
+
+    @classmethod
+    def from_meshio(cls, mesh: Any, **settings: Any) -> Flow:
+        """A flow from a ``meshio.Mesh``; ``settings`` are those of `open_flow`."""
+        from fvcheck.formats.objects import piece_from_meshio
+
+        return cls._from_piece(piece_from_meshio(mesh), "meshio", settings)
+
+    @classmethod
+    def from_pyvista(cls, dataset: Any, **settings: Any) -> Flow:
+        """A flow from a pyvista (or VTK) data set; ``settings`` are those of `open_flow`."""
+        from fvcheck.formats.vtk_convert import piece_from_vtk
+
+        return cls._from_piece(piece_from_vtk(dataset, "data set"), "VTK object", settings)
+
+    @classmethod
+    def _from_piece(cls, piece: Piece, what: str, settings: dict[str, Any]) -> Flow:
+        from fvcheck.formats.check import check_piece
+
+        checked = check_piece(piece, what)
+        export = Export(path=Path(what), format=what, load=lambda step: [checked])
+        return flow_of_export(export, **settings)
+
+
+def open_flow(path: str | Path, **settings: Any) -> Flow:
+    """Read an export.
+
+    Parameters are those of `flow_of_export`. Raises FormatError, MeshError,
+    FieldError or SetupError, each saying what is wrong, where, and how to mend it.
+    """
+    from fvcheck.formats.registry import open_export
+
+    return flow_of_export(open_export(Path(path)), **settings)
+
+
+def flow_of_export(
+    export: Export,
+    *,
+    fluid: Fluid | None = None,
+    fields: FieldNames | None = None,
+    plane: str = "auto",
+    step: int | str = "last",
+    cell_values: CellValues = "average",
+    walls: Mapping[str, tuple[float, float]] | Sequence[str] | None = None,
+    symmetry: str = "planar",
+    depth: float | None = None,
+) -> Flow:
+    """One step of an opened export as a flow.
+
+    fluid : properties; its strings name arrays of the export
+    fields : role -> array name, ``"VX,VY"`` or a list of components, with
+        ``point:`` or ``cell:`` in front for a location; the rest by known names
+    plane : "auto", "xy", "xz" or "yz"
+    step : "last", or the number of a stored state (negative from the end)
+    cell_values : a cell value is the "average" over the cell or its value at the "centroid"
+    walls : no-slip patches, with a velocity in the plane where they move
+    depth : out-of-plane extent that results are multiplied by [m]
+    """
+    fluid = fluid or Fluid()
+    number = step_number(export, step)
+    if cell_values not in ("average", "centroid"):
+        raise SetupError(f"unknown cell values {cell_values!r}", mend="Use average or centroid.")
+    if depth is not None and not depth > 0:
+        raise SetupError(f"depth is {depth}", mend="Give a positive depth.")
+    pieces = export.load(number)
+    points_only = not any(piece.cell_data for piece in pieces)
+    assembly = assemble(pieces, plane=plane, keep_centres=points_only)
+    told = dict(fields or {}) | _named_properties(fluid, fields or {})
+    chosen, field_hints = _read_fields(pieces, assembly, told)
+    fluid, chosen, hints = _settle(fluid, chosen)
+    case = Case(
+        file=str(export.path),
+        format=export.format,
+        step=number,
+        steps=export.steps,
+        time=export.times[number] if export.times else None,
+        plane=assembly.plane,
+        symmetry=symmetry,
+        depth=depth,
+        cell_values=cell_values,
+    )
+    flow = Flow(
+        mesh=assembly.mesh,
+        fields=chosen,
+        fluid=fluid,
+        case=case,
+        walls=_walls(assembly.mesh, walls),
+        hints=(*export.hints, *assembly.hints, *field_hints, *hints),
+        assembly=assembly,
+    )
+    if flow.out_of_plane:
+        note = Hint(
+            "out-of-plane-velocity",
+            f"the velocity out of the plane reaches {100 * flow._swirl_ratio:.3g} % of that in it; "
+            "it counts for energy and angular momentum",
+        )
+        flow = replace(flow, hints=(*flow.hints, note))
+    return flow
+
+
+def step_number(export: Export, step: int | str) -> int:
+    """Number of the stored state that ``step`` means; SetupError when there is none."""
+    if step == "last":
+        return export.steps - 1
+    try:
+        number = int(step)
+    except ValueError:
+        raise SetupError(f"step is {step!r}", mend="Give the number of a step, or last.") from None
+    if not -export.steps <= number < export.steps:
+        raise SetupError(
+            f"there is no step {number}", where=export.path, mend=f"Steps are 0 to {export.steps - 1}."
+        )
+    return number % export.steps
+
+
+def _named_properties(fluid: Fluid, told: FieldNames) -> dict[str, str]:
+    """Roles that the fluid gives as names of arrays."""
+    out = {}
+    for role in ("density", "viscosity", "conductivity"):
+        value = getattr(fluid, role)
+        if isinstance(value, str):
+            if role in told and told[role] != value:
+                raise SetupError(
+                    f"{role} is given twice", where=f"{value} and {told[role]}", mend="Name one array."
+                )
+            out[role] = value
+    return out
+
+
+def _settle(
+    fluid: Fluid, chosen: dict[str, Field]
+) -> tuple[Fluid, dict[str, Field], tuple[Hint, ...]]:
+    """One meaning for each property: a told number wins over a field, with a hint."""
+    hints = []
+    changes = {}
+    for role in ("density", "viscosity", "conductivity"):
+        value = getattr(fluid, role)
+        if isinstance(value, str):
+            changes[role] = None
+        elif value is not None and role in chosen:
+            field = chosen.pop(role)
+            hints.append(
+                Hint("option-over-field", f"{role} = {value:g} as told; the array {field.name!r} is not used")
+            )
+    return replace(fluid, **changes), chosen, tuple(hints)
+
+
+def _read_fields(
+    pieces: Sequence[Piece], assembly: Assembly, told: FieldNames
+) -> tuple[dict[str, Field], tuple[Hint, ...]]:
+    mesh = assembly.mesh
+    point_data = _joined(pieces, "point_data", assembly.point_source)
+    cell_data = _joined(pieces, "cell_data", assembly.cell_source)
+    chosen, hints = choose_fields(
+        point_data, cell_data, told, n_points=mesh.n_points, n_cells=mesh.n_cells
+    )
+    if not chosen:
+        names = ", ".join(sorted({*point_data, *cell_data})) or "none"
+        raise FieldError(
+            "no array of a known meaning", where=f"arrays: {names}", mend="Name them with --field velocity=NAME …"
+        )
+    for role, field in chosen.items():
+        if role in VECTORS or (role.startswith("rate:") and role[5:] in VECTORS):
+            chosen[role] = replace(field, values=_turn(field.values, assembly.axes))
+    return chosen, hints
+
+
+def _turn(values: Array, axes: Array) -> Array:
+    """Vectors (n, 3) in the axes of the plane; the plain x-y plane costs nothing."""
+    if np.array_equal(axes, np.eye(3)):
+        return values
+    return (values @ axes.T.astype(values.dtype)).astype(values.dtype)
+
+
+def _joined(pieces: Sequence[Piece], kind: str, source: Array) -> dict[str, Array]:
+    """Arrays that every contributing piece holds, taken at ``source`` (numbers over all pieces)."""
+    sizes = [len(p.points) if kind == "point_data" else len(p.types) for p in pieces]
+    first = np.concatenate([[0], np.cumsum(sizes)])
+    used = np.unique(np.searchsorted(first, source, side="right") - 1)
+    if len(used) == 0:
+        return {}
+    names = set.intersection(*(set(getattr(pieces[u], kind)) for u in used))
+    out = {}
+    for name in getattr(pieces[used[0]], kind):
+        if name not in names:
+            continue
+        parts = [np.asarray(getattr(pieces[u], kind)[name]) for u in used]
+        if len({part.shape[1:] for part in parts}) > 1:
+            continue
+        if len(used) == 1:
+            out[name] = parts[0][source - first[used[0]]]
+            continue
+        # Pieces that give nothing stay out, so numbers must skip them.
+        skipped = np.zeros(len(pieces), np.int64)
+        skipped[used] = first[used] - np.concatenate([[0], np.cumsum([sizes[u] for u in used])[:-1]])
+        piece_of = np.searchsorted(first, source, side="right") - 1
+        out[name] = np.concatenate(parts)[source - skipped[piece_of]]
+    return out
+
+
+def _walls(
+    mesh: Mesh, walls: Mapping[str, tuple[float, float]] | Sequence[str] | None
+) -> dict[str, tuple[float, float]]:
+    told = walls if isinstance(walls, Mapping) else dict.fromkeys(walls or (), (0.0, 0.0))
+    names = mesh.boundary.names
+    for name in told:
+        if name not in names:
+            raise SetupError(
+                f"there is no patch {name!r} to be a wall",
+                mend=nearest(name, names) or f"Patches: {', '.join(names)}.",
+            )
+    return {name: (float(v[0]), float(v[1])) for name, v in told.items()}

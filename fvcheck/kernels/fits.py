@@ -1,0 +1,348 @@
+"""Weighted least-squares polynomials about mesh points, as linear operators on the data."""
+
+from __future__ import annotations
+
+import numpy as np
+from numba import njit, prange
+
+# Number of monomials up to each degree.
+TERMS = (1, 3, 6, 10)
+
+# A fit whose matrix (columns scaled to one) is worse conditioned than this
+# would amplify the data's own roughness; the degree falls instead.
+_WORST_CONDITION = 2e3
+
+# Abscissas and weights of three-point Gauss quadrature on (0, 1): exact to degree 5.
+_G = (0.1127016653792583, 0.5, 0.8872983346207417)
+_W = (0.2777777777777778, 0.4444444444444444, 0.2777777777777778)
+
+
+@njit(cache=True)
+def monomials(x, y, out):
+    """1, x, y, x²/2, xy, y²/2, x³/6, x²y/2, xy²/2, y³/6 (so coefficients are derivatives)."""
+    out[0] = 1.0
+    out[1] = x
+    out[2] = y
+    out[3] = 0.5 * x * x
+    out[4] = x * y
+    out[5] = 0.5 * y * y
+    out[6] = x * x * x / 6.0
+    out[7] = 0.5 * x * x * y
+    out[8] = 0.5 * x * y * y
+    out[9] = y * y * y / 6.0
+
+
+@njit(cache=True)
+def cell_moments(points, ring, x0, y0, a, out):
+    """Averages of the monomials over a polygon, in coordinates ξ = a (x − x0).
+
+    By the divergence theorem, ∫f dA = ∮F dη with ∂F/∂ξ = f, three Gauss points
+    an edge: exact for cubics. ring (k,) point numbers, either orientation.
+    """
+    k = len(ring)
+    area = 0.0
+    for j in range(10):
+        out[j] = 0.0
+    for e in range(k):
+        p, q = ring[e], ring[e + 1 if e + 1 < k else 0]
+        px, py = points[p, 0] - x0, points[p, 1] - y0
+        qx, qy = points[q, 0] - x0, points[q, 1] - y0
+        ux, uy = a[0, 0] * px + a[0, 1] * py, a[1, 0] * px + a[1, 1] * py
+        vx, vy = a[0, 0] * qx + a[0, 1] * qy, a[1, 0] * qx + a[1, 1] * qy
+        dy = vy - uy
+        for g in range(3):
+            x, y = ux + _G[g] * (vx - ux), uy + _G[g] * dy
+            w = _W[g] * dy * x
+            area += w
+            # ∫ of each monomial over ξ is ξ/(m+1) times it, m its power of ξ.
+            out[1] += w * x / 2.0
+            out[2] += w * y
+            out[3] += w * x * x / 6.0
+            out[4] += w * x * y / 2.0
+            out[5] += w * y * y / 2.0
+            out[6] += w * x * x * x / 24.0
+            out[7] += w * x * x * y / 6.0
+            out[8] += w * x * y * y / 4.0
+            out[9] += w * y * y * y / 6.0
+    out[0] = 1.0
+    for j in range(1, 10):
+        out[j] /= area
+
+
+@njit(cache=True)
+def polygon_centroid(points, ring):
+    """Centroid of a polygon, about its first point to keep the digits."""
+    x0, y0 = points[ring[0], 0], points[ring[0], 1]
+    twice = cx = cy = 0.0
+    for e in range(1, len(ring) - 1):
+        ux, uy = points[ring[e], 0] - x0, points[ring[e], 1] - y0
+        vx, vy = points[ring[e + 1], 0] - x0, points[ring[e + 1], 1] - y0
+        w = ux * vy - uy * vx
+        twice += w
+        cx += w * (ux + vx) / 3.0
+        cy += w * (uy + vy) / 3.0
+    return x0 + cx / twice, y0 + cy / twice
+
+
+@njit(cache=True)
+def whitening(places, count, out):
+    """out (2, 2): the inverse square root of the mean of d dᵀ over the offsets d.
+
+    In ξ = out·d every patch looks round, so a boundary-layer patch of aspect
+    ratio 10⁴ is as well conditioned as an isotropic one.
+    """
+    xx = xy = yy = 0.0
+    for s in range(count):
+        xx += places[s, 0] * places[s, 0]
+        xy += places[s, 0] * places[s, 1]
+        yy += places[s, 1] * places[s, 1]
+    xx, xy, yy = xx / count, xy / count, yy / count
+    # Eigenvalues; the small one from the determinant, so that it keeps its digits.
+    half, diff = 0.5 * (xx + yy), 0.5 * (xx - yy)
+    root = np.sqrt(diff * diff + xy * xy)
+    big = half + root
+    if big <= 0.0:
+        return False
+    # Rotation to the axes of the patch.
+    angle = 0.5 * np.arctan2(2.0 * xy, xx - yy)
+    c, s = np.cos(angle), np.sin(angle)
+    small = 0.0
+    for i in range(count):
+        d = -s * places[i, 0] + c * places[i, 1]
+        small += d * d
+    small /= count
+    if small <= 1e-20 * big:
+        return False
+    out[0, 0], out[0, 1] = c / np.sqrt(big), s / np.sqrt(big)
+    out[1, 0], out[1, 1] = -s / np.sqrt(small), c / np.sqrt(small)
+    return True
+
+
+@njit(cache=True)
+def _solve(matrix, weights, rows, columns, out, work_q, work_r):
+    """out (columns, rows) = pseudo-inverse of diag(weights)·matrix, times diag(weights).
+
+    Modified Gram–Schmidt, each column orthogonalised twice, columns scaled to
+    one first. Returns False when the scaled matrix is too badly conditioned.
+    """
+    scale = np.empty(columns)
+    for j in range(columns):
+        norm = 0.0
+        for s in range(rows):
+            work_q[s, j] = weights[s] * matrix[s, j]
+            norm += work_q[s, j] ** 2
+        norm = np.sqrt(norm)
+        if norm == 0.0:
+            return False
+        scale[j] = 1.0 / norm
+        for s in range(rows):
+            work_q[s, j] *= scale[j]
+        for i in range(columns):
+            work_r[i, j] = 0.0
+        for _ in range(2):
+            for i in range(j):
+                dot = 0.0
+                for s in range(rows):
+                    dot += work_q[s, i] * work_q[s, j]
+                work_r[i, j] += dot
+                for s in range(rows):
+                    work_q[s, j] -= dot * work_q[s, i]
+        norm = 0.0
+        for s in range(rows):
+            norm += work_q[s, j] ** 2
+        norm = np.sqrt(norm)
+        if norm < 1e-10:
+            return False
+        work_r[j, j] = norm
+        for s in range(rows):
+            work_q[s, j] /= norm
+    inverse = np.zeros((columns, columns))
+    size = 0.0
+    for j in range(columns):
+        inverse[j, j] = 1.0 / work_r[j, j]
+        for i in range(j - 1, -1, -1):
+            total = 0.0
+            for k in range(i + 1, j + 1):
+                total += work_r[i, k] * inverse[k, j]
+            inverse[i, j] = -total / work_r[i, i]
+        for i in range(j + 1):
+            size += inverse[i, j] ** 2
+    # The scaled matrix has Frobenius norm √columns.
+    if np.sqrt(size * columns) > _WORST_CONDITION:
+        return False
+    for i in range(columns):
+        for s in range(rows):
+            total = 0.0
+            for k in range(i, columns):
+                total += inverse[i, k] * work_q[s, k]
+            out[i, s] = total * scale[i] * weights[s]
+    return True
+
+
+@njit(cache=True)
+def _fit_one(points, offsets, nodes, centre, entries, size, degree, at_points, averages, own, a, operator):
+    """One polynomial: fills ``a`` and ``operator`` (10, size+1); returns the degree reached, -1 for none.
+
+    Column ``size`` of the operator belongs to the centre's own value when
+    ``own`` is set; it is interpolated then.
+    """
+    places = np.empty((size, 2))
+    x0, y0 = points[centre, 0], points[centre, 1]
+    for s in range(size):
+        e = entries[s]
+        if at_points or e < 0:
+            p = e if e >= 0 else -1 - e
+            places[s, 0], places[s, 1] = points[p, 0] - x0, points[p, 1] - y0
+        else:
+            cx, cy = polygon_centroid(points, nodes[offsets[e] : offsets[e + 1]])
+            places[s, 0], places[s, 1] = cx - x0, cy - y0
+    if size == 0 or not whitening(places, size, a):
+        degree = 0
+        a[0, 0], a[0, 1], a[1, 0], a[1, 1] = 1.0, 0.0, 0.0, 1.0
+    matrix, weights, row = np.empty((size, 10)), np.empty(size), np.empty(10)
+    nearest = np.inf
+    for s in range(size):
+        dx, dy = places[s, 0], places[s, 1]
+        x, y = a[0, 0] * dx + a[0, 1] * dy, a[1, 0] * dx + a[1, 1] * dy
+        e = entries[s]
+        if at_points or e < 0 or not averages:
+            monomials(x, y, row)
+        else:
+            cell_moments(points, nodes[offsets[e] : offsets[e + 1]], x0, y0, a, row)
+        matrix[s] = row
+        weights[s] = x * x + y * y
+        nearest = min(nearest, weights[s])
+    for s in range(size):
+        # Near data count more: the inverse of the distance, which is bounded
+        # for cells that touch the centre.
+        weights[s] = 1.0 / np.sqrt(weights[s] + 0.1)
+    work_q, work_r = np.empty((size, 10)), np.empty((10, 10))
+    part = np.empty((10, size))
+    skip = 1 if own else 0
+    for k in range(degree, -1, -1):
+        columns = TERMS[k] - skip
+        if columns > size:
+            continue
+        operator[:, :] = 0.0
+        if columns > 0:
+            if not _solve(matrix[:, skip:], weights, size, columns, part, work_q, work_r):
+                continue
+            for i in range(columns):
+                for s in range(size):
+                    operator[i + skip, s] = part[i, s]
+                    if own:
+                        operator[i + skip, size] -= part[i, s]
+        if own:
+            operator[0, size] = 1.0
+        return k
+    return -1
+
+
+@njit(cache=True, parallel=True)
+def fit_points(points, offsets, nodes, centres, first, entries, sizes, degree, at_points, averages, known, keep):
+    """Operators of the fits about ``centres``.
+
+    first, entries, sizes (c,): from `stencils`, for this degree; averages: cell
+    values are averages, else values at the centroid; known (n,) bool: points
+    with a value of their own beside cell data; keep: number of leading
+    coefficients wanted.
+
+    Returns (row_first (c+1,), columns, operator (keep, total), frames (c, 2, 2),
+    reached (c,)): coefficient i of centre j is Σ operator[i, s]·data[columns[s]]
+    over s in row_first[j]:row_first[j+1]. Columns follow `stencils`: points, or
+    cells, or -1-p for known values.
+    """
+    count = len(centres)
+    row_first = np.zeros(count + 1, np.int64)
+    for j in range(count):
+        row_first[j + 1] = row_first[j] + sizes[j] + 1
+    total = row_first[count]
+    columns = np.empty(total, np.int64)
+    operator = np.zeros((keep, total))
+    frames = np.zeros((count, 2, 2))
+    reached = np.empty(count, np.int64)
+    for j in prange(count):
+        size = sizes[j]
+        one = np.zeros((10, size + 1))
+        own = at_points or known[centres[j]]
+        mine = entries[first[j] : first[j] + size]
+        reached[j] = _fit_one(
+            points, offsets, nodes, centres[j], mine, size, degree, at_points, averages, own, frames[j], one
+        )
+        at = row_first[j]
+        for s in range(size):
+            columns[at + s] = mine[s]
+        # Without an own value the last column is zero; any valid number will do.
+        columns[at + size] = centres[j] if at_points else (-1 - centres[j] if own else mine[0])
+        for i in range(keep):
+            for s in range(size + 1):
+                operator[i, at + s] = one[i, s]
+    return row_first, columns, operator, frames, reached
+
+
+@njit(cache=True, parallel=True)
+def apply_fits(row_first, columns, operator, data):
+    """Coefficients (c, keep, f) of the fits on data (n, f)."""
+    count, keep, fields = len(row_first) - 1, operator.shape[0], data.shape[1]
+    out = np.zeros((count, keep, fields))
+    for j in prange(count):
+        for s in range(row_first[j], row_first[j + 1]):
+            for i in range(keep):
+                w = operator[i, s]
+                if w != 0.0:
+                    for f in range(fields):
+                        out[j, i, f] += w * data[columns[s], f]
+    return out
+
+
+@njit(cache=True, parallel=True)
+def evaluate(points, triangle, centre_of, frames, coefficients, places):
+    """Blend Σ L_i p_i of the three corner polynomials, and its gradient.
+
+    points (n, 2); triangle (q, 3) corner points, centre_of (n,) row of each
+    point in frames (c, 2, 2) and coefficients (c, t, f); places (q, 2).
+    Returns values (q, f) and gradients (q, f, 2).
+    """
+    count, terms, fields = len(places), coefficients.shape[1], coefficients.shape[2]
+    values, gradients = np.zeros((count, fields)), np.zeros((count, fields, 2))
+    for q in prange(count):
+        a, b, c = triangle[q, 0], triangle[q, 1], triangle[q, 2]
+        ax, ay = points[a, 0], points[a, 1]
+        ux, uy, vx, vy = points[b, 0] - ax, points[b, 1] - ay, points[c, 0] - ax, points[c, 1] - ay
+        det = ux * vy - uy * vx
+        bx, by, cx, cy = vy / det, -vx / det, -uy / det, ux / det
+        dx, dy = places[q, 0] - ax, places[q, 1] - ay
+        lb, lc = bx * dx + by * dy, cx * dx + cy * dy
+        mono = np.empty(10)
+        for k in range(3):
+            p = triangle[q, k]
+            if k == 0:
+                weight, gx, gy = 1.0 - lb - lc, -bx - cx, -by - cy
+            elif k == 1:
+                weight, gx, gy = lb, bx, by
+            else:
+                weight, gx, gy = lc, cx, cy
+            j = centre_of[p]
+            dx, dy = places[q, 0] - points[p, 0], places[q, 1] - points[p, 1]
+            f00, f01, f10, f11 = frames[j, 0, 0], frames[j, 0, 1], frames[j, 1, 0], frames[j, 1, 1]
+            x, y = f00 * dx + f01 * dy, f10 * dx + f11 * dy
+            monomials(x, y, mono)
+            for f in range(fields):
+                value = 0.0
+                for i in range(terms):
+                    value += mono[i] * coefficients[j, i, f]
+                values[q, f] += weight * value
+                px = py = 0.0
+                if terms > 1:
+                    px, py = coefficients[j, 1, f], coefficients[j, 2, f]
+                if terms > 3:
+                    px += x * coefficients[j, 3, f] + y * coefficients[j, 4, f]
+                    py += x * coefficients[j, 4, f] + y * coefficients[j, 5, f]
+                if terms > 6:
+                    px += mono[3] * coefficients[j, 6, f] + mono[4] * coefficients[j, 7, f]
+                    px += mono[5] * coefficients[j, 8, f]
+                    py += mono[3] * coefficients[j, 7, f] + mono[4] * coefficients[j, 8, f]
+                    py += mono[5] * coefficients[j, 9, f]
+                gradients[q, f, 0] += gx * value + weight * (f00 * px + f10 * py)
+                gradients[q, f, 1] += gy * value + weight * (f01 * px + f11 * py)
+    return values, gradients

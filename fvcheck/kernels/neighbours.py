@@ -1,0 +1,151 @@
+"""The neighbourhood of a set of mesh points, grown by topology."""
+
+from __future__ import annotations
+
+import numpy as np
+from numba import njit, prange
+
+
+@njit(cache=True, parallel=True)
+def grow_rings(offsets, nodes, point_ring, rings):
+    """Cells within ``rings`` rings of the marked points, by streaming passes.
+
+    offsets (m+1,), nodes (k,) cells over points; point_ring (n,) uint8, 1 at the
+    marked points and 0 elsewhere, edited here: r+1 for points first reached by
+    ring r. Returns (m,) uint8: the ring of each cell, 0 for cells out of reach.
+    """
+    m = len(offsets) - 1
+    cell_ring = np.zeros(m, np.uint8)
+    for ring in range(1, rings + 1):
+        for c in prange(m):
+            if cell_ring[c] == 0:
+                for k in range(offsets[c], offsets[c + 1]):
+                    if point_ring[nodes[k]] != 0:
+                        cell_ring[c] = ring
+                        break
+        # Threads may mark a point twice, always with the same value.
+        for c in prange(m):
+            if cell_ring[c] == ring:
+                for k in range(offsets[c], offsets[c + 1]):
+                    if point_ring[nodes[k]] == 0:
+                        point_ring[nodes[k]] = ring + 1
+    return cell_ring
+
+
+@njit(cache=True)
+def extract_cells(offsets, nodes, cells, n_points):
+    """The chosen cells with points renumbered: (points (p,), offsets, nodes).
+
+    ``points`` gives the old number of each new point, in ascending order.
+    """
+    new = np.full(n_points, -1, np.int64)
+    length = 0
+    for j in range(len(cells)):
+        for k in range(offsets[cells[j]], offsets[cells[j] + 1]):
+            new[nodes[k]] = 0
+            length += 1
+    count = 0
+    for p in range(n_points):
+        if new[p] == 0:
+            new[p] = count
+            count += 1
+    points = np.empty(count, np.int64)
+    for p in range(n_points):
+        if new[p] >= 0:
+            points[new[p]] = p
+    out_offsets = np.zeros(len(cells) + 1, np.int64)
+    out_nodes = np.empty(length, np.int64)
+    at = 0
+    for j in range(len(cells)):
+        for k in range(offsets[cells[j]], offsets[cells[j] + 1]):
+            out_nodes[at] = new[nodes[k]]
+            at += 1
+        out_offsets[j + 1] = at
+    return points, out_offsets, out_nodes
+
+
+@njit(cache=True)
+def cells_of_points(offsets, nodes, n_points):
+    """Transpose of the cell → points table: (first (n+1,), cells)."""
+    first = np.zeros(n_points + 1, np.int64)
+    for k in range(len(nodes)):
+        first[nodes[k] + 1] += 1
+    for p in range(n_points):
+        first[p + 1] += first[p]
+    cells = np.empty(len(nodes), np.int64)
+    at = first[:-1].copy()
+    for c in range(len(offsets) - 1):
+        for k in range(offsets[c], offsets[c + 1]):
+            cells[at[nodes[k]]] = c
+            at[nodes[k]] += 1
+    return first, cells
+
+
+@njit(cache=True)
+def stencils(offsets, nodes, point_first, point_cells, centres, at_points, known, targets, rings):
+    """Data around each centre point, ring after ring, until there are enough.
+
+    centres (c,) points; at_points: the data live at points, else in cells;
+    known (n,) bool: points whose value is known beside cell data (walls);
+    targets (d,) wanted numbers of equations, ascending.
+
+    Returns (first (c+1,), entries, sizes (c, d)): ``entries[first[j]:first[j+1]]``
+    are point numbers, or cell numbers, or -1-p for the known value at point p.
+    The first ``sizes[j, k]`` of them, whole rings always, serve target k. The
+    centre itself is left out: its own value is interpolated.
+    """
+    count = len(centres)
+    n_points = len(point_first) - 1
+    seen_cell = np.full(len(offsets) - 1, -1, np.int64)
+    seen_point = np.full(n_points, -1, np.int64)
+    first = np.zeros(count + 1, np.int64)
+    entries = np.empty(64 * count + 64, np.int64)
+    sizes = np.zeros((count, len(targets)), np.int64)
+    used = 0
+    queue = np.empty(n_points, np.int64)
+    for j in range(count):
+        centre = centres[j]
+        queue[0] = centre
+        seen_point[centre] = j
+        low, high = 0, 1
+        start = used
+        reached = 0
+        for _ in range(rings):
+            old_high = high
+            for q in range(low, high):
+                p = queue[q]
+                for k in range(point_first[p], point_first[p + 1]):
+                    c = point_cells[k]
+                    if seen_cell[c] == j:
+                        continue
+                    seen_cell[c] = j
+                    if used + (offsets[c + 1] - offsets[c]) + 1 > len(entries):
+                        longer = np.empty(2 * len(entries) + 64, np.int64)
+                        longer[:used] = entries[:used]
+                        entries = longer
+                    if not at_points:
+                        entries[used] = c
+                        used += 1
+                    for i in range(offsets[c], offsets[c + 1]):
+                        other = nodes[i]
+                        if seen_point[other] == j:
+                            continue
+                        seen_point[other] = j
+                        queue[high] = other
+                        high += 1
+                        if at_points:
+                            entries[used] = other
+                            used += 1
+                        elif known[other]:
+                            entries[used] = -1 - other
+                            used += 1
+            low = old_high
+            while reached < len(targets) and used - start >= targets[reached]:
+                sizes[j, reached] = used - start
+                reached += 1
+            if reached == len(targets) or low == high:
+                break
+        for k in range(reached, len(targets)):
+            sizes[j, k] = used - start
+        first[j + 1] = used
+    return first, entries[:used], sizes

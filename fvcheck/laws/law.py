@@ -1,0 +1,78 @@
+"""A conservation law as data: what is stored, what crosses a surface, what is made inside.
+
+    d/dt ∫ b dV + ∮ [ b (u − w)·n + g·n ] dA − ∫ s dV = imbalance
+
+(Reynolds transport theorem; e.g. White, Fluid Mechanics, chapter 3; Batchelor,
+An Introduction to Fluid Dynamics, section 3.1.) A law is the triple (b, g, s)
+over a `State`; it knows nothing of meshes.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Mapping
+from dataclasses import dataclass, field
+
+import numpy as np
+
+from fvcheck.errors import SetupError, nearest
+from fvcheck.laws.state import State
+
+Array = np.ndarray
+
+
+@dataclass(frozen=True)
+class Law:
+    """One balance law.
+
+    components : ("x", "y") for a vector law, (None,) for a scalar one
+    unit : of the flux, per metre of depth
+    density : State -> b, (q, c) per volume
+    fluxes : part name -> (State, n) -> (q, c) non-convective flux through unit
+        normals n (q, 2), outward positive; None where the flow has no such part
+    source : State -> (q, c) per volume, or None when nothing is made inside
+    level : (State, n) -> (q, c) flux of a uniform state that no closed surface
+        can feel; left out of the scale
+    """
+
+    name: str
+    components: tuple[str | None, ...]
+    unit: str
+    density: Callable[[State], Array]
+    fluxes: Mapping[str, Callable[[State, Array], Array | None]] = field(default_factory=dict)
+    source: Callable[[State], Array | None] = lambda state: None
+    level: Callable[[State, Array], Array] | None = None
+    tolerance_percent: float = 1.0
+    summary: str = ""
+
+
+_LAWS: dict[str, Law] = {}
+
+
+def register(law: Law) -> Law:
+    """Make a law known under its name; a user's own law registers like the built-in ones."""
+    if law.name in _LAWS:
+        raise SetupError(f"a law named {law.name!r} is registered already", mend="Choose another name.")
+    _LAWS[law.name] = law
+    return law
+
+
+def law_names() -> tuple[str, ...]:
+    """Names of all registered laws, in the order of registration."""
+    return tuple(_LAWS)
+
+
+def find_law(name: str) -> Law:
+    """The law of that name; SetupError naming the nearest one otherwise."""
+    if name not in _LAWS:
+        raise SetupError(
+            f"unknown law {name!r}", mend=nearest(name, _LAWS) or f"Known laws: {', '.join(_LAWS)}."
+        )
+    return _LAWS[name]
+
+
+def convective(law: Law, state: State, n: Array, surface_velocity: Array | None) -> Array:
+    """(q, c) b (u − w)·n through unit normals n (q, 2)."""
+    relative = state.velocity[:, :2]
+    if surface_velocity is not None:
+        relative = relative - surface_velocity
+    return law.density(state) * np.einsum("qi,qi->q", relative, n)[:, None]

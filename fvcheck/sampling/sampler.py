@@ -1,0 +1,165 @@
+"""Compiled polynomial reconstruction: data at points or in cells → values and gradients anywhere.
+
+About each corner point of a triangle that is sampled stands a polynomial,
+fitted by weighted least squares to the data around it (design of the stencils:
+patch recovery, Zienkiewicz & Zhu 1992; Zhang & Naga 2005; cell averages enter
+through their moments, k-exact reconstruction, Barth & Frederickson 1990). In
+the triangle the three polynomials are blended with barycentric weights:
+continuous, exact for polynomials of the degree. Degree 1 is plain linear
+interpolation, of the point values or of values fitted to the cells around.
+
+Fits depend on geometry alone. They are compiled once and applied to any field
+of any time step; a blend of three is evaluated where it is needed, so the
+cost is that of the points, not of the quadrature.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from typing import NamedTuple
+
+import numpy as np
+
+from fvcheck.mesh.mesh import Mesh
+
+Array = np.ndarray
+
+DEGREES = (1, 2, 3)
+
+# Rings of cells a fit may reach for. Thin strips of cells need more than the
+# two or three of an open mesh; beyond this the data are too far to matter.
+_RINGS = 5
+
+# Equations wanted per unknown, to keep the fit from following single values.
+_SURPLUS = 1.5
+
+
+class NodeFits(NamedTuple):
+    """Fits of one degree: see `fvcheck.kernels.fits.fit_points`."""
+
+    row_first: Array
+    columns: Array
+    operator: Array
+    frames: Array
+    reached: Array
+
+
+@dataclass(frozen=True, eq=False)
+class Sampler:
+    """Fits about a set of mesh points, for data at one location.
+
+    points : (p, 2) points of the neighbourhood
+    centre_of : (n_mesh_points,) row of each fitted mesh point, -1 elsewhere
+    centre_points : (c,) fitted points, local numbers
+    local_points : (p,) mesh number of each local point
+    local_cells : (k,) mesh number of each local cell
+    known : (w,) local points with a known value beside cell data
+    fits : degree -> NodeFits; columns index ``[data…, known values…]``
+    """
+
+    location: str
+    mesh_points: Array
+    centre_of: Array
+    local_points: Array
+    local_cells: Array
+    known: Array
+    fits: dict[int, NodeFits]
+
+    @property
+    def sources(self) -> Array:
+        """Mesh points or cells whose data the fits use, in the order of their columns."""
+        return self.local_points if self.location == "point" else self.local_cells
+
+    def apply(self, degree: int, data: Array, known: Array | None = None) -> Array:
+        """Coefficients (c, terms, f) of the fits on data (n_mesh_points or n_mesh_cells, f).
+
+        known : (n_mesh_points, f) values at the points given to `compile_sampler` as known
+        """
+        from fvcheck.kernels.fits import apply_fits
+
+        fit = self.fits[degree]
+        column = np.asarray(data[self.sources], float)
+        if len(self.known):
+            assert known is not None
+            column = np.concatenate([column, known[self.local_points[self.known]]])
+        return apply_fits(fit.row_first, fit.columns, fit.operator, np.ascontiguousarray(column))
+
+    def evaluate(self, degree: int, coefficients: Array, triangle: Array, places: Array) -> tuple[Array, Array]:
+        """Values (q, f) and gradients (q, f, 2) at places (q, 2) in triangles (q, 3) of fitted mesh points."""
+        from fvcheck.kernels.fits import evaluate
+
+        frames = self.fits[degree].frames
+        return evaluate(self.mesh_points, triangle, self.centre_of, frames, coefficients, places)
+
+
+def compile_sampler(
+    mesh: Mesh,
+    centres: Array,
+    location: str,
+    *,
+    averages: bool = True,
+    known: Array | None = None,
+    degrees: tuple[int, ...] = DEGREES,
+) -> Sampler:
+    """Fit operators about ``centres`` ((c,) mesh points) for data at ``location`` ("point" or "cell").
+
+    averages : a cell value is the average over the cell; else the value at its centroid
+    known : (w,) mesh points whose value is known beside cell data (walls)
+    """
+    from fvcheck.kernels import fits, neighbours
+
+    mark = np.zeros(mesh.n_points, np.uint8)
+    mark[centres] = 1
+    cell_ring = neighbours.grow_rings(mesh.offsets, mesh.nodes, mark, _RINGS)
+    local_cells = np.flatnonzero(cell_ring)
+    local_points, local_offsets, local_nodes = neighbours.extract_cells(
+        mesh.offsets, mesh.nodes, local_cells, mesh.n_points
+    )
+    points = np.ascontiguousarray(mesh.points[local_points])
+    number = np.full(mesh.n_points, -1, np.int64)
+    number[local_points] = np.arange(len(local_points))
+    at_points = location == "point"
+    is_known = np.zeros(len(local_points), bool)
+    if known is not None and not at_points:
+        inside = number[known]
+        is_known[inside[inside >= 0]] = True
+    known_points = np.flatnonzero(is_known)
+
+    first, cells = neighbours.cells_of_points(local_offsets, local_nodes, len(local_points))
+    local_centres = number[centres]
+    targets = np.array([_wanted(degree, at_points) for degree in degrees])
+    stencil_first, entries, sizes = neighbours.stencils(
+        local_offsets, local_nodes, first, cells, local_centres, at_points, is_known, targets, _RINGS
+    )
+    known_column = np.full(len(local_points), -1, np.int64)
+    known_column[known_points] = len(local_cells) + np.arange(len(known_points))
+    compiled = {}
+    for k, degree in enumerate(degrees):
+        keep = 1 if degree == 1 else fits.TERMS[degree]
+        row_first, columns, operator, frames, reached = fits.fit_points(
+            points,
+            local_offsets,
+            local_nodes,
+            local_centres,
+            stencil_first,
+            entries,
+            np.ascontiguousarray(sizes[:, k]),
+            degree,
+            at_points,
+            averages,
+            is_known,
+            keep,
+        )
+        if not at_points:
+            columns = np.where(columns >= 0, columns, known_column[np.maximum(-1 - columns, 0)])
+        compiled[degree] = NodeFits(row_first, columns, operator, frames, reached)
+    centre_of = np.full(mesh.n_points, -1, np.int64)
+    centre_of[centres] = np.arange(len(centres))
+    return Sampler(location, mesh.points, centre_of, local_points, local_cells, known_points, compiled)
+
+
+def _wanted(degree: int, at_points: bool) -> int:
+    from fvcheck.kernels.fits import TERMS
+
+    unknowns = TERMS[degree] - (1 if at_points else 0)
+    return int(np.ceil(_SURPLUS * unknowns))
