@@ -81,7 +81,7 @@ def shape_measures(points, offsets, nodes):
             ax, ay = points[a, 0] - x0, points[a, 1] - y0
             bx, by = points[b, 0] - x0, points[b, 1] - y0
             twice += ax * by - bx * ay
-            length += np.hypot(bx - ax, by - ay)
+            length += np.sqrt((bx - ax) ** 2 + (by - ay) ** 2)
             largest = max(largest, max(abs(points[a, 0]), abs(points[a, 1])))
         area[i], perimeter[i], size[i] = 0.5 * twice, length, largest
     return area, perimeter, size

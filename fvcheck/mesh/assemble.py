@@ -12,9 +12,10 @@ from fvcheck.hints import Hint
 from fvcheck.mesh.boundary import is_hole, walks
 from fvcheck.mesh.celltypes import polygons_of
 from fvcheck.mesh.claims import FACE, LINE, collect
+from fvcheck.mesh.edges import Edges, edges_of
 from fvcheck.mesh.extrusion import flatten
 from fvcheck.mesh.finder import Finder
-from fvcheck.mesh.gather import Polygons, Raw, expand_cells, gather
+from fvcheck.mesh.gather import Polygons, expand_cells, gather
 from fvcheck.mesh.hanging import insert_hanging
 from fvcheck.mesh.mesh import Boundary, Mesh
 from fvcheck.mesh.piece import Piece
@@ -84,48 +85,50 @@ def assemble(pieces: Sequence[Piece], *, plane: str = "auto", keep_centres: bool
     points = where.coordinates(raw.points)
     cells = tidy(points, cells, raw.precision, hints, flat_file=not solid)
     claims = collect(pieces, raw, front)
-    seams = stitch(points, cells, raw, pieces, claims, hints)
+    edges = edges_of(cells, len(points))
+    seams = stitch(points, cells, edges, raw, pieces, claims, hints)
     number, finder = seams.number, seams.finder
     if (number != np.arange(len(number))).any():
         merged = Polygons(cells.offsets, number[cells.nodes], cells.source)
         cells = tidy(points, merged, raw.precision, hints, flat_file=False)
-    cells = insert_hanging(points, cells, finder, number, raw.precision, hints)
-    mesh, point_source = _mesh(points, cells, raw, finder, number, hints)
+        edges = edges_of(cells, len(points))
+    filled = insert_hanging(points, cells, edges, finder, number, raw.precision, hints)
+    if filled is not cells:
+        cells, edges = filled, edges_of(filled, len(points))
+    mesh, point_source = _mesh(points, cells, edges, finder, number, hints)
     return Assembly(
         mesh, point_source, cells.source, where.name, where.axes, where.origin, thickness, tuple(hints)
     )
 
 
 def _mesh(
-    points: Array, cells: Polygons, raw: Raw, finder: Finder, number: Array, hints: list[Hint]
+    points: Array, cells: Polygons, edges: Edges, finder: Finder, number: Array, hints: list[Hint]
 ) -> tuple[Mesh, Array]:
     """Number the points, find the boundary and its patches."""
-    from fvcheck.kernels.edges import ALONE, CROWDED, half_edges, twins
+    from fvcheck.kernels.edges import CROWDED
     from fvcheck.kernels.polygons import renumber
 
-    cell, end = half_edges(cells.offsets, cells.nodes)
-    twin = twins(cells.nodes, end, len(points))
-    if (twin == CROWDED).any():
-        h = int(np.argmax(twin == CROWDED))
+    cell, end, open_ = edges.cell, edges.end, edges.open
+    if (edges.twin == CROWDED).any():
+        h = int(np.argmax(edges.twin == CROWDED))
         x, y = 0.5 * (points[cells.nodes[h]] + points[end[h]])
         raise MeshError(
             f"cells overlap: an edge of cell {cells.source[cell[h]]} has more than one cell on a side",
             where=f"near x = {x:.6g}, y = {y:.6g}",
             mend="Leave out blocks that lie on one another, or repair the mesh.",
         )
-    open_ = twin == ALONE
     start, end, owner = cells.nodes[open_], end[open_], cell[open_]
     patch, met = finder.find(start, end, number)
     _hint_unmet(finder, met, hints)
     new_number, source, nodes = renumber(cells.nodes, len(points))
-    edges = np.column_stack([new_number[start], new_number[end]])
+    rim = np.column_stack([new_number[start], new_number[end]])
     xy = np.ascontiguousarray(points[source])
     present = [name for i, name in enumerate(finder.claims.names) if (patch == i).any()]
     index = np.array([present.index(n) if n in present else -1 for n in finder.claims.names] + [-1])
-    patch, names = name_all(xy, edges, index[patch], present)
+    patch, names = name_all(xy, rim, index[patch], present)
     kinds = {name: kind for name, kind in finder.claims.kinds.items() if name in names}
-    boundary = Boundary(edges, owner, patch, names)
-    bodies = _bodies(xy, edges, patch, names)
+    boundary = Boundary(rim, owner, patch, names)
+    bodies = _bodies(xy, rim, patch, names)
     return Mesh(xy, cells.offsets, nodes, boundary, bodies, kinds), source
 
 

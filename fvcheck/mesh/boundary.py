@@ -72,7 +72,7 @@ def is_hole(points: Array) -> bool:
     """
     extent = float(np.ptp(points, axis=0).max())
     rounding = 8 * np.finfo(float).eps * (extent + float(np.abs(points).max())) * extent * len(points)
-    return ring_area(points) <= rounding
+    return bool(ring_area(points) <= rounding)
 
 
 def lowest_left(points: Array, bounds: tuple[float, float, float, float]) -> tuple[int, int]:

@@ -6,6 +6,7 @@ Node orders after the public description of the VTK file formats
 
 from __future__ import annotations
 
+from itertools import pairwise
 from math import isqrt
 
 import numpy as np
@@ -142,7 +143,7 @@ def segments_of(kind: int, size: int) -> list[Part]:
         path = list(range(size))
     else:  # ends first, then the nodes between them
         path = [0, *range(2, size), 1]
-    return [list(pair) for pair in zip(path[:-1], path[1:])]
+    return [list(pair) for pair in pairwise(path)]
 
 
 def _prism(n: int) -> list[Part]:

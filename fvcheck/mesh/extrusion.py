@@ -30,7 +30,7 @@ _FRONT, _BACK, _BETWEEN, _ELSEWHERE = 0, 1, 2, 3
 
 @dataclass(frozen=True, eq=False)
 class Layer:
-    """The front plane of a one-cell-thick export: its cells, which raw points lie in it, and the thickness."""
+    """The front plane of a one-cell-thick export: its cells, which raw points lie in it, the thickness."""
 
     plane: Plane
     cells: Polygons
@@ -187,7 +187,7 @@ def _front_cells(raw: Raw, cells: Array, faces: _AllFaces, side: Array) -> Polyg
     empty = np.diff(offsets) == 0
     if empty.any():
         raise MeshError(
-            f"cell {source[np.argmax(empty)]} does not reach from the front to the back plane with one face in each",
+            f"cell {source[np.argmax(empty)]} does not have one face in the front and one in the back plane",
             mend=_ADVICE,
         )
     return Polygons(offsets, nodes, source)

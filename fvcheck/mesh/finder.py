@@ -37,22 +37,22 @@ class Finder:
         claims, n = self.claims, len(number)
         group_of = np.full(n, -1, np.int64)
         group_of[number[self.used]] = self.group[self.used]
-        start_group, end_group = group_of[start], group_of[end]
         patch = np.full(len(start), -1, np.int64)
         met = np.zeros(len(claims.ends), bool)
         own = self.used[claims.ends].all(axis=1) if len(met) else met
         for origin in (FACE, LINE):
             for by_point in (True, False):
                 rows = np.flatnonzero((claims.origin == origin) & (own == by_point))
-                if by_point:
-                    wanted = _keys(*number[claims.ends[rows]].T, n)
-                    edges = _keys(start, end, n)
-                else:
+                if not by_point:
                     rows = rows[(self.place[claims.ends[rows]] >= 0).all(axis=1)]
-                    wanted = _keys(*self.place[claims.ends[rows]].T, n)
-                    edges = _keys(start_group, end_group, n)
                 if len(rows) == 0:
                     continue
+                if by_point:
+                    wanted = _keys(number[claims.ends[rows]], n)
+                    edges = _keys(np.column_stack([start, end]), n)
+                else:
+                    wanted = _keys(self.place[claims.ends[rows]], n)
+                    edges = _keys(np.column_stack([group_of[start], group_of[end]]), n)
                 met[rows] = np.isin(wanted, edges)
                 rows, wanted = rows[claims.patch[rows] >= 0], wanted[claims.patch[rows] >= 0]
                 if len(rows) == 0:
@@ -76,5 +76,6 @@ class Finder:
             patch[all_in & (patch < 0)] = name
 
 
-def _keys(a: Array, b: Array, n: int) -> Array:
-    return np.minimum(a, b) * n + np.maximum(a, b)
+def _keys(ends: Array, n: int) -> Array:
+    """One number for each pair (e, 2) of numbers below n, the same both ways round."""
+    return np.minimum(ends[:, 0], ends[:, 1]) * n + np.maximum(ends[:, 0], ends[:, 1])

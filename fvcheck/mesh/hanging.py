@@ -5,6 +5,7 @@ from __future__ import annotations
 import numpy as np
 
 from fvcheck.hints import Hint
+from fvcheck.mesh.edges import Edges, points_of
 from fvcheck.mesh.finder import Finder
 from fvcheck.mesh.gather import Polygons
 from fvcheck.mesh.stitch import NEAR, SPACINGS
@@ -16,19 +17,23 @@ _BATCH = 4_000_000
 
 
 def insert_hanging(
-    points: Array, cells: Polygons, finder: Finder, number: Array, precision: float, hints: list[Hint]
+    points: Array,
+    cells: Polygons,
+    edges: Edges,
+    finder: Finder,
+    number: Array,
+    precision: float,
+    hints: list[Hint],
 ) -> Polygons:
     """Put points that lie on an open edge of a cell into that cell's outline.
 
     Edges that belong to a patch of the file are walls and stay as they are. Adds
     the hint "hanging-nodes".
     """
-    from fvcheck.kernels.edges import ALONE, half_edges, twins
     from fvcheck.kernels.polygons import insert_nodes
 
-    cell, end = half_edges(cells.offsets, cells.nodes)
-    alone = np.flatnonzero(twins(cells.nodes, end, len(points)) == ALONE)
-    rim = np.unique(cells.nodes[alone])
+    cell, end, alone = edges.cell, edges.end, edges.open
+    rim = points_of(cells.nodes[alone], len(points))
     patch, _ = finder.find(cells.nodes[alone], end[alone], number)
     alone = alone[patch < 0]
     edge, node, along = _on_edges(points, cells.nodes[alone], end[alone], rim, precision)

@@ -57,7 +57,7 @@ def rotated_axes(normal: Array) -> Array:
 
 
 def slack(points: Array, precision: float) -> float:
-    """Distance within which points count as coplanar: `FLAT` of the extent, or rounding of far-off coordinates."""
+    """Distance within which points are coplanar: `FLAT` of the extent, and rounding far from the origin."""
     extent = float(np.ptp(points, axis=0).max())
     return FLAT * extent + 8 * precision * float(np.abs(points).max())
 
@@ -84,8 +84,8 @@ def plane_of(points: Array, wanted: str, precision: float) -> Plane:
             return at_level(name, AXES[name], middle * AXES[name][2, column])
     if wanted != "auto":
         raise MeshError(
-            f"the cells do not lie in the {wanted} plane: they extend over {spread[NORMAL_COLUMN[wanted]]:.6g}"
-            " normal to it",
+            f"the cells do not lie in the {wanted} plane:"
+            f" they extend over {spread[NORMAL_COLUMN[wanted]]:.6g} normal to it",
             mend="Leave out the plane option, or name the plane of the run.",
         )
     axes = rotated_axes(main_directions(points)[0])

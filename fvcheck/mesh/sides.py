@@ -32,7 +32,8 @@ def name_all(
         return patch, tuple(out)
     low, high = points.min(axis=0), points.max(axis=0)
     bounds = (float(low[0]), float(low[1]), float(high[0]), float(high[1]))
-    inner, outer = [], []
+    inner: list[tuple[Array, bool]] = []
+    outer: list[tuple[Array, bool]] = []
     for chain, closed in walks(edges, points):
         hole = closed and is_hole(points[edges[chain, 0]])
         (inner if hole else outer).append((chain, closed))

@@ -18,6 +18,7 @@ import numpy as np
 
 from fvcheck.hints import Hint
 from fvcheck.mesh.claims import Claims
+from fvcheck.mesh.edges import Edges, points_of
 from fvcheck.mesh.finder import Finder
 from fvcheck.mesh.gather import Polygons, Raw
 from fvcheck.mesh.piece import Piece
@@ -38,7 +39,13 @@ class Seams:
 
 
 def stitch(
-    points: Array, cells: Polygons, raw: Raw, pieces: Sequence[Piece], claims: Claims, hints: list[Hint]
+    points: Array,
+    cells: Polygons,
+    edges: Edges,
+    raw: Raw,
+    pieces: Sequence[Piece],
+    claims: Claims,
+    hints: list[Hint],
 ) -> Seams:
     """Find and merge coincident points on open edges.
 
@@ -47,15 +54,12 @@ def stitch(
     differ beyond rounding. Adds the hints "stitched-points" and
     "kept-apart-points".
     """
-    from fvcheck.kernels.edges import ALONE, half_edges, twins
+    from fvcheck.kernels.edges import twins
     from fvcheck.kernels.merging import groups
 
     n = len(points)
-    start = cells.nodes
-    _, end = half_edges(cells.offsets, cells.nodes)
-    alone = twins(start, end, n) == ALONE
-    start, end = start[alone], end[alone]
-    rim = np.unique(start)
+    start, end = cells.nodes[edges.open], edges.end[edges.open]
+    rim = points_of(start, n)
     tolerance, shortest = _tolerances(points, start, end, rim, raw.precision)
     group, far = _coincident(points, start, end, rim, tolerance)
     used = np.zeros(n, bool)
@@ -82,7 +86,7 @@ def stitch(
     guarded = np.zeros(n, bool)
     guarded[a[apart]] = guarded[b[apart]] = True
     # Points that meet without a common edge (block corners, ends of uneven seams) merge as well.
-    free = rim[~guarded[rim] & (rim_group != -1)]
+    free = rim[~guarded[rim]]
     leader = np.full(n, n, np.int64)
     np.minimum.at(leader, group[free], free)
     meets = leader[group[free]]
@@ -99,13 +103,12 @@ def stitch(
                 f" (tolerance {tolerance.min():.3g} to {tolerance.max():.3g})",
             )
         )
-    kept = np.unique(number[rim])
-    kept = int(len(kept) - len(np.unique(group[kept])))
+    kept = len(points_of(number[rim], n)) - len(points_of(rim_group, n))
     if kept:
         hints.append(
             Hint(
                 "kept-apart-points",
-                f"{kept} points lie on another one and are kept apart: two sides of a wall, or differing data",
+                f"{kept} points lie on another and are kept apart: two sides of a wall, or differing data",
             )
         )
     return Seams(number, finder)
@@ -140,7 +143,7 @@ def _coincident(points: Array, start: Array, end: Array, rim: Array, tolerance: 
     real = a != b
     a, b = a[real], b[real]
     open_ = twins(a, b, n) == ALONE
-    left = np.unique(np.concatenate([a[open_], b[open_]]))
+    left = points_of(np.concatenate([a[open_], b[open_]]), n)
     if len(left) < 2:
         return group, 0.0
     reach = np.zeros(n)
@@ -150,7 +153,7 @@ def _coincident(points: Array, start: Array, end: Array, rim: Array, tolerance: 
     many = min(8, len(left))
     distance, other = tree.query(points[left], k=many, distance_upper_bound=float(reach.max()) * (1 + 1e-12))
     me = np.repeat(np.arange(len(left)), many)
-    distance, other = distance.reshape(-1), other.reshape(-1)
+    distance, other = np.ravel(distance), np.ravel(other)
     good = other < len(left)
     me, distance, other = me[good], distance[good], other[good]
     good = (me < other) & (distance <= np.minimum(reach[me], reach[other]))
@@ -169,10 +172,11 @@ def _places(points: Array, claims: Claims, used: Array, rim: Array, group: Array
 
     place = np.full(len(points), -1, np.int64)
     place[used] = group[used]
-    claimed = np.unique(np.concatenate([claims.ends.reshape(-1), *(ids for _, ids in claims.vertices)]))
+    claimed = np.concatenate([claims.ends.reshape(-1), *(ids for _, ids in claims.vertices)])
+    claimed = points_of(claimed, len(points))
     claimed = claimed[~used[claimed]]
     if len(claimed) and len(rim):
-        distance, nearest = cKDTree(points[rim]).query(points[claimed])
+        distance, nearest = map(np.atleast_1d, cKDTree(points[rim]).query(points[claimed]))
         good = distance <= 1e-3 * shortest[nearest]
         place[claimed[good]] = group[rim[nearest[good]]]
     return place
