@@ -115,6 +115,12 @@ SUSPECTS = {
 _FAMILIES = ("xyz", "012", "uvw")
 
 
+def is_role(role: str) -> bool:
+    """One of `ROLES`, ``scalar:NAME``, or ``rate:`` before either?"""
+    base = role.removeprefix("rate:")
+    return base in ROLES or (base.startswith("scalar:") and base != "scalar:")
+
+
 def is_vector(role: str) -> bool:
     """Does the role (``rate:`` left aside) stand for a vector?"""
     return role.removeprefix("rate:") in VECTORS

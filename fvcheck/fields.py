@@ -9,7 +9,7 @@ import numpy as np
 
 from fvcheck.arrays import LOCATIONS, Arrays, Candidate, Data, Field, Location
 from fvcheck.errors import FieldError, nearest
-from fvcheck.fieldnames import ROLES, SUSPECTS, WHOLE, group_parts, is_vector, key, slot_of
+from fvcheck.fieldnames import ROLES, SUSPECTS, WHOLE, group_parts, is_role, is_vector, key, slot_of
 from fvcheck.hints import Hint
 
 __all__ = ["ROLES", "ArrayRow", "Field", "choose_fields", "describe"]
@@ -148,12 +148,10 @@ def _slots(data: Arrays, role: str, location: Location, names: tuple[str, ...]) 
 
 
 def _check_role(role: str) -> None:
-    base = role.removeprefix("rate:")
-    if base not in ROLES and not (base.startswith("scalar:") and base != "scalar:"):
-        raise FieldError(
-            f"There is no role {role!r}",
-            mend=f"{nearest(base, ROLES)} Roles: {', '.join(ROLES)}, scalar:NAME, rate:ROLE.",
-        )
+    if not is_role(role):
+        close = nearest(role.removeprefix("rate:"), ROLES)
+        known = f"Roles: {', '.join(ROLES)}, scalar:NAME, rate:ROLE."
+        raise FieldError(f"There is no role {role!r}", mend=f"{close} {known}")
 
 
 def _missing(data: Arrays, role: str, names: tuple[str, ...], location: Location | None) -> FieldError:

@@ -1,0 +1,312 @@
+"""What a check file may hold: one model per table, each key with what it expects.
+
+This module needs pydantic from the start; import it inside functions only.
+The description of a key is the text that an error shows as "expected".
+"""
+
+from __future__ import annotations
+
+import re
+from collections.abc import Iterator
+from dataclasses import replace
+from pathlib import Path
+from typing import TYPE_CHECKING, Annotated, Literal
+
+from pydantic import BaseModel, ConfigDict, Field, PrivateAttr, Strict, field_validator, model_validator
+
+from fvcheck.errors import FvcheckError, SetupError, nearest
+from fvcheck.fieldnames import ROLES, is_role
+
+if TYPE_CHECKING:
+    from fvcheck.surfaces import ControlSurface
+
+# TOML has lists only; inside them numbers stay strict.
+Pair = Annotated[tuple[float, float], Strict(False)]
+Names = Annotated[tuple[str, ...], Strict(False)]
+Positive = Annotated[float, Field(gt=0)]
+Percent = Annotated[float, Field(ge=0)]
+
+NUMBER = "a number"
+POSITIVE = "a number above zero"
+PERCENT = "a percentage, zero or more"
+TEXT = "a text"
+VALUE = "a number or the name of an array"
+
+
+class Table(BaseModel):
+    """Base of all tables: no unknown keys, no conversions, no NaN or infinity, no later changes."""
+
+    model_config = ConfigDict(extra="forbid", strict=True, frozen=True, allow_inf_nan=False)
+
+
+class Case(Table):
+    """[case]: the export, and how to read it."""
+
+    file: str | Names | None = Field(default=None, description="a path, a pattern, or a list of them")
+    plane: Literal["auto", "xy", "xz", "yz"] = Field(default="auto", description='"auto", "xy", "xz" or "yz"')
+    cell_values: Literal["average", "centroid"] = Field(
+        default="average", description='"average" or "centroid"'
+    )
+    symmetry: Literal["planar", "axisymmetric"] = Field(
+        default="planar", description='"planar" or "axisymmetric"'
+    )
+    depth: Positive | None = Field(default=None, description=POSITIVE)
+    step: Annotated[int, Field(ge=0)] | Literal["last", "all"] = Field(
+        default="last", description='a step from 0 on, "last" or "all"'
+    )
+
+
+class FluidTable(Table):
+    """[fluid]: the keys of `fvcheck.Fluid`; the keys given are ``model_dump(exclude_unset=True)``."""
+
+    model: Literal["constant-density", "ideal-gas"] | None = Field(
+        default=None, description='"constant-density" or "ideal-gas"'
+    )
+    density: float | str | None = Field(default=None, description=VALUE)
+    viscosity: float | str | None = Field(default=None, description=VALUE)
+    conductivity: float | str | None = Field(default=None, description=VALUE)
+    specific_heat: float | None = Field(default=None, description=NUMBER)
+    gas_constant: float | None = Field(default=None, description=NUMBER)
+    gamma: float | None = Field(default=None, description=NUMBER)
+    expansion: float | None = Field(default=None, description=NUMBER)
+    reference_temperature: float | None = Field(default=None, description=NUMBER)
+    pressure_kind: Literal["static", "kinematic", "reduced"] = Field(
+        default="static", description='"static", "kinematic" or "reduced"'
+    )
+    viscous_heating: bool = Field(default=False, description="true or false")
+    gravity: Pair = Field(default=(0.0, 0.0), description="a list of two numbers")
+
+
+class Patches(Table):
+    """[patches]: no-slip walls, at rest and moving."""
+
+    wall: Names = Field(default=(), description="a list of patch names")
+    moving_wall: dict[str, Pair] = Field(
+        default={}, description="patch names with their velocity, { NAME = [VX, VY] }"
+    )
+
+
+class SurfaceEntry(Table):
+    """[[surface]]: a control surface as the command line spells it."""
+
+    name: str = Field("", description=TEXT)
+    shape: str = Field(description='a shape such as "box(0, 0, 1, 1)"')
+
+
+class SourceEntry(Table):
+    """[[source]]: what enters a volume otherwise; ``rate`` is the total, in the law's unit."""
+
+    law: str = Field(description="the name of a law")
+    shape: str = Field(description='a shape such as "box(0, 0, 1, 1)"')
+    rate: float | Pair = Field(description="a number, or a list of two for momentum")
+
+
+class Reference(Table):
+    """Reference values of force coefficients."""
+
+    velocity: Positive = Field(description=POSITIVE)
+    length: Positive = Field(description=POSITIVE)
+    density: Positive = Field(description=POSITIVE)
+
+
+class BodyEntry(Table):
+    """[[body]]: a body whose forces are wanted."""
+
+    name: str = Field(description="the name of a patch")
+    reference: Reference | None = Field(default=None, description="{ velocity = …, length = …, density = … }")
+
+
+class Limit(Table):
+    """What a quantity may be: between ``min`` and ``max``, and within a tolerance of ``value``."""
+
+    min: float | None = Field(default=None, description=NUMBER)
+    max: float | None = Field(default=None, description=NUMBER)
+    value: float | None = Field(default=None, description=NUMBER)
+    tolerance: Percent | None = Field(
+        default=None, description="a number, zero or more, in the unit of the value"
+    )
+    tolerance_percent: Percent | None = Field(default=None, description=PERCENT)
+
+    @model_validator(mode="after")
+    def _says_something(self) -> Limit:
+        tolerances = (self.tolerance, self.tolerance_percent)
+        if self.value is None and self.min is None and self.max is None:
+            raise ValueError(
+                "no limit is given; write { max = … }, { min = … } or { value = …, tolerance = … }"
+            )
+        if (self.value is not None) != any(t is not None for t in tolerances) or None not in tolerances:
+            raise ValueError("value goes with either tolerance or tolerance_percent")
+        if self.min is not None and self.max is not None and self.min > self.max:
+            raise ValueError("min is above max")
+        return self
+
+    def holds(self, number: float) -> bool:
+        """Does the number keep the limits? Bounds count as kept; NaN never is."""
+        if self.value is not None:
+            allowed = self.tolerance if self.tolerance is not None else 0.0
+            if self.tolerance_percent is not None:
+                allowed = abs(self.value) * self.tolerance_percent / 100
+            if not abs(number - self.value) <= allowed:
+                return False
+        above = self.min is None or number >= self.min
+        return above and (self.max is None or number <= self.max)
+
+
+LIMIT = "limits such as { max = 0.1 } or { value = 1.2, tolerance_percent = 2.0 }"
+METHODS = ("body-surface", "control-surface", "band", "wake", "circulation")
+LEDGER = (
+    "imbalance_percent",
+    "imbalance",
+    "flux",
+    "inflow",
+    "outflow",
+    "boundary",
+    "storage",
+    "source",
+    "sampling_band",
+    "resolution_band",
+)
+FORCES = ("drag", "lift", "moment")
+
+
+class Expectation(Table):
+    """[[expect]]: limits on one row of the ledger, or on the forces on one body.
+
+    ``verdict`` demands that the row's verdict is this one.
+    """
+
+    surface: str | None = Field(default=None, description="the name of a surface")
+    law: str | None = Field(default=None, description="the name of a law")
+    component: Literal["x", "y", "z"] | None = Field(default=None, description='"x", "y" or "z"')
+    verdict: Literal["closed", "undecided", "mesh-limited", "open"] | None = Field(
+        default=None, description='"closed", "undecided", "mesh-limited" or "open"'
+    )
+    imbalance_percent: Limit | None = Field(default=None, description=LIMIT)
+    imbalance: Limit | None = Field(default=None, description=LIMIT)
+    flux: Limit | None = Field(default=None, description=LIMIT)
+    inflow: Limit | None = Field(default=None, description=LIMIT)
+    outflow: Limit | None = Field(default=None, description=LIMIT)
+    boundary: Limit | None = Field(default=None, description=LIMIT)
+    storage: Limit | None = Field(default=None, description=LIMIT)
+    source: Limit | None = Field(default=None, description=LIMIT)
+    sampling_band: Limit | None = Field(default=None, description=LIMIT)
+    resolution_band: Limit | None = Field(default=None, description=LIMIT)
+    body: str | None = Field(default=None, description="the name of a body")
+    method: Literal["body-surface", "control-surface", "band", "wake", "circulation"] | None = Field(
+        default=None, description=", ".join(f'"{method}"' for method in METHODS)
+    )
+    drag: Limit | None = Field(default=None, description=LIMIT)
+    lift: Limit | None = Field(default=None, description=LIMIT)
+    moment: Limit | None = Field(default=None, description=LIMIT)
+
+    @model_validator(mode="after")
+    def _is_about_one_thing(self) -> Expectation:
+        if (self.surface is None) == (self.body is None):
+            raise ValueError("an expectation is about either a surface or a body")
+        if self.surface is not None and self.law is None:
+            raise ValueError("an expectation about a surface needs its law")
+        foreign = (
+            ("method", *FORCES) if self.surface is not None else ("law", "component", "verdict", *LEDGER)
+        )
+        for key in foreign:
+            if getattr(self, key) is not None:
+                raise ValueError(
+                    f"{key} does not go with {'surface' if self.surface is not None else 'body'}"
+                )
+        if self.verdict is None and not self.limits:
+            raise ValueError("nothing is expected; add for example imbalance_percent = { max = 0.1 }")
+        return self
+
+    @property
+    def limits(self) -> dict[str, Limit]:
+        """Quantity -> its limits, of those that are given."""
+        pairs = ((key, getattr(self, key)) for key in (*LEDGER, *FORCES))
+        return {key: limit for key, limit in pairs if limit is not None}
+
+
+class Baseline(Table):
+    """[baseline]: an earlier result that this one has to agree with."""
+
+    file: str = Field(description="the path of a result file")
+    tolerance_percent: Percent = Field(description=PERCENT)
+
+
+class CheckFile(Table):
+    """A whole check file; paths in it are relative to its own folder."""
+
+    case: Case = Field(default=Case(), description="a table")
+    fluid: FluidTable = Field(default=FluidTable(), description="a table")
+    fields: dict[str, str | Names] = Field(
+        default={}, description="the name of an array, or a list of components"
+    )
+    patches: Patches = Field(default=Patches(), description="a table")
+    surface: tuple[SurfaceEntry, ...] = Field(default=(), description="[[surface]] tables", strict=False)
+    source: tuple[SourceEntry, ...] = Field(default=(), description="[[source]] tables", strict=False)
+    body: tuple[BodyEntry, ...] = Field(default=(), description="[[body]] tables", strict=False)
+    tolerance: dict[str, Percent] = Field(default={}, description=PERCENT)
+    expect: tuple[Expectation, ...] = Field(default=(), description="[[expect]] tables", strict=False)
+    baseline: Baseline | None = Field(default=None, description="a table")
+    _path: Path = PrivateAttr(Path())
+
+    @field_validator("fields")
+    @classmethod
+    def _roles_exist(cls, told: dict[str, str | tuple[str, ...]]) -> dict[str, str | tuple[str, ...]]:
+        for role in told:
+            if not is_role(role):
+                known = f"roles: {', '.join(ROLES)}, scalar:NAME, rate:ROLE"
+                raise ValueError(f"there is no role {role!r}; {nearest(role, ROLES) or known}")
+        return told
+
+    @property
+    def path(self) -> Path:
+        """The check file itself."""
+        return self._path
+
+    @property
+    def folder(self) -> Path:
+        """Where relative paths start."""
+        return self._path.parent
+
+    def case_files(self) -> tuple[Path, ...]:
+        """Exports named by [case] file, patterns expanded, run_2 before run_10.
+
+        SetupError if there is none, or a pattern meets nothing.
+        """
+        given = self.case.file
+        spellings = () if given is None else (given,) if isinstance(given, str) else given
+        if not spellings:
+            raise SetupError(
+                "No export is named", where=f"{self._path}, [case]", mend='Add file = "run.vtu" or the like.'
+            )
+        return tuple(path for spelling in spellings for path in self._expand(spelling))
+
+    def _expand(self, spelling: str) -> Iterator[Path]:
+        from glob import glob
+
+        path = self.folder / spelling
+        if path.exists() or not re.search(r"[*?[]", spelling):
+            yield path  # a missing file is the reader's error
+            return
+        found = sorted(map(Path, glob(str(path), recursive=True)), key=_natural)
+        if not found:
+            raise SetupError(f"The pattern {spelling!r} meets no file", where=f"{self._path}, [case] file")
+        yield from found
+
+    def control_surfaces(self) -> tuple[ControlSurface, ...]:
+        """The [[surface]] entries drawn, each with a name of its own; SurfaceError names the entry."""
+        from fvcheck.surfaces import ControlSurface, name_all
+
+        drawn = []
+        for number, entry in enumerate(self.surface, start=1):
+            try:
+                surface = ControlSurface.parse(entry.shape, base=self.folder)
+                drawn.append(replace(surface, name=entry.name) if entry.name else surface)
+            except FvcheckError as error:
+                where = f"{self._path}, [[surface]] {number}: {error.where or entry.shape}"
+                raise type(error)(error.what, where=where, mend=error.mend) from None
+        return name_all(drawn)
+
+
+def _natural(path: Path) -> list[tuple[int, str]]:
+    """Sort key that takes runs of digits as numbers."""
+    return [(int(part), "") if part.isdecimal() else (0, part) for part in re.split(r"(\d+)", str(path))]
