@@ -68,4 +68,9 @@ PAGES: dict[str, Page] = {
         "Such values have no single number per point or cell, so the array is left out.",
         "Export it at points or as one value per cell if a law needs it.",
     ),
+    "no-line-end": Page(
+        "A text file does not end with a line end.",
+        "A file that was cut within its last number reads without an error, but that number is wrong.",
+        "Compare its size with the original; export in binary form.",
+    ),
 }

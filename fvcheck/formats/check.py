@@ -13,13 +13,16 @@ import numpy as np
 from fvcheck.errors import FormatError
 from fvcheck.mesh.piece import Array, Faces, NamedFaces, Piece
 
+DAMAGED = "The file is damaged or incomplete; export it again."
 # Cell types of the VTK file formats (https://docs.vtk.org, "VTK File Formats") and
 # their node counts: the linear, quadratic and biquadratic cells of fixed size.
+# fmt: off
 NODE_COUNTS = {
-    **{1: 1, 3: 2, 5: 3, 8: 4, 9: 4, 10: 4, 11: 8, 12: 8, 13: 6, 14: 5, 15: 10, 16: 12},
-    **{21: 3, 22: 6, 23: 8, 24: 10, 25: 20, 26: 15, 27: 13, 28: 9, 29: 27, 30: 6, 31: 12},
-    **{32: 18, 33: 24, 34: 7, 35: 4, 37: 19},
+    1: 1, 3: 2, 5: 3, 8: 4, 9: 4, 10: 4, 11: 8, 12: 8, 13: 6, 14: 5, 15: 10, 16: 12,
+    21: 3, 22: 6, 23: 8, 24: 10, 25: 20, 26: 15, 27: 13, 28: 9, 29: 27, 30: 6, 31: 12,
+    32: 18, 33: 24, 34: 7, 35: 4, 37: 19,
 }
+# fmt: on
 # Types of any size and the least number of nodes: poly vertex, poly line, triangle strip,
 # polygon, quadratic polygon, polyhedron.
 LEAST_COUNTS = {2: 1, 4: 2, 6: 3, 7: 3, 36: 6, 42: 4}
@@ -59,7 +62,9 @@ def check_piece(piece: Piece, where: object) -> Piece:
 def _points(points: Array, spot: str) -> Array:
     points = np.asarray(points)
     if points.ndim != 2 or points.shape[1] != 3:
-        raise FormatError(f"the points have the shape {points.shape} instead of (n, 3)", where=spot)
+        raise FormatError(
+            f"the points have the shape {points.shape} instead of (n, 3)", where=spot, mend=DAMAGED
+        )
     if len(points) == 0:
         raise FormatError("there are no points", where=spot, mend="Export the mesh with its points.")
     if points.dtype.kind != "f":
@@ -70,7 +75,9 @@ def _points(points: Array, spot: str) -> Array:
     finite = np.isfinite(points).all(axis=1)
     if not finite.all():
         first = int(np.argmin(finite))
-        raise FormatError(f"point {first} has a coordinate that is no finite number", where=spot)
+        raise FormatError(
+            f"point {first} has a coordinate that is no finite number", where=spot, mend=DAMAGED
+        )
     return points
 
 
@@ -92,24 +99,26 @@ def _types(types: Array, spot: str) -> Array:
 def _offsets(offsets: Array, count: int, total: int, what: str, spot: str) -> Array:
     offsets = np.asarray(offsets)
     if offsets.shape != (count + 1,) or offsets.dtype.kind not in "iu":
-        raise FormatError(f"the {what} do not fit {count} entries", where=spot)
+        raise FormatError(f"the {what} do not fit {count} entries", where=spot, mend=DAMAGED)
     offsets = np.ascontiguousarray(offsets, dtype=np.int64)
     if offsets[0] != 0 or offsets[-1] != total or (np.diff(offsets) < 0).any():
-        raise FormatError(f"the {what} do not run from 0 to {total} without falling", where=spot)
+        raise FormatError(
+            f"the {what} do not run from 0 to {total} without falling", where=spot, mend=DAMAGED
+        )
     return offsets
 
 
 def _ids(ids: Array, limit: int, what: str, among: str, spot: str) -> Array:
     ids = np.asarray(ids)
     if ids.ndim != 1 or ids.dtype.kind not in "iu":
-        raise FormatError(f"the {what} numbers are no list of integers", where=spot)
+        raise FormatError(f"the {what} numbers are no list of integers", where=spot, mend=DAMAGED)
     if len(ids) and (ids.min() < 0 or ids.max() >= limit):
         wrong = (ids < 0) | (ids >= limit)
         first = int(np.argmax(wrong))
         raise FormatError(
             f"{what} number {ids[first]} lies outside the {limit} {among} of the mesh",
             where=spot,
-            mend="The file is damaged or incomplete; export it again.",
+            mend=DAMAGED,
         )
     return np.ascontiguousarray(ids, dtype=np.int64)
 
@@ -125,7 +134,9 @@ def _counts(types: Array, offsets: Array, spot: str) -> None:
     wrong = (counts < least[types]) | ((exact[types] >= 0) & (counts != exact[types]))
     if wrong.any():
         first = int(np.argmax(wrong))
-        raise FormatError(f"cell {first} of type {types[first]} has {counts[first]} nodes", where=spot)
+        raise FormatError(
+            f"cell {first} of type {types[first]} has {counts[first]} nodes", where=spot, mend=DAMAGED
+        )
 
 
 def _data(data: dict[str, Array], count: int, kind: str, spot: str) -> dict[str, Array]:
@@ -135,7 +146,7 @@ def _data(data: dict[str, Array], count: int, kind: str, spot: str) -> dict[str,
 def _array(name: str, values: Array, count: int, kind: str, spot: str) -> Array:
     values = np.asarray(values)
     if values.dtype.kind not in "iufb":
-        raise FormatError(f"the {kind} array '{name}' holds no numbers", where=spot)
+        raise FormatError(f"the {kind} array '{name}' holds no numbers", where=spot, mend=DAMAGED)
     if values.ndim not in (1, 2) or len(values) != count:
         raise FormatError(
             f"the {kind} array '{name}' has {len(values) if values.ndim else 0} values for {count} {kind}s",
@@ -149,7 +160,7 @@ def _ghost(ghost: Array | None, count: int, spot: str) -> Array | None:
     if ghost is None:
         return None
     if np.shape(ghost) != (count,):
-        raise FormatError(f"the ghost marks do not fit the {count} cells", where=spot)
+        raise FormatError(f"the ghost marks do not fit the {count} cells", where=spot, mend=DAMAGED)
     return np.ascontiguousarray(ghost, dtype=bool)
 
 
@@ -157,15 +168,15 @@ def _faces(faces: Faces | None, types: Array, points: int, spot: str) -> Faces |
     solid = types == 42
     if faces is None:
         if solid.any():
-            raise FormatError("there are polyhedra without faces", where=spot)
+            raise FormatError("there are polyhedra without faces", where=spot, mend=DAMAGED)
         return None
     stored = len(faces.face_offsets) - 1
     face_offsets = _offsets(faces.face_offsets, stored, len(faces.face_nodes), "face offsets", spot)
     cell_offsets = _offsets(faces.cell_offsets, len(types), len(faces.cell_faces), "face lists", spot)
     if (np.diff(face_offsets) < 3).any():
-        raise FormatError("a face of a polyhedron has fewer than 3 nodes", where=spot)
+        raise FormatError("a face of a polyhedron has fewer than 3 nodes", where=spot, mend=DAMAGED)
     if (np.diff(cell_offsets)[solid] < 4).any():
-        raise FormatError("a polyhedron has fewer than 4 faces", where=spot)
+        raise FormatError("a polyhedron has fewer than 4 faces", where=spot, mend=DAMAGED)
     return Faces(
         face_offsets,
         _ids(faces.face_nodes, points, "face node", "points", spot),

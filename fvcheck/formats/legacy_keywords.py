@@ -62,7 +62,10 @@ class LegacyScan:
                 return
             handler = HANDLERS.get(key)
             if handler is None:
-                raise FormatError(f"'{printable(words[0])}' is no keyword", where=self.path, mend=END)
+                wrong = f"'{printable(words[0])}' stands where a keyword belongs"
+                if words[0][0] in "+-.0123456789":
+                    wrong += ", behind the last value declared"
+                raise FormatError(wrong, where=self.path, mend=END)
             if key not in ("DATASET", "FIELD", "METADATA") and not self.dataset:
                 raise FormatError(f"{key} stands before DATASET", where=self.path, mend=END)
             handler(self, key, words[1:])
@@ -93,7 +96,7 @@ class LegacyScan:
         if not self.active:
             raise FormatError(f"array '{name}' belongs to no data set", where=self.path, mend=END)
         if name in self.data[self.active]:
-            raise FormatError(f"there are two arrays '{name}' in {self.active}", where=self.path)
+            raise FormatError(f"there are two arrays '{name}' in {self.active}", where=self.path, mend=END)
         self.data[self.active][name] = values
 
 
@@ -155,7 +158,9 @@ def _numbers(scan: LegacyScan, key: str, words: list[str]) -> None:
     try:
         scan.numbers[key] = [float(word) for word in words]
     except ValueError:
-        raise FormatError(f"the line of {key} holds a word that is no number", where=scan.path) from None
+        raise FormatError(
+            f"the line of {key} holds a word that is no number", where=scan.path, mend=END
+        ) from None
     if len(words) != (6 if key == "EXTENT" else 3) or not all(map(math.isfinite, scan.numbers[key])):
         raise FormatError(f"the line of {key} is damaged", where=scan.path, mend=END)
 

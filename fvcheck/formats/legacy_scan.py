@@ -56,7 +56,7 @@ class Cursor:
         try:
             self.data = path.read_bytes()
         except OSError as error:
-            raise FormatError(f"the file cannot be opened: {error.strerror}", where=path) from None
+            raise FormatError(f"the file cannot be opened: {error.strerror}", where=path, mend=END) from None
         head = self.data[:1024].split(b"\n", 3)
         if len(head) < 4 or not head[0].startswith(b"# vtk DataFile Version"):
             raise FormatError("this is no legacy VTK file", where=path, mend=END)

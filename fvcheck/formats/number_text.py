@@ -1,23 +1,24 @@
 """Numbers written as text, as VTK's ASCII files hold them.
 
-Every token is looked at before it is converted: library parsers stop at the
-first odd one and return what they had, or split it in two.
+Library parsers stop at the first odd token and return what they had, or split it
+in two: the tokens are counted apart.
 """
 
 from __future__ import annotations
 
 import re
+import warnings
 
 import numpy as np
 
 from fvcheck.errors import FormatError
 from fvcheck.mesh.piece import Array
 
-# A token that is no number: the first character of a token, not followed by a whole number.
-_REAL = r"[-+]?(?:(?:\d+\.?\d*|\.\d+)(?:[eEdD][-+]?\d{1,4})?|(?i:nan|inf|infinity))(?!\S)"
-_WHOLE = r"[-+]?\d{1,18}(?!\S)"
-NO_REAL = re.compile(rf"(?<!\S)(?!{_REAL})\S")
-NO_WHOLE = re.compile(rf"(?<!\S)(?!{_WHOLE})\S")
+# The first character of a token that is no number.
+_REAL = r"[-+]?(?:(?:\d+\.?\d*|\.\d+)(?:[eEdD][-+]?\d+)?|(?i:nan|inf|infinity))(?!\S)"
+_WHOLE = r"[-+]?\d+(?!\S)"
+NO_REAL = re.compile(rf"(?<!\S)(?!{_REAL})\S", re.ASCII)
+NO_WHOLE = re.compile(rf"(?<!\S)(?!{_WHOLE})\S", re.ASCII)
 
 
 def parse(text: str, dtype: np.dtype, where: str) -> Array:
@@ -27,23 +28,41 @@ def parse(text: str, dtype: np.dtype, where: str) -> Array:
     for a token that is no number (a word, ``1,5``, ``1.5-103``) and for integers
     beyond the range of the type.
     """
-    real = dtype.kind == "f"
-    odd = (NO_REAL if real else NO_WHOLE).search(text)
-    if odd is not None:
-        token = text[odd.start() : odd.start() + 40].split()[0]
-        raise FormatError(
-            f"'{token}' stands where {'a number' if real else 'a whole number'} belongs",
-            where=where,
-            mend="Export in binary form, or with a point as decimal sign.",
-        )
-    if not text or text.isspace():
+    if not text.strip():
         return np.empty(0, dtype=dtype)
-    if real:
-        if "d" in text or "D" in text:
-            text = text.replace("d", "e").replace("D", "e")
-        return np.fromstring(text, dtype=np.float64, sep=" ").astype(dtype, copy=False)
-    values = np.fromstring(text, dtype=np.int64, sep=" ")
+    if dtype.kind == "f":
+        plain = text.replace("d", "e").replace("D", "e") if "d" in text or "D" in text else text
+        with np.errstate(over="ignore"):  # beyond the range of float32: infinite
+            return _parsed(plain, np.float64, NO_REAL, where).astype(dtype, copy=False)
+    values = _parsed(text, np.int64, NO_WHOLE, where)
+    low, high = int(values.min()), int(values.max())
     limits = np.iinfo(dtype)
-    if len(values) and (values.min() < limits.min or values.max() > limits.max):
+    # The parser stops at the limits of 64 bits, so these themselves are out of range.
+    if low < limits.min or high > limits.max or high == np.iinfo(np.int64).max:
         raise FormatError(f"a number lies beyond the range of {dtype.name}", where=where)
     return values.astype(dtype, copy=False)
+
+
+def _parsed(text: str, dtype: type, odd: re.Pattern[str], where: str) -> Array:
+    with warnings.catch_warnings():
+        warnings.simplefilter("error", DeprecationWarning)  # what an odd token gave before numpy 2.3
+        try:
+            values: Array = np.fromstring(text, dtype=dtype, sep=" ")
+        except (ValueError, DeprecationWarning):
+            values = np.empty(0, dtype=dtype)
+    # Every token gives a number or more, so equal counts mean one number each.
+    if len(values) == _tokens(text):
+        return values
+    found = odd.search(text)
+    token = text[found.start() : found.start() + 40].split() if found else []
+    shown = "".join(char if char.isprintable() else "?" for char in "".join(token[:1]))
+    raise FormatError(
+        f"'{shown}' stands where a {'whole ' if dtype is np.int64 else ''}number belongs",
+        where=where,
+        mend="Export in binary form, or with a point as decimal sign.",
+    )
+
+
+def _tokens(text: str) -> int:
+    solid = np.frombuffer(text.encode(), dtype=np.uint8) > ord(" ")
+    return int(solid[0]) + int(np.count_nonzero(solid[1:] & ~solid[:-1]))

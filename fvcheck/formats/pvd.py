@@ -9,6 +9,7 @@ from pathlib import Path
 
 from fvcheck.errors import FormatError
 from fvcheck.formats import vtk_xml
+from fvcheck.formats.check import DAMAGED
 from fvcheck.formats.xml_scan import Element, scan
 from fvcheck.mesh.piece import Export, Piece
 
@@ -33,7 +34,7 @@ def open_export(path: Path) -> Export:
         steps.setdefault(_time(entry, path), []).append((file, _name(entry)))
     for files in steps.values():
         if len({file for file, _name in files}) < len(files):
-            raise FormatError("a file is listed twice for one time", where=path)
+            raise FormatError("a file is listed twice for one time", where=path, mend=DAMAGED)
     times = tuple(sorted(steps))
     stated = any("timestep" in entry.attributes for entry in entries)
     return Export(path, "PVD", lambda step: _load(path, steps[times[step]]), times if stated else ())
@@ -46,7 +47,7 @@ def _time(entry: Element, path: Path) -> float:
     except ValueError:
         time = math.nan
     if not math.isfinite(time):
-        raise FormatError(f"the time '{text}' is no number", where=path)
+        raise FormatError(f"the time '{text}' is no number", where=path, mend=DAMAGED)
     return time
 
 
@@ -60,7 +61,9 @@ def _load(path: Path, files: Sequence[tuple[Path, str]]) -> list[Piece]:
         with file.open("rb") as stream:
             kind = vtk_xml.root_type(stream.read(4096))
         if kind is None or kind == "Collection":
-            raise FormatError(f"the listed file '{file.name}' is no VTK XML file of data", where=path)
+            raise FormatError(
+                f"the listed file '{file.name}' is no VTK XML file of data", where=path, mend=DAMAGED
+            )
         for piece in vtk_xml.load(file):
             full = "/".join(part for part in (name, piece.name) if part)
             pieces.append(replace(piece, name=full))

@@ -13,6 +13,7 @@ from collections.abc import Sequence
 import numpy as np
 
 from fvcheck.errors import FormatError
+from fvcheck.formats.check import DAMAGED
 from fvcheck.mesh.piece import Array, Faces
 
 # Marks of vtkGhostType: cells that another partition owns (1), that a finer block
@@ -64,7 +65,9 @@ def running_offsets(ends: Array, total: int, what: str, where: str) -> Array:
     """Offsets from 0, given the end of every entry. Raises `FormatError` if they fall or miss ``total``."""
     offsets = np.concatenate([[0], ends.astype(np.int64, copy=False)])
     if offsets[-1] != total or (np.diff(offsets) < 0).any():
-        raise FormatError(f"the {what} fall, or do not end at the {total} entries stored", where=where)
+        raise FormatError(
+            f"the {what} fall, or do not end at the {total} entries stored", where=where, mend=DAMAGED
+        )
     return offsets
 
 
@@ -78,11 +81,13 @@ def listed_cells(stream: Array, count: int, where: str) -> Group:
     for cell in range(count):
         starts[cell] = at
         if at >= len(numbers) or numbers[at] < 0:
-            raise FormatError(f"the list of cells is damaged at cell {cell}", where=where)
+            raise FormatError(f"the list of cells is damaged at cell {cell}", where=where, mend=DAMAGED)
         at += numbers[at] + 1
     starts[count] = at
     if at != len(numbers):
-        raise FormatError(f"the cells take {at} numbers, their list holds {len(numbers)}", where=where)
+        raise FormatError(
+            f"the cells take {at} numbers, their list holds {len(numbers)}", where=where, mend=DAMAGED
+        )
     keep = np.ones(len(stream), dtype=bool)
     keep[starts[:-1]] = False
     return starts - np.arange(count + 1), stream[keep].astype(np.int64, copy=False)
@@ -110,7 +115,7 @@ def streamed_faces(stream: Array, starts: Array, ends: Array, solid: Array, wher
             at += numbers[at] + 1
             left -= 1
         if left or not counts[cell] or at != end:
-            raise FormatError(f"the faces of polyhedron {cell} are damaged", where=where)
+            raise FormatError(f"the faces of polyhedron {cell} are damaged", where=where, mend=DAMAGED)
     offsets = np.concatenate([[0], np.cumsum(sizes)]).astype(np.int64)
     inside = np.arange(offsets[-1]) - np.repeat(offsets[:-1], sizes) + np.repeat(begin, sizes)
     nodes = stream[inside.astype(np.int64)].astype(np.int64)

@@ -7,7 +7,7 @@ from typing import Any
 import numpy as np
 
 from fvcheck.errors import FormatError
-from fvcheck.formats.check import check_piece
+from fvcheck.formats.check import DAMAGED, check_piece
 from fvcheck.formats.structured import block_cells
 from fvcheck.formats.vtk_cells import Group, ghost_cells, lattice, poly_cells
 from fvcheck.mesh.piece import Array, Faces, Piece
@@ -40,7 +40,7 @@ def piece_of(dataset: Any, name: str = "") -> Piece:
         cells = poly_cells({key: _group(group) for key, group in stored.items() if group.GetNumberOfCells()})
     elif dataset.IsA("vtkStructuredGrid") or dataset.IsA("vtkRectilinearGrid") or dataset.IsA("vtkImageData"):
         _demand_cells(dataset, where)
-        cells = block_cells(tuple(dataset.GetDimensions()))
+        cells = block_cells(_dimensions(dataset))
     else:
         raise FormatError(f"{where} holds no cells that can be read", mend="Give an unstructured grid.")
     points = _points(dataset)
@@ -56,6 +56,11 @@ def _demand_cells(dataset: Any, where: str) -> None:
         raise FormatError(f"{where} holds no cells", mend="Give the mesh with its points and cells.")
 
 
+def _dimensions(dataset: Any) -> tuple[int, ...]:
+    extent = dataset.GetExtent()
+    return tuple(high - low + 1 for low, high in zip(extent[::2], extent[1::2]))
+
+
 def _points(dataset: Any) -> Array:
     from vtkmodules.util.numpy_support import vtk_to_numpy
 
@@ -65,7 +70,7 @@ def _points(dataset: Any) -> Array:
         axes = dataset.GetXCoordinates(), dataset.GetYCoordinates(), dataset.GetZCoordinates()
         return lattice([vtk_to_numpy(axis) for axis in axes])
     first = dataset.GetExtent()[::2]
-    counts = dataset.GetDimensions()
+    counts = _dimensions(dataset)
     steps = [(low + np.arange(n)) * step for low, n, step in zip(first, counts, dataset.GetSpacing())]
     turn = dataset.GetDirectionMatrix()
     rows = [[turn.GetElement(row, column) for column in range(3)] for row in range(3)]
@@ -95,6 +100,6 @@ def _arrays(attributes: Any, where: str) -> dict[str, Array]:
             continue
         name = array.GetName() or f"unnamed {place}"
         if name in found:
-            raise FormatError(f"there are two arrays '{name}'", where=where)
+            raise FormatError(f"there are two arrays '{name}'", where=where, mend=DAMAGED)
         found[name] = np.array(vtk_to_numpy(array))
     return found

@@ -14,6 +14,7 @@ from fvcheck.formats.legacy_keywords import AXES, MOST_POINTS, LegacyScan
 from fvcheck.formats.legacy_scan import END, Cursor
 from fvcheck.formats.structured import block_cells
 from fvcheck.formats.vtk_cells import Cells, ghost_cells, lattice, poly_cells, streamed_faces
+from fvcheck.hints import Hint
 from fvcheck.mesh.piece import Array, Export, Faces, Piece
 
 
@@ -30,7 +31,11 @@ def open_export(path: Path) -> Export:
     head = LegacyScan(Cursor(path))
     head.run(head_only=True)
     times = () if head.time is None else (head.time,)
-    return Export(path, f"legacy VTK {head.dataset}", lambda _step: [_load(path)], times)
+    hints: tuple[Hint, ...] = ()
+    if head.cursor.text and not head.cursor.data.endswith(b"\n"):
+        message = f"{path} does not end with a line end: if it was cut there, its last number is wrong"
+        hints = (Hint("no-line-end", message),)
+    return Export(path, f"legacy VTK {head.dataset}", lambda _step: [_load(path)], times, hints)
 
 
 def _load(path: Path) -> Piece:
@@ -121,8 +126,10 @@ def _lattice(scan: LegacyScan, sizes: list[int]) -> Array:
         if [len(axis) for axis in axes] != sizes:
             raise FormatError("the coordinates do not fit the dimensions", where=scan.path, mend=END)
         return lattice(axes)
-    origin = scan.numbers.get("ORIGIN", [0.0, 0.0, 0.0])
-    spacing = scan.numbers.get("SPACING", scan.numbers.get("ASPECT_RATIO", [1.0, 1.0, 1.0]))
+    origin = scan.numbers.get("ORIGIN")
+    spacing = scan.numbers.get("SPACING", scan.numbers.get("ASPECT_RATIO"))
+    if origin is None or spacing is None:
+        raise FormatError("ORIGIN or SPACING is missing", where=scan.path, mend=END)
     first = scan.numbers.get("EXTENT", [0.0] * 6)[::2]
     steps = zip(origin, first, sizes, spacing)
     return lattice([start + (low + np.arange(size)) * step for start, low, size, step in steps])

@@ -14,6 +14,7 @@ from dataclasses import replace
 from pathlib import Path
 
 from fvcheck.errors import FormatError
+from fvcheck.formats.check import DAMAGED
 from fvcheck.formats.vtk_cells import GHOST_NAMES
 from fvcheck.formats.xml_arrays import ArrayReader, attribute_int
 from fvcheck.formats.xml_datasets import READERS, pieces_of
@@ -76,7 +77,7 @@ def _load(path: Path, *, blocks: bool) -> list[Piece]:
     document = scan(path)
     if document.type in BLOCKS:
         if not blocks:
-            raise FormatError("blocks within blocks of another file cannot be read", where=path)
+            raise FormatError("blocks within blocks of another file cannot be read", where=path, mend=DAMAGED)
         return _blocks(document)
     kind = _pieces_type(document.type)
     if kind is not None:
@@ -116,12 +117,14 @@ def _parallel(document: Document, kind: str) -> list[Piece]:
     pieces = []
     sources = document.primary.all("Piece")
     if not sources:
-        raise FormatError("no pieces are listed", where=document.path)
+        raise FormatError("no pieces are listed", where=document.path, mend=DAMAGED)
     for element in sources:
         source = beside(document.path, element.attributes.get("Source", ""), "piece")
         part = scan(source)
         if part.type != kind:
-            raise FormatError(f"a piece of type '{part.type}' stands in a list of '{kind}'", where=source)
+            raise FormatError(
+                f"a piece of type '{part.type}' stands in a list of '{kind}'", where=source, mend=DAMAGED
+            )
         pieces += [_listed(document, piece, source) for piece in pieces_of(part)]
     return pieces
 
@@ -138,11 +141,13 @@ def _listed(document: Document, piece: Piece, source: Path) -> Piece:
                 continue
             if name not in stored:
                 where = f"{source}, listed in {document.path.name}"
-                raise FormatError(f"array '{name}' is missing in this piece", where=where)
+                raise FormatError(f"array '{name}' is missing in this piece", where=where, mend=DAMAGED)
             values = stored[name]
             width = attribute_int(element, "NumberOfComponents", str(document.path), 1)
             if width != values.size // len(values):
-                raise FormatError(f"array '{name}' has other components in this piece", where=source)
+                raise FormatError(
+                    f"array '{name}' has other components in this piece", where=source, mend=DAMAGED
+                )
             kept[section][name] = values
     return replace(piece, point_data=kept["PPointData"], cell_data=kept["PCellData"])
 

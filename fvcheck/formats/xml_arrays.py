@@ -18,6 +18,7 @@ from collections.abc import Callable
 import numpy as np
 
 from fvcheck.errors import FormatError
+from fvcheck.formats.check import DAMAGED
 from fvcheck.formats.number_text import parse
 from fvcheck.formats.xml_scan import Document, Element
 from fvcheck.mesh.piece import Array
@@ -75,9 +76,9 @@ class ArrayReader:
         header = attributes.get("header_type", "UInt32")
         compressor = attributes.get("compressor", "")
         if order not in ("LittleEndian", "BigEndian"):
-            raise FormatError(f"unknown byte order '{order}'", where=self.path)
+            raise FormatError(f"unknown byte order '{order}'", where=self.path, mend=DAMAGED)
         if header not in ("UInt32", "UInt64"):
-            raise FormatError(f"unknown header type '{header}'", where=self.path)
+            raise FormatError(f"unknown header type '{header}'", where=self.path, mend=DAMAGED)
         if compressor and compressor not in COMPRESSORS:
             raise FormatError(
                 f"unknown compressor '{compressor}'", where=self.path, mend="Export with zlib, lz4 or lzma."
@@ -89,7 +90,7 @@ class ArrayReader:
             {
                 self._offset(element)
                 for element in document.root.walk()
-                if element.tag == "DataArray" and element.attributes.get("format") == "appended"
+                if element.tag in ("DataArray", "Array") and element.attributes.get("format") == "appended"
             }
         )
 
@@ -102,11 +103,11 @@ class ArrayReader:
         where = f"{self.path}, array '{element.attributes.get('Name', '')}'"
         kind = element.attributes.get("type", "")
         if kind not in TYPES:
-            raise FormatError(f"values of the type '{kind}' cannot be read", where=where)
+            raise FormatError(f"values of the type '{kind}' cannot be read", where=where, mend=DAMAGED)
         dtype = np.dtype(TYPES[kind])
         components = attribute_int(element, "NumberOfComponents", where, 1)
         if not 1 <= components <= MOST_COMPONENTS:
-            raise FormatError(f"the array declares {components} components", where=where)
+            raise FormatError(f"the array declares {components} components", where=where, mend=DAMAGED)
         want = None if tuples is None else tuples * components
         form = element.attributes.get("format", "ascii")
         if form == "ascii":
@@ -116,21 +117,27 @@ class ArrayReader:
         elif form == "appended":
             flat = self._binary(self._region(element, where), dtype, want, where)
         else:
-            raise FormatError(f"unknown data format '{form}'", where=where)
+            raise FormatError(f"unknown data format '{form}'", where=where, mend=DAMAGED)
         if want is not None:
             _demand(len(flat), want, where)
         if len(flat) % components:
-            raise FormatError(f"{len(flat)} values do not fill tuples of {components}", where=where)
+            raise FormatError(
+                f"{len(flat)} values do not fill tuples of {components}", where=where, mend=DAMAGED
+            )
         return flat if components == 1 else flat.reshape(-1, components)
 
     def _offset(self, element: Element) -> int:
         offset = attribute_int(element, "offset", str(self.path))
         appended = self.document.appended
         if appended is None:
-            raise FormatError("arrays refer to appended data, which are missing", where=self.path)
+            raise FormatError(
+                "arrays refer to appended data, which are missing", where=self.path, mend=DAMAGED
+            )
         if not 0 <= offset < appended.end - appended.start:
             name = element.attributes.get("Name", "")
-            raise FormatError(f"array '{name}' starts at byte {offset}, beyond the data", where=self.path)
+            raise FormatError(
+                f"array '{name}' starts at byte {offset}, beyond the data", where=self.path, mend=DAMAGED
+            )
         return offset
 
     def _region(self, element: Element, where: str) -> bytes:
@@ -153,55 +160,62 @@ class ArrayReader:
         try:
             return b"".join(binascii.a2b_base64(part, strict_mode=True) for part in parts)
         except (binascii.Error, ValueError) as error:
-            raise FormatError(f"the data are no base64: {error}", where=where) from None
+            raise FormatError(f"the data are no base64: {error}", where=where, mend=DAMAGED) from None
 
     def _binary(self, blob: bytes, dtype: np.dtype, want: int | None, where: str) -> Array:
         if not blob and want == 0:
             return np.empty(0, dtype=dtype)
         decode = self._plain if self.expand is None else self._blocks
-        data = decode(blob, dtype, want, where)
+        data, used = decode(blob, dtype, want, where)
+        if blob[used:].strip(b" \t\r\n\0"):
+            raise FormatError("there are more bytes than the array declares", where=where, mend=DAMAGED)
         return np.frombuffer(data, dtype=np.dtype(self.order + dtype.str[1:])).astype(dtype)
 
     def _words(self, blob: bytes, count: int, where: str) -> list[int]:
         if len(blob) < count * self.word.itemsize:
-            raise FormatError("the data end within their header", where=where, mend="Export the file again.")
+            raise FormatError("the data end within their header", where=where, mend=DAMAGED)
         return np.frombuffer(blob, dtype=self.word, count=count).tolist()
 
-    def _plain(self, blob: bytes, dtype: np.dtype, want: int | None, where: str) -> bytes:
+    def _plain(self, blob: bytes, dtype: np.dtype, want: int | None, where: str) -> tuple[bytes, int]:
+        """The values of an array that is not compressed, and the bytes it takes with its header."""
         (size,) = self._words(blob, 1, where)
         _demand_size(size, dtype, want, where)
-        data = blob[self.word.itemsize : self.word.itemsize + size]
+        used = self.word.itemsize + size
+        data = blob[self.word.itemsize : used]
         if len(data) != size:
-            raise FormatError(f"{size} bytes are declared, {len(data)} are there", where=where)
-        return data
+            raise FormatError(f"{size} bytes are declared, {len(data)} are there", where=where, mend=DAMAGED)
+        return data, used
 
-    def _blocks(self, blob: bytes, dtype: np.dtype, want: int | None, where: str) -> bytes:
+    def _blocks(self, blob: bytes, dtype: np.dtype, want: int | None, where: str) -> tuple[bytes, int]:
+        """The same of an array in compressed blocks."""
         (count,) = self._words(blob, 1, where)
         if count == 0:
             _demand_size(0, dtype, want, where)
-            return b""
+            return b"", 3 * self.word.itemsize
         if count > len(blob):
-            raise FormatError(f"{count} blocks are declared, more than there are bytes", where=where)
+            raise FormatError(
+                f"{count} blocks are declared, more than there are bytes", where=where, mend=DAMAGED
+            )
         _count, full, last, *packed = self._words(blob, 3 + count, where)
         sizes = [full] * (count - 1) + [last or full]
         _demand_size(sum(sizes), dtype, want, where)
         at = (3 + count) * self.word.itemsize
         if at + sum(packed) > len(blob) or sum(sizes) > MOST_RATIO * len(blob):
-            raise FormatError("the blocks declare more than the file holds", where=where)
+            raise FormatError("the blocks declare more than the file holds", where=where, mend=DAMAGED)
         parts = []
         for size, length in zip(sizes, packed):
             parts.append(self._block(blob[at : at + length], size, where))
             at += length
-        return b"".join(parts)
+        return b"".join(parts), at
 
     def _block(self, block: bytes, size: int, where: str) -> bytes:
         assert self.expand is not None
         try:
             data = self.expand(block, size)
         except (zlib.error, lzma.LZMAError) as error:
-            raise FormatError(f"a compressed block is damaged: {error}", where=where) from None
+            raise FormatError(f"a compressed block is damaged: {error}", where=where, mend=DAMAGED) from None
         if len(data) != size:
-            raise FormatError("a compressed block is damaged or of another size", where=where)
+            raise FormatError("a compressed block is damaged or of another size", where=where, mend=DAMAGED)
         return data
 
 
@@ -211,7 +225,9 @@ def attribute_int(element: Element, name: str, where: str, default: int | None =
     if text is None and default is not None:
         return default
     if text is None or not re.fullmatch(r"\s*[-+]?[0-9]{1,18}\s*", text):
-        raise FormatError(f"<{element.tag}> has {name}='{text or ''}', no whole number", where=where)
+        raise FormatError(
+            f"<{element.tag}> has {name}='{text or ''}', no whole number", where=where, mend=DAMAGED
+        )
     return int(text)
 
 
@@ -220,12 +236,14 @@ def _demand(found: int, want: int, where: str) -> None:
         raise FormatError(
             f"the array holds {found} values, the mesh asks for {want}",
             where=where,
-            mend="The file is damaged or incomplete; export it again.",
+            mend=DAMAGED,
         )
 
 
 def _demand_size(size: int, dtype: np.dtype, want: int | None, where: str) -> None:
     if size % dtype.itemsize:
-        raise FormatError(f"{size} bytes are no whole number of {dtype.name} values", where=where)
+        raise FormatError(
+            f"{size} bytes are no whole number of {dtype.name} values", where=where, mend=DAMAGED
+        )
     if want is not None:
         _demand(size // dtype.itemsize, want, where)

@@ -15,7 +15,7 @@ from collections.abc import Callable
 import numpy as np
 
 from fvcheck.errors import FormatError
-from fvcheck.formats.check import check_piece
+from fvcheck.formats.check import DAMAGED, check_piece
 from fvcheck.formats.structured import block_cells
 from fvcheck.formats.vtk_cells import (
     Cells,
@@ -40,7 +40,9 @@ def pieces_of(document: Document) -> list[Piece]:
     that can be noticed.
     """
     if document.type not in READERS:
-        raise FormatError(f"a VTK file of type '{document.type}' cannot be read", where=document.path)
+        raise FormatError(
+            f"a VTK file of type '{document.type}' cannot be read", where=document.path, mend=DAMAGED
+        )
     read = READERS[document.type]
     arrays = ArrayReader(document)
     found = [read(arrays, element) for element in document.primary.all("Piece")]
@@ -56,7 +58,7 @@ def _data(arrays: ArrayReader, piece: Element, section: str, tuples: int) -> dic
             mend = "Export one file per time, listed in a PVD file."
             raise FormatError("several times in one file cannot be read", where=arrays.path, mend=mend)
         if name in found:
-            raise FormatError(f"there are two arrays '{name}' in {section}", where=arrays.path)
+            raise FormatError(f"there are two arrays '{name}' in {section}", where=arrays.path, mend=DAMAGED)
         if element.attributes.get("type") != "String":
             found[name] = arrays.values(element, tuples)
     return found
@@ -65,7 +67,9 @@ def _data(arrays: ArrayReader, piece: Element, section: str, tuples: int) -> dic
 def _count(arrays: ArrayReader, piece: Element, name: str) -> int:
     count = attribute_int(piece, name, str(arrays.path), 0 if name.startswith("NumberOf") else None)
     if not 0 <= count < MOST_POINTS:
-        raise FormatError(f"the file declares {name}={count}, which cannot be", where=arrays.path)
+        raise FormatError(
+            f"the file declares {name}={count}, which cannot be", where=arrays.path, mend=DAMAGED
+        )
     return count
 
 
@@ -85,7 +89,7 @@ def _points(arrays: ArrayReader, piece: Element, count: int) -> Array:
         raise FormatError("there are no points", where=arrays.path, mend="Export the mesh with its points.")
     points = arrays.values(element, count)
     if points.ndim != 2 or points.shape[1] != 3:
-        raise FormatError("the points do not have 3 components", where=arrays.path)
+        raise FormatError("the points do not have 3 components", where=arrays.path, mend=DAMAGED)
     return points
 
 
@@ -96,7 +100,7 @@ def _named(section: Element | None) -> dict[str, Element]:
 def _connectivity(arrays: ArrayReader, found: dict[str, Element], count: int, what: str) -> Group:
     for name in ("connectivity", "offsets"):
         if name not in found:
-            raise FormatError(f"there is no array '{name}' in <{what}>", where=arrays.path)
+            raise FormatError(f"there is no array '{name}' in <{what}>", where=arrays.path, mend=DAMAGED)
     ends = _whole(arrays, found["offsets"], count)
     nodes = _whole(arrays, found["connectivity"], None)
     return running_offsets(ends, len(nodes), "offsets", str(arrays.path)), nodes.astype(np.int64, copy=False)
@@ -106,7 +110,7 @@ def _whole(arrays: ArrayReader, element: Element, tuples: int | None) -> Array:
     values = arrays.values(element, tuples)
     if values.ndim != 1 or values.dtype.kind not in "iu":
         name = element.attributes.get("Name", "")
-        raise FormatError(f"array '{name}' is no list of whole numbers", where=arrays.path)
+        raise FormatError(f"array '{name}' is no list of whole numbers", where=arrays.path, mend=DAMAGED)
     return values
 
 
@@ -119,7 +123,7 @@ def _unstructured(arrays: ArrayReader, piece: Element) -> Piece | None:
     found = _named(piece.first("Cells"))
     offsets, nodes = _connectivity(arrays, found, count, "Cells")
     if "types" not in found:
-        raise FormatError("there is no array 'types' in <Cells>", where=arrays.path)
+        raise FormatError("there is no array 'types' in <Cells>", where=arrays.path, mend=DAMAGED)
     types = _whole(arrays, found["types"], count)
     coordinates = _points(arrays, piece, points)
     # Checked here already, since ghost marks are looked up by node and faces by cell type.
@@ -132,7 +136,7 @@ def _refuse_hidden(arrays: ArrayReader, piece: Element) -> None:
     """A piece declared empty may not hold values: that is a damaged count."""
     for element in piece.walk():
         if element.tag == "DataArray" and len(arrays.values(element, None)):
-            raise FormatError("a piece is declared empty, but holds values", where=arrays.path)
+            raise FormatError("a piece is declared empty, but holds values", where=arrays.path, mend=DAMAGED)
 
 
 def _faces(arrays: ArrayReader, found: dict[str, Element], solid: Array) -> Faces:
@@ -147,11 +151,11 @@ def _faces(arrays: ArrayReader, found: dict[str, Element], solid: Array) -> Face
         return streamed_faces(stream, starts, ends, solid, where)
     wanted = ("face_connectivity", "face_offsets", "polyhedron_to_faces", "polyhedron_offsets")
     if not all(name in found for name in wanted):
-        raise FormatError("there are polyhedra, but no arrays of their faces", where=where)
+        raise FormatError("there are polyhedra, but no arrays of their faces", where=where, mend=DAMAGED)
     nodes, ends, lists, cell_ends = (_whole(arrays, found[name], None) for name in wanted)
     if len(cell_ends) != len(solid):
         wrong = f"'polyhedron_offsets' holds {len(cell_ends)} values for {len(solid)} cells"
-        raise FormatError(wrong, where=where)
+        raise FormatError(wrong, where=where, mend=DAMAGED)
     return Faces(
         running_offsets(ends, len(nodes), "face offsets", where),
         nodes.astype(np.int64, copy=False),
@@ -178,11 +182,15 @@ def _poly(arrays: ArrayReader, piece: Element) -> Piece | None:
 def _extent(arrays: ArrayReader, piece: Element) -> list[tuple[int, int]]:
     text = piece.attributes.get("Extent", "").split()
     if len(text) != 6 or not all(re.fullmatch(r"-?[0-9]{1,9}", number) for number in text):
-        raise FormatError(f"the extent '{' '.join(text)}' is not 6 whole numbers", where=arrays.path)
+        raise FormatError(
+            f"the extent '{' '.join(text)}' is not 6 whole numbers", where=arrays.path, mend=DAMAGED
+        )
     bounds = [int(number) for number in text]
     spans = list(zip(bounds[::2], bounds[1::2]))
     if math.prod(max(0, high - low + 1) for low, high in spans) >= MOST_POINTS:
-        raise FormatError(f"the extent '{' '.join(text)}' holds too many points", where=arrays.path)
+        raise FormatError(
+            f"the extent '{' '.join(text)}' holds too many points", where=arrays.path, mend=DAMAGED
+        )
     return spans
 
 
@@ -213,7 +221,7 @@ def _rectilinear(arrays: ArrayReader, piece: Element) -> Piece | None:
         section = piece.first("Coordinates")
         elements = section.all("DataArray") if section else []
         if len(elements) != 3:
-            raise FormatError("there are not 3 arrays of coordinates", where=arrays.path)
+            raise FormatError("there are not 3 arrays of coordinates", where=arrays.path, mend=DAMAGED)
         return lattice([arrays.values(element, size) for element, size in zip(elements, sizes)])
 
     return _structured(arrays, piece, locate)
@@ -242,7 +250,7 @@ def _numbers(arrays: ArrayReader, element: Element, name: str, default: list[flo
     except ValueError:
         values = []
     if len(values) != len(default) or not all(map(math.isfinite, values)):
-        raise FormatError(f"{name}='{text}' is not {len(default)} numbers", where=arrays.path)
+        raise FormatError(f"{name}='{text}' is not {len(default)} numbers", where=arrays.path, mend=DAMAGED)
     return values
 
 

@@ -14,6 +14,7 @@ from pathlib import Path
 from xml.parsers import expat
 
 from fvcheck.errors import FormatError
+from fvcheck.formats.check import DAMAGED
 
 MOST_DEPTH = 30
 MOST_ELEMENTS = 500_000
@@ -72,7 +73,9 @@ class Document:
         """The element that holds the data set. Raises `FormatError` when it is missing."""
         found = self.root.first(self.type)
         if found is None:
-            raise FormatError(f"there is no element <{self.type or 'of the data set'}>", where=self.path)
+            raise FormatError(
+                f"there is no element <{self.type or 'of the data set'}>", where=self.path, mend=DAMAGED
+            )
         return found
 
 
@@ -100,11 +103,15 @@ class _Scanner:
     def start(self, tag: str, attributes: dict[str, str]) -> None:
         self.count += 1
         if len(self.stack) >= MOST_DEPTH or self.count > MOST_ELEMENTS:
-            raise FormatError("the XML is nested too deep or holds too many elements", where=self.path)
+            raise FormatError(
+                "the XML is nested too deep or holds too many elements", where=self.path, mend=DAMAGED
+            )
         element = Element(tag, attributes)
         if not self.stack:
             if tag != "VTKFile":
-                raise FormatError(f"the XML starts with <{tag}> instead of <VTKFile>", where=self.path)
+                raise FormatError(
+                    f"the XML starts with <{tag}> instead of <VTKFile>", where=self.path, mend=DAMAGED
+                )
             self.root = element
         else:
             self.stack[-1].children.append(element)
@@ -151,7 +158,7 @@ def scan(path: Path, stop_at: str = "") -> Document:
             mend="Export the file again.",
         ) from None
     except (OSError, ValueError, LookupError) as error:
-        raise FormatError(f"the file cannot be read: {error}", where=path) from None
+        raise FormatError(f"the file cannot be read: {error}", where=path, mend=DAMAGED) from None
     if scanner.root is None:
         raise FormatError("the file holds no XML element", where=path, mend="Export it again.")
     appended = None
@@ -169,7 +176,7 @@ def _locate(path: Path, tag_at: int, raw: bool) -> Appended:
         stream.seek(tail_at)
         closing = TAIL.search(stream.read())
     if opening is None:
-        raise FormatError("the appended data do not start with an underscore", where=path)
+        raise FormatError("the appended data do not start with an underscore", where=path, mend=DAMAGED)
     if closing is None:
         raise FormatError(
             "the file ends before its appended data do",
