@@ -281,8 +281,22 @@ def _read_fields(
         )
     for role, field in chosen.items():
         if role in VECTORS or (role.startswith("rate:") and role[5:] in VECTORS):
-            chosen[role] = replace(field, values=_turn(field.values, assembly.axes))
+            chosen[role] = replace(field, values=_in_plane(role, field, assembly))
     return chosen, hints
+
+
+def _in_plane(role: str, field: Field, assembly: Assembly) -> Array:
+    """Components (n, 3) of a vector field along the axes of the plane."""
+    if len(field.slots) == 2 and field.slots == (0, 1) and assembly.plane != "xy":
+        if "," in field.name:
+            raise FieldError(
+                f"{role} has components along x and y, but the run lies in the {assembly.plane} plane",
+                where=field.name,
+                mend=f"Name the components of that plane with --field {role}=V1,V2,V3.",
+            )
+        # An array of two components can only mean the two of the plane.
+        return field.values
+    return _turn(field.values, assembly.axes)
 
 
 def _turn(values: Array, axes: Array) -> Array:

@@ -5,21 +5,14 @@ from __future__ import annotations
 from collections.abc import Mapping
 from dataclasses import dataclass, field
 from functools import cached_property
-from typing import NamedTuple
 
 import numpy as np
 
 from fvcheck.errors import FieldError
 from fvcheck.fluid import Fluid
+from fvcheck.sampling.sampled import Sampled
 
 Array = np.ndarray
-
-
-class Sampled(NamedTuple):
-    """A field at q places: values (q,) or (q, 2 or 3), gradients (q, 2) or (q, 2 or 3, 2)."""
-
-    value: Array
-    gradient: Array
 
 
 class MissingData(FieldError):

@@ -1,0 +1,186 @@
+"""The ledger: what crosses a control surface, what is left over, how sure that is."""
+
+from __future__ import annotations
+
+from dataclasses import asdict, dataclass
+from typing import Any
+
+from fvcheck.errors import SetupError
+from fvcheck.flow import Case, Flow
+from fvcheck.hints import Hint
+from fvcheck.verdict import worst
+from fvcheck.version import __version__
+
+SCHEMA = "fvcheck-result/1"
+
+
+@dataclass(frozen=True)
+class Row:
+    """One law, one component, one control surface. Outward positive; None where there is no such number.
+
+    parts : of the drawn pieces by mechanism; they add up to ``flux``
+    inflow, outflow : magnitudes over the drawn pieces
+    boundary : net over the enclosed domain boundary; ``patches`` splits it
+    imbalance : storage + flux + boundary − source
+    scale : half the summed |flux| around the volume
+    datum : level of pressure or temperature that fluxes are counted from, where one is
+    linear_imbalance : what plain linear interpolation would have given
+    """
+
+    law: str
+    component: str | None
+    unit: str
+    parts: dict[str, float]
+    inflow: float
+    outflow: float
+    flux: float
+    boundary: float | None
+    patches: dict[str, float]
+    storage: float | None
+    source: float | None
+    imbalance: float | None
+    scale: float | None
+    imbalance_percent: float | None
+    sampling_band: float
+    resolution_band: float
+    rounding_band: float
+    linear_imbalance: float | None
+    tolerance_percent: float | None
+    verdict: str | None
+    datum: float | None = None
+
+    @property
+    def label(self) -> str:
+        """Law and component in one word."""
+        return self.law if self.component is None else f"{self.law}-{self.component}"
+
+
+@dataclass(frozen=True)
+class Port:
+    """A stretch of surface that flow passes: an inlet or outlet patch, or an open line.
+
+    area [m² or m per metre of depth], mass_flow [kg/s] outward positive,
+    mean_velocity [m/s] through it, total_pressure [Pa] and temperature [K]
+    weighted by mass flow, momentum_factor β = ⟨u²⟩/⟨u⟩² and
+    kinetic_energy_factor α = ⟨u³⟩/⟨u⟩³ of the velocity through it.
+    """
+
+    patch: str | None
+    piece: str | None
+    area: float
+    mass_flow: float | None
+    mean_velocity: float | None
+    total_pressure: float | None
+    temperature: float | None
+    momentum_factor: float | None
+    kinetic_energy_factor: float | None
+
+
+@dataclass(frozen=True)
+class Ledger:
+    """All rows of one control surface."""
+
+    name: str
+    kind: str
+    closed: bool
+    length: float
+    area: float | None
+    rows: tuple[Row, ...]
+    ports: tuple[Port, ...]
+    hints: tuple[Hint, ...] = ()
+
+    def __getitem__(self, key: str | tuple[str, str]) -> Row:
+        """``ledger["mass"]``, ``ledger["momentum", "x"]`` or ``ledger["momentum-x"]``."""
+        label = key if isinstance(key, str) else "-".join(key)
+        for row in self.rows:
+            if row.label == label:
+                return row
+        have = ", ".join(row.label for row in self.rows) or "none"
+        raise SetupError(f"the ledger of {self.name!r} has no row {label!r}", mend=f"Rows: {have}.")
+
+    @property
+    def verdict(self) -> str | None:
+        """The worst of the rows."""
+        return worst(row.verdict for row in self.rows)
+
+    def _repr_html_(self) -> str:
+        head = "".join(f"<th>{h}</th>" for h in ("law", "in", "out", "boundary", "source", "imbalance", "%", "verdict"))
+        body = "".join(
+            f"<tr><td>{r.label}</td>"
+            + "".join(
+                f"<td>{'' if v is None else format(v, '.5g')}</td>"
+                for v in (r.inflow, r.outflow, r.boundary, r.source, r.imbalance, r.imbalance_percent)
+            )
+            + f"<td>{r.verdict or ''}</td></tr>"
+            for r in self.rows
+        )
+        return f"<b>{self.name}</b><table><tr>{head}</tr>{body}</table>"
+
+
+@dataclass(frozen=True)
+class Result:
+    """What one call of the tool found: the ledgers of several control surfaces of one flow."""
+
+    case: dict[str, Any]
+    ledgers: tuple[Ledger, ...]
+    hints: tuple[Hint, ...] = ()
+
+    def __getitem__(self, name: str) -> Ledger:
+        """The ledger of a control surface by its name."""
+        for ledger in self.ledgers:
+            if ledger.name == name:
+                return ledger
+        have = ", ".join(ledger.name for ledger in self.ledgers)
+        raise SetupError(f"there is no ledger {name!r}", mend=f"Ledgers: {have}.")
+
+    @property
+    def verdict(self) -> str | None:
+        """The worst of all ledgers."""
+        return worst(ledger.verdict for ledger in self.ledgers)
+
+    def to_dict(self) -> dict[str, Any]:
+        """The result file: plain types, strict JSON."""
+        return {
+            "schema": SCHEMA,
+            "version": __version__,
+            "case": self.case,
+            "verdict": self.verdict,
+            "surfaces": [ledger_dict(ledger) for ledger in self.ledgers],
+            "hints": [asdict(hint) for hint in self.hints],
+        }
+
+    def _repr_html_(self) -> str:
+        return "".join(ledger._repr_html_() for ledger in self.ledgers)
+
+
+def ledger_dict(ledger: Ledger) -> dict[str, Any]:
+    """One entry of ``surfaces`` in the result file."""
+    return {
+        "name": ledger.name,
+        "kind": ledger.kind,
+        "closed": ledger.closed,
+        "length": ledger.length,
+        "area": ledger.area,
+        "laws": [asdict(row) for row in ledger.rows],
+        "ports": [asdict(port) for port in ledger.ports],
+    }
+
+
+def case_dict(flow: Flow) -> dict[str, Any]:
+    """The ``case`` entry of the result file."""
+    case: Case = flow.case
+    return {
+        "file": case.file,
+        "format": case.format,
+        "step": case.step,
+        "time": case.time,
+        "cells": flow.mesh.n_cells,
+        "points": flow.mesh.n_points,
+        "location": flow.location,
+        "plane": case.plane,
+        "symmetry": case.symmetry,
+        "depth": case.depth,
+        "fields": {role: field.name for role, field in flow.fields.items()},
+        "patches": list(flow.mesh.boundary.names),
+        "bodies": list(flow.mesh.bodies),
+    }
