@@ -116,9 +116,10 @@ def stitch(
 
 def _tolerances(points: Array, start: Array, end: Array, rim: Array, precision: float) -> tuple[Array, Array]:
     """(r,) tolerance and shortest open edge of each rim point; edges within rounding do not count."""
-    spacing = SPACINGS * precision * np.abs(points[rim]).max(axis=1, initial=0.0)
+    size = np.maximum(np.abs(points[:, 0]), np.abs(points[:, 1]))
+    spacing = SPACINGS * precision * size[rim]
     length = np.hypot(*(points[end] - points[start]).T)
-    real = length > SPACINGS * precision * np.abs(points[start]).max(axis=1, initial=0.0)
+    real = length > SPACINGS * precision * size[start]
     shortest = np.full(len(points), np.inf)
     for ends in (start[real], end[real]):
         np.minimum.at(shortest, ends, length[real])
@@ -176,7 +177,8 @@ def _places(points: Array, claims: Claims, used: Array, rim: Array, group: Array
     claimed = points_of(claimed, len(points))
     claimed = claimed[~used[claimed]]
     if len(claimed) and len(rim):
-        distance, nearest = map(np.atleast_1d, cKDTree(points[rim]).query(points[claimed]))
+        distance, nearest = cKDTree(points[rim]).query(points[claimed])
+        distance, nearest = np.atleast_1d(distance), np.atleast_1d(nearest)
         good = distance <= 1e-3 * shortest[nearest]
         place[claimed[good]] = group[rim[nearest[good]]]
     return place
