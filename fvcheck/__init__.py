@@ -34,8 +34,8 @@ _HOME = {
     "Source": "fvcheck.sources",
     "State": "fvcheck.laws",
     "SurfaceError": "fvcheck.errors",
-    "balance": "fvcheck.balance",
-    "balance_all": "fvcheck.balance",
+    "balance": "fvcheck.balancing",
+    "balance_all": "fvcheck.balancing",
     "open_flow": "fvcheck.flow",
     "register": "fvcheck.laws",
 }
