@@ -18,13 +18,12 @@ import numpy as np
 from fvcheck.errors import FormatError
 from fvcheck.formats import cellblocks as cb
 from fvcheck.formats import exodus_mesh, exodus_sets
-from fvcheck.formats.check import check_piece
+from fvcheck.formats.check import DAMAGED, check_piece
 from fvcheck.formats.exodus_mesh import ElementBlock
 from fvcheck.formats.exodus_store import Store, open_store
 from fvcheck.formats.timeline import times_of
 from fvcheck.mesh.piece import Array, Export, Piece
 
-_DAMAGED = "The file is damaged or incomplete; export it again."
 _SUFFIXES = (".exo", ".e", ".ex2", ".exii", ".g")
 _BLOCK = "exodus:block"
 # What netCDF puts where nothing was written (NC_FILL_DOUBLE, NC_FILL_FLOAT).
@@ -69,8 +68,8 @@ def open_export(path: Path) -> Export:
     def load(step: int) -> Sequence[Piece]:
         piece, blocks = mesh()
         with open_store(path) as store:
-            point_data = _point_data(store, step, bool(times), len(piece.points), path)
-            cell_data = piece.cell_data | _cell_data(store, step, bool(times), blocks, path)
+            point_data = _point_data(store, step, len(times), len(piece.points), path)
+            cell_data = piece.cell_data | _cell_data(store, step, len(times), blocks, path)
         return [check_piece(replace(piece, point_data=point_data, cell_data=cell_data), path)]
 
     return Export(path, "Exodus II", load, times_of(times, path))
@@ -80,17 +79,17 @@ def _times(store: Store, path: Path) -> tuple[float, ...]:
     """All stored times; empty when there are no steps."""
     if "time_whole" not in store:
         if store.dim("time_step") or "vals_nod_var1" in store or "vals_elem_var1eb1" in store:
-            raise FormatError("the steps have no times", where=path, mend=_DAMAGED)
+            raise FormatError("the steps have no times", where=path, mend=DAMAGED)
         return ()
     if 0 in store.shape("time_whole"):
         return ()
     values = store.numbers("time_whole")
     if values.ndim != 1 or (np.abs(values) > 0.99 * _FILL).any():
-        raise FormatError("the times of the steps cannot be read", where=path, mend=_DAMAGED)
+        raise FormatError("the times of the steps cannot be read", where=path, mend=DAMAGED)
     steps = store.dim("time_step")
     # In netCDF-4 the unlimited dimension may show as 0: its length is that of its variables.
     if steps and steps != len(values):
-        raise FormatError(f"there are {steps} steps and {len(values)} times", where=path, mend=_DAMAGED)
+        raise FormatError(f"there are {steps} steps and {len(values)} times", where=path, mend=DAMAGED)
     return tuple(float(value) for value in values)
 
 
@@ -117,8 +116,8 @@ def _mesh(store: Store, path: Path) -> tuple[Piece, list[ElementBlock]]:
     return check_piece(piece, path), blocks
 
 
-def _point_data(store: Store, step: int, stored: bool, count: int, path: Path) -> dict[str, Array]:
-    if "name_nod_var" not in store or not stored:
+def _point_data(store: Store, step: int, steps: int, count: int, path: Path) -> dict[str, Array]:
+    if "name_nod_var" not in store or not steps:
         return {}
     names = _variables(store, "name_nod_var", "num_nod_var", path)
     joint = "vals_nod_var" in store
@@ -126,25 +125,24 @@ def _point_data(store: Store, step: int, stored: bool, count: int, path: Path) -
     out = {}
     for i, name in enumerate(names):
         own = f"vals_nod_var{i + 1}"
-        if table is None and own not in store:
-            raise FormatError(f"the variable '{name}' has no values", where=path, mend=_DAMAGED)
         if table is not None and (table.ndim != 2 or len(table) != len(names)):
-            raise FormatError("the variables at nodes cannot be read", where=path, mend=_DAMAGED)
-        out[name] = _filled(store.numbers(own, step) if table is None else table[i], name, count, path)
+            raise FormatError("the variables at nodes cannot be read", where=path, mend=DAMAGED)
+        values = _row(store, own, step, steps, name, path) if table is None else table[i]
+        out[name] = _filled(values, name, count, path)
     return out
 
 
 def _cell_data(
-    store: Store, step: int, stored: bool, blocks: list[ElementBlock], path: Path
+    store: Store, step: int, steps: int, blocks: list[ElementBlock], path: Path
 ) -> dict[str, Array]:
-    if "name_elem_var" not in store or not stored:
+    if "name_elem_var" not in store or not steps:
         return {}
     names = _variables(store, "name_elem_var", "num_elem_var", path)
     truth = np.ones((len(blocks), len(names)), dtype=bool)
     if "elem_var_tab" in store:
         table = store.numbers("elem_var_tab")
         if table.shape != truth.shape:
-            raise FormatError("the table of variables by block cannot be read", where=path, mend=_DAMAGED)
+            raise FormatError("the table of variables by block cannot be read", where=path, mend=DAMAGED)
         truth = table != 0
     top = cb.top_dimension([block.cells for block in blocks])
     out = {}
@@ -157,7 +155,8 @@ def _cell_data(
             if not len(block.cells):
                 continue
             if truth[j, i] and own in store:
-                parts.append(_filled(store.numbers(own, step), name, len(block.cells), path))
+                values = _row(store, own, step, steps, name, path)
+                parts.append(_filled(values, name, len(block.cells), path))
             elif block.cells.dimension == top:
                 raise FormatError(
                     f"the variable '{name}' is missing on block '{block.name}'",
@@ -173,15 +172,27 @@ def _cell_data(
 def _variables(store: Store, name: str, dim: str, path: Path) -> list[str]:
     names = store.words(name)
     if len(set(names)) < len(names) or "" in names or store.dim(dim) not in (None, len(names)):
-        raise FormatError(f"the names of the variables ('{name}') are damaged", where=path, mend=_DAMAGED)
+        raise FormatError(f"the names of the variables ('{name}') are damaged", where=path, mend=DAMAGED)
     return names
+
+
+def _row(store: Store, own: str, step: int, steps: int, name: str, path: Path) -> Array:
+    """The values of a variable at a step, which must be stored for all steps."""
+    stored = store.shape(own)[:1] if own in store else (0,)
+    if stored != (steps,):
+        raise FormatError(
+            f"the variable '{name}' is stored for {stored[0] if stored else 0} of {steps} steps",
+            where=path,
+            mend=DAMAGED,
+        )
+    return store.numbers(own, step)
 
 
 def _filled(values: Array, name: str, count: int, path: Path) -> Array:
     """The values; NaN where netCDF says that none was written."""
     if values.shape != (count,) or values.dtype.kind != "f":
         raise FormatError(
-            f"the variable '{name}' has {values.size} values for {count}", where=path, mend=_DAMAGED
+            f"the variable '{name}' has {values.size} values for {count}", where=path, mend=DAMAGED
         )
     never = values == values.dtype.type(_FILL)
     return np.where(never, values.dtype.type(np.nan), values) if never.any() else values

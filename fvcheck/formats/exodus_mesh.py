@@ -14,10 +14,9 @@ import numpy as np
 
 from fvcheck.errors import FormatError
 from fvcheck.formats import cellblocks as cb
+from fvcheck.formats.check import DAMAGED
 from fvcheck.formats.exodus_store import Store
 from fvcheck.mesh.piece import Array, Faces
-
-_DAMAGED = "The file is damaged or incomplete; export it again."
 
 # (beginnings of the element name) -> nodes -> VTK type. Longer names come first.
 _TRIANGLES = {3: cb.TRIANGLE, 6: cb.TRIANGLE6, 7: cb.TRIANGLE7}
@@ -66,13 +65,13 @@ def points(store: Store, path: Path) -> Array:
         axes = [store.numbers(f"coord{axis}") for axis in "xyz"[:dims]]
     else:
         axes = list(store.numbers("coord"))
-    if len(axes) != dims or any(axis.shape != (count,) for axis in axes):
-        raise FormatError(f"the coordinates do not fit the {count} nodes", where=path, mend=_DAMAGED)
+    if len(axes) != dims or any(axis.shape != (count,) or axis.dtype.kind != "f" for axis in axes):
+        raise FormatError(f"the coordinates do not fit the {count} nodes", where=path, mend=DAMAGED)
     out = np.zeros((len(axes[0]), 3), dtype=np.result_type(*axes, np.float32))
     for column, axis in enumerate(axes):
         out[:, column] = axis
     if (np.abs(out) > 9.9e36).any():
-        raise FormatError("some coordinates were never written", where=path, mend=_DAMAGED)
+        raise FormatError("some coordinates were never written", where=path, mend=DAMAGED)
     return out
 
 
@@ -80,14 +79,14 @@ def blocks(store: Store, path: Path) -> list[ElementBlock]:
     """All element blocks, empty ones included, in the order of the file."""
     count = store.dim("num_el_blk") or 0
     if count > 1_000_000:
-        raise FormatError(f"{count} element blocks are declared", where=path, mend=_DAMAGED)
+        raise FormatError(f"{count} element blocks are declared", where=path, mend=DAMAGED)
     ids = ids_of(store, "eb_prop1", count, path)
     names = names_of(store, "eb_names", count, ids, "block")
     out = [_block(store, i + 1, ids[i], names[i], path) for i in range(count)]
     total, declared = sum(len(block.cells) for block in out), store.dim("num_elem")
     if total == 0 or (declared is not None and declared != total):
         raise FormatError(
-            f"{declared} elements are declared, the blocks hold {total}", where=path, mend=_DAMAGED
+            f"{declared} elements are declared, the blocks hold {total}", where=path, mend=DAMAGED
         )
     return out
 
@@ -100,13 +99,13 @@ def _block(store: Store, number: int, ident: int, name: str, path: Path) -> Elem
         # The status is 0 for a block that is empty on purpose.
         status = store.numbers("eb_status") if "eb_status" in store else np.ones(0)
         if size or (size is None and (len(status) < number or status[number - 1] != 0)):
-            raise FormatError("the elements of a block have no nodes", where=spot, mend=_DAMAGED)
+            raise FormatError("the elements of a block have no nodes", where=spot, mend=DAMAGED)
         none = cb.Block(cb.TRIANGLE, np.empty(0, dtype=np.int64), np.zeros(1, dtype=np.int64))
         return ElementBlock(number, ident, name, "", none)
     element = store.attribute(connect, "elem_type").upper()
     values = store.numbers(connect)
     if values.dtype.kind not in "iu":
-        raise FormatError("the node numbers are no whole numbers", where=spot, mend=_DAMAGED)
+        raise FormatError("the node numbers are no whole numbers", where=spot, mend=DAMAGED)
     table = values.astype(np.int64) - 1
     if element.startswith(("NSIDED", "NFACED")):
         offsets = _counts(store, f"ebepecnt{number}", len(table.reshape(-1)), size, spot)
@@ -116,7 +115,7 @@ def _block(store: Store, number: int, ident: int, name: str, path: Path) -> Elem
             )
         return _polyhedra(store, number, ident, name, table.reshape(-1), offsets, path)
     if table.ndim != 2 or (size is not None and len(table) != size):
-        raise FormatError("the node lists do not fit the elements of the block", where=spot, mend=_DAMAGED)
+        raise FormatError("the node lists do not fit the elements of the block", where=spot, mend=DAMAGED)
     kind = _kind(element, table.shape[1], spot)
     if kind in _ORDER:
         table = np.ascontiguousarray(table[:, list(_ORDER[kind])])
@@ -140,9 +139,9 @@ def _counts(store: Store, name: str, total: int, size: int | None, spot: str) ->
     """Offsets from the numbers of entries per element."""
     counts = store.numbers(name)
     if counts.ndim != 1 or counts.dtype.kind not in "iu" or (counts < 0).any():
-        raise FormatError(f"'{name}' cannot be read", where=spot, mend=_DAMAGED)
+        raise FormatError(f"'{name}' cannot be read", where=spot, mend=DAMAGED)
     if int(counts.sum(dtype=np.int64)) != total or (size is not None and len(counts) != size):
-        raise FormatError("the node lists do not fit the elements of the block", where=spot, mend=_DAMAGED)
+        raise FormatError("the node lists do not fit the elements of the block", where=spot, mend=DAMAGED)
     return np.concatenate([[0], np.cumsum(counts, dtype=np.int64)])
 
 
@@ -152,7 +151,7 @@ def _polyhedra(
     """Cells by their faces; the nodes of a cell are those of its faces, each once."""
     face_nodes, face_offsets = _face_blocks(store, path)
     if len(cell_faces) and (cell_faces.min() < 0 or cell_faces.max() >= len(face_offsets) - 1):
-        raise FormatError("a face number lies outside the faces", where=f"{path}, {name}", mend=_DAMAGED)
+        raise FormatError("a face number lies outside the faces", where=f"{path}, {name}", mend=DAMAGED)
     cells = len(offsets) - 1
     owner = np.repeat(np.arange(cells), np.diff(offsets))
     sizes = np.diff(face_offsets)[cell_faces]
@@ -173,7 +172,7 @@ def _face_blocks(store: Store, path: Path) -> tuple[Array, Array]:
         nodes.append(flat)
         offsets.append(own[1:] + offsets[-1][-1])
     if not nodes:
-        raise FormatError("there are polyhedra without faces", where=path, mend=_DAMAGED)
+        raise FormatError("there are polyhedra without faces", where=path, mend=DAMAGED)
     return np.concatenate(nodes), np.concatenate(offsets)
 
 
@@ -200,7 +199,7 @@ def ids_of(store: Store, name: str, count: int, path: Path) -> list[int]:
         return list(range(1, count + 1))
     ids = store.numbers(name).reshape(-1)
     if len(ids) != count:
-        raise FormatError(f"'{name}' has {len(ids)} ids for {count}", where=path, mend=_DAMAGED)
+        raise FormatError(f"'{name}' has {len(ids)} ids for {count}", where=path, mend=DAMAGED)
     return [int(one) for one in ids]
 
 

@@ -13,11 +13,11 @@ import numpy as np
 
 from fvcheck.errors import FormatError
 from fvcheck.formats import cellblocks as cb
+from fvcheck.formats.check import DAMAGED
 from fvcheck.formats.exodus_mesh import ElementBlock, ids_of, names_of
 from fvcheck.formats.exodus_store import Store
 from fvcheck.mesh.piece import Array, Faces, NamedFaces
 
-_DAMAGED = "The file is damaged or incomplete; export it again."
 _QUAD_KINDS = (cb.QUAD, cb.QUAD8, cb.QUAD9)
 _TRI = ((0, 1), (1, 2), (2, 0))
 _TRI_MID = ((0, 1, 3), (1, 2, 4), (2, 0, 5))
@@ -56,7 +56,7 @@ def patches(
         if f"elem_ss{i + 1}" in store:
             sets[name] = _side_set(store, i + 1, name, path)
         elif store.dim(f"num_side_ss{i + 1}"):
-            raise FormatError(f"side set '{name}' has no sides", where=path, mend=_DAMAGED)
+            raise FormatError(f"side set '{name}' has no sides", where=path, mend=DAMAGED)
     shifts = _shifts(store, found, list(sets.values()))
     for name, (elements, sides) in sets.items():
         out[name] = _faces(found, shifts, solid, elements, sides, f"{path}, side set {name}")
@@ -68,7 +68,7 @@ def patches(
                 store.numbers(f"node_ns{i + 1}").reshape(-1).astype(np.int64) - 1
             )
         elif store.dim(f"num_nod_ns{i + 1}") and name not in out:
-            raise FormatError(f"node set '{name}' has no nodes", where=path, mend=_DAMAGED)
+            raise FormatError(f"node set '{name}' has no nodes", where=path, mend=DAMAGED)
     return out
 
 
@@ -76,8 +76,9 @@ def _side_set(store: Store, number: int, name: str, path: Path) -> tuple[Array, 
     """Element numbers (from 0) and side numbers (from 1)."""
     elements, sides = store.numbers(f"elem_ss{number}"), store.numbers(f"side_ss{number}")
     fits = elements.ndim == 1 and elements.shape == sides.shape
+    fits = fits and store.dim(f"num_side_ss{number}") in (None, len(sides))
     if not fits or elements.dtype.kind not in "iu" or sides.dtype.kind not in "iu":
-        raise FormatError(f"side set '{name}' cannot be read", where=path, mend=_DAMAGED)
+        raise FormatError(f"side set '{name}' cannot be read", where=path, mend=DAMAGED)
     return elements.astype(np.int64) - 1, sides.astype(np.int64)
 
 
@@ -118,7 +119,7 @@ def _faces(
 ) -> NamedFaces:
     ends = np.cumsum([len(block.cells) for block in found])
     if len(elements) and (elements.min() < 0 or elements.max() >= ends[-1]):
-        raise FormatError("an element number lies outside the elements", where=spot, mend=_DAMAGED)
+        raise FormatError("an element number lies outside the elements", where=spot, mend=DAMAGED)
     owner = np.searchsorted(ends, elements, side="right")
     lists: list[Array] = []
     for index in np.unique(owner):
@@ -155,4 +156,4 @@ def _block_sides(
 
 def _within(sides: Array, counts: Array, spot: str) -> None:
     if ((sides < 0) | (sides >= counts)).any():
-        raise FormatError("a side number does not fit its element", where=spot, mend=_DAMAGED)
+        raise FormatError("a side number does not fit its element", where=spot, mend=DAMAGED)

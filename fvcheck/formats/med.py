@@ -22,13 +22,12 @@ import numpy as np
 from fvcheck.errors import FormatError
 from fvcheck.formats import cellblocks as cb
 from fvcheck.formats import hdf5_safe, med_fields, med_groups
-from fvcheck.formats.check import check_piece
+from fvcheck.formats.check import DAMAGED, check_piece
 from fvcheck.formats.med_fields import MedMesh, whole
 from fvcheck.formats.timeline import timeline
 from fvcheck.hints import Hint
 from fvcheck.mesh.piece import Array, Export, Piece
 
-_DAMAGED = hdf5_safe.DAMAGED
 _FAMILY = "med:family"
 # Geometric type -> (VTK type, nodes). The order of the nodes differs from VTK's at most by the
 # handedness of solid cells.
@@ -150,10 +149,13 @@ def _read_mesh(file: Any, name: str, path: Path) -> MedMesh:
     types, offsets, flat = cb.join(blocks)
     tags = np.concatenate(families) if families else np.empty(0, dtype=np.int64)
     of_cells, of_nodes = med_groups.families(file, name, path)
+    stray = set(np.unique(tags).tolist()) - set(of_cells) - {0}
+    if stray:
+        raise FormatError(f"the cell family {min(stray)} is not defined", where=path, mend=DAMAGED)
     top = cb.top_dimension(blocks)
     edge = [family for block, family in zip(blocks, families) if block.dimension == top - 1]
     used = np.unique(np.concatenate(edge)) if edge else tags[:0]
-    named = {int(tag): of_cells.get(int(tag), f"family {tag}") for tag in used if tag}
+    named = {int(tag): of_cells[int(tag)] for tag in used if tag}
     point_families = med_groups.family_of(nodes, len(points), path)
     patches = {
         label: cb.faces_of_vertices(np.flatnonzero(np.isin(point_families, list(numbers))))
@@ -175,11 +177,11 @@ def _read_mesh(file: Any, name: str, path: Path) -> MedMesh:
 def _points(data: Any, dims: int, path: Path) -> Array:
     values = hdf5_safe.read(data, path).reshape(-1)
     count = whole(data, "NBR", path)
-    if dims not in (2, 3) or len(values) != dims * count:
+    if dims not in (2, 3) or len(values) != dims * count or values.dtype.kind != "f":
         raise FormatError(
-            f"{len(values)} coordinates are no {count} points in {dims} dimensions", where=path, mend=_DAMAGED
+            f"{len(values)} coordinates are no {count} points in {dims} dimensions", where=path, mend=DAMAGED
         )
-    out = np.zeros((count, 3), dtype=values.dtype if values.dtype.kind == "f" else np.float64)
+    out = np.zeros((count, 3), dtype=values.dtype)
     out[:, :dims] = values.reshape(dims, count).T
     return out
 
@@ -189,19 +191,19 @@ def _block(group: Any, kind: str, path: Path) -> tuple[cb.Block, Array]:
     data = hdf5_safe.dataset(group, "NOD", spot)
     nodes = hdf5_safe.read(data, spot).reshape(-1)
     if nodes.dtype.kind not in "iu":
-        raise FormatError("the node numbers are no whole numbers", where=spot, mend=_DAMAGED)
+        raise FormatError("the node numbers are no whole numbers", where=spot, mend=DAMAGED)
     nodes = nodes.astype(np.int64) - 1
     if kind == "POG":
         ends = hdf5_safe.read(hdf5_safe.dataset(group, "INN", spot), spot).reshape(-1).astype(np.int64) - 1
         if not len(ends) or ends[0] != 0 or ends[-1] != len(nodes) or (np.diff(ends) < 0).any():
-            raise FormatError("the index of the polygons is damaged", where=spot, mend=_DAMAGED)
+            raise FormatError("the index of the polygons is damaged", where=spot, mend=DAMAGED)
         block = cb.Block(cb.POLYGON, nodes, ends)
     elif kind in _KINDS:
         vtk, width = _KINDS[kind]
         count = whole(data, "NBR", spot)
         if count * width != len(nodes):
             raise FormatError(
-                f"{len(nodes)} node numbers are no {count} cells of {width}", where=spot, mend=_DAMAGED
+                f"{len(nodes)} node numbers are no {count} cells of {width}", where=spot, mend=DAMAGED
             )
         block = cb.Block.of_table(vtk, np.ascontiguousarray(nodes.reshape(width, count).T))
     else:

@@ -11,10 +11,10 @@ import numpy as np
 from fvcheck.errors import FormatError
 from fvcheck.formats import cellblocks as cb
 from fvcheck.formats import hdf5_safe
+from fvcheck.formats.check import DAMAGED
 from fvcheck.formats.timeline import Key
 from fvcheck.mesh.piece import Array, Piece
 
-_DAMAGED = hdf5_safe.DAMAGED
 _WHOLE = "MED_NO_PROFILE_INTERNAL"
 
 
@@ -49,7 +49,7 @@ def whole(node: Any, name: str, path: object) -> int:
     """An attribute that holds one whole number."""
     value = hdf5_safe.attribute(node, name, path)
     if not isinstance(value, np.ndarray) or value.size != 1 or value.dtype.kind not in "iu":
-        raise FormatError(f"the attribute '{name}' cannot be read", where=path, mend=_DAMAGED)
+        raise FormatError(f"the attribute '{name}' cannot be read", where=path, mend=DAMAGED)
     return int(value.reshape(-1)[0])
 
 
@@ -71,18 +71,20 @@ def fields_of(file: Any, mesh: str, path: Path) -> list[Field]:
             key = (whole(node, "NDT", path), whole(node, "NOR", path))
             time = hdf5_safe.attribute(node, "PDT", path)
             if key in groups or not isinstance(time, np.ndarray) or time.size != 1:
-                raise FormatError(f"the steps of the field '{name}' are damaged", where=path, mend=_DAMAGED)
+                raise FormatError(f"the steps of the field '{name}' are damaged", where=path, mend=DAMAGED)
             groups[key] = f"{name}/{step}"
             # -1, -1 stands for "no step": its time says nothing.
             times[key] = 0.0 if key == (-1, -1) else float(time.reshape(-1)[0])
             supports |= set(hdf5_safe.names(node, path))
-        if groups:
-            on_cells = any(one.startswith("MAI.") for one in supports)
-            gauss = on_cells and _has_gauss(root, groups, path)
-            skipped = gauss or any(one.startswith("NOE.") for one in supports)
-            components = whole(group, "NCO", path)
-            plain = on_cells and not gauss
-            out.append(Field(name, components, groups, times, "NOE" in supports, plain, skipped))
+        values = [one for one in supports if one == "NOE" or one.startswith(("MAI.", "NOE."))]
+        if not values:
+            raise FormatError(f"the field '{name}' has no values", where=path, mend=DAMAGED)
+        on_cells = any(one.startswith("MAI.") for one in supports)
+        gauss = on_cells and _has_gauss(root, groups, path)
+        skipped = gauss or any(one.startswith("NOE.") for one in supports)
+        components = whole(group, "NCO", path)
+        plain = on_cells and not gauss
+        out.append(Field(name, components, groups, times, "NOE" in supports, plain, skipped))
     return out
 
 
@@ -101,7 +103,7 @@ def _has_gauss(root: Any, groups: dict[Key, str], path: Path) -> bool:
 def at_points(file: Any, step: Any, one: Field, mesh: MedMesh, path: Path) -> Array:
     spot = f"{path}, field {one.name}"
     if hdf5_safe.member(step, "NOE", path) is None:
-        raise FormatError("the field has no values at points in one step", where=spot, mend=_DAMAGED)
+        raise FormatError("the field has no values at points in one step", where=spot, mend=DAMAGED)
     part = hdf5_safe.group(step, "NOE", path)
     values, known = _values(file, part, one, len(mesh.piece.points), spot)
     lost = int((mesh.needed_nodes & ~known).sum())
@@ -119,7 +121,7 @@ def at_cells(file: Any, step: Any, one: Field, mesh: MedMesh, path: Path) -> Arr
     spot = f"{path}, field {one.name}"
     stray = {s[4:] for s in hdf5_safe.names(step, path) if s.startswith("MAI.")} - set(mesh.kinds)
     if stray:
-        raise FormatError(f"values for cells '{min(stray)}', which the mesh lacks", where=spot, mend=_DAMAGED)
+        raise FormatError(f"values for cells '{min(stray)}', which the mesh lacks", where=spot, mend=DAMAGED)
     top = cb.top_dimension(mesh.blocks)
     parts = []
     for kind, block in zip(mesh.kinds, mesh.blocks):
@@ -143,7 +145,7 @@ def _values(file: Any, part: Any, one: Field, count: int, spot: str) -> tuple[Ar
     """Values for ``count`` points or cells of one type, and which of them are stored."""
     profiles = hdf5_safe.names(part, spot)
     if len(profiles) != 1:
-        raise FormatError(f"the values have {len(profiles)} profiles", where=spot, mend=_DAMAGED)
+        raise FormatError(f"the values have {len(profiles)} profiles", where=spot, mend=DAMAGED)
     group = hdf5_safe.group(part, profiles[0], spot)
     stored = whole(group, "NBR", spot)
     flat = hdf5_safe.read(hdf5_safe.dataset(group, "CO", spot), spot).reshape(-1)
@@ -153,14 +155,14 @@ def _values(file: Any, part: Any, one: Field, count: int, spot: str) -> tuple[Ar
         data = hdf5_safe.dataset(file, f"PROFILS/{profiles[0]}/PFL", spot)
         rows = hdf5_safe.read(data, spot).reshape(-1).astype(np.int64) - 1
         if len(np.unique(rows)) != len(rows) or (len(rows) and not 0 <= rows.min() <= rows.max() < count):
-            raise FormatError(f"the profile '{profiles[0]}' is damaged", where=spot, mend=_DAMAGED)
+            raise FormatError(f"the profile '{profiles[0]}' is damaged", where=spot, mend=DAMAGED)
         known[:] = False
         known[rows] = True
     if one.components < 1 or len(flat) != len(rows) * one.components or stored not in (len(rows), count):
         raise FormatError(
             f"{len(flat)} values are no {len(rows)} with {one.components} components",
             where=spot,
-            mend=_DAMAGED,
+            mend=DAMAGED,
         )
     table = flat.reshape(one.components, len(rows)).T
     if len(rows) < count:

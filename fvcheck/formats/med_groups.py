@@ -36,7 +36,10 @@ def families(file: Any, mesh: str, path: Path) -> tuple[dict[int, str], dict[str
         return {}, {}
     cells = _groups(root, "ELEME", path)
     shared = Counter(name for groups in cells.values() for name in groups)
-    named = {number: min(groups, key=lambda name: shared[name]) for number, groups in cells.items() if groups}
+    named = {
+        number: min(groups, key=lambda name: shared[name]) if groups else f"family {number}"
+        for number, groups in cells.items()
+    }
     points: dict[str, set[int]] = {}
     for number, groups in _groups(root, "NOEUD", path).items():
         for name in groups:
@@ -72,7 +75,8 @@ def _names(family: Any, name: str, path: Path) -> list[str]:
         table = np.ascontiguousarray(data[()])
     except (OSError, RuntimeError, LookupError, ValueError, TypeError, AttributeError):
         raise damaged from None
-    if table.dtype.kind not in "iuS" or not table.size:
+    count = hdf5_safe.attribute(family["GRO"], "NBR", path)
+    if table.dtype.kind not in "iuS" or not table.size or (count is not None and np.any(count != len(table))):
         raise damaged
     rows = table.reshape(len(table), -1)
     words = [row.tobytes().split(b"\0")[0].decode("utf-8", "replace").strip() for row in rows]

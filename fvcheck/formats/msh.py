@@ -22,7 +22,7 @@ import numpy as np
 from fvcheck.errors import FormatError
 from fvcheck.formats import cellblocks as cb
 from fvcheck.formats import msh_mesh
-from fvcheck.formats.check import check_piece
+from fvcheck.formats.check import DAMAGED, check_piece
 from fvcheck.formats.msh_mesh import Elements, Lookup
 from fvcheck.formats.msh_sections import Contents, Data, contents
 from fvcheck.formats.msh_tokens import BinaryNumbers, Numbers, TextNumbers
@@ -30,7 +30,6 @@ from fvcheck.formats.timeline import Timeline, timeline
 from fvcheck.hints import Hint
 from fvcheck.mesh.piece import Array, Export, Piece
 
-_DAMAGED = "The file is damaged or incomplete; export it again."
 _PHYSICAL, _GEOMETRICAL = "gmsh:physical", "gmsh:geometrical"
 
 Stored = dict[str, dict[tuple[int, ...], list[Data]]]
@@ -157,7 +156,7 @@ def _section(path: Path, toc: Contents, name: str) -> bytes:
 def _count_line(data: bytes, where: str) -> tuple[int, bytes]:
     line, _, rest = data.partition(b"\n")
     if not line.strip().isdigit():
-        raise FormatError("the number of entries cannot be read", where=where, mend=_DAMAGED)
+        raise FormatError("the number of entries cannot be read", where=where, mend=DAMAGED)
     return int(line), rest
 
 
@@ -208,16 +207,16 @@ def _values(parts: list[Data], at: Lookup, needed: Array, path: Path, toc: Conte
     known = np.zeros(len(needed), dtype=bool)
     for part in parts:
         if part.components != width:
-            raise FormatError("the number of components changes", where=where, mend=_DAMAGED)
+            raise FormatError("the number of components changes", where=where, mend=DAMAGED)
         source = _numbers(_bytes(path, part.start, part.stop), toc, where)
         ids, values = source.rows(part.count, ("i", 1), ("d", width))
         source.end()
         spots = at(ids[:, 0], user)
         if len(np.unique(spots)) < len(spots):
-            raise FormatError("an id stands twice", where=where, mend=_DAMAGED)
+            raise FormatError("an id stands twice", where=where, mend=DAMAGED)
         again = known[spots]
         if not np.array_equal(out[spots[again]], values[again], equal_nan=True):
-            raise FormatError("two partitions give different values", where=where, mend=_DAMAGED)
+            raise FormatError("two partitions give different values", where=where, mend=DAMAGED)
         out[spots] = values
         known[spots] = True
     lost = int((needed & ~known).sum())

@@ -9,10 +9,10 @@ import numpy as np
 
 from fvcheck.errors import FormatError
 from fvcheck.formats import cellblocks as cb
+from fvcheck.formats.check import DAMAGED
 from fvcheck.formats.msh_tokens import Numbers, integers, parse, token_starts, whole
 from fvcheck.mesh.piece import Array
 
-_DAMAGED = "The file is damaged or incomplete; export it again."
 _MOST_TAGS = 10_000
 
 # Element type -> (VTK type, nodes, for each node in VTK's order its place in Gmsh's), from the
@@ -58,11 +58,11 @@ class Lookup:
         self._order = np.argsort(ids, kind="stable")
         self._sorted = ids[self._order]
         if len(ids) and self._sorted[0] < 1:
-            raise FormatError(f"{what} number {self._sorted[0]} is not positive", where=where, mend=_DAMAGED)
+            raise FormatError(f"{what} number {self._sorted[0]} is not positive", where=where, mend=DAMAGED)
         twice = np.flatnonzero(np.diff(self._sorted) == 0)
         if len(twice):
             raise FormatError(
-                f"{what} number {self._sorted[twice[0]]} stands twice", where=where, mend=_DAMAGED
+                f"{what} number {self._sorted[twice[0]]} stands twice", where=where, mend=DAMAGED
             )
 
     def __call__(self, wanted: Array, user: str) -> Array:
@@ -75,7 +75,7 @@ class Lookup:
             raise FormatError(
                 f"{user} refers to {self._what} {number}, which the file does not hold",
                 where=self._where,
-                mend=_DAMAGED,
+                mend=DAMAGED,
             )
         return self._order[spot]
 
@@ -92,7 +92,7 @@ def physical_names(text: bytes, where: object) -> dict[tuple[int, int], str]:
     except (ValueError, IndexError):
         whole_list = False
     if not whole_list:
-        raise FormatError("the physical names cannot be read", where=where, mend=_DAMAGED)
+        raise FormatError("the physical names cannot be read", where=where, mend=DAMAGED)
     return names
 
 
@@ -128,7 +128,7 @@ def nodes(source: Numbers, version: str, where: object) -> tuple[Array, Array]:
         head = integers(source, "i", 3)
         dim = head[0] if version == "4.1" else head[1]
         if dim not in (0, 1, 2, 3):
-            raise FormatError(f"a node block has the dimension {dim}", where=where, mend=_DAMAGED)
+            raise FormatError(f"a node block has the dimension {dim}", where=where, mend=DAMAGED)
         (count,) = integers(source, "s", 1)
         extra = dim if head[2] else 0
         if version == "4.1":
@@ -181,7 +181,7 @@ def elements_2_binary(source: Numbers, declared: int, where: object) -> list[Ele
     while read < declared:
         kind, count, tags = integers(source, "i", 3)
         if count < 1 or not 0 <= tags <= _MOST_TAGS:
-            raise FormatError("an element block has an impossible header", where=where, mend=_DAMAGED)
+            raise FormatError("an element block has an impossible header", where=where, mend=DAMAGED)
         (table,) = source.rows(count, ("i", 1 + tags + _known(kind, where)[1]))
         out.append(_split_2(kind, table[:, 0], table[:, 1:], tags, where))
         read += count
@@ -201,7 +201,7 @@ def elements_2_text(text: bytes, declared: int, where: object) -> list[Elements]
     if not len(starts):
         return []
     if lengths.min() < 4:
-        raise FormatError("an element line is too short", where=where, mend=_DAMAGED)
+        raise FormatError("an element line is too short", where=where, mend=DAMAGED)
     kinds, tags = flat[starts + 1], flat[starts + 2]
     out = []
     for kind, count in np.unique(np.stack([kinds, tags], axis=1), axis=0).tolist():
@@ -209,7 +209,7 @@ def elements_2_text(text: bytes, declared: int, where: object) -> list[Elements]
         width = 3 + count + _known(kind, where)[1]
         if not 0 <= count <= _MOST_TAGS or (lengths[rows] != width).any():
             raise FormatError(
-                f"an element line of type {kind} has the wrong length", where=where, mend=_DAMAGED
+                f"an element line of type {kind} has the wrong length", where=where, mend=DAMAGED
             )
         table = flat[starts[rows][:, None] + np.arange(width)]
         out.append(_split_2(kind, table[:, 0], table[:, 3:], count, where))
@@ -240,5 +240,5 @@ def _known(kind: int, where: object) -> tuple[int, int, tuple[int, ...] | None]:
 def _counted(parts: list[Array], declared: int, what: str, where: object) -> Array:
     count = sum(len(part) for part in parts)
     if count != declared:
-        raise FormatError(f"{declared} {what} are declared, {count} are there", where=where, mend=_DAMAGED)
+        raise FormatError(f"{declared} {what} are declared, {count} are there", where=where, mend=DAMAGED)
     return np.concatenate(parts) if parts else np.empty(0, dtype=np.int64)

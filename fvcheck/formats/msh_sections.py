@@ -9,8 +9,8 @@ from dataclasses import dataclass
 from pathlib import Path
 
 from fvcheck.errors import FormatError
+from fvcheck.formats.check import DAMAGED
 
-_DAMAGED = "The file is damaged or incomplete; export it again."
 _MARK = re.compile(rb"\$([A-Za-z0-9_]{1,80})[ \t]*\r?\n")
 _VERSIONS = ("2", "2.0", "2.1", "2.2", "4", "4.0", "4.1")
 _DATA = ("NodeData", "ElementData")
@@ -72,7 +72,7 @@ def _contents(raw: mmap.mmap, path: Path) -> Contents:
     sections = _sections(raw, path)
     for name in ("MeshFormat", "Entities", "PartitionedEntities", "PhysicalNames", "Nodes", "Elements"):
         if sum(section.name == name for section in sections) > 1:
-            raise FormatError(f"there is more than one ${name}", where=path, mend=_DAMAGED)
+            raise FormatError(f"there is more than one ${name}", where=path, mend=DAMAGED)
     first = next((section for section in sections if section.name == "MeshFormat"), None)
     if first is None:
         raise FormatError(
@@ -94,14 +94,14 @@ def _sections(raw: mmap.mmap, path: Path) -> tuple[Section, ...]:
             return tuple(sections)
         mark = _MARK.match(raw, at)
         if mark is None:
-            raise FormatError(f"no section begins at byte {at}", where=path, mend=_DAMAGED)
+            raise FormatError(f"no section begins at byte {at}", where=path, mend=DAMAGED)
         name = mark[1].decode()
         close = b"$End" + mark[1]
         stop = raw.find(close, mark.end())
         while stop >= 0 and stop + len(close) < size and raw[stop + len(close)] > 32:
             stop = raw.find(close, stop + 1)
         if stop < 0:
-            raise FormatError(f"${name} has no end; the file is cut short", where=path, mend=_DAMAGED)
+            raise FormatError(f"${name} has no end; the file is cut short", where=path, mend=DAMAGED)
         sections.append(Section(name, mark.end(), stop))
         at = stop + len(close)
 
@@ -123,7 +123,7 @@ def _format(text: bytes, path: Path) -> tuple[str, str, int]:
         one = rest[:4]
         if one in (b"\1\0\0\0", b"\0\0\0\1"):
             return version, "<" if one[0] else ">", int(words[2])
-    raise FormatError("$MeshFormat cannot be read", where=path, mend=_DAMAGED)
+    raise FormatError("$MeshFormat cannot be read", where=path, mend=DAMAGED)
 
 
 def _data(raw: mmap.mmap, section: Section, path: Path) -> Data:
@@ -136,7 +136,7 @@ def _data(raw: mmap.mmap, section: Section, path: Path) -> Data:
         nonlocal at
         end = raw.find(b"\n", at, limit)
         if end < 0:
-            raise FormatError("the header of the data is cut short", where=where, mend=_DAMAGED)
+            raise FormatError("the header of the data is cut short", where=where, mend=DAMAGED)
         text = raw[at:end].decode("utf-8", "replace").strip()
         at = end + 1
         return text
@@ -146,11 +146,11 @@ def _data(raw: mmap.mmap, section: Section, path: Path) -> Data:
         reals = [float(line()) for _ in range(int(line()))]
         numbers = [int(line()) for _ in range(int(line()))]
     except ValueError:
-        raise FormatError("the header of the data cannot be read", where=where, mend=_DAMAGED) from None
+        raise FormatError("the header of the data cannot be read", where=where, mend=DAMAGED) from None
     name = strings[0] if strings else ""
     time = reals[0] if reals else 0.0
     if len(numbers) < 3 or not 1 <= numbers[1] <= 100 or numbers[2] < 0 or not math.isfinite(time):
-        raise FormatError("the header of the data cannot be read", where=where, mend=_DAMAGED)
+        raise FormatError("the header of the data cannot be read", where=where, mend=DAMAGED)
     of_nodes = section.name == "NodeData"
     name = name or ("node data" if of_nodes else "element data")
     return Data(of_nodes, name, numbers[0], time, numbers[1], numbers[2], at, section.stop)

@@ -8,10 +8,10 @@ from typing import Protocol
 import numpy as np
 
 from fvcheck.errors import FormatError
+from fvcheck.formats.check import DAMAGED
 from fvcheck.mesh.piece import Array
 
 _EXACT = 2**53
-_DAMAGED = "The file is damaged or incomplete; export it again."
 
 
 class Numbers(Protocol):
@@ -42,9 +42,9 @@ def parse(text: bytes, where: object) -> Array:
             warnings.simplefilter("error")
             values = np.fromstring(text, dtype=np.float64, sep=" ")
     except (DeprecationWarning, ValueError):
-        raise FormatError("something is no number", where=where, mend=_DAMAGED) from None
+        raise FormatError("something is no number", where=where, mend=DAMAGED) from None
     if len(values) != words:
-        raise FormatError("something is no number", where=where, mend=_DAMAGED)
+        raise FormatError("something is no number", where=where, mend=DAMAGED)
     return values
 
 
@@ -60,7 +60,7 @@ def whole(values: Array, where: object) -> Array:
     """int64 of numbers that were read as float64; they must be whole and below 2**53."""
     # Written so that NaN fails too.
     if not (np.abs(values) < _EXACT).all() or (values != np.floor(values)).any():
-        raise FormatError("something that counts or numbers is no whole number", where=where, mend=_DAMAGED)
+        raise FormatError("something that counts or numbers is no whole number", where=where, mend=DAMAGED)
     return values.astype(np.int64)
 
 
@@ -86,7 +86,7 @@ class TextNumbers:
 
     def end(self) -> None:
         if self._at != len(self._values):
-            raise FormatError("there is more than the section declares", where=self._where, mend=_DAMAGED)
+            raise FormatError("there is more than the section declares", where=self._where, mend=DAMAGED)
 
 
 class BinaryNumbers:
@@ -111,7 +111,7 @@ class BinaryNumbers:
             if columns and table is not None:
                 values = table[str(index)]
                 if kind == "s" and values.size and values.max() >= _EXACT:
-                    raise FormatError("a count or number is absurdly large", where=self._where, mend=_DAMAGED)
+                    raise FormatError("a count or number is absurdly large", where=self._where, mend=DAMAGED)
             else:
                 values = np.empty((count, 0))
             out.append(values.astype(np.float64 if kind == "d" else np.int64))
@@ -119,11 +119,11 @@ class BinaryNumbers:
 
     def end(self) -> None:
         if self._data[self._at :].strip():
-            raise FormatError("there is more than the section declares", where=self._where, mend=_DAMAGED)
+            raise FormatError("there is more than the section declares", where=self._where, mend=DAMAGED)
 
 
 def _room(count: int, width: int, left: int, where: object) -> None:
     if count < 0 or width < 0 or count * width > left:
         raise FormatError(
-            f"{count} entries are declared, more than the section holds", where=where, mend=_DAMAGED
+            f"{count} entries are declared, more than the section holds", where=where, mend=DAMAGED
         )

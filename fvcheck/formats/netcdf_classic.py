@@ -17,10 +17,11 @@ from pathlib import Path
 import numpy as np
 
 from fvcheck.errors import FormatError
+from fvcheck.formats.check import DAMAGED
 from fvcheck.mesh.piece import Array
 
 MAGIC = (b"CDF\x01", b"CDF\x02", b"CDF\x05")
-_DAMAGED = "The file is damaged or incomplete; export it again."
+
 _TYPES = (None, ">i1", "S1", ">i2", ">i4", ">f4", ">f8", ">u1", ">u2", ">u4", ">i8", ">u8")
 _MOST_DIMENSIONS = 1024
 
@@ -100,7 +101,7 @@ class _Header:
         return out
 
     def wrong(self, what: str) -> FormatError:
-        return FormatError(f"netCDF: {what}", where=self._path, mend=_DAMAGED)
+        return FormatError(f"netCDF: {what}", where=self._path, mend=DAMAGED)
 
 
 class ClassicStore:
@@ -180,7 +181,7 @@ class ClassicStore:
         """Values of a numeric variable, or of one index of its first axis; native byte order."""
         found = self._find(name)
         if found.dtype.kind == "S":
-            raise FormatError(f"'{name}' holds no numbers", where=self._path, mend=_DAMAGED)
+            raise FormatError(f"'{name}' holds no numbers", where=self._path, mend=DAMAGED)
         values = self._values(found, name, row)
         return np.ascontiguousarray(values, dtype=found.dtype.newbyteorder("="))
 
@@ -188,7 +189,7 @@ class ClassicStore:
         """The strings of a table of characters."""
         found = self._find(name)
         if found.dtype.kind != "S" or len(found.shape) != 2:
-            raise FormatError(f"'{name}' holds no text", where=self._path, mend=_DAMAGED)
+            raise FormatError(f"'{name}' holds no text", where=self._path, mend=DAMAGED)
         table = self._values(found, name, None)
         return [line.tobytes().split(b"\0")[0].decode("utf-8", "replace").strip() for line in table]
 
@@ -198,12 +199,12 @@ class ClassicStore:
 
     def _find(self, name: str) -> Variable:
         if name not in self.variables:
-            raise FormatError(f"there is no variable '{name}'", where=self._path, mend=_DAMAGED)
+            raise FormatError(f"there is no variable '{name}'", where=self._path, mend=DAMAGED)
         return self.variables[name]
 
     def _values(self, found: Variable, name: str, row: int | None) -> Array:
         if row is not None and (not found.shape or not 0 <= row < found.shape[0]):
-            raise FormatError(f"'{name}' has no step {row}", where=self._path, mend=_DAMAGED)
+            raise FormatError(f"'{name}' has no step {row}", where=self._path, mend=DAMAGED)
         if not found.record:
             flat = self._data[found.begin : found.begin + found.row_bytes].view(found.dtype)
             whole = flat.reshape(found.shape)
@@ -224,7 +225,7 @@ def open_classic(path: Path) -> Iterator[ClassicStore]:
     try:
         data = np.memmap(path, dtype=np.uint8, mode="r")
     except (OSError, ValueError) as error:
-        raise FormatError(f"the file cannot be opened: {error}", where=path, mend=_DAMAGED) from None
+        raise FormatError(f"the file cannot be opened: {error}", where=path, mend=DAMAGED) from None
     if len(data) < 8 or data[:4].tobytes() not in MAGIC:
-        raise FormatError("this is no classic netCDF file", where=path, mend=_DAMAGED)
+        raise FormatError("this is no classic netCDF file", where=path, mend=DAMAGED)
     yield ClassicStore(data, path)
