@@ -136,10 +136,11 @@ def _patch_of_cells(found: _Collector, piece: Piece, local: Array, block: str) -
         return np.full(len(local), found.number(block)) if block else out
     ids = np.asarray(piece.cell_data[name]).reshape(-1)[local].astype(np.int64)
     names = piece.tag_names.get(name, {})
-    for number in np.unique(ids).tolist():
-        if number in names:
-            out[ids == number] = found.number(names[number])
-        elif number != 0:
+    present = np.unique(ids).tolist()
+    for number in [n for n in names if n in present]:  # in the order of the file
+        out[ids == number] = found.number(names[number])
+    for number in present:
+        if number not in names and number != 0:
             out[ids == number] = found.number(f"patch-{number}")
     return out
 

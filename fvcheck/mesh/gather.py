@@ -59,6 +59,8 @@ def gather(pieces: Sequence[Piece]) -> Raw:
     Raises MeshError for coordinates that are not finite, node numbers out of
     range, lists that do not fit together, and unknown cell types.
     """
+    if not pieces:
+        raise MeshError("there are no 2D cells", mend="The file holds no mesh.")
     point_start = np.cumsum([0, *(len(piece.points) for piece in pieces)])
     cell_start = np.cumsum([0, *(len(piece.types) for piece in pieces)])
     for piece in pieces:

@@ -99,13 +99,15 @@ def corners(ring: Array) -> Array:
 
     A corner turns by over 30 degrees. On a coarse curve every point may do so:
     a turn below 70 degrees between two turns the same way, each at least a
-    quarter as large, counts as part of a curve (a chamfer's ends each have a
-    straight side next to them and stay corners).
+    quarter as large and below 70 degrees too, counts as part of a curve (a
+    chamfer's ends each have a straight side or a sharp corner next to them and
+    stay corners).
     """
     turn = turns(ring)
     quarter = 0.25 * np.abs(turn)
     before, after = np.roll(turn, 1) * np.sign(turn), np.roll(turn, -1) * np.sign(turn)
     curve = (np.abs(turn) < SHARP) & (before >= quarter) & (after >= quarter)
+    curve &= (before < SHARP) & (after < SHARP)
     return (np.abs(turn) > CORNER) & ~curve
 
 
