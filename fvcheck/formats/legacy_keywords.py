@@ -28,6 +28,7 @@ TIMES = ("TimeValue", "TIME")
 FIXED = {"VECTORS": 3, "NORMALS": 3, "TENSORS": 9, "TENSORS6": 6, "GLOBAL_IDS": 1, "PEDIGREE_IDS": 1}
 FIXED |= {"EDGE_FLAGS": 1}
 MOST_POINTS = 1 << 31
+MOST_COMPONENTS = 1000
 
 
 @dataclass(eq=False)
@@ -85,6 +86,8 @@ class LegacyScan:
         return words[place]
 
     def array(self, tuples: int, components: int, kind: str, what: str) -> Array:
+        if not 1 <= components <= MOST_COMPONENTS:
+            raise FormatError(f"{what} declares {components} components", where=self.path, mend=END)
         flat = self.cursor.values(tuples * components, kind, what)
         return flat if components == 1 else flat.reshape(tuples, components)
 

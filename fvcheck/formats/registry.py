@@ -9,13 +9,13 @@ when a file is asked about, not before, and exposes
 
 from __future__ import annotations
 
-from collections.abc import Callable
-from dataclasses import dataclass
+from collections.abc import Callable, Sequence
+from dataclasses import dataclass, replace
 from importlib import import_module
 from pathlib import Path
 
 from fvcheck.errors import FormatError
-from fvcheck.mesh.piece import Export
+from fvcheck.mesh.piece import Export, Piece
 
 HEAD_BYTES = 4096
 
@@ -33,12 +33,10 @@ class Format:
 def _entry(module: str, name: str, *suffixes: str) -> Format:
     """A `Format` whose reader, ``fvcheck.formats.<module>``, is imported at its first use."""
     where = f"fvcheck.formats.{module}"
-    # Until every reader is written: a module that is not there yet knows no file.
-    there = (Path(__file__).parent / f"{module}.py").exists()
     return Format(
         name,
         suffixes,
-        lambda head, path: there and import_module(where).sniff(head, path),
+        lambda head, path: import_module(where).sniff(head, path),
         lambda path: import_module(where).open_export(path),
     )
 
@@ -46,7 +44,7 @@ def _entry(module: str, name: str, *suffixes: str) -> Format:
 # The HDF5 families stand together; each looks at the root groups of the file.
 FORMATS: tuple[Format, ...] = (
     _entry("pvd", "PVD", ".pvd"),
-    _entry("vtk_xml", "VTK XML", ".vtu", ".vtp", ".vts", ".vtr", ".vti", ".vtm", ".pvtu", ".pvtp"),
+    _entry("vtk_xml", "VTK XML", ".vtu", ".vtp", ".vts", ".vtr", ".vti", ".vtm", ".pvtu"),
     _entry("vtk_legacy", "legacy VTK", ".vtk"),
     _entry("vtkhdf", "VTKHDF", ".vtkhdf", ".hdf"),
     _entry("cgns", "CGNS", ".cgns"),
@@ -83,6 +81,20 @@ def head_of(path: Path) -> bytes:
     return head
 
 
+def _within_memory(export: Export) -> Callable[[int], Sequence[Piece]]:
+    def load(step: int) -> Sequence[Piece]:
+        try:
+            return export.load(step)
+        except MemoryError:
+            raise FormatError(
+                "there is not enough memory for what the file declares",
+                where=export.path,
+                mend="Check its size; export less of the domain.",
+            ) from None
+
+    return load
+
+
 def open_export(path: str | Path) -> Export:
     """Open a file with the reader that its content asks for.
 
@@ -92,5 +104,8 @@ def open_export(path: str | Path) -> Export:
     head = head_of(path)
     for form in FORMATS:
         if form.sniff(head, path):
-            return form.open(path)
-    raise FormatError("no readable format", where=path, mend=f"Export the case as one of: {readable()}.")
+            export = form.open(path)
+            return replace(export, load=_within_memory(export))
+    claimed = [form.name for form in FORMATS if path.suffix.lower() in form.suffixes]
+    what = f"the content is not that of {claimed[0]}" if claimed else "no reader knows this kind of file"
+    raise FormatError(what, where=path, mend=f"Export the case as one of: {readable()}.")

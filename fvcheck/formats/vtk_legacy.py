@@ -46,16 +46,18 @@ def _load(path: Path) -> Piece:
 
 def _piece(scan: LegacyScan) -> Piece:
     point_data, cell_data = scan.data["POINT_DATA"], scan.data["CELL_DATA"]
+    if not point_data and not cell_data:
+        # Mostly a file cut short; this also keeps a grid from growing larger than its file.
+        raise FormatError("there are no arrays at points or cells", where=scan.path, mend=END)
     faces = None
-    if scan.dataset in ("UNSTRUCTURED_GRID", "POLYDATA"):
+    if scan.dataset == "UNSTRUCTURED_GRID":
         points = _some(scan, scan.points, "POINTS")
-        cells, faces = (
-            _listed(scan) if scan.dataset == "UNSTRUCTURED_GRID" else (poly_cells(scan.cells), None)
-        )
+        cells, faces = _listed(scan)
+    elif scan.dataset == "POLYDATA":
+        points = _some(scan, scan.points, "POINTS")
+        cells = poly_cells(scan.cells)
     else:
         sizes = _sizes(scan)
-        if not point_data and not cell_data and math.prod(sizes) > len(scan.cursor.data):
-            raise FormatError("the grid holds no arrays", where=scan.path, mend="Export the fields with it.")
         _same_count(scan, "POINT_DATA", math.prod(sizes))
         _same_count(scan, "CELL_DATA", math.prod(max(1, size - 1) for size in sizes))
         points = _lattice(scan, sizes)

@@ -30,8 +30,10 @@ TYPES = {
 }
 TYPES |= {"Float32": "f4", "Float64": "f8"}
 MOST_COMPONENTS = 1000
-# A block cannot shrink to less than this share of its size (deflate 1032:1, lz4 255:1, xz about 7000:1).
-MOST_RATIO = 10_000
+# Fields and meshes shrink to a tenth at best, constant arrays to a thousandth: what a whole
+# file may expand to is this many times its size, or the fixed number of bytes if that is more.
+MOST_RATIO = 100
+FREE_BYTES = 1 << 28
 
 
 def _inflate(block: bytes, size: int) -> bytes:
@@ -86,6 +88,7 @@ class ArrayReader:
         self.order = "<" if order == "LittleEndian" else ">"
         self.word = np.dtype(self.order + TYPES[header])
         self.expand = COMPRESSORS.get(compressor)
+        self.left = max(FREE_BYTES, MOST_RATIO * self.path.stat().st_size)
         self.starts = sorted(
             {
                 self._offset(element)
@@ -200,8 +203,11 @@ class ArrayReader:
         sizes = [full] * (count - 1) + [last or full]
         _demand_size(sum(sizes), dtype, want, where)
         at = (3 + count) * self.word.itemsize
-        if at + sum(packed) > len(blob) or sum(sizes) > MOST_RATIO * len(blob):
+        if at + sum(packed) > len(blob):
             raise FormatError("the blocks declare more than the file holds", where=where, mend=DAMAGED)
+        self.left -= sum(sizes)
+        if self.left < 0:
+            raise FormatError(f"the file expands to {MOST_RATIO} times its size", where=where, mend=DAMAGED)
         parts = []
         for size, length in zip(sizes, packed):
             parts.append(self._block(blob[at : at + length], size, where))

@@ -31,6 +31,9 @@ from fvcheck.formats.xml_scan import Document, Element
 from fvcheck.mesh.piece import Array, Faces, Piece
 
 MOST_POINTS = 1 << 31
+# A grid is built from its extent alone; its arrays, compressed, are the only measure of it.
+MOST_POINTS_PER_BYTE = 20
+FREE_POINTS = 1_000_000
 
 
 def pieces_of(document: Document) -> list[Piece]:
@@ -118,7 +121,7 @@ def _unstructured(arrays: ArrayReader, piece: Element) -> Piece | None:
     points = _count(arrays, piece, "NumberOfPoints")
     count = _count(arrays, piece, "NumberOfCells")
     if points == 0 or count == 0:
-        _refuse_hidden(arrays, piece)
+        _refuse_hidden(arrays, piece, points)
         return None
     found = _named(piece.first("Cells"))
     offsets, nodes = _connectivity(arrays, found, count, "Cells")
@@ -132,11 +135,18 @@ def _unstructured(arrays: ArrayReader, piece: Element) -> Piece | None:
     return _assemble(arrays, piece, bare.points, (types, bare.offsets, bare.nodes), faces)
 
 
-def _refuse_hidden(arrays: ArrayReader, piece: Element) -> None:
-    """A piece declared empty may not hold values: that is a damaged count."""
-    for element in piece.walk():
-        if element.tag == "DataArray" and len(arrays.values(element, None)):
-            raise FormatError("a piece is declared empty, but holds values", where=arrays.path, mend=DAMAGED)
+def _refuse_hidden(arrays: ArrayReader, piece: Element, points: int) -> None:
+    """A piece declared empty may not hold values: that is a damaged count.
+
+    One that has points, but no cells (a cloud of particles), is sound.
+    """
+    for section in piece.children:
+        if points and section.tag in ("Points", "PointData"):
+            continue
+        for element in section.all("DataArray"):
+            if len(arrays.values(element, None)):
+                wrong = "a piece is declared empty, but holds values"
+                raise FormatError(wrong, where=arrays.path, mend=DAMAGED)
 
 
 def _faces(arrays: ArrayReader, found: dict[str, Element], solid: Array) -> Faces:
@@ -172,7 +182,7 @@ def _poly(arrays: ArrayReader, piece: Element) -> Piece | None:
         if count:
             groups[tag.lower()] = _connectivity(arrays, _named(piece.first(tag)), count, tag)
     if points == 0 or not groups:
-        _refuse_hidden(arrays, piece)
+        _refuse_hidden(arrays, piece, points)
         return None
     cells = poly_cells(groups)
     bare = check_piece(Piece(_points(arrays, piece, points), *cells), arrays.path)
@@ -195,17 +205,18 @@ def _extent(arrays: ArrayReader, piece: Element) -> list[tuple[int, int]]:
 
 
 def _structured(arrays: ArrayReader, piece: Element, locate: Callable[[list[int]], Array]) -> Piece | None:
-    """A piece on a grid; ``locate`` gives its points once the data arrays have shown its size."""
+    """A piece on a grid; ``locate`` gives its points."""
     spans = _extent(arrays, piece)
     sizes = [high - low + 1 for low, high in spans]
     if min(sizes) < 1:
-        _refuse_hidden(arrays, piece)
+        _refuse_hidden(arrays, piece, 0)
         return None
     count = math.prod(sizes)
+    if count > max(FREE_POINTS, MOST_POINTS_PER_BYTE * arrays.path.stat().st_size):
+        wrong = f"the grid of {count} points is larger than its file can hold"
+        raise FormatError(wrong, where=arrays.path, mend=DAMAGED)
     point_data = _data(arrays, piece, "PointData", count)
     cell_data = _data(arrays, piece, "CellData", math.prod(max(1, size - 1) for size in sizes))
-    if not point_data and not cell_data and count > arrays.path.stat().st_size:
-        raise FormatError("the grid holds no arrays", where=arrays.path, mend="Export the fields with it.")
     points = locate(sizes)
     cells = block_cells(tuple(sizes))
     ghost = ghost_cells(point_data, cell_data, cells)
