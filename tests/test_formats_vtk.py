@@ -437,11 +437,22 @@ def test_parallel_files_of_vtk_give_all_their_pieces(tmp_path, kind):
 
 
 def test_the_time_of_a_single_file_is_its_field_array(tmp_path):
+    from vtkmodules.vtkIOParallelXML import vtkXMLPUnstructuredGridWriter
+
     data = flat_sets()["cells"]
+    data.field_data["note"] = ["a", "b"]
     data.field_data["TimeValue"] = [2.5]
     for name in ("a.vtu", "a.vtk"):
         data.save(tmp_path / name)
         assert open_export(tmp_path / name).times == (2.5,)
+    writer = vtkXMLPUnstructuredGridWriter()  # appended data by default
+    writer.SetInputData(data)
+    writer.SetFileName(str(tmp_path / "b.pvtu"))
+    assert writer.Write()
+    for name in ("b.pvtu", "b_0.vtu"):
+        export = open_export(tmp_path / name)
+        assert export.times == (2.5,)
+        assert len(export.load(0)) == 1
 
 
 # --- odd text -------------------------------------------------------------------------------------
@@ -677,6 +688,20 @@ def test_a_missing_part_is_named(tmp_path):
     for name in ("a.pvtu", "a.vtm"):
         with pytest.raises(FormatError, match=r"part_7\.vtu"):
             open_export(tmp_path / name).load(0)
+
+
+@pytest.mark.parametrize(
+    "name, kind, listed",
+    [
+        ("a.pvtu", "PUnstructuredGrid", '<Piece Source="a.pvtu"/>'),
+        ("a.vtm", "vtkMultiBlockDataSet", '<Block><DataSet file="a.vtm"/></Block>'),
+        ("a.pvd", "Collection", '<DataSet timestep="0" file="a.pvd"/>'),
+    ],
+)
+def test_a_list_that_names_itself_is_refused(tmp_path, name, kind, listed):
+    path = tmp_path / name
+    path.write_text(f'<VTKFile type="{kind}"><{kind}>{listed}</{kind}></VTKFile>')
+    assert child("print(json.dumps(outcome(Path(sys.argv[1]))))", path).startswith("refused: ")
 
 
 def test_readers_start_without_the_slow_libraries():

@@ -86,15 +86,22 @@ def _load(path: Path, *, blocks: bool) -> list[Piece]:
 
 
 def _time(document: Document) -> float | None:
+    """The field array ``TimeValue`` of a file scanned up to its first piece, or of that piece's file."""
     fields = document.primary.first("FieldData")
-    if fields is None:
+    stored = fields.all("DataArray") if fields else []
+    for element in stored:
+        if element.attributes.get("Name") != "TimeValue":
+            continue
+        if any(other.attributes.get("format") == "appended" for other in stored):
+            document = scan(document.path)  # the whole file, to know where its arrays start
+            element = next(e for e in document.primary.walk() if e.attributes.get("Name") == "TimeValue")
+        value = ArrayReader(document).values(element, None).ravel()
+        return float(value[0]) if len(value) == 1 and math.isfinite(value[0]) else None
+    piece = document.primary.first("Piece")
+    if _pieces_type(document.type) is None or piece is None:
         return None
-    for element in fields.all("DataArray"):
-        if element.attributes.get("Name") == "TimeValue" and element.attributes.get("format") != "appended":
-            value = ArrayReader(document).values(element, None).ravel()
-            if len(value) == 1 and math.isfinite(value[0]):
-                return float(value[0])
-    return None
+    source = scan(beside(document.path, piece.attributes.get("Source", ""), "piece"), stop_at="Piece")
+    return _time(source) if source.type in READERS else None
 
 
 def beside(path: Path, name: str, role: str) -> Path:

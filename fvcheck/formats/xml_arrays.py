@@ -96,6 +96,8 @@ class ArrayReader:
                 if element.tag in ("DataArray", "Array") and element.attributes.get("format") == "appended"
             }
         )
+        if self.starts and self.starts[0] != 0:
+            raise FormatError("no array starts where the appended data do", where=self.path, mend=DAMAGED)
 
     def values(self, element: Element, tuples: int | None) -> Array:
         """The array, (n,) or (n, c), in native byte order.
