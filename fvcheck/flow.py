@@ -182,6 +182,8 @@ def flow_of_export(
         raise SetupError(f"unknown cell values {cell_values!r}", mend="Use average or centroid.")
     if depth is not None and not depth > 0:
         raise SetupError(f"depth is {depth}", mend="Give a positive depth.")
+    if symmetry != "planar":
+        raise SetupError(f"{symmetry} runs cannot be balanced yet", mend="Only planar runs are handled.")
     pieces = export.load(number)
     points_only = not any(piece.cell_data for piece in pieces)
     assembly = assemble(pieces, plane=plane, keep_centres=points_only)
@@ -265,12 +267,19 @@ def _settle(
     return replace(fluid, **changes), chosen, tuple(hints)
 
 
+def mesh_arrays(pieces: Sequence[Piece], assembly: Assembly) -> tuple[dict[str, Array], dict[str, Array]]:
+    """Arrays of an export at the points and at the cells of its plane mesh."""
+    return (
+        _joined(pieces, "point_data", assembly.point_source),
+        _joined(pieces, "cell_data", assembly.cell_source),
+    )
+
+
 def _read_fields(
     pieces: Sequence[Piece], assembly: Assembly, told: FieldNames
 ) -> tuple[dict[str, Field], tuple[Hint, ...]]:
     mesh = assembly.mesh
-    point_data = _joined(pieces, "point_data", assembly.point_source)
-    cell_data = _joined(pieces, "cell_data", assembly.cell_source)
+    point_data, cell_data = mesh_arrays(pieces, assembly)
     chosen, hints = choose_fields(
         point_data, cell_data, told, n_points=mesh.n_points, n_cells=mesh.n_cells
     )
