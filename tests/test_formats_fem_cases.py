@@ -133,6 +133,15 @@ def test_parts_of_msh_data_that_partitions_wrote_are_put_together(tmp_path):
         load(written(tmp_path, text))
 
 
+def test_values_at_corners_of_elements_are_left_out_with_a_hint(tmp_path):
+    text = SQUARES + view("NodeData", "p", 0, 0.0, [(number, 2.0) for number in POINTS])
+    text += view("ElementNodeData", "stress", 0, 0.0, [(8, "4 1 2 3 4")])
+    export = msh.open_export(written(tmp_path, text))
+    assert [hint.code for hint in export.hints] == ["array-not-read"]
+    (piece,) = export.load(0)
+    assert list(piece.point_data) == ["p"]
+
+
 def test_windows_line_ends_change_nothing(tmp_path):
     text = SQUARES + view("NodeData", "p", 0, 0.0, [(number, 2.0) for number in POINTS])
     unix, windows = load(written(tmp_path, text)), load(written(tmp_path, text.replace("\n", "\r\n")))
@@ -405,6 +414,30 @@ def test_sides_that_do_not_exist_are_refused(tmp_path):
             load(path, reader=exodus)
 
 
+def test_a_layer_of_hexahedra_and_wedges_becomes_a_plane_mesh_with_the_names_of_its_side_sets(tmp_path):
+    from fvcheck.mesh.assemble import assemble
+
+    plane = [(0, 0), (1, 0), (2, 0), (3, 0), (0, 1), (1, 1), (2, 1), (3, 1)]
+    points = [(x, y, z) for z in (0.0, 0.125) for x, y in plane]
+    blocks = [
+        ("HEX8", [[1, 2, 6, 5, 9, 10, 14, 13], [2, 3, 7, 6, 10, 11, 15, 14]], "bricks"),
+        ("WEDGE6", [[3, 4, 8, 11, 12, 16], [3, 8, 7, 11, 16, 15]], "wedges"),
+    ]
+    sides = {
+        "floor": [(1, 1), (2, 1), (3, 1)],
+        "left": [(1, 4)],
+        "right": [(3, 2)],
+        "roof": [(1, 3), (2, 3), (4, 2)],
+        "front": [(1, 5), (2, 5), (3, 4), (4, 4)],
+        "back": [(1, 6), (2, 6), (3, 5), (4, 5)],
+    }
+    found = assemble([load(exodus_file(tmp_path / "layer.exo", points, blocks, sides=sides), reader=exodus)])
+    assert found.thickness == 0.125
+    np.testing.assert_allclose(found.mesh.areas, [1, 1, 0.5, 0.5], rtol=1e-15)
+    edges = {name: len(found.mesh.patch_edges(name)) for name in found.mesh.boundary.names}
+    assert edges == {"floor": 3, "left": 1, "right": 1, "roof": 3}
+
+
 def test_polyhedra_of_an_exodus_file_have_the_faces_of_the_file(tmp_path):
     import netCDF4
 
@@ -432,6 +465,9 @@ def test_polyhedra_of_an_exodus_file_have_the_faces_of_the_file(tmp_path):
     np.testing.assert_array_equal(piece.faces.cell_faces, np.arange(6))
 
 
+STATE = "-0000000000000000001-0000000000000000001"
+
+
 def med_file(path, *, steps=(), profile=None):
     """A square and a polygon of five corners, with a point group, as MED lays them out."""
     import h5py
@@ -441,7 +477,7 @@ def med_file(path, *, steps=(), profile=None):
         out.create_group("INFOS_GENERALES").attrs["MAJ"] = 4
         mesh = out.create_group("ENS_MAA/plate")
         mesh.attrs.update({"ESP": 2, "DIM": 2, "TYP": 0})
-        state = mesh.create_group("-0000000000000000001-0000000000000000001")
+        state = mesh.create_group(STATE)
         state["NOE/COO"] = points.T.ravel()
         state["NOE/COO"].attrs["NBR"] = 7
         state["NOE/FAM"] = np.array([1, 1, 0, 0, 1, 0, 0])
@@ -483,6 +519,27 @@ def test_polygons_point_groups_and_steps_of_a_med_file_are_read(tmp_path):
 def test_a_med_field_on_a_part_of_the_cells_is_never_taken_for_one_on_all(tmp_path):
     path = med_file(tmp_path / "case.med", steps=((1, 3.0),), profile="some")
     with pytest.raises(FormatError, match="profile 'some' is damaged"):
+        load(path, reader=med)
+
+
+@pytest.mark.parametrize(
+    ("damage", "message"),
+    [
+        (lambda file: file["CHA/U"].attrs.modify("MAI", np.bytes_("other")), "another mesh"),
+        (lambda file: file["CHA/U"].attrs.modify("NCO", 3), "no 1 with 3 components"),
+        (lambda file: file["CHA"].create_group("p").attrs.update({"NCO": 1}), "'p' has no values"),
+        (lambda file: file.create_group("ENS_MAA/second"), "2 meshes"),
+        (lambda file: file[f"ENS_MAA/plate/{STATE}/MAI/POG/INN"].write_direct(np.array([1, 7])), "index"),
+        (lambda file: file[f"ENS_MAA/plate/{STATE}/MAI/QU4"].create_dataset("FAM", data=[-5]), "family -5"),
+    ],
+)
+def test_contradictions_within_a_med_file_are_refused(tmp_path, damage, message):
+    import h5py
+
+    path = med_file(tmp_path / "case.med", steps=((1, 3.0),))
+    with h5py.File(path, "a") as file:
+        damage(file)
+    with pytest.raises(FormatError, match=message):
         load(path, reader=med)
 
 

@@ -16,6 +16,8 @@ TRIANGLE7, POLYHEDRON = 34, 42
 _DIMENSION = {VERTEX: 0, LINE: 1, LINE3: 1}
 _DIMENSION |= dict.fromkeys((TRIANGLE, POLYGON, QUAD, TRIANGLE6, QUAD8, QUAD9, TRIANGLE7), 2)
 
+_NONE = np.empty(0, dtype=np.int64)
+
 
 def dimension(kind: int) -> int:
     """Dimension of a VTK cell type that occurs in blocks: 0 (vertex) to 3."""
@@ -71,11 +73,11 @@ def in_top_cells(blocks: Sequence[Block], points: int) -> Array:
     return used
 
 
-def faces_of_lists(lists: Sequence[Array]) -> NamedFaces:
-    """A patch whose faces have the given node lists."""
-    offsets = np.concatenate([[0], np.cumsum([len(one) for one in lists], dtype=np.int64)])
-    nodes = np.concatenate(lists) if lists else np.empty(0, dtype=np.int64)
-    return NamedFaces(offsets.astype(np.int64), nodes.astype(np.int64, copy=False))
+def faces_of_tables(tables: Sequence[Array]) -> NamedFaces:
+    """A patch of all faces in (faces, nodes per face) tables."""
+    sizes = np.concatenate([np.full(len(one), one.shape[1], dtype=np.int64) for one in tables] or [_NONE])
+    nodes = np.concatenate([one.reshape(-1) for one in tables] or [_NONE])
+    return NamedFaces(np.concatenate([_NONE, [0], np.cumsum(sizes)]), nodes.astype(np.int64, copy=False))
 
 
 def faces_of_vertices(nodes: Array) -> NamedFaces:

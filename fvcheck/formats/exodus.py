@@ -26,6 +26,7 @@ from fvcheck.mesh.piece import Array, Export, Piece
 
 _SUFFIXES = (".exo", ".e", ".ex2", ".exii", ".g")
 _BLOCK = "exodus:block"
+_MOST_VARIABLES = 10_000
 # What netCDF puts where nothing was written (NC_FILL_DOUBLE, NC_FILL_FLOAT).
 _FILL = 9.9692099683868690e36
 
@@ -84,7 +85,7 @@ def _times(store: Store, path: Path) -> tuple[float, ...]:
     if 0 in store.shape("time_whole"):
         return ()
     values = store.numbers("time_whole")
-    if values.ndim != 1 or (np.abs(values) > 0.99 * _FILL).any():
+    if len(store.shape("time_whole")) != 1 or (np.abs(values) > 0.99 * _FILL).any():
         raise FormatError("the times of the steps cannot be read", where=path, mend=DAMAGED)
     steps = store.dim("time_step")
     # In netCDF-4 the unlimited dimension may show as 0: its length is that of its variables.
@@ -117,10 +118,8 @@ def _mesh(store: Store, path: Path) -> tuple[Piece, list[ElementBlock]]:
 
 
 def _point_data(store: Store, step: int, steps: int, count: int, path: Path) -> dict[str, Array]:
-    if "name_nod_var" not in store or not steps:
-        return {}
-    names = _variables(store, "name_nod_var", "num_nod_var", path)
-    joint = "vals_nod_var" in store
+    names = _variables(store, "name_nod_var", "num_nod_var", path) if steps else []
+    joint = bool(names) and "vals_nod_var" in store
     table = store.numbers("vals_nod_var", step) if joint else None
     out = {}
     for i, name in enumerate(names):
@@ -135,11 +134,9 @@ def _point_data(store: Store, step: int, steps: int, count: int, path: Path) -> 
 def _cell_data(
     store: Store, step: int, steps: int, blocks: list[ElementBlock], path: Path
 ) -> dict[str, Array]:
-    if "name_elem_var" not in store or not steps:
-        return {}
-    names = _variables(store, "name_elem_var", "num_elem_var", path)
+    names = _variables(store, "name_elem_var", "num_elem_var", path) if steps else []
     truth = np.ones((len(blocks), len(names)), dtype=bool)
-    if "elem_var_tab" in store:
+    if names and "elem_var_tab" in store:
         table = store.numbers("elem_var_tab")
         if table.shape != truth.shape:
             raise FormatError("the table of variables by block cannot be read", where=path, mend=DAMAGED)
@@ -170,8 +167,15 @@ def _cell_data(
 
 
 def _variables(store: Store, name: str, dim: str, path: Path) -> list[str]:
+    if name not in store and not store.dim(dim):
+        return []
     names = store.words(name)
-    if len(set(names)) < len(names) or "" in names or store.dim(dim) not in (None, len(names)):
+    if (
+        len(names) > _MOST_VARIABLES
+        or len(set(names)) < len(names)
+        or "" in names
+        or store.dim(dim) not in (None, len(names))
+    ):
         raise FormatError(f"the names of the variables ('{name}') are damaged", where=path, mend=DAMAGED)
     return names
 

@@ -18,6 +18,7 @@ from fvcheck.formats.check import DAMAGED
 from fvcheck.formats.exodus_store import Store
 from fvcheck.mesh.piece import Array, Faces
 
+_MOST_SETS = 100_000
 # (beginnings of the element name) -> nodes -> VTK type. Longer names come first.
 _TRIANGLES = {3: cb.TRIANGLE, 6: cb.TRIANGLE6, 7: cb.TRIANGLE7}
 _QUADS = {4: cb.QUAD, 8: cb.QUAD8, 9: cb.QUAD9}
@@ -78,8 +79,6 @@ def points(store: Store, path: Path) -> Array:
 def blocks(store: Store, path: Path) -> list[ElementBlock]:
     """All element blocks, empty ones included, in the order of the file."""
     count = store.dim("num_el_blk") or 0
-    if count > 1_000_000:
-        raise FormatError(f"{count} element blocks are declared", where=path, mend=DAMAGED)
     ids = ids_of(store, "eb_prop1", count, path)
     names = names_of(store, "eb_names", count, ids, "block")
     out = [_block(store, i + 1, ids[i], names[i], path) for i in range(count)]
@@ -195,6 +194,8 @@ def faces(store: Store, found: Sequence[ElementBlock], path: Path) -> Faces | No
 
 def ids_of(store: Store, name: str, count: int, path: Path) -> list[int]:
     """The stored ids of ``count`` blocks or sets; 1, 2, … where there are none."""
+    if count > _MOST_SETS:
+        raise FormatError(f"{count} blocks or sets are declared ('{name}')", where=path, mend=DAMAGED)
     if name not in store:
         return list(range(1, count + 1))
     ids = store.numbers(name).reshape(-1)
@@ -206,8 +207,8 @@ def ids_of(store: Store, name: str, count: int, path: Path) -> list[int]:
 def names_of(store: Store, name: str, count: int, ids: list[int], what: str) -> list[str]:
     """The stored names, distinct; where there is none, what it is with its id."""
     words = store.words(name) if name in store else []
-    out: list[str] = []
+    out: dict[str, None] = {}
     for i in range(count):
         word = words[i] if i < len(words) and words[i] else f"{what} {ids[i]}"
-        out.append(word if word not in out else f"{word} ({what} {ids[i]})")
-    return out
+        out[word if word not in out else f"{word} ({what} {i + 1})"] = None
+    return list(out)

@@ -121,37 +121,40 @@ def _faces(
     if len(elements) and (elements.min() < 0 or elements.max() >= ends[-1]):
         raise FormatError("an element number lies outside the elements", where=spot, mend=DAMAGED)
     owner = np.searchsorted(ends, elements, side="right")
-    lists: list[Array] = []
+    tables: list[Array] = []
     for index in np.unique(owner):
         block, shift = found[index], shifts[index]
         mine = owner == index
         local = elements[mine] - (ends[index] - len(block.cells))
-        lists.extend(_block_sides(block, local, sides[mine] - 1 - shift, solid, spot))
-    return cb.faces_of_lists(lists)
+        tables.extend(_block_sides(block, local, sides[mine] - 1 - shift, solid, spot))
+    return cb.faces_of_tables(tables)
 
 
 def _block_sides(
     block: ElementBlock, local: Array, sides: Array, solid: Faces | None, spot: str
 ) -> list[Array]:
-    """Node lists of the given sides (from 0) of the given cells of a block."""
+    """Tables (sides, nodes per side) of the given sides (from 0) of the given cells of a block."""
     cells = block.cells
     starts = cells.offsets[local]
     counts = np.diff(cells.offsets)[local]
     if cells.kind == cb.POLYGON:
         _within(sides, counts, spot)
-        return list(
-            np.stack([cells.nodes[starts + sides], cells.nodes[starts + (sides + 1) % counts]], axis=1)
-        )
+        after = (sides + 1) % counts
+        return [np.stack([cells.nodes[starts + sides], cells.nodes[starts + after]], axis=1)]
     if block.cell_faces is not None and solid is not None:
         numbers, offsets = block.cell_faces
         _within(sides, np.diff(offsets)[local], spot)
         chosen = numbers[offsets[local] + sides]
-        return [solid.face_nodes[solid.face_offsets[j] : solid.face_offsets[j + 1]] for j in chosen]
-    table = _SIDES.get(cells.kind)
-    if table is None:
+        return [solid.face_nodes[None, solid.face_offsets[j] : solid.face_offsets[j + 1]] for j in chosen]
+    corners = _SIDES.get(cells.kind)
+    if corners is None:
         raise FormatError(f"sides of elements '{block.element}' cannot be read", where=spot)
-    _within(sides, np.full(len(sides), len(table)), spot)
-    return [cells.nodes[start + np.array(table[side])] for start, side in zip(starts, sides)]
+    _within(sides, np.full(len(sides), len(corners)), spot)
+    return [
+        cells.nodes[starts[sides == side][:, None] + np.array(own)]
+        for side, own in enumerate(corners)
+        if (sides == side).any()
+    ]
 
 
 def _within(sides: Array, counts: Array, spot: str) -> None:

@@ -155,7 +155,7 @@ def _read_mesh(file: Any, name: str, path: Path) -> MedMesh:
     top = cb.top_dimension(blocks)
     edge = [family for block, family in zip(blocks, families) if block.dimension == top - 1]
     used = np.unique(np.concatenate(edge)) if edge else tags[:0]
-    named = {int(tag): of_cells[int(tag)] for tag in used if tag}
+    named = {tag: of_cells[tag] for tag in sorted(used.tolist(), key=abs) if tag}
     point_families = med_groups.family_of(nodes, len(points), path)
     patches = {
         label: cb.faces_of_vertices(np.flatnonzero(np.isin(point_families, list(numbers))))

@@ -22,12 +22,14 @@ _WHOLE = "MED_NO_PROFILE_INTERNAL"
 class Field:
     """A field of the mesh: its name, number of components and the group of each step.
 
+    ``real``: declared to hold real numbers.
     ``on_nodes``, ``on_cells``: where it has values that are read; ``skipped``:
     it has values at corners or Gauss points, too, which are not.
     """
 
     name: str
     components: int
+    real: bool
     groups: dict[Key, str]
     times: dict[Key, float]
     on_nodes: bool
@@ -61,8 +63,9 @@ def fields_of(file: Any, mesh: str, path: Path) -> list[Field]:
     out = []
     for name in hdf5_safe.names(root, path):
         group = hdf5_safe.group(root, name, path)
-        if hdf5_safe.attribute(group, "MAI", path) not in (None, mesh):
-            continue
+        owner = hdf5_safe.attribute(group, "MAI", path)
+        if owner is not None and not (isinstance(owner, str) and owner == mesh):
+            raise FormatError(f"the field '{name}' belongs to another mesh", where=path, mend=DAMAGED)
         groups: dict[Key, str] = {}
         times: dict[Key, float] = {}
         supports: set[str] = set()
@@ -70,7 +73,8 @@ def fields_of(file: Any, mesh: str, path: Path) -> list[Field]:
             node = hdf5_safe.group(group, step, path)
             key = (whole(node, "NDT", path), whole(node, "NOR", path))
             time = hdf5_safe.attribute(node, "PDT", path)
-            if key in groups or not isinstance(time, np.ndarray) or time.size != 1:
+            single = isinstance(time, np.ndarray) and time.size == 1 and time.dtype.kind in "iuf"
+            if key in groups or not single:
                 raise FormatError(f"the steps of the field '{name}' are damaged", where=path, mend=DAMAGED)
             groups[key] = f"{name}/{step}"
             # -1, -1 stands for "no step": its time says nothing.
@@ -83,8 +87,11 @@ def fields_of(file: Any, mesh: str, path: Path) -> list[Field]:
         gauss = on_cells and _has_gauss(root, groups, path)
         skipped = gauss or any(one.startswith("NOE.") for one in supports)
         components = whole(group, "NCO", path)
+        # 6 stands for 64-bit reals, 7 for 32-bit ones; other types are whole numbers.
+        kind = hdf5_safe.attribute(group, "TYP", path)
+        real = isinstance(kind, np.ndarray) and kind.size == 1 and kind.reshape(-1)[0] in (6, 7)
         plain = on_cells and not gauss
-        out.append(Field(name, components, groups, times, "NOE" in supports, plain, skipped))
+        out.append(Field(name, components, real, groups, times, "NOE" in supports, plain, skipped))
     return out
 
 
@@ -149,6 +156,8 @@ def _values(file: Any, part: Any, one: Field, count: int, spot: str) -> tuple[Ar
     group = hdf5_safe.group(part, profiles[0], spot)
     stored = whole(group, "NBR", spot)
     flat = hdf5_safe.read(hdf5_safe.dataset(group, "CO", spot), spot).reshape(-1)
+    if one.real and flat.dtype.kind != "f":
+        raise FormatError("the values are no real numbers", where=spot, mend=DAMAGED)
     known = np.ones(count, dtype=bool)
     rows = np.arange(count)
     if profiles[0] != _WHOLE:

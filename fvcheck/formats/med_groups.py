@@ -64,7 +64,7 @@ def _groups(root: Any, kind: str, path: Path) -> dict[int, list[str]]:
 
 def _names(family: Any, name: str, path: Path) -> list[str]:
     data = hdf5_safe.member(family, "GRO/NOM", path)
-    if data is None:
+    if data is None and hdf5_safe.member(family, "GRO", path) is None:
         return []
     damaged = FormatError(
         f"the groups of the family '{name}' are damaged", where=path, mend=hdf5_safe.DAMAGED

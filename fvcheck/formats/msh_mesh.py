@@ -204,10 +204,16 @@ def elements_2_text(text: bytes, declared: int, where: object) -> list[Elements]
         raise FormatError("an element line is too short", where=where, mend=DAMAGED)
     kinds, tags = flat[starts + 1], flat[starts + 2]
     out = []
-    for kind, count in np.unique(np.stack([kinds, tags], axis=1), axis=0).tolist():
+    for kind in np.unique(kinds).tolist():
+        _known(kind, where)
+    if tags.min() < 0 or tags.max() > _MOST_TAGS:
+        raise FormatError("an element has an impossible number of tags", where=where, mend=DAMAGED)
+    # One number for type and number of tags: many times faster than unique rows of two.
+    for both in np.unique(kinds * (_MOST_TAGS + 1) + tags).tolist():
+        kind, count = divmod(both, _MOST_TAGS + 1)
         rows = np.flatnonzero((kinds == kind) & (tags == count))
         width = 3 + count + _known(kind, where)[1]
-        if not 0 <= count <= _MOST_TAGS or (lengths[rows] != width).any():
+        if (lengths[rows] != width).any():
             raise FormatError(
                 f"an element line of type {kind} has the wrong length", where=where, mend=DAMAGED
             )

@@ -185,14 +185,14 @@ def _patches(mesh: Any, blocks: Sequence[cb.Block], named: set[str]) -> dict[str
         # Sets with a "gmsh:" name hold meshio's own notes, not groups of the user.
         if label in named or str(label).startswith("gmsh:"):
             continue
-        lists: list[Array] = []
+        tables: list[Array] = []
         for block, part in zip(blocks, parts):
             if part is None or block.dimension != top - 1:
                 continue
             for cell in _members(part, len(block), str(label)):
-                lists.append(block.nodes[block.offsets[cell] : block.offsets[cell + 1]])
-        if lists:
-            out[str(label)] = cb.faces_of_lists(lists)
+                tables.append(block.nodes[None, block.offsets[cell] : block.offsets[cell + 1]])
+        if tables:
+            out[str(label)] = cb.faces_of_tables(tables)
     for label, part in (getattr(mesh, "point_sets", None) or {}).items():
         if label not in named and str(label) not in out:
             out[str(label)] = cb.faces_of_vertices(_members(part, len(mesh.points), str(label)))
