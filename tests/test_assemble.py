@@ -253,7 +253,7 @@ def test_a_minority_of_clockwise_cells_is_turned_with_a_hint():
     assembly = assemble([piece(points, quads)])
     check_laws(assembly.mesh)
     assert codes(assembly) == ["clockwise-cells"]
-    assert "1 cells" in assembly.hints[0].message
+    assert "1 of 3 cells" in assembly.hints[0].message
 
 
 def test_cells_that_are_all_clockwise_are_turned_without_a_word():

@@ -6,8 +6,9 @@ from hypothesis import given, settings
 from hypothesis import strategies as st
 from small_pieces import block, codes, length, named, piece, with_hole
 
+from fvcheck.errors import MeshError
 from fvcheck.mesh.assemble import assemble
-from fvcheck.mesh.boundary import chains, domain_loops, holes, patch_chains, patch_rings, ring_area
+from fvcheck.mesh.boundary import chains, clearance, domain_loops, holes, patch_chains, patch_rings, ring_area
 from fvcheck.mesh.sides import corners
 
 
@@ -288,3 +289,92 @@ def test_loops_of_a_domain_with_holes():
     areas = sorted(ring_area(mesh.points[ring]) for ring in domain_loops(mesh))
     assert areas == pytest.approx([-1 / 64] * 3 + [1])
     assert sum(areas) == pytest.approx(mesh.areas.sum())
+
+
+def test_clearance_is_the_distance_to_the_rest_of_the_boundary():
+    points, quads = with_hole(10, 10, missing=((2, 1), (6, 3)))
+    mesh = assemble([piece(points, quads)]).mesh
+    assert clearance(mesh, "body-1") == pytest.approx(0.1)  # to the bottom
+    assert clearance(mesh, "body-2") == pytest.approx(0.3)  # to the bottom and the right
+    assert clearance(mesh, "left") == 0
+
+
+# ---------------------------------------------------------------- soundness
+
+
+def test_a_seam_that_stays_open_is_hinted():
+    a, quads = block(5, 5)
+    b, _ = block(5, 5, x0=1.001, x1=2.0)
+    assembly = assemble([piece(a, quads), piece(b, quads)])
+    assert codes(assembly) == ["open-seams"]
+    assert "10 boundary edges" in assembly.hints[0].message
+
+
+def test_a_narrow_gap_inside_a_mesh_is_hinted():
+    """One point of an inner edge chain doubled and lifted by a thousandth."""
+    points, quads = block(6, 2)
+    points = np.vstack([points, points[10] + [0, 1e-3]])
+    quads = [[21 if i == 10 and k >= 6 else i for i in q] for k, q in enumerate(quads)]
+    assembly = assemble([piece(points, quads)])
+    assert codes(assembly) == ["open-seams", "narrow-holes"]
+
+
+def test_blocks_with_chords_of_different_length_along_an_arc_are_hinted():
+    def bulge(points):
+        x, y = points.T
+        return np.column_stack([x + 0.01 * x * np.sin(np.pi * y), y])
+
+    a, quads = block(4, 3)
+    b, more = block(4, 9, x0=1.0, x1=2.0)
+    assembly = assemble([piece(bulge(a), quads), piece(bulge(b), more)])
+    assert "open-seams" in codes(assembly)
+
+
+def test_blocks_that_overlap_in_part_are_refused():
+    a, quads = block(4, 4)
+    with pytest.raises(MeshError, match="parts of the mesh overlap"):
+        assemble([piece(a, quads), piece(a + np.array([0.6, 0.13]), quads)])
+
+
+def test_a_region_in_the_hole_of_another_is_fine():
+    points, quads = with_hole(5, 5, missing=[(i, j) for i in (1, 2, 3) for j in (1, 2, 3)])
+    island, more = block(1, 1, x0=0.4, x1=0.6, y0=0.4, y1=0.6)
+    mesh = assemble([piece(points, quads), piece(island, more)]).mesh
+    assert mesh.areas.sum() == pytest.approx(16 / 25 + 0.04)
+    assert mesh.bodies == ("body-1",)
+
+
+def test_a_mesh_that_falls_apart_is_refused_at_once():
+    """Twenty thousand triangles round one point, none beside another."""
+    n = 20_000
+    a = 2 * np.pi * np.arange(2 * n) / (2 * n)
+    points = np.vstack([np.column_stack([np.cos(a), np.sin(a)]), [[0, 0]]])
+    cells = [[2 * i, 2 * i + 1, 2 * n] for i in range(n)]
+    with pytest.raises(MeshError, match="falls apart into 20000 regions"):
+        assemble([piece(points, cells)])
+
+
+def test_many_bodies_are_named_without_delay():
+    """A porous bed of 2,500 grains: takes well under a second; a quadratic search would take minutes."""
+    points, quads = with_hole(
+        101, 101, missing={(2 * i + 1, 2 * j + 1) for i in range(50) for j in range(50)}
+    )
+    mesh = assemble([piece(points, quads)]).mesh
+    assert len(mesh.bodies) == 2500
+    assert len(holes(mesh)) == 2500
+
+
+def test_a_damaged_patch_list_is_refused():
+    points, quads = block(2, 2)
+    with pytest.raises(MeshError, match="patch 'wall' uses a point that does not exist"):
+        assemble([piece(points, quads, patches={"wall": named([0, 99])})])
+
+
+def test_a_patch_named_after_a_seam_does_not_keep_blocks_apart():
+    pieces = [
+        piece(*block(2, 2, x0=x, x1=x + 1), patches={"block_interface": named(*faces)})
+        for x, faces in ((0.0, ([2, 5], [5, 8])), (1.0, ([0, 3], [3, 6])))
+    ]
+    mesh = assemble(pieces).mesh
+    assert mesh.n_points == 15
+    assert mesh.boundary.names == ("left", "right", "bottom", "top")

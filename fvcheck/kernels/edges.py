@@ -90,16 +90,22 @@ def successors(start, end, x, y):
     sorted_start = start[order]
     out = np.full(e, -1, np.int64)
     taken = np.zeros(e, np.bool_)
+    cursor = np.zeros(e, np.int64)
     for i in range(e):
         p = end[i]
         a = np.searchsorted(sorted_start, p)
-        b = a
-        while b < e and sorted_start[b] == p:
-            b += 1
+        if a == e or sorted_start[a] != p:
+            continue
+        b = np.searchsorted(sorted_start, p, side="right")
         if b - a == 1:
             if not taken[order[a]]:
                 out[i] = order[a]
                 taken[order[a]] = True
+            continue
+        if b - a > _SORT_ABOVE:  # comparing all angles at such a hub would be quadratic: any way on will do
+            if a + cursor[a] < b:
+                out[i] = order[a + cursor[a]]
+                cursor[a] += 1
             continue
         back = np.arctan2(y[start[i]] - y[p], x[start[i]] - x[p])
         best, best_turn = -1, 1e300

@@ -9,7 +9,7 @@ import numpy as np
 
 from fvcheck.errors import MeshError
 from fvcheck.hints import Hint
-from fvcheck.mesh.boundary import is_hole, walks
+from fvcheck.mesh.boundary import bodies, trace
 from fvcheck.mesh.celltypes import polygons_of
 from fvcheck.mesh.claims import FACE, LINE, collect
 from fvcheck.mesh.edges import Edges, edges_of
@@ -21,6 +21,7 @@ from fvcheck.mesh.mesh import Boundary, Mesh
 from fvcheck.mesh.piece import Piece
 from fvcheck.mesh.plane import check_name, plane_of
 from fvcheck.mesh.sides import name_all
+from fvcheck.mesh.soundness import check_joined, check_regions, seam_hints
 from fvcheck.mesh.stitch import stitch
 from fvcheck.mesh.tidy import tidy
 
@@ -92,6 +93,7 @@ def assemble(pieces: Sequence[Piece], *, plane: str = "auto", keep_centres: bool
         merged = Polygons(cells.offsets, number[cells.nodes], cells.source)
         cells = tidy(points, merged, raw.precision, hints, flat_file=False)
         edges = edges_of(cells, len(points))
+    check_joined(len(cells.source), len(edges.open), len(cells.nodes))
     filled = insert_hanging(points, cells, edges, finder, number, raw.precision, hints)
     if filled is not cells:
         cells, edges = filled, edges_of(filled, len(points))
@@ -123,23 +125,15 @@ def _mesh(
     new_number, source, nodes = renumber(cells.nodes, len(points))
     rim = np.column_stack([new_number[start], new_number[end]])
     xy = np.ascontiguousarray(points[source])
+    loops = trace(rim, xy)
+    check_regions(xy, rim, loops)
+    hints += seam_hints(xy, rim, loops, patch)
     present = [name for i, name in enumerate(finder.claims.names) if (patch == i).any()]
     index = np.array([present.index(n) if n in present else -1 for n in finder.claims.names] + [-1])
-    patch, names = name_all(xy, rim, index[patch], present)
+    patch, names = name_all(xy, rim, loops, index[patch], present)
     kinds = {name: kind for name, kind in finder.claims.kinds.items() if name in names}
     boundary = Boundary(rim, owner, patch, names)
-    bodies = _bodies(xy, rim, patch, names)
-    return Mesh(xy, cells.offsets, nodes, boundary, bodies, kinds), source
-
-
-def _bodies(points: Array, edges: Array, patch: Array, names: Sequence[str]) -> tuple[str, ...]:
-    """Patches whose every edge lies on a hole that is theirs alone."""
-    alone = np.ones(len(names), bool)
-    for chain, closed in walks(edges, points):
-        around = np.unique(patch[chain])
-        if len(around) > 1 or not closed or not is_hole(points[edges[chain, 0]]):
-            alone[around] = False
-    return tuple(name for name, good in zip(names, alone) if good)
+    return Mesh(xy, cells.offsets, nodes, boundary, bodies(loops, patch, names), kinds), source
 
 
 def _hint_unmet(finder: Finder, met: Array, hints: list[Hint]) -> None:

@@ -8,6 +8,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
+from fvcheck.errors import MeshError
 from fvcheck.mesh.celltypes import polygons_of, segments_of
 from fvcheck.mesh.gather import Raw, expand_cells
 from fvcheck.mesh.piece import Piece
@@ -21,6 +22,8 @@ _TAG_NAMES = (
 )  # fmt: skip
 _TAG_WORDS = re.compile(r"(?:^|[^a-z])(?:id|ids|tag|tags|ref|marker|markers|physical|patch|boundary|group)$")
 _NO_TAG = re.compile(r"global|original|process|rank|ghost|partition|element.?id|cell.?id|geometrical")
+
+_SEAM = re.compile(r"interface|interior|internal|connect|abutting", re.IGNORECASE)
 
 LINE, FACE = 0, 1
 
@@ -42,6 +45,10 @@ class Claims:
     face: Array
     origin: Array
     vertices: tuple[tuple[int, Array], ...]
+
+    def is_wall(self, patch: Array) -> Array:
+        """(e,) whether a patch bounds the flow: it is one (not -1), and not named after a seam of blocks."""
+        return np.array([not _SEAM.search(name) for name in self.names] + [False])[patch]
 
 
 class _Collector:
@@ -93,8 +100,9 @@ def collect(pieces: Sequence[Piece], raw: Raw, front: Array | None) -> Claims:
             number = found.number(name)
             if faces.kind:
                 found.kinds.setdefault(name, faces.kind)
-            nodes = np.asarray(faces.nodes, np.int64) + base
-            offsets = np.asarray(faces.offsets, np.int64)
+            nodes, offsets = np.asarray(faces.nodes, np.int64), np.asarray(faces.offsets, np.int64)
+            _check(name, nodes, offsets, len(piece.points))
+            nodes = nodes + base
             if faces.by_vertex:
                 found.vertices.append((number, nodes if front is None else nodes[front[nodes]]))
                 continue
@@ -102,6 +110,15 @@ def collect(pieces: Sequence[Piece], raw: Raw, front: Array | None) -> Claims:
             found.add(ends, np.full(len(ends), number), face, FACE, len(offsets) - 1)
     _collect_cells(found, pieces, raw, front)
     return found.result()
+
+
+def _check(name: str, nodes: Array, offsets: Array, n_points: int) -> None:
+    if len(nodes) and (nodes.min() < 0 or nodes.max() >= n_points):
+        raise MeshError(
+            f"patch '{name}' uses a point that does not exist", mend="The patch lists are damaged."
+        )
+    if len(offsets) == 0 or offsets[0] != 0 or offsets[-1] != len(nodes) or (np.diff(offsets) < 0).any():
+        raise MeshError(f"the faces of patch '{name}' do not fit their nodes", mend="The file is damaged.")
 
 
 def _collect_cells(found: _Collector, pieces: Sequence[Piece], raw: Raw, front: Array | None) -> None:
@@ -151,7 +168,9 @@ def tag_array(piece: Piece, local: Array) -> str | None:
     for order, (name, array) in enumerate(piece.cell_data.items()):
         array = np.asarray(array)
         named = name in piece.tag_names
-        if array.size != len(piece.types) or not (named or array.dtype.kind in "iu"):
+        if array.size != len(piece.types):
+            continue
+        if array.dtype.kind not in "iu" and not (named and np.isfinite(array.astype(float)).all()):
             continue
         word = name.lower()
         if named:

@@ -100,6 +100,9 @@ def _joined(arrays: list[Array]) -> Array:
 
 def _check(piece: Piece) -> None:
     where = piece.name or None
+    types = np.asarray(piece.types)
+    if types.dtype != np.uint8 and len(types) and (types.min() < 0 or types.max() > 255):
+        raise MeshError("a cell type is no VTK cell type", where=where, mend="The file is damaged.")
     points, offsets, nodes = np.asarray(piece.points), np.asarray(piece.offsets), np.asarray(piece.nodes)
     if points.ndim != 2 or points.shape[1] != 3:
         raise MeshError(f"points have shape {points.shape} instead of (n, 3)", where=where)

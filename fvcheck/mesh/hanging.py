@@ -12,8 +12,8 @@ from fvcheck.mesh.stitch import NEAR, SPACINGS
 
 Array = np.ndarray
 
-_BATCH = 4_000_000
-"""Candidate pairs looked at together; bounds the memory."""
+_FEW = 16
+_HALVINGS = 20
 
 
 def insert_hanging(
@@ -35,7 +35,7 @@ def insert_hanging(
     cell, end, alone = edges.cell, edges.end, edges.open
     rim = points_of(cells.nodes[alone], len(points))
     patch, _ = finder.find(cells.nodes[alone], end[alone], number)
-    alone = alone[patch < 0]
+    alone = alone[~finder.claims.is_wall(patch)]
     edge, node, along = _on_edges(points, cells.nodes[alone], end[alone], rim, precision)
     edge = alone[edge]
     own = _cell_has(cells, cell[edge], node)
@@ -56,7 +56,12 @@ def insert_hanging(
 def _on_edges(
     points: Array, start: Array, end: Array, rim: Array, precision: float
 ) -> tuple[Array, Array, Array]:
-    """Rim points between the ends of edges: edge number, point, share of the way."""
+    """Rim points between the ends of edges: edge number, point, share of the way.
+
+    Each edge is looked at through the disk that just holds it; where that holds
+    many points the edge is halved, so that the work follows the points near the
+    edge, not those in a wide disk round it.
+    """
     from scipy.spatial import cKDTree
 
     step = points[end] - points[start]
@@ -66,27 +71,36 @@ def _on_edges(
     )
     tolerance = np.minimum(tolerance, 0.01 * length)
     none = np.zeros(0, np.int64)
+    edges, nodes, shares = [none], [none], [np.zeros(0)]
     if len(rim) == 0 or len(start) == 0:
         return none, none, np.zeros(0)
     tree = cKDTree(points[rim])
-    middle, radius = points[start] + 0.5 * step, 0.5 * length
-    count = tree.query_ball_point(middle, radius, return_length=True)
-    busy = np.flatnonzero(count > 0)
-    edges, nodes, shares = [none], [none], [np.zeros(0)]
-    batch = np.cumsum(count[busy]) // _BATCH
-    for b in np.unique(batch).tolist():
-        rows = busy[batch == b]
-        lists = tree.query_ball_point(middle[rows], radius[rows], return_sorted=False)
-        row = np.repeat(rows, [len(found) for found in lists])
-        node = rim[np.concatenate([np.asarray(found, np.int64) for found in lists])]
-        away = points[node] - points[start[row]]
-        along = (away * step[row]).sum(axis=1) / length[row] ** 2
-        off = np.abs(away[:, 0] * step[row, 1] - away[:, 1] * step[row, 0]) / length[row]
-        slack = tolerance[row]
-        good = (off <= slack) & (along * length[row] > slack) & ((1 - along) * length[row] > slack)
-        edges.append(row[good])
-        nodes.append(node[good])
-        shares.append(along[good])
+    row, low, high = np.arange(len(start)), np.zeros(len(start)), np.ones(len(start))
+    for depth in range(_HALVINGS + 1):
+        middle = points[start[row]] + (0.5 * (low + high))[:, None] * step[row]
+        radius = 0.5 * (high - low) * length[row] * (1 + 1e-9) + tolerance[row]
+        count = tree.query_ball_point(middle, radius, return_length=True)
+        ready = count <= (_FEW if depth < _HALVINGS else np.inf)
+        look = ready & (count > (2 if depth == 0 else 0))  # a whole edge always sees its own two ends
+        if look.any():
+            found = tree.query_ball_point(middle[look], radius[look], return_sorted=False)
+            size = count[look]
+            node = rim[np.concatenate([np.asarray(some, np.int64) for some in found])]
+            r, t0, t1 = (np.repeat(values[look], size) for values in (row, low, high))
+            away = points[node] - points[start[r]]
+            along = (away * step[r]).sum(axis=1) / length[r] ** 2
+            off = np.abs(away[:, 0] * step[r, 1] - away[:, 1] * step[r, 0]) / length[r]
+            slack = tolerance[r]
+            good = (off <= slack) & (along * length[r] > slack) & ((1 - along) * length[r] > slack)
+            good &= (along >= t0) & (along < t1)
+            edges.append(r[good])
+            nodes.append(node[good])
+            shares.append(along[good])
+        row, low, high = row[~ready], low[~ready], high[~ready]
+        if len(row) == 0:
+            break
+        half = 0.5 * (low + high)
+        row, low, high = np.tile(row, 2), np.concatenate([low, half]), np.concatenate([half, high])
     return np.concatenate(edges), np.concatenate(nodes), np.concatenate(shares)
 
 

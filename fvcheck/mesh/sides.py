@@ -2,11 +2,13 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections import Counter
+from collections.abc import Iterator, Sequence
+from itertools import count
 
 import numpy as np
 
-from fvcheck.mesh.boundary import is_hole, lowest_left, walks
+from fvcheck.mesh.boundary import Loops, lowest_left
 
 Array = np.ndarray
 
@@ -15,59 +17,55 @@ SHARP = np.radians(70.0)
 STRAIGHT = 1e-6
 """Largest distance from a side of the bounding box, as a share of the extent."""
 
+_BOX = ("left", "right", "bottom", "top")
+
 Bounds = tuple[float, float, float, float]
 
 
 def name_all(
-    points: Array, edges: Array, patch: Array, names: Sequence[str]
+    points: Array, edges: Array, loops: Loops, patch: Array, names: Sequence[str]
 ) -> tuple[Array, tuple[str, ...]]:
     """Give the edges with ``patch`` -1 names of our own.
 
-    points (n, 2), edges (e, 2) fluid on the left, patch (e,) index into ``names``.
-    Holes become ``body-1`` …, straight sides on the bounding box ``left``,
-    ``right``, ``bottom``, ``top``, other sides ``side-1`` … Returns patch and names.
+    points (n, 2), edges (e, 2) fluid on the left, their loops, patch (e,) index
+    into ``names``. Holes become ``body-1`` …, straight sides on the bounding box
+    ``left``, ``right``, ``bottom``, ``top``, other sides ``side-1`` … Returns
+    patch and names.
     """
     patch, out = patch.copy(), list(names)
-    if (patch >= 0).all():
-        return patch, tuple(out)
     low, high = points.min(axis=0), points.max(axis=0)
     bounds = (float(low[0]), float(low[1]), float(high[0]), float(high[1]))
-    inner: list[tuple[Array, bool]] = []
-    outer: list[tuple[Array, bool]] = []
-    for chain, closed in walks(edges, points):
-        hole = closed and is_hole(points[edges[chain, 0]])
-        (inner if hole else outer).append((chain, closed))
+    bare = np.zeros(len(loops), bool)
+    bare[loops.of_edge()[patch < 0]] = True
+
+    def in_order(which: Array) -> list[int]:
+        ring = {c: points[edges[loops.chain(c), 0]] for c in np.flatnonzero(which & bare).tolist()}
+        return sorted(ring, key=lambda c: lowest_left(ring[c], bounds))
+
     sides = []
-    outer.sort(key=lambda item: lowest_left(points[edges[item[0], 0]], bounds))
-    for chain, closed in outer:
-        if closed:
+    for c in in_order(~loops.hole):
+        chain = loops.chain(c)
+        if loops.closed[c]:
             chain = np.roll(chain, -_start(points[edges[chain, 0]], bounds))
-        sides += _sides(points, edges, patch, chain, closed)
+        sides += _sides(points, edges, patch, chain, bool(loops.closed[c]))
     labels = [_box_side(points, edges[side], bounds) for side in sides]
-    count, called = 0, []
-    for label in labels:
-        if not label or labels.count(label) > 1 or label in names:
-            label, count = _free("side", count, out)
-        called.append(label)
-    for order in sorted(range(len(sides)), key=lambda i: _box_order(called[i])):
-        patch[sides[order]] = len(out)
-        out.append(called[order])
-    count = 0
-    inner.sort(key=lambda item: lowest_left(points[edges[item[0], 0]], bounds))
-    for chain, _ in inner:
-        bare = chain[patch[chain] < 0]
-        if len(bare):
-            name, count = _free("body", count, out)
-            patch[bare] = len(out)
-            out.append(name)
+    often, side_names = Counter(labels), _free("side", names)
+    called = [
+        label if label and often[label] == 1 and label not in names else next(side_names) for label in labels
+    ]
+    for i in sorted(range(len(sides)), key=lambda i: _box_order(called[i])):
+        patch[sides[i]] = len(out)
+        out.append(called[i])
+    for c, name in zip(in_order(loops.hole), _free("body", names)):
+        chain = loops.chain(c)
+        patch[chain[patch[chain] < 0]] = len(out)
+        out.append(name)
     return patch, tuple(out)
 
 
-def _free(word: str, count: int, taken: Sequence[str]) -> tuple[str, int]:
-    count += 1
-    while f"{word}-{count}" in taken:
-        count += 1
-    return f"{word}-{count}", count
+def _free(word: str, taken: Sequence[str]) -> Iterator[str]:
+    """word-1, word-2, … without those taken."""
+    return (name for name in (f"{word}-{i}" for i in count(1)) if name not in taken)
 
 
 def _box_order(label: str) -> int:

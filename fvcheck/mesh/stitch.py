@@ -10,7 +10,6 @@ that edge, so that neighbours along a seam stay apart however coarse the numbers
 
 from __future__ import annotations
 
-import re
 from collections.abc import Sequence
 from dataclasses import dataclass
 
@@ -27,7 +26,6 @@ Array = np.ndarray
 
 NEAR = 1e-6
 SPACINGS = 8
-_NO_WALL = re.compile(r"interface|interior|internal|connect", re.IGNORECASE)
 
 
 @dataclass(frozen=True, eq=False)
@@ -76,7 +74,7 @@ def stitch(
     h = np.flatnonzero(twin > np.arange(len(twin)))
     t = twin[h]
     patch, _ = finder.find(start, end, number)
-    wall = np.array([not _NO_WALL.search(name) for name in claims.names] + [False])[patch]
+    wall = claims.is_wall(patch)
     plate = wall[h] & wall[t]
     torn = 2 * len(h) > 0.5 * len(cells.nodes)  # every cell has points of its own: no plates
     a = np.concatenate([start[h], end[h]])

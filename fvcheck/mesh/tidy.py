@@ -33,7 +33,7 @@ def tidy(points: Array, cells: Polygons, precision: float, hints: list[Hint], *,
     turned = int(np.count_nonzero(clockwise & solid))
     if flat_file and 0 < turned < np.count_nonzero(solid):
         few = min(turned, int(np.count_nonzero(solid)) - turned)
-        hints.append(Hint("clockwise-cells", f"{few} cells run the other way round than the rest; turned"))
+        hints.append(Hint("clockwise-cells", f"{few} of {len(solid)} cells run the other way round; turned"))
     if turned or not solid.all():
         offsets, nodes = select(offsets, nodes, solid, clockwise)
     faults = outline_faults(points, offsets, nodes, 2 * rounding[solid])
