@@ -10,7 +10,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from fvcheck.errors import SurfaceError
+from fvcheck.errors import MeshError, SurfaceError
 from fvcheck.mesh.mesh import Mesh
 from fvcheck.surfaces import ControlSurface
 
@@ -104,6 +104,27 @@ def lay_over(mesh: Mesh, surface: ControlSurface) -> Overlay:
     return overlay
 
 
+def triangles_of(mesh: Mesh, cells: Array) -> tuple[Array, Array]:
+    """Triangles (t, 3) of chosen cells, those of ``cells[j]`` in rows first[j]:first[j+1]; first (c+1,).
+
+    Raises MeshError for a cell whose outline crosses itself: without its
+    triangles it would be missing from every sum.
+    """
+    from fvcheck.kernels.triangulate import triangulate_cells
+
+    triangles, first = triangulate_cells(mesh.points, mesh.offsets, mesh.nodes, cells)
+    empty = np.flatnonzero(np.diff(first) == 0)
+    if len(empty):
+        cell = cells[empty[0]]
+        x, y = mesh.points[mesh.nodes[mesh.offsets[cell] : mesh.offsets[cell + 1]]].mean(axis=0)
+        raise MeshError(
+            f"{len(empty)} cells near the control surface are no simple polygons",
+            where=f"cell {cell} near x {x:.6g}, y {y:.6g}",
+            mend="Repair the mesh, or keep the surface away from them.",
+        )
+    return triangles, first
+
+
 def _segments(surface: ControlSurface) -> tuple[Array, Array]:
     starts, ends = [], []
     for ring in surface.rings:
@@ -116,13 +137,12 @@ def _segments(surface: ControlSurface) -> tuple[Array, Array]:
 def _cut(mesh: Mesh, start: Array, end: Array, closed: bool, shift: int) -> Overlay:
     from fvcheck.kernels.grid import INSIDE, NEAR, build_grid, classify_cells
     from fvcheck.kernels.overlay import cut_triangles, winding_numbers
-    from fvcheck.kernels.triangulate import triangulate_cells
 
     grid = build_grid(start, end, _RESOLUTION)
     status = classify_cells(mesh.points, mesh.offsets, mesh.nodes, grid)
     near = np.flatnonzero(status == NEAR)
     whole = np.flatnonzero(status == INSIDE) if closed else np.empty(0, np.int64)
-    triangles, first = triangulate_cells(mesh.points, mesh.offsets, mesh.nodes, near)
+    triangles, first = triangles_of(mesh, near)
     sides = _sides(mesh, near, triangles, first)
 
     corners = np.unique(triangles)
@@ -168,10 +188,8 @@ def _boundary_only(mesh: Mesh, chosen: Array, whole: Array, closed: bool) -> Ove
 
 def _edge_triangles(mesh: Mesh, chosen: Array) -> tuple[Array, Array]:
     """Boundary edges (e,), those chosen sorted by cell, and the triangle (e, 3) each lies on."""
-    from fvcheck.kernels.triangulate import triangulate_cells
-
     cells = np.unique(mesh.boundary.cells[chosen])
-    triangles, first = triangulate_cells(mesh.points, mesh.offsets, mesh.nodes, cells)
+    triangles, first = triangles_of(mesh, cells)
     sides = _sides(mesh, cells, triangles, first)
     row, column = np.nonzero(sides >= 0)
     edge = sides[row, column]
