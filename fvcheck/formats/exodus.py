@@ -170,12 +170,8 @@ def _variables(store: Store, name: str, dim: str, path: Path) -> list[str]:
     if name not in store and not store.dim(dim):
         return []
     names = store.words(name)
-    if (
-        len(names) > _MOST_VARIABLES
-        or len(set(names)) < len(names)
-        or "" in names
-        or store.dim(dim) not in (None, len(names))
-    ):
+    sound = all(word and word.isprintable() for word in names) and len(names) <= _MOST_VARIABLES
+    if not sound or len(set(names)) < len(names) or store.dim(dim) not in (None, len(names)):
         raise FormatError(f"the names of the variables ('{name}') are damaged", where=path, mend=DAMAGED)
     return names
 

@@ -80,7 +80,7 @@ def blocks(store: Store, path: Path) -> list[ElementBlock]:
     """All element blocks, empty ones included, in the order of the file."""
     count = store.dim("num_el_blk") or 0
     ids = ids_of(store, "eb_prop1", count, path)
-    names = names_of(store, "eb_names", count, ids, "block")
+    names = names_of(store, "eb_names", count, ids, "block", path)
     out = [_block(store, i + 1, ids[i], names[i], path) for i in range(count)]
     total, declared = sum(len(block.cells) for block in out), store.dim("num_elem")
     if total == 0 or (declared is not None and declared != total):
@@ -204,9 +204,11 @@ def ids_of(store: Store, name: str, count: int, path: Path) -> list[int]:
     return [int(one) for one in ids]
 
 
-def names_of(store: Store, name: str, count: int, ids: list[int], what: str) -> list[str]:
+def names_of(store: Store, name: str, count: int, ids: list[int], what: str, path: Path) -> list[str]:
     """The stored names, distinct; where there is none, what it is with its id."""
     words = store.words(name) if name in store else []
+    if not all(word.isprintable() for word in words):
+        raise FormatError(f"the names '{name}' are damaged", where=path, mend=DAMAGED)
     out: dict[str, None] = {}
     for i in range(count):
         word = words[i] if i < len(words) and words[i] else f"{what} {ids[i]}"

@@ -52,7 +52,7 @@ def patches(
     count = store.dim("num_side_sets") or 0
     ids = ids_of(store, "ss_prop1", count, path)
     sets = {}
-    for i, name in enumerate(names_of(store, "ss_names", count, ids, "side set")):
+    for i, name in enumerate(names_of(store, "ss_names", count, ids, "side set", path)):
         if f"elem_ss{i + 1}" in store:
             sets[name] = _side_set(store, i + 1, name, path)
         elif store.dim(f"num_side_ss{i + 1}"):
@@ -62,7 +62,7 @@ def patches(
         out[name] = _faces(found, shifts, solid, elements, sides, f"{path}, side set {name}")
     count = store.dim("num_node_sets") or 0
     ids = ids_of(store, "ns_prop1", count, path)
-    for i, name in enumerate(names_of(store, "ns_names", count, ids, "node set")):
+    for i, name in enumerate(names_of(store, "ns_names", count, ids, "node set", path)):
         if f"node_ns{i + 1}" in store and name not in out:
             out[name] = cb.faces_of_vertices(
                 store.numbers(f"node_ns{i + 1}").reshape(-1).astype(np.int64) - 1

@@ -88,7 +88,7 @@ def physical_names(text: bytes, where: object) -> dict[tuple[int, int], str]:
         for line in lines[1:]:
             dim, tag, name = line.split(None, 2)
             names[int(dim), int(tag)] = name.strip().strip('"').strip()
-        whole_list = int(lines[0]) == len(lines) - 1
+        whole_list = int(lines[0]) == len(lines) - 1 and all(name.isprintable() for name in names.values())
     except (ValueError, IndexError):
         whole_list = False
     if not whole_list:

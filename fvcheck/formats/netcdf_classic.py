@@ -24,6 +24,7 @@ MAGIC = (b"CDF\x01", b"CDF\x02", b"CDF\x05")
 
 _TYPES = (None, ">i1", "S1", ">i2", ">i4", ">f4", ">f8", ">u1", ">u2", ">u4", ">i8", ">u8")
 _MOST_DIMENSIONS = 1024
+_LARGE = 2**32 - 4
 
 
 @dataclass(frozen=True)
@@ -133,13 +134,17 @@ class ClassicStore:
             if any(axis >= len(lengths) for axis in axes) or any(lengths[axis] == 0 for axis in axes[1:]):
                 raise header.wrong(f"the dimensions of '{name}' are damaged")
             attributes, kind = header.attributes(), header.kind()
-            header.count()  # the size is stated too, but unreliable above 4 GB: it follows from the shape
+            stated = header.count()
             begin = header.integer(4 if header.version == 1 else 8)
             record = bool(axes) and lengths[axes[0]] == 0
             shape = tuple(lengths[axis] or self.records for axis in axes)
             if name in out:
                 raise header.wrong(f"the variable '{name}' stands twice")
             out[name] = Variable(shape, kind, begin, record, attributes)
+            size = out[name].row_bytes
+            # Follows from the shape (padded or not); beyond 4 GB writers state what they like.
+            if size < _LARGE and stated not in (size, size + -size % 4):
+                raise header.wrong(f"the size of '{name}' does not follow from its shape")
         return out
 
     def _checked_stride(self, header: _Header) -> int:
