@@ -27,6 +27,11 @@ class Page:
 
 
 PAGES: dict[str, Page] = {
+    "xdmf-origin-order": Page(
+        "An XDMF grid is given by an origin and a spacing.",
+        "They run like the dimensions, the slowest axis first (z, y, x); some writers put x first.",
+        "Compare the extent of the domain with the run; if x and y are exchanged, write the geometry as XYZ.",
+    ),
     "cell-data-preferred": Page(
         "An array of the same name is stored at points and at cells.",
         "Point copies of a finite-volume run are averages of its cells: they smooth the field, and fluxes "

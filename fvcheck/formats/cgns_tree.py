@@ -101,9 +101,12 @@ def _node(group: Any, name: str, where: str) -> Node | None:
     found = safe.member(group, name, where) if "/" not in name else None
     if found is None or not safe.is_group(found):
         return None
-    if safe.attribute(found, "type", where) == "LK":
+    if safe.text_attribute(found, "type", where) == "LK":
         found = _linked(found, f"{where}/{name}")
-    return Node(found, name, str(safe.attribute(found, "label", where) or ""), f"{where}/{name}")
+    label = safe.text_attribute(found, "label", where)
+    if not label:
+        raise FormatError("the node has no label", where=f"{where}/{name}", mend=safe.DAMAGED)
+    return Node(found, name, label, f"{where}/{name}")
 
 
 def _linked(group: Any, where: str) -> Any:
@@ -120,4 +123,4 @@ def _linked(group: Any, where: str) -> Any:
 
 def root_of(file: Any, where: str) -> Node:
     """The root of an open file."""
-    return Node(file["/"], "", "Root Node of HDF5 File", where)
+    return Node(safe.root(file, where), "", "Root Node of HDF5 File", where)

@@ -17,6 +17,8 @@ from fvcheck.mesh.piece import Array, Piece
 
 _COORDINATES = ("CoordinateX", "CoordinateY", "CoordinateZ")
 _TAGS = "Section"
+# Locations of a solution that no law uses.
+_ELSEWHERE = ("FaceCenter", "IFaceCenter", "JFaceCenter", "KFaceCenter", "EdgeCenter")
 
 
 @dataclass(frozen=True)
@@ -230,8 +232,12 @@ def read_solutions(zone: Node, wanted: list[str] | None) -> tuple[dict[str, Arra
         location = solution.first("GridLocation_t")
         place = "Vertex" if location is None else location.text()
         partial = any(solution.child(name) is not None for name in ("PointList", "PointRange"))
-        if place not in ("Vertex", "CellCenter") or partial:
+        if partial or place in _ELSEWHERE:
             continue
+        if place not in ("Vertex", "CellCenter"):
+            raise FormatError(
+                f"the location of a solution is '{place}'", where=solution.where, mend=safe.DAMAGED
+            )
         for array in solution.children("DataArray_t"):
             data = array.dataset()
             if data is not None and safe.is_numeric(data, array.where):

@@ -75,6 +75,12 @@ def _guard(where: object) -> Iterator[None]:
         raise FormatError(f"the HDF5 contents cannot be read: {text}", where=where, mend=DAMAGED) from None
 
 
+def root(file: Any, where: object) -> Any:
+    """The root group of an open file."""
+    with _guard(where):
+        return file["/"]
+
+
 def is_group(node: Any) -> bool:
     """Whether a member is a group (and not a dataset)."""
     import h5py
@@ -107,7 +113,7 @@ def member(group: Any, name: str, where: object, depth: int = 0) -> Any:
     node = group
     if name.startswith("/"):
         with _guard(where):
-            node = group.file["/"]
+            node = root(group.file, where)
     for part in (piece for piece in name.split("/") if piece not in ("", ".")):
         if not isinstance(node, h5py.Group):
             return None
@@ -129,6 +135,23 @@ def member(group: Any, name: str, where: object, depth: int = 0) -> Any:
         with _guard(where):
             node = node[part]
     return node
+
+
+def identity(node: Any, where: object) -> object:
+    """What tells a member apart however it was reached."""
+    import h5py
+
+    with _guard(where):
+        return h5py.h5o.get_info(node.id).addr
+
+
+def link_target(group: Any, name: str, where: object) -> str:
+    """Path that a link inside the file points at; empty if the member is no such link."""
+    import h5py
+
+    with _guard(where):
+        link = group.get(name, getlink=True)
+    return str(link.path) if isinstance(link, h5py.SoftLink) else ""
 
 
 def _linked(group: Any, name: str) -> bool:
@@ -170,8 +193,16 @@ def attribute(node: Any, name: str, where: object) -> Any:
     return value
 
 
+def text_attribute(node: Any, name: str, where: object) -> str:
+    """An attribute that holds text; empty if there is none or it holds something else."""
+    value = attribute(node, name, where)
+    return value if isinstance(value, str) else ""
+
+
 def shape(data: Any, where: object) -> tuple[int, ...]:
     """Shape of a dataset; () for a single value."""
+    if not is_dataset(data):
+        raise FormatError(f"'{data.name}' is no dataset", where=where, mend=DAMAGED)
     with _guard(where):
         found = data.shape
     if found is None:
@@ -198,7 +229,7 @@ def read(data: Any, where: object, rows: tuple[int, int] | slice | tuple[slice, 
     if not is_numeric(data, spot):
         raise FormatError("numbers are expected here", where=spot)
     if isinstance(rows, tuple) and rows and not isinstance(rows[0], slice):
-        first, last = int(rows[0]), int(rows[1])  # type: ignore[arg-type]
+        first, last = int(rows[0]), int(rows[1])
         if not total or not 0 <= first <= last <= total[0]:
             raise FormatError(
                 f"values {first} to {last} are asked for, {total[0] if total else 1} are there",

@@ -81,6 +81,8 @@ def _blocks(root: Any, path: Path) -> list[_Block]:
     kind = _kind(root, path)
     if kind not in _COMPOSITE:
         return [_Block("/VTKHDF", "", kind)]
+    assembly = safe.member(root, "Assembly", path)
+    titles = _titles(assembly, path) if assembly is not None and safe.is_group(assembly) else {}
     blocks = []
     for name in safe.names(root, path):
         if name == "Assembly":
@@ -89,17 +91,39 @@ def _blocks(root: Any, path: Path) -> list[_Block]:
         if node is None or not safe.is_group(node) or safe.attribute(node, "Type", path) is None:
             continue
         index = safe.attribute(node, "Index", path)
-        order = int(np.ravel(index)[0]) if isinstance(index, np.ndarray) and index.dtype.kind in "iu" else 0
-        blocks.append((order, _Block(f"/VTKHDF/{name}", name, _kind(node, path))))
+        known = isinstance(index, np.ndarray) and index.size == 1 and index.dtype.kind in "iu"
+        order = int(index.reshape(-1)[0]) if known else 0
+        blocks.append((order, _Block(f"/VTKHDF/{name}", titles.get(name, name), _kind(node, path))))
     if not blocks:
         raise FormatError("the collection has no blocks", where=path, mend=safe.DAMAGED)
     return [block for _, block in sorted(blocks, key=lambda pair: pair[0])]
 
 
+def _titles(assembly: Any, path: Path) -> dict[str, str]:
+    """Names of the blocks in the tree of the assembly, by their group; the first where a block occurs twice."""
+    titles: dict[str, str] = {}
+    _collect(assembly, path, titles, set())
+    return titles
+
+
+def _collect(assembly: Any, path: Path, titles: dict[str, str], seen: set[Any]) -> None:
+    if len(seen) > 500 or safe.identity(assembly, path) in seen:
+        raise FormatError("the tree of the assembly has no end", where=path, mend=safe.DAMAGED)
+    seen.add(safe.identity(assembly, path))
+    for name in safe.names(assembly, path):
+        target = safe.link_target(assembly, name, path)
+        if target.startswith("/VTKHDF/"):
+            titles.setdefault(target.removeprefix("/VTKHDF/").strip("/"), name)
+            continue
+        node = safe.member(assembly, name, path)
+        if node is not None and safe.is_group(node):
+            _collect(node, path, titles, seen)
+
+
 def _kind(group: Any, path: Path) -> str:
-    kind = safe.attribute(group, "Type", path)
+    kind = safe.text_attribute(group, "Type", path)
     if kind in _PARTS or (kind in _COMPOSITE and group.name == "/VTKHDF"):
-        return str(kind)
+        return kind
     raise FormatError(
         f"the data set type '{kind}' cannot be read",
         where=f"{path}, {group.name}",
@@ -116,7 +140,8 @@ def _steps(group: Any, path: Path) -> Steps:
         raise FormatError("Steps is no group", where=where, mend=safe.DAMAGED)
     values = safe.read(safe.dataset(node, "Values", where), where).reshape(-1)
     count = safe.attribute(node, "NSteps", where)
-    if not isinstance(count, np.ndarray) or count.size != 1 or int(count.reshape(-1)[0]) != len(values):
+    known = isinstance(count, np.ndarray) and count.size == 1 and count.dtype.kind in "iu"
+    if not known or int(count.reshape(-1)[0]) != len(values):
         raise FormatError(
             f"NSteps is {count}, but there are {len(values)} times", where=where, mend=safe.DAMAGED
         )
@@ -170,7 +195,9 @@ def _data(group: Any, kind: str, steps: Steps, step: int, part: Part, where: str
     arrays = {}
     for name in safe.names(node, where):
         data = safe.member(node, name, where)
-        if not safe.is_dataset(data) or not safe.is_numeric(data, where):
+        if not safe.is_dataset(data):
+            raise FormatError(f"the array '{name}' is no dataset", where=where, mend=safe.DAMAGED)
+        if not safe.is_numeric(data, where):
             continue
         if part.shape is not None:
             arrays[name] = _image_array(data, part, kind, steps, step, where)
@@ -205,7 +232,7 @@ def _image_array(data: Any, part: Part, kind: str, steps: Steps, step: int, wher
         found = found[1:]
     assert part.shape is not None
     sizes = part.shape if kind == "PointData" else tuple(max(1, n - 1) for n in part.shape)
-    flat = [n for n in sizes if n > 1]
+    flat = [n for n in sizes[::-1] if n > 1]
     for components in (False, True):
         axes = found[:-1] if components else found
         if [n for n in axes if n > 1] == flat and (not components or found[-1] <= 9):

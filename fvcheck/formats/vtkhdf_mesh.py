@@ -97,7 +97,7 @@ def _face_rows(
         for name in ("NumberOfFaces", "NumberOfFaceConnectivityIds", "NumberOfPolyhedronToFaceIds")
     ]
     last = min(len(values) for values in counts)
-    f = steps.start("FaceOffsetsOffsets", step, counts[0] + 1, first)
+    f = first_offset(steps.start("FaceOffsetsOffsets", step, counts[0], first), counts[0], first)
     n = steps.start("FaceConnectivityOffsets", step, counts[1], first)
     h = steps.start("PolyhedronToFaceIdOffsets", step, counts[2], first)
     c = first_offset(steps.start("CellOffsets", step, cells, first), cells, first)

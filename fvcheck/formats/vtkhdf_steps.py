@@ -26,15 +26,13 @@ class Steps:
         if self.group is None or (data := safe.member(self.group, name, self.where)) is None:
             return None
         values = safe.read(data, self.where)
-        if (
-            values.size != len(self.times) * columns
-            or values.dtype.kind not in "iu"
-            or (values.astype(int) < 0).any()
-        ):
+        # Some writers add a last entry, the end of the last step.
+        stated = (len(self.times) * columns, (len(self.times) + 1) * columns)
+        if values.size not in stated or values.dtype.kind not in "iu" or (values.astype(int) < 0).any():
             raise FormatError(
                 f"'{name}' does not fit {len(self.times)} time steps", where=self.where, mend=safe.DAMAGED
             )
-        return values.astype(np.int64).reshape(len(self.times), columns)
+        return values.astype(np.int64).reshape(-1, columns)[: len(self.times)]
 
     def parts(self, step: int, stored: int) -> tuple[int, int]:
         """First partition of a step and the number of its partitions."""

@@ -18,6 +18,7 @@ from fvcheck.formats.check import check_piece
 from fvcheck.formats.xdmf_items import Items
 from fvcheck.formats.xdmf_mesh import read_mesh, shape_of
 from fvcheck.formats.xdmf_tree import Element, parse
+from fvcheck.hints import Hint
 from fvcheck.mesh.piece import Array, Export, Piece
 
 _COMPONENTS = {"scalar": (1,), "globalid": (1,), "vector": (3, 2), "tensor": (9, 4), "tensor6": (6, 3)}
@@ -60,7 +61,15 @@ def open_export(path: Path) -> Export:
             pieces = [_grid(grid, str(n), items, cache) for n, grid in enumerate(grids)]
         return _merge(pieces)
 
-    return Export(path, "XDMF", load, times)
+    return Export(path, "XDMF", load, times, _hints(states))
+
+
+def _hints(states: list[_State]) -> tuple[Hint, ...]:
+    geometries = [geometry for state in states for grid in state.grids for geometry in grid.all("Geometry")]
+    if any(geometry.get("GeometryType", "Type").upper().startswith("ORIGIN_") for geometry in geometries):
+        text = "origin and spacing of a grid are read with the slowest axis first, as its dimensions are"
+        return (Hint("xdmf-origin-order", text),)
+    return ()
 
 
 def _domain(domain: Element, items: Items) -> list[_State]:
