@@ -353,11 +353,11 @@ def _rows(
     raw = np.abs(best.total).sum()
     felt = best.total - best.level
     size = scale.get(law.name, 0.5 * float(np.hypot.reduce(felt, axis=1).sum())) if closed else None
-    told = sum(
-        share_inside(source, sampling.surface, sampling.flow.mesh) * source.rate
+    told = [
+        (share_inside(source, sampling.surface, sampling.flow.mesh), source)
         for source in sources
         if source.law == law.name and closed
-    )
+    ]
     shaken = [sampling.fluxes(law, state) for state in sampling.shaken_line_states()]
     rows = []
     for c, component in enumerate(law.components):
@@ -366,7 +366,7 @@ def _rows(
         rounding = _SHAKE_COVERAGE * float(np.std(spread)) if spread else 0.0
         rounding += 4.0 * np.finfo(float).eps * float(raw)
         band = bands(*pieces, rounding)
-        told_here = told if component is None else 0.0
+        told_here = sum(share * source.along(component) for share, source in told)
         row = _row(law, component, sampling, best, c, told_here)
         if closed:
             linear = float(pieces[0].sum()) - told_here

@@ -3,18 +3,38 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
+from typing import Any
 
+from fvcheck.errors import SetupError
 from fvcheck.mesh.mesh import Mesh
 from fvcheck.surfaces import ControlSurface
 
 
 @dataclass(frozen=True)
 class Source:
-    """A rate [in the law's unit] spread evenly over a closed shape."""
+    """A rate [in the law's unit] spread evenly over a closed, drawn shape; two numbers for a vector law.
+
+    SetupError where the shape is none that a rate can be spread over.
+    """
 
     law: str
     shape: ControlSurface
-    rate: float
+    rate: float | tuple[float, float]
+
+    def __post_init__(self) -> None:
+        if not self.shape.closed or self.shape.kind == "domain":
+            raise SetupError(
+                "a source needs a closed shape to be spread over",
+                where=f"{self.law} source, {self.shape.text}",
+                mend="Draw it, such as box(x0, y0, x1, y1).",
+            )
+
+    def along(self, component: str | None) -> float:
+        """The rate of one component of its law; SetupError where the law has another number of them."""
+        if isinstance(self.rate, tuple) != (component is not None):
+            form = "takes two numbers, [x, y]" if component else "takes one number"
+            raise SetupError(f"the rate of a {self.law} source {form}", where=self.shape.text)
+        return self.rate["xy".index(str(component))] if isinstance(self.rate, tuple) else self.rate
 
 
 def share_inside(source: Source, surface: ControlSurface, mesh: Mesh) -> float:
@@ -25,12 +45,12 @@ def share_inside(source: Source, surface: ControlSurface, mesh: Mesh) -> float:
     return float(inside.intersection(shape).area / shape.area)
 
 
-def outline(surface: ControlSurface):  # type: ignore[no-untyped-def]
+def outline(surface: ControlSurface) -> Any:
     """The drawn area as a shapely geometry."""
     import shapely
 
     # Exterior rings run counter-clockwise, holes clockwise: symmetric difference puts both right.
-    shape = shapely.Polygon()
+    shape: shapely.Geometry = shapely.Polygon()
     for ring in surface.rings:
         shape = shape.symmetric_difference(shapely.Polygon(ring))
     return shape
