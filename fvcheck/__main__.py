@@ -1,0 +1,16 @@
+"""``python -m fvcheck`` and the ``fvcheck`` command."""
+
+from __future__ import annotations
+
+import sys
+
+
+def main() -> None:
+    """Run the command line and leave with its exit status."""
+    from fvcheck.cli.app import run
+
+    sys.exit(run(sys.argv[1:]))
+
+
+if __name__ == "__main__":
+    main()

@@ -1,0 +1,1 @@
+"""The command line. Commands parse, call a public function, print; they compute nothing."""

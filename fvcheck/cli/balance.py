@@ -1,0 +1,57 @@
+"""``fvcheck balance FILE -s SURFACE …``."""
+
+from __future__ import annotations
+
+from typing import Annotated
+
+from typer import Option
+
+from fvcheck.cli.options import FluidOptions, Limits, OptionalFile, Output, Reading, SurfaceList, spread
+
+
+@spread
+def command(
+    limits: Limits,
+    reading: Reading,
+    fluid: FluidOptions,
+    output: Output,
+    file: OptionalFile = None,
+    surface: SurfaceList = None,
+    patches: Annotated[
+        bool,
+        Option("--patches", help="Split fluxes by mechanism and by patch.", rich_help_panel="Output"),
+    ] = False,
+) -> int:
+    """Balance mass, momentum and energy over control surfaces.
+
+    Without -s: the whole domain, and a surface around each body.
+    """
+    from fvcheck.balancing import balance_all
+    from fvcheck.cli.output import check_target, history_data, show
+    from fvcheck.cli.settings import settle
+    from fvcheck.flow import flow_of_export, step_number
+    from fvcheck.formats.registry import open_export
+    from fvcheck.text.ledger import result_text, steps_text
+    from fvcheck.verdict import EXIT_STATUS, worst
+
+    check_target(output)
+    settings = settle(file, reading, fluid, surface, limits)
+    export = open_export(settings.file)
+    numbers = range(export.steps) if settings.step == "all" else [step_number(export, settings.step)]
+    results = [
+        balance_all(
+            flow_of_export(export, step=number, **settings.reading),
+            settings.surfaces,
+            settings.laws,
+            tolerance=settings.tolerance,
+            scale=settings.scale,
+            sources=settings.sources,
+        )
+        for number in numbers
+    ]
+    verdict = worst(result.verdict for result in results)
+    if settings.step == "all":
+        show(output, lambda: history_data(results), lambda: steps_text(results, patches, output.quiet))
+    else:
+        show(output, results[0].to_dict, lambda: result_text(results[0], patches, output.quiet))
+    return 0 if verdict is None else EXIT_STATUS[verdict]

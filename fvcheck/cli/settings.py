@@ -1,0 +1,169 @@
+"""What a command is to do: the check file, and the options that win over it."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass, fields
+from pathlib import Path
+from typing import TYPE_CHECKING, Any
+
+from fvcheck.cli.options import (
+    FluidOptions,
+    Limits,
+    Reading,
+    number,
+    numbers,
+    pairs,
+    property_value,
+    vector,
+    words,
+)
+from fvcheck.errors import SetupError
+
+if TYPE_CHECKING:
+    from fvcheck.checkmodel import CheckFile
+    from fvcheck.sources import Source
+    from fvcheck.surfaces import ControlSurface
+
+_PROPERTIES = ("density", "viscosity", "conductivity")
+
+
+@dataclass(frozen=True)
+class Settings:
+    """What stands in the arguments of `open_flow` (``reading``) and `balance_all`, and the file.
+
+    step : "last", "all" or the number of a step; it is not in ``reading``
+    surfaces, laws : None for the default ones
+    """
+
+    file: Path
+    reading: dict[str, Any]
+    step: int | str
+    surfaces: tuple[ControlSurface, ...] | None
+    laws: list[str] | None
+    tolerance: dict[str, float]
+    scale: dict[str, float]
+    sources: tuple[Source, ...]
+
+
+def settle(
+    file: Path | None,
+    reading: Reading,
+    fluid: FluidOptions,
+    surfaces: list[str] | None = None,
+    limits: Limits | None = None,
+) -> Settings:
+    """Options over check file over defaults; SetupError or SurfaceError where they cannot be used."""
+    from fvcheck.surfaces import parse_all
+
+    limits = limits or Limits()
+    check = _load(reading.check)
+    laws = words(limits.law)
+    tolerance = check.tolerance | numbers(limits.tolerance, "--tolerance", "LAW=PERCENT")
+    scale = numbers(limits.scale, "--scale", "LAW=VALUE")
+    _check_laws(laws, tolerance, scale)
+    drawn = parse_all(surfaces) if surfaces else check.control_surfaces()
+    return Settings(
+        file=_file(file, check, reading.check),
+        reading=_reading(check, reading, fluid),
+        step=reading.step if reading.step is not None else check.case.step,
+        surfaces=drawn or None,
+        laws=laws,
+        tolerance=tolerance,
+        scale=scale,
+        sources=_sources(check),
+    )
+
+
+def _load(path: Path | None) -> CheckFile:
+    from fvcheck.checkfile import load
+    from fvcheck.checkmodel import CheckFile
+
+    if path is None:
+        return CheckFile()
+    from fvcheck.laws import law_names
+
+    return load(path, laws=law_names())
+
+
+def _file(given: Path | None, check: CheckFile, check_path: Path | None) -> Path:
+    if given is not None:
+        return given
+    if check_path is None:
+        raise SetupError("no export is given", mend="Name a FILE, or a check file with -c.")
+    files = check.case_files()
+    if len(files) > 1:
+        raise SetupError(
+            f"the check file names {len(files)} exports",
+            where=check_path,
+            mend="Give the one that is meant as FILE.",
+        )
+    return files[0]
+
+
+def _check_laws(laws: list[str] | None, tolerance: dict[str, float], scale: dict[str, float]) -> None:
+    """The laws exist, and what is told of them can be used: found out before a large file is read."""
+    from fvcheck.balancing import check_tolerance
+    from fvcheck.laws import find_law
+
+    for name in [*(laws or ()), *scale]:
+        find_law(name)
+    check_tolerance(tolerance)
+    for name, value in scale.items():
+        if not value > 0:
+            raise SetupError(f"the scale of {name} is {value:g}", mend="Give a positive reference flux.")
+
+
+def _reading(check: CheckFile, reading: Reading, options: FluidOptions) -> dict[str, Any]:
+    from fvcheck.fluid import Fluid
+
+    told = _fluid_told(options)
+    fields_told: dict[str, Any] = dict(check.fields)
+    for role in _PROPERTIES:
+        if role in told:
+            fields_told.pop(role, None)  # the option is of the same meaning, and wins
+    fields_told |= pairs(reading.field, "--field", "ROLE=ARRAY")
+    case = check.case
+    return {
+        "fluid": Fluid(**(check.fluid.model_dump(exclude_unset=True) | told)),
+        "fields": fields_told,
+        "plane": reading.plane or case.plane,
+        "cell_values": reading.cell_values or case.cell_values,
+        "walls": _walls(check, reading.wall),
+        "symmetry": "axisymmetric" if reading.axisymmetric else case.symmetry,
+        "depth": case.depth if reading.depth is None else number(reading.depth, "--depth", "--depth METRES"),
+    }
+
+
+def _fluid_told(options: FluidOptions) -> dict[str, Any]:
+    given = {item.name: getattr(options, item.name) for item in fields(options)}
+    told: dict[str, Any] = {name: value for name, value in given.items() if value is not None}
+    for name, text in told.items():
+        option = f"--{name.replace('_', '-')}"
+        if name in _PROPERTIES:
+            told[name] = property_value(text)
+        elif name == "gravity":
+            told[name] = vector(text, option, "--gravity GX,GY")
+        elif name != "pressure_kind":
+            told[name] = number(text, option, f"{option} NUMBER")
+    return told
+
+
+def _walls(check: CheckFile, options: list[str] | None) -> dict[str, tuple[float, float]]:
+    walls = dict.fromkeys(check.patches.wall, (0.0, 0.0)) | dict(check.patches.moving_wall)
+    for text in options or ():
+        name, equals, motion = text.rpartition("=")
+        if equals:
+            walls[name.strip()] = vector(motion, f"--wall {name.strip()}", "--wall NAME=VX,VY")
+        else:
+            walls[text.strip()] = (0.0, 0.0)
+    return walls
+
+
+def _sources(check: CheckFile) -> tuple[Source, ...]:
+    from fvcheck.sources import Source
+    from fvcheck.surfaces import ControlSurface
+
+    return tuple(
+        Source(entry.law, ControlSurface.parse(entry.shape, base=check.folder), entry.rate)
+        for entry in check.source
+    )

@@ -1,0 +1,80 @@
+"""Pages of the words that results are written in."""
+
+from __future__ import annotations
+
+from fvcheck.hints import Page
+
+TERMS: dict[str, Page] = {
+    "laws": Page(
+        "Each law is a balance: storage + flux + boundary - source = imbalance, zero for an exact solution.\n"
+        "mass, momentum (x, y), kinetic-energy; heat for constant density; total-energy for an ideal gas.",
+        "They fail one by one: which of them is open says where to look.",
+        "fvcheck explain mass (momentum, …). --law mass,momentum picks; without it every law the data allow.",
+    ),
+    "verdicts": Page(
+        "closed: |imbalance| + sampling band within the tolerance. undecided: the band straddles the "
+        "tolerance.\n"
+        "mesh-limited: out of it, by no more than the resolution band. open: out of it, and beyond that "
+        "band.",
+        "They say what to do next: go on; measure better; refine; iterate or correct the set-up. The "
+        "verdict of a surface, and of the whole result, is the worst of the rows.",
+        "fvcheck explain closed (undecided, mesh-limited, open).",
+    ),
+    "bands": Page(
+        "Each flux is integrated with polynomials of degree 1, 2 and 3 through the same data.\n"
+        "Sampling band (+-data): what degree 3 still changes against 2, the error of integrating from "
+        "discrete data; a share for the digits that the file stores (rounding band) is in it.\n"
+        "Resolution band (+-mesh): three times what degree 2 changes against 1, an imbalance that a "
+        "second-order scheme may leave on this mesh however long it iterates; never below the sampling "
+        "band.",
+        "A percentage without them cannot separate the sampling, the mesh and the run.",
+        "A wide sampling band: move the surface, tell the walls. A wide resolution band: refine there.",
+    ),
+    "surfaces": Page(
+        "Closed: box(x0, y0, x1, y1), circle(x, y, r), ellipse(x, y, a, b[, degrees]), polygon(x y, x "
+        "y, …), around(BODY, distance), domain(). Open, fluxes only: line(x y, x y, …), patch(NAME).\n"
+        "file(PATH) reads GeoJSON, WKT or two-column CSV; WKT text works as it is. NAME= in front names "
+        "a surface.\n"
+        "Moving: @ velocity(wx, wy) or @ spin(omega, x, y) behind.",
+        "The volume is the inside of the drawn surface as far as there is fluid: bodies and walls "
+        "within it become boundary entries of the ledger. The normal is outward; of a line, to the "
+        "right of its direction.",
+        'fvcheck balance run.vtu -s "outer=box(0, 0, 1, 1)". Keep surfaces a few cells away from bodies and '
+        "out of steep layers, unless they are what you ask about.",
+    ),
+    "exit": Page(
+        "0: closed, or nothing to judge. 1: open. 2: the command, check file or data cannot be used. "
+        "3: undecided or mesh-limited.",
+        "A pipeline can tell 'not balanced' from 'could not be judged' and from 'could not be read'.",
+        "Stopped from the keyboard: 130. Errors go to standard error, one line: what, where, how to mend it.",
+    ),
+    "units": Page(
+        "SI, or any consistent units: nothing is converted. Fluxes of a plane run are per metre of depth "
+        "(kg/s/m, N/m, W/m) unless --depth gives one.",
+        "An export in millimetres with a velocity in m/s makes friction and gravity wrong by powers of ten.",
+        "Compare the extent and ranges in fvcheck inspect with the run.",
+    ),
+    "signs": Page(
+        "Fluxes count outward positive. in and out are magnitudes over the drawn pieces; boundary is the net "
+        "over the enclosed walls, bodies, inlets and outlets; sources count into the volume.\n"
+        "imbalance = storage + (out - in) + boundary - source.",
+        "A positive imbalance of mass: more leaves than enters, fluid appears from nowhere.",
+        "--patches splits boundary by patch, and the drawn flux by mechanism.",
+    ),
+    "scale": Page(
+        "The imbalance in percent is of the scale: half the summed |flux| around the volume, the "
+        "throughflow.\n"
+        "Both rows of momentum share the scale of the vector's magnitude. What no closed surface feels, "
+        "the mean pressure and the mean temperature, is taken out before.",
+        "A small net flux would make a harmless imbalance look large, a high pressure level a large one "
+        "small.",
+        "A reference flux of your own: --scale momentum=1.2 (in the law's unit).",
+    ),
+    "datum": Page(
+        "Heat counts from the mean temperature on the border, kinetic energy's pressure work from the "
+        "mean pressure.",
+        "A shift of level multiplies only the mass imbalance: with a datum far away, the heat row would "
+        "mostly show mass again, a hundred times enlarged in kelvin.",
+        "The levels are in the result file (datum). To see mass, look at the mass row.",
+    ),
+}
