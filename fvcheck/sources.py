@@ -50,7 +50,7 @@ def outline(surface: ControlSurface) -> Any:
     import shapely
 
     # Exterior rings run counter-clockwise, holes clockwise: symmetric difference puts both right.
-    shape: shapely.Geometry = shapely.Polygon()
+    shape: Any = shapely.Polygon()
     for ring in surface.rings:
         shape = shape.symmetric_difference(shapely.Polygon(ring))
     return shape
