@@ -100,7 +100,7 @@ def _blocks(root: Any, path: Path) -> list[_Block]:
 
 
 def _titles(assembly: Any, path: Path) -> dict[str, str]:
-    """Names of the blocks in the tree of the assembly, by their group; the first where a block occurs twice."""
+    """Names of the blocks in the tree of the assembly, by their group; the first if there are several."""
     titles: dict[str, str] = {}
     _collect(assembly, path, titles, set())
     return titles
