@@ -87,7 +87,7 @@ def stencils(offsets, nodes, point_first, point_cells, centres, at_points, known
 
     centres (c,) points; at_points: the data live at points, else in cells;
     known (n,) bool: points whose value is known beside cell data (walls);
-    targets (d,) wanted numbers of equations, ascending.
+    targets (c, d) wanted numbers of equations about each centre, ascending.
 
     Returns (first (c+1,), entries, sizes (c, d)): ``entries[first[j]:first[j+1]]``
     are point numbers, or cell numbers, or -1-p for the known value at point p.
@@ -100,7 +100,8 @@ def stencils(offsets, nodes, point_first, point_cells, centres, at_points, known
     seen_point = np.full(n_points, -1, np.int64)
     first = np.zeros(count + 1, np.int64)
     entries = np.empty(64 * count + 64, np.int64)
-    sizes = np.zeros((count, len(targets)), np.int64)
+    wanted = targets.shape[1]
+    sizes = np.zeros((count, wanted), np.int64)
     used = 0
     queue = np.empty(n_points, np.int64)
     for j in range(count):
@@ -140,12 +141,12 @@ def stencils(offsets, nodes, point_first, point_cells, centres, at_points, known
                             entries[used] = -1 - other
                             used += 1
             low = old_high
-            while reached < len(targets) and used - start >= targets[reached]:
+            while reached < wanted and used - start >= targets[j, reached]:
                 sizes[j, reached] = used - start
                 reached += 1
-            if reached == len(targets) or low == high:
+            if reached == wanted or low == high:
                 break
-        for k in range(reached, len(targets)):
+        for k in range(reached, wanted):
             sizes[j, k] = used - start
         first[j + 1] = used
     return first, entries[:used], sizes

@@ -30,6 +30,10 @@ DEGREES = (1, 2, 3)
 # two or three of an open mesh; beyond this the data are too far to matter.
 _RINGS = 5
 
+# How many further rings a fit may take in where those that hold enough data do
+# not determine it well (corners and sides of even grids) before its degree falls.
+_MORE_RINGS = 2
+
 # Equations wanted per unknown, to keep the fit from following single values.
 _SURPLUS = 1.5
 
@@ -127,32 +131,51 @@ def compile_sampler(
 
     first, cells = neighbours.cells_of_points(local_offsets, local_nodes, len(local_points))
     local_centres = number[centres]
-    targets = np.array([_wanted(degree, at_points) for degree in degrees])
-    stencil_first, entries, sizes = neighbours.stencils(
-        local_offsets, local_nodes, first, cells, local_centres, at_points, is_known, targets, _RINGS
-    )
     known_column = np.full(len(local_points), -1, np.int64)
     known_column[known_points] = len(local_cells) + np.arange(len(known_points))
-    compiled = {}
-    for k, degree in enumerate(degrees):
-        keep = 1 if degree == 1 else fits.TERMS[degree]
+
+    def gather(about: Array, targets: Array) -> tuple[Array, Array, Array]:
+        return neighbours.stencils(
+            local_offsets, local_nodes, first, cells, about, at_points, is_known, targets, _RINGS
+        )
+
+    def fit(about: Array, stencil: tuple[Array, Array, Array], k: int) -> NodeFits:
+        begin, entries, sizes = stencil
+        degree = degrees[k]
         row_first, columns, operator, frames, reached = fits.fit_points(
             points,
             local_offsets,
             local_nodes,
-            local_centres,
-            stencil_first,
+            about,
+            begin,
             entries,
             np.ascontiguousarray(sizes[:, k]),
             degree,
             at_points,
             averages,
             is_known,
-            keep,
+            1 if degree == 1 else fits.TERMS[degree],
         )
         if not at_points:
             columns = np.where(columns >= 0, columns, known_column[np.maximum(-1 - columns, 0)])
-        compiled[degree] = NodeFits(row_first, columns, operator, frames, reached)
+        return NodeFits(row_first, columns, operator, frames, reached)
+
+    targets = np.array([_wanted(degree, at_points) for degree in degrees])
+    stencil = gather(local_centres, np.tile(targets, (len(local_centres), 1)))
+    compiled = {}
+    for k, degree in enumerate(degrees):
+        found = fit(local_centres, stencil, k)
+        size = stencil[2][:, k].copy()
+        for _ in range(_MORE_RINGS):
+            weak = np.flatnonzero(found.reached < degree)
+            if len(weak) == 0:
+                break
+            wider = gather(local_centres[weak], np.repeat(size[weak, None] + 1, len(degrees), axis=1))
+            again = fit(local_centres[weak], wider, k)
+            size[weak] = wider[2][:, k]
+            better = again.reached > found.reached[weak]
+            found = _merged(found, again, weak[better], np.flatnonzero(better))
+        compiled[degree] = found
     centre_of = np.full(mesh.n_points, -1, np.int64)
     centre_of[centres] = np.arange(len(centres))
     return Sampler(location, mesh.points, centre_of, local_points, local_cells, known_points, compiled)
@@ -163,3 +186,24 @@ def _wanted(degree: int, at_points: bool) -> int:
 
     unknowns = TERMS[degree] - (1 if at_points else 0)
     return int(np.ceil(_SURPLUS * unknowns))
+
+
+def _merged(one: NodeFits, other: NodeFits, to: Array, source: Array) -> NodeFits:
+    """The fits ``one`` with rows ``to`` taken from the rows ``source`` of ``other``."""
+    if len(to) == 0:
+        return one
+    total = one.row_first[-1]
+    begin, length = one.row_first[:-1].copy(), np.diff(one.row_first)
+    begin[to] = total + other.row_first[source]
+    length[to] = np.diff(other.row_first)[source]
+    row_first = np.concatenate([[0], np.cumsum(length)])
+    take = np.repeat(begin - row_first[:-1], length) + np.arange(row_first[-1])
+    frames, reached = one.frames.copy(), one.reached.copy()
+    frames[to], reached[to] = other.frames[source], other.reached[source]
+    return NodeFits(
+        row_first,
+        np.concatenate([one.columns, other.columns])[take],
+        np.ascontiguousarray(np.concatenate([one.operator, other.operator], axis=1)[:, take]),
+        frames,
+        reached,
+    )
