@@ -787,3 +787,27 @@ def test_equal_points_agree_with_a_dictionary(seed):
     first = {}
     expected = [first.setdefault((a + 0.0, b + 0.0), i) for i, (a, b) in enumerate(zip(x, y))]
     assert first_equal(x, y).tolist() == expected
+
+
+@given(st.integers(0, 2**32 - 1))
+@settings(max_examples=20, deadline=None)
+def test_walking_back_finds_the_hanging_nodes_that_a_search_finds(seed):
+    from fvcheck.kernels.edges import paths_back
+    from fvcheck.mesh.edges import edges_of
+    from fvcheck.mesh.gather import Polygons
+    from fvcheck.mesh.hanging import _on_edges
+
+    points, cells = quadtree(4, np.random.default_rng(seed))
+    p = piece(points, cells)
+    polygons = Polygons(p.offsets, p.nodes, np.arange(len(cells)))
+    edges = edges_of(polygons, len(points))
+    start, end = p.nodes[edges.open], edges.end[edges.open]
+    tolerance = np.full(len(start), 1e-9)
+    edge, node, share, done = paths_back(start, end, points[:, 0].copy(), points[:, 1].copy(), tolerance)
+    found = _on_edges(points, start, end, np.unique(start), tolerance)
+    assert sorted(zip(edge.tolist(), node.tolist(), share.tolist())) == sorted(
+        zip(*(f.tolist() for f in found))
+    )
+    assert done[edge].all()
+    rim = np.isin(points, (0, 1))  # what is not walked is the rim of the square
+    assert (rim[start[~done]] & rim[end[~done]]).any(axis=1).all()

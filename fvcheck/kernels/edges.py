@@ -178,3 +178,66 @@ def walk(start, end, following):
                 n_chains += 1
                 offsets[n_chains] = filled
     return out, offsets[: n_chains + 1], closed[:n_chains]
+
+
+@njit(cache=True)
+def paths_back(start, end, x, y, tolerance):
+    """Open edges that others run back along, point by point, as across a quadtree's coarse edges.
+
+    start, end (e,) open half-edges; x, y by point number; tolerance (e,) distance
+    from an edge within which a point lies on it. Returns (edge, point, share of
+    the way) of each point met on the way back, and (e,) whether an edge needs no
+    further look: those run back along, and those run.
+    """
+    e = len(start)
+    order = np.argsort(start, kind="mergesort")
+    n_points = 0
+    for i in range(e):
+        n_points = max(n_points, max(start[i], end[i]) + 1)
+    first = np.zeros(n_points + 1, np.int64)
+    for i in range(e):
+        first[start[i] + 1] += 1
+    for p in range(n_points):
+        first[p + 1] += first[p]
+    capacity = 2 * e + 16
+    edge = np.empty(capacity, np.int64)
+    node = np.empty(capacity, np.int64)
+    share = np.empty(capacity)
+    done = np.zeros(e, np.bool_)
+    filled = 0
+    for i in range(e):
+        a, b = start[i], end[i]
+        dx, dy = x[b] - x[a], y[b] - y[a]
+        square = dx * dx + dy * dy
+        if square == 0.0:
+            continue
+        length = np.sqrt(square)
+        at, t, begin = b, 1.0, filled
+        while at != a:
+            step = -1
+            if first[at + 1] - first[at] <= _SORT_ABOVE:
+                for s in range(first[at], first[at + 1]):
+                    p = end[order[s]]
+                    px, py = x[p] - x[a], y[p] - y[a]
+                    tp = (px * dx + py * dy) / square
+                    if abs(px * dy - py * dx) <= tolerance[i] * length and tp < t and (p == a or tp > 0.0):
+                        step, next_t = order[s], tp
+                        break
+            if step < 0 or filled == capacity:
+                break
+            at, t = end[step], next_t
+            edge[filled], node[filled], share[filled] = (
+                step,
+                at,
+                t,
+            )  # the edge walked, until known to lead back
+            filled += 1
+        if at != a or filled - begin < 2:
+            filled = begin
+            continue
+        for s in range(begin, filled):
+            done[edge[s]] = True
+            edge[s] = i
+        done[i] = True
+        filled -= 1  # the last point is the edge's own start
+    return edge[:filled].copy(), node[:filled].copy(), share[:filled].copy(), done

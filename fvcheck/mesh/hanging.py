@@ -30,14 +30,24 @@ def insert_hanging(
     Edges that belong to a patch of the file are walls and stay as they are. Adds
     the hint "hanging-nodes".
     """
+    from fvcheck.kernels.edges import paths_back
     from fvcheck.kernels.polygons import insert_nodes
 
     cell, end, alone = edges.cell, edges.end, edges.open
-    rim = points_of(cells.nodes[alone], len(points))
     patch, _ = finder.find(cells.nodes[alone], end[alone], number)
-    alone = alone[~finder.claims.is_wall(patch)]
-    edge, node, along = _on_edges(points, cells.nodes[alone], end[alone], rim, precision)
-    edge = alone[edge]
+    wall = finder.claims.is_wall(patch)
+    walls, alone = cells.nodes[alone[wall]], alone[~wall]
+    start, stop = cells.nodes[alone], end[alone]
+    tolerance = _tolerances(points, start, stop, precision)
+    # Where others run back along an edge from end to end the mesh itself leads to the points ...
+    x, y = np.ascontiguousarray(points.T)
+    edge, node, along, done = paths_back(start, stop, x, y, tolerance)
+    # ... elsewhere, as along uneven seams, they have to be searched.
+    left = np.flatnonzero(~done)
+    rim = points_of(np.concatenate([start[left], stop[left], walls]), len(points))
+    more = _on_edges(points, start[left], stop[left], rim, tolerance[left])
+    edge = alone[np.concatenate([edge, left[more[0]]])]
+    node, along = np.concatenate([node, more[1]]), np.concatenate([along, more[2]])
     own = _cell_has(cells, cell[edge], node)
     edge, node, along = edge[~own], node[~own], along[~own]
     if len(edge) == 0:
@@ -53,8 +63,15 @@ def insert_hanging(
     return Polygons(offsets, nodes, cells.source)
 
 
+def _tolerances(points: Array, start: Array, end: Array, precision: float) -> Array:
+    """(e,) distance within which a point lies on an edge."""
+    length = np.hypot(*(points[end] - points[start]).T)
+    size = np.maximum(np.abs(points[start, 0]), np.abs(points[start, 1]))
+    return np.minimum(np.maximum(NEAR * length, SPACINGS * precision * size), 0.01 * length)
+
+
 def _on_edges(
-    points: Array, start: Array, end: Array, rim: Array, precision: float
+    points: Array, start: Array, end: Array, rim: Array, tolerance: Array
 ) -> tuple[Array, Array, Array]:
     """Rim points between the ends of edges: edge number, point, share of the way.
 
@@ -66,10 +83,6 @@ def _on_edges(
 
     step = points[end] - points[start]
     length = np.hypot(*step.T)
-    tolerance = np.maximum(
-        NEAR * length, SPACINGS * precision * np.abs(points[start]).max(axis=1, initial=0.0)
-    )
-    tolerance = np.minimum(tolerance, 0.01 * length)
     none = np.zeros(0, np.int64)
     edges, nodes, shares = [none], [none], [np.zeros(0)]
     if len(rim) == 0 or len(start) == 0:
