@@ -24,6 +24,7 @@ _HOME = {
     "Fluid": "fvcheck.fluid",
     "FormatError": "fvcheck.errors",
     "FvcheckError": "fvcheck.errors",
+    "Inspection": "fvcheck.inspection",
     "Law": "fvcheck.laws",
     "Ledger": "fvcheck.ledger",
     "MeshError": "fvcheck.errors",
@@ -36,6 +37,7 @@ _HOME = {
     "SurfaceError": "fvcheck.errors",
     "balance": "fvcheck.balancing",
     "balance_all": "fvcheck.balancing",
+    "inspect_file": "fvcheck.inspection",
     "open_flow": "fvcheck.flow",
     "register": "fvcheck.laws",
 }

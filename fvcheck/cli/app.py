@@ -66,11 +66,12 @@ def run(arguments: Sequence[str]) -> int:
     if "--version" in arguments and not any(a == "--" for a in arguments):
         arguments = ["--version"]  # everywhere, as the contract has it
     try:
-        status = typer.main.get_command(app).main(
+        todo = typer.main.get_command(app).main(
             args=list(arguments) or ["--help"], prog_name="fvcheck", standalone_mode=False
         )
+        status = todo() if callable(todo) else 0
         sys.stdout.flush()
-        return status if isinstance(status, int) else 0
+        return status
     except FvcheckError as error:
         return _fail(str(error))
     except _UsageError as error:
@@ -80,7 +81,7 @@ def run(arguments: Sequence[str]) -> int:
     except (KeyboardInterrupt, typer.Abort):
         _fail("stopped from the keyboard.")
         return INTERRUPTED
-    except BrokenPipeError:
+    except (BrokenPipeError, SystemExit):  # the latter is how rich tells it, from within the help
         # The interpreter flushes once more at its end; nobody is there to read it.
         os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
         return PIPE_CLOSED
@@ -96,7 +97,9 @@ def run(arguments: Sequence[str]) -> int:
 
 
 def _fail(text: str) -> int:
-    print("error: " + " ".join(text.split()), file=sys.stderr)
+    # One line, whatever a file's names hold: line ends, or the codes that steer a terminal.
+    line = "".join(letter if letter.isprintable() else "?" for letter in " ".join(text.split()))
+    print(f"error: {line}", file=sys.stderr)
     return UNUSABLE
 
 

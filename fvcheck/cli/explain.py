@@ -7,7 +7,10 @@ from typing import Annotated
 
 from typer import Argument
 
+from fvcheck.cli.options import spread
 
+
+@spread
 def command(
     topic: Annotated[
         str | None, Argument(metavar="[TOPIC]", help="A law, verdict, hint code, or a word of the list.")

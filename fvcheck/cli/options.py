@@ -122,8 +122,12 @@ class Output:
     quiet: Annotated[bool, _show("-q", "--quiet", text="No tables, the last line only.")] = False
 
 
-def spread(command: Callable[..., int]) -> Callable[..., int]:
-    """The command as the parser sees it: parameters that are dataclasses spread into their fields."""
+def spread(command: Callable[..., int]) -> Callable[..., Callable[[], int]]:
+    """The command as the parser sees it: parameters that are dataclasses spread into their fields.
+
+    Called, it does not run but gives what is to be run: parsing ends before
+    work begins, so the parser has no say in how errors of the work are told.
+    """
     hints = get_type_hints(command, include_extras=True)
     groups = {name: kind for name, kind in hints.items() if isinstance(kind, type) and is_dataclass(kind)}
     flat: list[inspect.Parameter] = []
@@ -140,15 +144,15 @@ def spread(command: Callable[..., int]) -> Callable[..., int]:
         ]
 
     @functools.wraps(command)
-    def flattened(**given: Any) -> int:
+    def flattened(**given: Any) -> Callable[[], int]:
         whole = {
             name: kind(**{item.name: given.pop(item.name) for item in fields(kind)})
             for name, kind in groups.items()
         }
-        return command(**given, **whole)
+        return functools.partial(command, **given, **whole)
 
     flattened.__signature__ = inspect.Signature(flat)  # type: ignore[attr-defined]
-    flattened.__annotations__ = {parameter.name: parameter.annotation for parameter in flat} | {"return": int}
+    flattened.__annotations__ = {parameter.name: parameter.annotation for parameter in flat}
     return flattened
 
 

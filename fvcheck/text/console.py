@@ -65,6 +65,8 @@ def plain_table(*columns: str | tuple[str, dict[str, Any]]) -> Table:
 
 
 LEFT: dict[str, Any] = {"justify": "left"}
+FOLDED: dict[str, Any] = LEFT | {"overflow": "fold", "no_wrap": False}
+"""Columns of words; those of names that may be long are folded."""
 
 
 def heading(name: str, *facts: str) -> Text:

@@ -10,7 +10,16 @@ from rich.table import Table
 from rich.text import Text
 
 from fvcheck.inspection import ArrayFacts, Inspection, PatchFacts
-from fvcheck.text.console import LEFT, heading, hint_lines, paragraph, plain_table, render, rich_characters
+from fvcheck.text.console import (
+    FOLDED,
+    LEFT,
+    heading,
+    hint_lines,
+    paragraph,
+    plain_table,
+    render,
+    rich_characters,
+)
 from fvcheck.text.numbers import short
 
 _SIDES = {0: "+x", 90: "+y", 180: "-x", 270: "-y", 360: "+x"}
@@ -61,13 +70,13 @@ def _range(low: float, high: float) -> str:
 
 def _arrays(arrays: tuple[ArrayFacts, ...]) -> Table:
     table = plain_table(
-        ("array", LEFT | {"overflow": "fold", "no_wrap": False}),
+        ("array", FOLDED),
         ("at", LEFT),
         "parts",
         ("type", LEFT),
         "from",
         "to",
-        ("role", LEFT | {"overflow": "fold", "no_wrap": False}),
+        ("role", FOLDED),
     )
     for facts in arrays:
         row = facts.row
@@ -88,13 +97,13 @@ def _arrays(arrays: tuple[ArrayFacts, ...]) -> Table:
 
 def _patches(patches: tuple[PatchFacts, ...]) -> Table:
     table = plain_table(
-        ("\npatch", LEFT | {"min_width": 8, "overflow": "fold", "no_wrap": False}),
+        ("\npatch", FOLDED | {"min_width": 8}),
         "\nedges",
         "\nlength",
         ("\nfaces", LEFT),
         ("\nplace", LEFT),
         "velocity\nthrough",
-        ("\n", LEFT | {"overflow": "fold", "no_wrap": False}),
+        ("\n", FOLDED),
     )
     for patch in patches:
         notes = [word for word, here in (("body", patch.body), ("no-slip", patch.wall)) if here]

@@ -11,6 +11,7 @@ from rich.text import Text
 from fvcheck.ledger import Ledger, Port, Result, Row
 from fvcheck.pages import VERDICTS
 from fvcheck.text.console import (
+    FOLDED,
     LEFT,
     STYLE,
     heading,
@@ -45,7 +46,7 @@ def steps_text(results: Sequence[Result], patches: bool = False, quiet: bool = F
     """The results of several steps, one behind the other."""
     if quiet or len(results) == 1:
         return "".join(result_text(result, patches, quiet) for result in results)
-    table = plain_table("step", "time", ("worst of its rows", LEFT), ("verdict", LEFT))
+    table = plain_table("step", "time", ("worst of its rows", FOLDED), ("verdict", LEFT))
     for result in results:
         name, row = worst_row(result)
         table.add_row(
@@ -179,7 +180,7 @@ def _in_one_unit(row: Row, values: Sequence[float | None]) -> tuple[list[str], s
 
 def _origins(rows: Sequence[Row]) -> Table:
     """Each law's fluxes by mechanism and by patch."""
-    table = plain_table(("law", LEFT), ("through", LEFT), ("by", LEFT), "net outward", ("unit", LEFT))
+    table = plain_table(("law", LEFT), ("through", LEFT), ("by", FOLDED), "net outward", ("unit", LEFT))
     for row in rows:
         # Of the whole domain nothing is drawn.
         by = [("drawn", name, value) for name, value in row.parts.items() if any(row.parts.values())]
@@ -202,7 +203,7 @@ def _origins(rows: Sequence[Row]) -> Table:
 
 def _ports(ports: Sequence[Port]) -> Table:
     table = plain_table(
-        ("\nport", LEFT | {"min_width": 10}),
+        ("\nport", FOLDED | {"min_width": 8}),
         "area\nm",
         "mass flow\nkg/s",
         "velocity\nm/s",

@@ -12,11 +12,13 @@ MISSING = "-"
 def short(value: float | None, digits: int = 4) -> str:
     """Few significant digits, an exponent only where there must be one.
 
-    >>> short(0.0016295165), short(-12.35663), short(3.1e-9), short(None)
-    ('0.00163', '-12.36', '3.1e-09', '-')
+    >>> short(0.0016295165), short(-12.35663), short(101325.2), short(3.1e-9), short(None)
+    ('0.00163', '-12.36', '101325', '3.1e-09', '-')
     """
     if value is None or not math.isfinite(value):
         return MISSING if value is None else str(value)
+    if 10.0**digits <= abs(value) < 1e7:
+        return f"{value:.0f}"
     text = f"{value + 0.0:.{digits}g}"  # no minus before a zero
     return text if len(text) <= digits + 4 else f"{value:.{max(digits - 1, 1)}g}"
 
