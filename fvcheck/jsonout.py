@@ -31,10 +31,15 @@ def dumps(data: Mapping[str, Any]) -> str:
 def write(path: str | Path, data: Mapping[str, Any]) -> None:
     """Write ``data`` to ``path``; a reader never meets half a file.
 
+    A link stays one, its target is replaced. A device or pipe is written to.
     SetupError where it cannot be written.
     """
     text, path = dumps(data), Path(path)
     try:
+        if path.exists() and not path.is_file():
+            path.write_text(text, encoding="utf-8")
+            return
+        path = path.resolve()
         handle, draft = tempfile.mkstemp(prefix=f".{path.name}.", dir=path.parent)
         try:
             with os.fdopen(handle, "w", encoding="utf-8") as stream:

@@ -18,6 +18,7 @@ from fvcheck.cli.app import run
 from fvcheck.cli.options import FluidOptions, Limits, Reading
 from fvcheck.cli.settings import settle
 from fvcheck.errors import SetupError
+from fvcheck.jsonout import write
 from fvcheck.ledger import Ledger, Result, Row
 from fvcheck.verdict import EXIT_STATUS, VERDICTS
 
@@ -69,6 +70,20 @@ def _umask() -> int:
     mask = os.umask(0)
     os.umask(mask)
     return mask
+
+
+def test_json_keeps_links_and_writes_into_pipes(tmp_path):
+    real, link, pipe = tmp_path / "real.json", tmp_path / "link.json", tmp_path / "pipe"
+    real.write_text("old")
+    link.symlink_to(real)
+    write(link, {"a": 1})
+    assert link.is_symlink() and strict(real.read_text()) == {"a": 1}
+    os.mkfifo(pipe)
+    reader = os.open(pipe, os.O_RDONLY | os.O_NONBLOCK)
+    write(pipe, {"a": 2})
+    assert strict(os.read(reader, 1000).decode()) == {"a": 2}
+    os.close(reader)
+    assert pipe.is_fifo()
 
 
 def test_quiet_leaves_one_line():

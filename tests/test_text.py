@@ -9,11 +9,14 @@ import pytest
 from forked import fvcheck
 
 from fvcheck.hints import Hint
+from fvcheck.inspection import inspect_file
 from fvcheck.ledger import Ledger, Port, Result, Row
 from fvcheck.text import numbers
+from fvcheck.text.inspection import inspection_text
 from fvcheck.text.ledger import result_text, steps_text
 
 ROOT = Path(__file__).parent.parent
+SAMPLE_FILES = json.loads((ROOT / "tests" / "samples" / "samples.json").read_text())["files"]
 
 
 def row(law="kinetic-energy", component=None, factor=1.0, storage=0.0, verdict="open", **more):
@@ -123,7 +126,22 @@ def test_a_name_with_brackets_is_no_markup():
     assert "[bold]x[/bold]" in result_text(result(row(), name="[bold]x[/bold]"))
 
 
-def test_a_pipe_gets_no_colour_and_ascii_where_that_is_all():
+def test_names_cannot_steer_a_terminal():
+    text = result_text(result(row(patches={"a\x1b]0;title\x07b": 1.0}), name="x\x1b[2Jy"), patches=True)
+    assert "\x1b" not in text and "\x07" not in text and "a?]0;title" in text
+
+
+@pytest.mark.parametrize("name", sorted(SAMPLE_FILES))
+def test_an_inspection_of_any_sample_fits_80_columns(name):
+    found = inspect_file(ROOT / "tests" / "samples" / name)
+    text = inspection_text(found)
+    assert max(map(len, text.splitlines())) <= 80, text
+    assert f"{SAMPLE_FILES[name]['cells']} cells" in text
+    assert all(patch.name in text for patch in found.patches)
+    assert all(facts.row.name in text for facts in found.arrays), text
+
+
+def test_a_pipe_gets_no_colour():
     shown = fvcheck("explain", "bands")
     assert "\x1b" not in shown.out
 

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import re
 import shutil
 import sys
 import textwrap
@@ -17,6 +18,9 @@ from fvcheck.hints import Hint
 from fvcheck.verdict import CLOSED, MESH_LIMITED, OPEN, UNDECIDED
 
 COLUMNS = 80
+
+# Names from a file may hold codes that steer a terminal; only colours, which are ours, pass.
+_CONTROL = re.compile(r"\x1b(?!\[[0-9;]*m)|[\x00-\x09\x0b-\x1a\x1c-\x1f\x7f-\x9f]")
 
 STYLE = {CLOSED: "green", UNDECIDED: "yellow", MESH_LIMITED: "cyan", OPEN: "bold red"}
 _MARK = {CLOSED: "✓", UNDECIDED: "?", MESH_LIMITED: "△", OPEN: "✗"}
@@ -40,8 +44,8 @@ def render(parts: Iterable[RenderableType]) -> str:
     with console.capture() as caught:
         for part in parts:
             console.print(part)
-    lines = [line.rstrip() for line in caught.get().splitlines()]
-    return "\n".join(lines) + "\n"
+    text = _CONTROL.sub("?", caught.get())
+    return "\n".join(line.rstrip() for line in text.split("\n")).rstrip("\n") + "\n"
 
 
 def marked(verdict: str) -> str:

@@ -37,16 +37,17 @@ def demo_text(demo: Demo, place: Path, quiet: bool = False) -> str:
             parts += [*ledger_parts(ledger, amounts=False), Text()]
         parts += [*verdict_line(result.verdict), Text()]
     parts += [paragraph(body=end, by=0), Text(), heading("Next")]
-    path = shlex.quote(str(_shown(place / EARLY)))
-    check = shlex.quote(str(_shown(place / CHECK)))
-    parts += [
-        # Commands are to be copied: they stay on one line each, however long the path.
-        Text(f"  fvcheck balance {path} -c {check}", no_wrap=True, overflow="ignore"),
-        Text("  fvcheck inspect YOUR-FILE"),
-        Text('  fvcheck balance YOUR-FILE --density 1.2 -s "box(0, 0, 1, 1)"'),
-        Text("  fvcheck explain verdicts"),
-    ]
-    return render(parts)
+    path, check = (shlex.quote(str(_shown(place / name))) for name in (EARLY, CHECK))
+    # To be copied, so each on one line, however long the path.
+    return render(parts) + "".join(
+        f"  fvcheck {command}\n"
+        for command in (
+            f"balance {path} -c {check}",
+            "inspect YOUR-FILE",
+            'balance YOUR-FILE --density 1.2 -s "box(0, 0, 1, 1)"',
+            "explain verdicts",
+        )
+    )
 
 
 def _shown(path: Path) -> Path:
