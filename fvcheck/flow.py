@@ -129,9 +129,9 @@ class Flow:
     @classmethod
     def from_pyvista(cls, dataset: Any, **settings: Any) -> Flow:
         """A flow from a pyvista (or VTK) data set; ``settings`` are those of `open_flow`."""
-        from fvcheck.formats.vtk_convert import piece_from_vtk
+        from fvcheck.formats.vtk_convert import piece_of
 
-        return cls._from_piece(piece_from_vtk(dataset, "data set"), "VTK object", settings)
+        return cls._from_piece(piece_of(dataset), "VTK object", settings)
 
     @classmethod
     def _from_piece(cls, piece: Piece, what: str, settings: dict[str, Any]) -> Flow:
@@ -254,7 +254,7 @@ def _settle(
 ) -> tuple[Fluid, dict[str, Field], tuple[Hint, ...]]:
     """One meaning for each property: a told number wins over a field, with a hint."""
     hints = []
-    changes = {}
+    changes: dict[str, Any] = {}
     for role in ("density", "viscosity", "conductivity"):
         value = getattr(fluid, role)
         if isinstance(value, str):
