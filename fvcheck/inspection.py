@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import shlex
 from collections.abc import Mapping, Sequence
+from contextlib import suppress
 from dataclasses import asdict, dataclass, replace
 from pathlib import Path
 from typing import Any
@@ -103,24 +104,28 @@ class Inspection:
 def inspect_file(path: str | Path, *, step: int | str = "last", **settings: Any) -> Inspection:
     """Look into an export; works where roles are ambiguous or no velocity is found.
 
-    ``settings`` are those of `flow_of_export`. Raises FormatError, MeshError or
-    SetupError for a file or a setting that cannot be used.
+    ``settings`` are those of `flow_of_export`. Raises FormatError, MeshError,
+    FieldError or SetupError for a file or a setting that cannot be used.
     """
     from fvcheck.formats.registry import open_export
 
     export = open_export(path)
     number = step_number(export, step)
     pieces = export.load(number)
-    loaded: Export = replace(export, load=lambda step: pieces)
-    told = settings.get("fields") or {}
+    told = _told(settings)
     flow: Flow | None = None
     try:
-        flow = flow_of_export(loaded, step=number, **settings)
+        flow = _flow(export, number, pieces, settings)
         assembly, hints = flow.assembly, flow.hints
+        arrays = _arrays(pieces, assembly, told)
     except FieldError as error:
         points_only = not any(piece.cell_data for piece in pieces)
         assembly = assemble(pieces, plane=settings.get("plane", "auto"), keep_centres=points_only)
+        arrays = _arrays(pieces, assembly, told)
         hints = (*export.hints, *assembly.hints, Hint("unclear-fields", str(error)))
+        # What is clear may still show how the flow moves.
+        with suppress(FieldError):
+            flow = _flow(export, number, _without_unclear(pieces, arrays), settings)
     patches = _patches(assembly.mesh, flow)
     mesh = assembly.mesh
     return Inspection(
@@ -137,11 +142,38 @@ def inspect_file(path: str | Path, *, step: int | str = "last", **settings: Any)
         bounds=mesh.bounds,
         area=float(mesh.areas.sum()),
         edge_lengths=_edge_lengths(mesh),
-        arrays=_arrays(pieces, assembly, told),
+        arrays=arrays,
         patches=patches,
         bodies=mesh.bodies,
         hints=(*hints, *_suspicions(patches, flow.location if flow else None)),
     )
+
+
+def _flow(export: Export, step: int, pieces: Sequence[Piece], settings: Mapping[str, Any]) -> Flow:
+    """The flow of pieces that are loaded already."""
+    return flow_of_export(replace(export, load=lambda _: pieces), step=step, **settings)
+
+
+def _told(settings: Mapping[str, Any]) -> dict[str, Any]:
+    """Role -> array as the user named it, among the fields or as a property of the fluid."""
+    fluid = settings.get("fluid")
+    named = {role: getattr(fluid, role, None) for role in ("density", "viscosity", "conductivity")}
+    return {role: name for role, name in named.items() if isinstance(name, str)} | dict(
+        settings.get("fields") or {}
+    )
+
+
+def _without_unclear(pieces: Sequence[Piece], arrays: Sequence[ArrayFacts]) -> list[Piece]:
+    """The pieces less the arrays that share a claim to a role."""
+    unclear = {(facts.row.location, facts.row.name) for facts in arrays if facts.row.role.endswith("?")}
+    return [
+        replace(
+            piece,
+            point_data={name: v for name, v in piece.point_data.items() if ("point", name) not in unclear},
+            cell_data={name: v for name, v in piece.cell_data.items() if ("cell", name) not in unclear},
+        )
+        for piece in pieces
+    ]
 
 
 def _cell_kinds(pieces: Sequence[Piece], assembly: Assembly) -> dict[str, int]:
@@ -163,12 +195,8 @@ def _edge_lengths(mesh: Mesh) -> tuple[float, float]:
 
 def _arrays(pieces: Sequence[Piece], assembly: Assembly, told: Mapping[str, Any]) -> tuple[ArrayFacts, ...]:
     point_data, cell_data = mesh_arrays(pieces, assembly)
-    try:
-        rows = describe(point_data, cell_data, told)
-    except FieldError:
-        rows = describe(point_data, cell_data)  # what is told does not fit; the hint says how
     out = []
-    for row in rows:
+    for row in describe(point_data, cell_data, told):
         values = (point_data if row.location == "point" else cell_data)[row.name]
         bad = int(np.count_nonzero(~np.isfinite(values))) if values.dtype.kind == "f" else 0
         out.append(ArrayFacts(row, bad))

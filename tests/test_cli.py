@@ -272,6 +272,18 @@ def test_inspect_works_where_roles_are_unclear(tmp_path):
     assert re.search(r"right\s.*\s2 *$", told.out, re.MULTILINE), told.out  # the velocity through x = 1
 
 
+def test_inspect_shows_the_motion_although_another_role_is_unclear(tmp_path):
+    import meshio
+
+    points = [[0, 0, 0], [1, 0, 0], [1, 1, 0], [0, 1, 0.0]]
+    data = {"U": [[2.0, 0, 0]] * 4, "p": [1.0] * 4, "pressure": [2.0] * 4}
+    meshio.Mesh(points, [("triangle", [[0, 1, 2], [0, 2, 3]])], point_data=data).write(tmp_path / "two.vtu")
+    found = package.inspect_file(tmp_path / "two.vtu")
+    assert "pressure" in found.hints[0].message and found.hints[0].code == "unclear-fields"
+    # A uniform velocity is sampled to rounding.
+    assert {patch.name: patch.through for patch in found.patches}["right"] == pytest.approx(2.0, abs=1e-12)
+
+
 def test_walls_are_suspected_from_the_data():
     # Channel with a cylinder (ngsolve, tests/data/cylinder_re20.json): inlet left, outlet right.
     found = package.inspect_file(Path(__file__).parent / "data" / "cylinder_re20.vtu")
