@@ -11,8 +11,8 @@ from typing import Any, Literal
 import numpy as np
 
 from fvcheck.errors import FieldError, SetupError, nearest
-from fvcheck.fields import Field, choose_fields
 from fvcheck.fieldnames import VECTORS
+from fvcheck.fields import Field, choose_fields
 from fvcheck.fluid import Fluid
 from fvcheck.hints import Hint
 from fvcheck.mesh.assemble import Assembly, assemble
@@ -249,9 +249,7 @@ def _named_properties(fluid: Fluid, told: FieldNames) -> dict[str, str]:
     return out
 
 
-def _settle(
-    fluid: Fluid, chosen: dict[str, Field]
-) -> tuple[Fluid, dict[str, Field], tuple[Hint, ...]]:
+def _settle(fluid: Fluid, chosen: dict[str, Field]) -> tuple[Fluid, dict[str, Field], tuple[Hint, ...]]:
     """One meaning for each property: a told number wins over a field, with a hint."""
     hints = []
     changes: dict[str, Any] = {}
@@ -280,13 +278,13 @@ def _read_fields(
 ) -> tuple[dict[str, Field], tuple[Hint, ...]]:
     mesh = assembly.mesh
     point_data, cell_data = mesh_arrays(pieces, assembly)
-    chosen, hints = choose_fields(
-        point_data, cell_data, told, n_points=mesh.n_points, n_cells=mesh.n_cells
-    )
+    chosen, hints = choose_fields(point_data, cell_data, told, n_points=mesh.n_points, n_cells=mesh.n_cells)
     if not chosen:
         names = ", ".join(sorted({*point_data, *cell_data})) or "none"
         raise FieldError(
-            "no array of a known meaning", where=f"arrays: {names}", mend="Name them with --field velocity=NAME …"
+            "no array of a known meaning",
+            where=f"arrays: {names}",
+            mend="Name them with --field velocity=NAME …",
         )
     for role, field in chosen.items():
         if role in VECTORS or (role.startswith("rate:") and role[5:] in VECTORS):

@@ -79,4 +79,6 @@ class Fluid:
 
 def _one_of(what: str, value: str, known: tuple[str, ...]) -> None:
     if value not in known:
-        raise SetupError(f"unknown {what} {value!r}", mend=nearest(value, known) or f"Known: {', '.join(known)}.")
+        raise SetupError(
+            f"unknown {what} {value!r}", mend=nearest(value, known) or f"Known: {', '.join(known)}."
+        )

@@ -35,7 +35,10 @@ def ports(flow: Flow, surface: ControlSurface, overlay: Overlay, state: State) -
         return (_port(patch, None if patch else name, everything, state, through, weight * depth),)
     names = flow.mesh.boundary.names
     patch_of = np.repeat(overlay.patch, PER_PIECE)
-    flows = {k: np.abs((through * weight)[patch_of == k].sum()) for k in np.unique(patch_of[patch_of >= 0]).tolist()}
+    flows = {
+        k: np.abs((through * weight)[patch_of == k].sum())
+        for k in np.unique(patch_of[patch_of >= 0]).tolist()
+    }
     busiest = max([*flows.values(), np.abs((through * weight)[patch_of < 0]).sum() / 2.0], default=0.0)
     return tuple(
         _port(names[k], None, patch_of == k, state, through, weight * depth)
@@ -71,7 +74,9 @@ def _port(
             return None
         net = carried.sum()
         # Without a net flow there is no flow-weighted mean.
-        return float((values[here] * carried).sum() / net) if abs(net) > 1e-9 * np.abs(carried).sum() else None
+        return (
+            float((values[here] * carried).sum() / net) if abs(net) > 1e-9 * np.abs(carried).sum() else None
+        )
 
     def factor(power: int) -> float | None:
         if mean is None or abs(mean) <= 1e-9 * np.abs(u).max(initial=0.0):

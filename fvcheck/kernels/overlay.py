@@ -225,7 +225,12 @@ def cut_triangles(points, triangles, first, boxes, tri_edges, winding, start, en
                     from_s = to_s
                     hit_side[nearest] = -1
     return Cuts(
-        drawn_ends[:n_drawn], drawn[:n_drawn], edge_ends[:n_edge], edge[:n_edge], corners[:n_area], area[:n_area]
+        drawn_ends[:n_drawn],
+        drawn[:n_drawn],
+        edge_ends[:n_edge],
+        edge[:n_edge],
+        corners[:n_area],
+        area[:n_area],
     )
 
 

@@ -102,7 +102,8 @@ def _conduction(s: State, n: Array) -> Array | None:
 def _heat_content(s: State) -> Array:
     if s.fluid.ideal_gas:
         raise SetupError(
-            "the heat law is for fluids of constant density", mend="Use the total-energy law for an ideal gas."
+            "the heat law is for fluids of constant density",
+            mend="Use the total-energy law for an ideal gas.",
         )
     return _column(s.density * s.specific_heat * (s.temperature - s.datum.temperature))
 

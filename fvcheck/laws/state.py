@@ -60,7 +60,11 @@ class State:
         known = self._property("density")
         if known is not None:
             return known
-        if self.fluid.ideal_gas and self.fluid.gas_constant and {"pressure", "temperature"} <= set(self.fields):
+        if (
+            self.fluid.ideal_gas
+            and self.fluid.gas_constant
+            and {"pressure", "temperature"} <= set(self.fields)
+        ):
             return self.pressure / (self.fluid.gas_constant * self.fields["temperature"].value)
         raise MissingData("density", "Give --density, or name the array with --field density=NAME.")
 
@@ -88,7 +92,9 @@ class State:
         """(q, 3, 2) ∂u_i/∂x_j [1/s]."""
         if "velocity" in self.fields:
             return self.fields["velocity"].gradient
-        slope = self.fields["momentum"].gradient - self.velocity[:, :, None] * self.density_gradient[:, None, :]
+        slope = (
+            self.fields["momentum"].gradient - self.velocity[:, :, None] * self.density_gradient[:, None, :]
+        )
         return slope / self.density[:, None, None]
 
     @cached_property
