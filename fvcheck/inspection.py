@@ -11,7 +11,7 @@ from typing import Any
 
 import numpy as np
 
-from fvcheck.errors import FieldError, FvcheckError
+from fvcheck.errors import FieldError
 from fvcheck.fields import ArrayRow, describe
 from fvcheck.flow import Flow, flow_of_export, mesh_arrays, step_number
 from fvcheck.hints import Hint
@@ -232,26 +232,26 @@ def _patches(mesh: Mesh, flow: Flow | None) -> tuple[PatchFacts, ...]:
 def _motion(flow: Flow) -> tuple[dict[str, float], dict[str, float]]:
     """Patch -> mean velocity through it, and speed on it over that of the field.
 
-    Values at the boundary come from fits of degree 2, as a balance takes them.
+    Values at the boundary come from fits of degree 2, without regard to walls
+    that were told: this is what the data say.
     """
     from fvcheck.overlay.overlay import lay_over
-    from fvcheck.sampling.probe import compile_probe
     from fvcheck.sampling.quadrature import PER_PIECE, along
+    from fvcheck.sampling.sampler import compile_sampler
     from fvcheck.surfaces import ControlSurface
 
     field = flow.fields.get("velocity")
     if field is None:
         return {}, {}
-    free = replace(flow, walls={})  # what the data say, not what was told
+    whole = field.values[:, :2].astype(float)
     overlay = lay_over(flow.mesh, ControlSurface.domain())
     places, weights = along(overlay.start, overlay.end)
     triangle = np.repeat(overlay.triangle, PER_PIECE, axis=0)
-    try:
-        probe = compile_probe(free, np.unique(triangle), ("velocity",))
-        velocity = probe.by_role(probe.raw(2, triangle, places))["velocity"].value[:, :2]
-    except FvcheckError:
-        return {}, {}  # values at the boundary that are no numbers: nothing can be said
-    whole = field.values[:, :2].astype(float)
+    averages = flow.case.cell_values == "average"
+    sampler = compile_sampler(flow.mesh, np.unique(triangle), field.location, averages=averages)
+    if not np.isfinite(whole[sampler.sources]).all():
+        return {}, {}  # no numbers at the boundary: nothing can be said
+    velocity, _ = sampler.evaluate(2, sampler.apply(2, whole), triangle, places)
     whole = whole[np.isfinite(whole).all(axis=1)]
     typical = float(np.sqrt(np.mean(np.sum(whole**2, axis=1)))) if len(whole) else 0.0
     through, stillness = {}, {}

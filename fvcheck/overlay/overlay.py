@@ -370,7 +370,7 @@ _PIECE_FIELDS = ("start", "end", "triangle", "cell", "patch", "winding")
 def _replace(overlay: Overlay, **changes: Array) -> Overlay:
     from dataclasses import replace
 
-    return replace(overlay, **changes)
+    return replace(overlay, **changes)  # type: ignore[arg-type]
 
 
 def _select(overlay: Overlay, keep: Array) -> Overlay:
