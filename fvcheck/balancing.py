@@ -28,9 +28,16 @@ from fvcheck.verdict import CLOSED, judge
 
 Array = np.ndarray
 
+# In place of a degree: the one that the data support, cell by cell.
+BEST = 0
+
 # Samples with a shaken last digit: eight give the spread to a quarter of
 # itself, and three times it covers 99 in 100.
 _SHAKES, _SHAKE_COVERAGE = 8, 3.0
+
+# Rounding of our own sums, in units of the last place of the summed |flux|: fits on
+# cells of aspect ratio 2,500 pass on some hundred.
+_ROUNDINGS = 256.0
 
 # A scale below this share of the fluxes' own magnitude is rounding, not flow.
 _NOTHING = 1e-11
@@ -81,8 +88,9 @@ def balance(
         closed=overlay.closed,
         length=float(overlay.lengths.sum()),
         area=overlay.area(flow.mesh) if overlay.closed else None,
+        degrees=sampling.degree_shares(),
         rows=tuple(rows),
-        ports=port_room.ports(flow, placed, overlay, sampling.line_state(3)),
+        ports=port_room.ports(flow, placed, overlay, sampling.line_state(BEST)),
         hints=tuple(dict.fromkeys(hints)),
     )
 
@@ -160,18 +168,26 @@ class _Sampling:
         self.normals = (overlay.normals[:, None, :] * weights[None, :, None]).reshape(-1, 2) * self.depth
         self.drawn = np.repeat(overlay.patch == DRAWN, PER_PIECE)
         self.patch = np.repeat(overlay.patch, PER_PIECE)
-        self.line_cells, self.line_group = np.unique(np.repeat(overlay.cell, PER_PIECE), return_inverse=True)
+        # One group per cell; what lies on the domain boundary apart from what crosses the fluid.
+        key = 2 * np.repeat(overlay.cell, PER_PIECE) + ~self.drawn
+        groups, self.line_group = np.unique(key, return_inverse=True)
+        self.reaching = (groups % 2 == 1) & (flow.location == "cell")
         self.surface_velocity = surface.motion.at(self.places) if surface.motion is not None else None
         self._set_up_area(overlay.closed and any(self._needs_area(law) for law in laws))
         centres = np.unique(self.triangle)
         if self.area_triangle is not None:
             centres = np.unique(np.concatenate([centres, self.area_triangle.ravel()]))
         self.probe = compile_probe(flow, centres)
-        self._line: dict[int, State] = {}
-        self._area: dict[int, State] = {}
+        self.line = self.probe.samples(self.triangle, self.places, self.line_group)
+        self.area = (
+            None
+            if self.area_triangle is None
+            else self.probe.samples(self.area_triangle, self.area_places, self.area_group)
+        )
         self.datum = Datum()
-        self.datum = self._find_datum() if overlay.closed else Datum()
-        self._line.clear()
+        if overlay.closed:
+            self.datum = self._find_datum()
+        self._states: dict[tuple[str, int], State] = {}
         self._shaken: list[State] | None = None
 
     def _needs_area(self, law: Law) -> bool:
@@ -210,7 +226,7 @@ class _Sampling:
         self.area_cells, self.area_group = np.unique(np.repeat(cells, PER_TRIANGLE), return_inverse=True)
 
     def _find_datum(self) -> Datum:
-        state = self.line_state(3)
+        state = self._line_state_of(self.line.best)
         weights = np.hypot(*self.normals.T)
         levels = {}
         for name in ("pressure", "temperature"):
@@ -224,13 +240,13 @@ class _Sampling:
         return State(self.flow.fluid, fields, places, self.datum)
 
     def line_state(self, degree: int) -> State:
-        """State at the line quadrature points."""
-        if degree not in self._line:
-            self._line[degree] = self._line_state_of(self.probe, degree)
-        return self._line[degree]
+        """State at the line quadrature points; degree `BEST` is what the data support."""
+        if ("line", degree) not in self._states:
+            fields = self.line.best if degree == BEST else self.line.by_degree[degree]
+            self._states["line", degree] = self._line_state_of(fields)
+        return self._states["line", degree]
 
-    def _line_state_of(self, probe: Probe, degree: int) -> State:
-        sampled = probe.at(degree, self.triangle, self.places)
+    def _line_state_of(self, sampled: Mapping[str, Sampled]) -> State:
         names = self.flow.mesh.boundary.names
         on_wall = np.zeros(len(self.places), bool)
         velocity = np.zeros((len(self.places), 2))
@@ -244,18 +260,19 @@ class _Sampling:
         """Line states from data with a shaken last digit; none where data are in double precision."""
         if self._shaken is None:
             coarse = self.probe.precision > 1e-13
+            shaken = (self.probe.shaken(seed) for seed in range(_SHAKES * coarse))
             self._shaken = [
-                self._line_state_of(self.probe.shaken(seed), DEGREES[-1]) for seed in range(_SHAKES * coarse)
+                self._line_state_of(p.by_role(p.raw(DEGREES[-1], self.triangle, self.places))) for p in shaken
             ]
         return self._shaken
 
     def area_state(self, degree: int) -> State:
-        """State at the area quadrature points."""
-        if degree not in self._area:
-            assert self.area_triangle is not None
-            sampled = self.probe.at(degree, self.area_triangle, self.area_places)
-            self._area[degree] = self._state(sampled, self.area_places)
-        return self._area[degree]
+        """State at the area quadrature points; degree `BEST` is what the data support."""
+        if ("area", degree) not in self._states:
+            assert self.area is not None
+            fields = self.area.best if degree == BEST else self.area.by_degree[degree]
+            self._states["area", degree] = self._state(fields, self.area_places)
+        return self._states["area", degree]
 
     def fluxes(self, law: Law, state: State) -> dict[str, Array]:
         """Part -> (q, c) flux through each line quadrature point."""
@@ -315,12 +332,24 @@ class _Sampling:
 
     def per_line_cell(self, values: Array) -> Array:
         """(q, c) summed per mesh cell."""
-        return _sum_groups(self.line_group, len(self.line_cells), values)
+        return _sum_groups(self.line_group, len(self.reaching), values)
+
+    @property
+    def falls(self) -> bool:
+        """Whether the data support less than the highest degree anywhere."""
+        parts = [self.line] if self.area is None else [self.line, self.area]
+        return any(bool(np.any(part.supported < DEGREES[-1])) for part in parts)
+
+    def degree_shares(self) -> dict[str, float]:
+        """Share of the length of the surface that each degree was used on."""
+        length = np.hypot(*self.normals.T)
+        used = self.line.supported[self.line_group]
+        return {str(degree): float(length[used == degree].sum() / length.sum()) for degree in DEGREES}
 
     def hints(self, laws: Sequence[Law]) -> list[Hint]:
         """Remarks on what the laws left out."""
         out = []
-        state = self.line_state(3)
+        state = self.line_state(BEST)
         if state.viscosity is None and any("viscous" in law.fluxes for law in laws):
             out.append(Hint("inviscid", "no viscosity is known: momentum and energy are taken as inviscid"))
         conducting = any("conductive" in law.fluxes for law in laws)
@@ -348,7 +377,7 @@ def _rows(
     sources: Sequence[Source],
 ) -> list[Row]:
     degrees = [sampling.contributions(law, degree) for degree in DEGREES]
-    best = degrees[-1]
+    best = sampling.contributions(law, BEST) if sampling.falls else degrees[-1]
     closed = sampling.overlay.closed
     raw = np.abs(best.total).sum()
     felt = best.total - best.level
@@ -364,8 +393,9 @@ def _rows(
         pieces = [_pieces(sampling, terms, c) for terms in degrees]
         spread = [sum(part[:, c].sum() for part in parts.values()) for parts in shaken]
         rounding = _SHAKE_COVERAGE * float(np.std(spread)) if spread else 0.0
-        rounding += 4.0 * np.finfo(float).eps * float(raw)
-        band = bands(*pieces, rounding)
+        rounding += _ROUNDINGS * np.finfo(float).eps * float(raw)
+        chosen = _pieces(sampling, best, c) if sampling.falls else None
+        band = bands(*pieces, rounding, chosen, sampling.reaching)
         told_here = sum(share * source.along(component) for share, source in told)
         row = _row(law, component, sampling, best, c, told_here)
         if closed:

@@ -19,8 +19,14 @@ Array = np.ndarray
 # 1.7 times the bare estimate.
 RESOLUTION_FACTOR = 3.0
 
-# Sums of independent contributions: twice the standard deviation (GUM, JCGM 100:2008, k = 2).
-_COVERAGE = 2.0
+# Root sum of squares of the pieces' differences, times this. Twice (GUM, JCGM
+# 100:2008, k = 2) would do for independent errors; those of neighbouring pieces
+# share a sign often enough that the study of scripts/calibrate.py asks for three.
+_COVERAGE = 3.0
+
+# Where fits reach out of their data, degree 3 may be off by as much as it
+# changes degree 2, or by this share of what degree 2 changes degree 1.
+_REACHING = 0.5
 
 
 class Bands(NamedTuple):
@@ -32,19 +38,42 @@ class Bands(NamedTuple):
 
 
 def spread(difference: Array) -> float:
-    """Half-width from per-piece differences (k,): net, or twice the root sum of squares."""
+    """Half-width from per-piece differences (k,): net, or three times the root sum of squares."""
     return float(max(abs(difference.sum()), _COVERAGE * np.sqrt(np.sum(difference**2))))
 
 
-def bands(first: Array, second: Array, third: Array, rounding: float) -> Bands:
+def bands(
+    first: Array,
+    second: Array,
+    third: Array,
+    rounding: float = 0.0,
+    chosen: Array | None = None,
+    reaching: Array | None = None,
+) -> Bands:
     """Bands of Σ third from contributions per piece by degree, (k,) each.
 
     rounding : half-width from the precision of the stored data
+    chosen : contributions by the degree that the data support, where that is
+        not degree 3 everywhere: there, the larger of the two steps counts
+    reaching : (m,) bool, m ≤ k, leading pieces where values are extrapolated:
+        cell data on the domain boundary. All fits there reach out on the same
+        side, so their errors have one sign and add up
     """
     d23, d12 = third - second, second - first
-    sampling = spread(d23)
+    if chosen is not None:
+        larger = np.where(np.abs(d12) > np.abs(d23), d12, d23)
+        d23 = np.where(chosen != third, larger, d23)
+    outside = np.zeros(len(d23), bool)
+    if reaching is not None:
+        outside[: len(reaching)] = reaching
+    sampling = _half_width(d23[~outside], d12[~outside]) + rounding
+    sampling += float(np.maximum(np.abs(d23), _REACHING * np.abs(d12))[outside].sum())
+    resolution = RESOLUTION_FACTOR * (spread(d12[~outside]) + spread(d12[outside]))
+    return Bands(sampling, max(resolution, sampling), rounding)
+
+
+def _half_width(d23: Array, d12: Array) -> float:
     if np.abs(d23).sum() > 0.5 * np.abs(d12).sum():
         # The series of degrees does not settle: nothing may be said to cancel.
-        sampling = float(np.abs(d23).sum())
-    sampling += rounding
-    return Bands(sampling, max(RESOLUTION_FACTOR * spread(d12), sampling), rounding)
+        return float(np.abs(d23).sum())
+    return spread(d23)

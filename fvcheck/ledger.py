@@ -78,13 +78,18 @@ class Port:
 
 @dataclass(frozen=True)
 class Ledger:
-    """All rows of one control surface."""
+    """All rows of one control surface.
+
+    length, area : of the border of the volume, enclosed domain boundary included, and of the volume
+    degrees : degree of the sampling polynomials -> share of the length it was used on
+    """
 
     name: str
     kind: str
     closed: bool
     length: float
     area: float | None
+    degrees: dict[str, float]
     rows: tuple[Row, ...]
     ports: tuple[Port, ...]
     hints: tuple[Hint, ...] = ()
@@ -161,6 +166,7 @@ def ledger_dict(ledger: Ledger) -> dict[str, Any]:
         "closed": ledger.closed,
         "length": ledger.length,
         "area": ledger.area,
+        "degrees": ledger.degrees,
         "laws": [asdict(row) for row in ledger.rows],
         "ports": [asdict(port) for port in ledger.ports],
     }

@@ -213,9 +213,9 @@ def _fit_one(points, offsets, nodes, centre, entries, size, degree, at_points, a
         weights[s] = x * x + y * y
         nearest = min(nearest, weights[s])
     for s in range(size):
-        # Near data count more: the inverse of the distance, which is bounded
+        # Near data count more: the inverse square of the distance, bounded
         # for cells that touch the centre.
-        weights[s] = 1.0 / np.sqrt(weights[s] + 0.1)
+        weights[s] = 1.0 / (weights[s] + 0.05)
     work_q, work_r = np.empty((size, 10)), np.empty((10, 10))
     part = np.empty((10, size))
     skip = 1 if own else 0
@@ -301,10 +301,12 @@ def evaluate(points, triangle, centre_of, frames, coefficients, places):
 
     points (n, 2); triangle (q, 3) corner points, centre_of (n,) row of each
     point in frames (c, 2, 2) and coefficients (c, t, f); places (q, 2).
-    Returns values (q, f) and gradients (q, f, 2).
+    Returns values (q, f), gradients (q, f, 2) and the disagreement (q, f) of the
+    three polynomials, largest minus smallest.
     """
     count, terms, fields = len(places), coefficients.shape[1], coefficients.shape[2]
     values, gradients = np.zeros((count, fields)), np.zeros((count, fields, 2))
+    disagreement = np.empty((count, fields))
     for q in prange(count):
         a, b, c = triangle[q, 0], triangle[q, 1], triangle[q, 2]
         ax, ay = points[a, 0], points[a, 1]
@@ -313,7 +315,7 @@ def evaluate(points, triangle, centre_of, frames, coefficients, places):
         bx, by, cx, cy = vy / det, -vx / det, -uy / det, ux / det
         dx, dy = places[q, 0] - ax, places[q, 1] - ay
         lb, lc = bx * dx + by * dy, cx * dx + cy * dy
-        mono = np.empty(10)
+        mono, least, most = np.empty(10), np.full(fields, np.inf), np.full(fields, -np.inf)
         for k in range(3):
             p = triangle[q, k]
             if k == 0:
@@ -332,6 +334,7 @@ def evaluate(points, triangle, centre_of, frames, coefficients, places):
                 for i in range(terms):
                     value += mono[i] * coefficients[j, i, f]
                 values[q, f] += weight * value
+                least[f], most[f] = min(least[f], value), max(most[f], value)
                 px = py = 0.0
                 if terms > 1:
                     px, py = coefficients[j, 1, f], coefficients[j, 2, f]
@@ -345,4 +348,6 @@ def evaluate(points, triangle, centre_of, frames, coefficients, places):
                     py += mono[5] * coefficients[j, 9, f]
                 gradients[q, f, 0] += gx * value + weight * (f00 * px + f10 * py)
                 gradients[q, f, 1] += gy * value + weight * (f01 * px + f11 * py)
-    return values, gradients
+        for f in range(fields):
+            disagreement[q, f] = most[f] - least[f]
+    return values, gradients, disagreement

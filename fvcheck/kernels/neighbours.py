@@ -150,3 +150,25 @@ def stencils(offsets, nodes, point_first, point_cells, centres, at_points, known
             sizes[j, k] = used - start
         first[j + 1] = used
     return first, entries[:used], sizes
+
+
+@njit(cache=True)
+def ring_range(offsets, nodes, n_points, at_points, data):
+    """Smallest and largest datum in the cells around each point: two (n_points, f) arrays.
+
+    data : (n_points, f) or (cells, f), as ``at_points`` says
+    """
+    fields = data.shape[1]
+    low, high = np.full((n_points, fields), np.inf), np.full((n_points, fields), -np.inf)
+    for c in range(len(offsets) - 1):
+        for f in range(fields):
+            if at_points:
+                least = most = data[nodes[offsets[c]], f]
+                for k in range(offsets[c] + 1, offsets[c + 1]):
+                    least, most = min(least, data[nodes[k], f]), max(most, data[nodes[k], f])
+            else:
+                least = most = data[c, f]
+            for k in range(offsets[c], offsets[c + 1]):
+                p = nodes[k]
+                low[p, f], high[p, f] = min(low[p, f], least), max(high[p, f], most)
+    return low, high

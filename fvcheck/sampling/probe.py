@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, field, replace
 
 import numpy as np
@@ -10,9 +10,26 @@ import numpy as np
 from fvcheck.errors import FieldError
 from fvcheck.flow import Flow
 from fvcheck.sampling.sampled import Sampled
-from fvcheck.sampling.sampler import Sampler, compile_sampler
+from fvcheck.sampling.sampler import DEGREES, Sampler, compile_sampler
 
 Array = np.ndarray
+Raw = tuple[tuple[Array, Array, Array], ...]
+
+# A jump shows where the three polynomials of a triangle disagree by more than
+# _DISAGREE of the range of the data two rings around, and the value leaves that
+# range by more than _EXCESS of it. Smooth fields down to eight cells a wave
+# hardly ever do both, fits across a captured shock do so in each passage. Beside
+# the domain boundary a straight profile through cell centres leaves the range.
+_DISAGREE, _EXCESS, _EXCESS_RIM = 0.15, 0.01, 0.25
+
+# Around a jump even this excess is an overshoot.
+_OVERSHOOT = 0.005
+
+# Share of the whole surface's range below which a local range is noise.
+_LEAST_EXTENT = 1e-3
+
+# Rings of cells about a jump in which fits may feel it.
+_REACH = 2
 
 
 @dataclass(frozen=True, eq=False)
@@ -27,6 +44,20 @@ class _Group:
 
 
 @dataclass(frozen=True, eq=False)
+class Samples:
+    """What one set of places sees.
+
+    by_degree : degree -> role -> `Sampled`
+    best : role -> `Sampled`, by the degree that the data support
+    supported : (cells,) that degree
+    """
+
+    by_degree: dict[int, dict[str, Sampled]]
+    best: dict[str, Sampled]
+    supported: Array
+
+
+@dataclass(frozen=True, eq=False)
 class Probe:
     """Compiled sampling of every field of a flow around chosen mesh points."""
 
@@ -34,14 +65,20 @@ class Probe:
     vectors: frozenset[str]
     _coefficients: dict[tuple[int, int], Array] = field(default_factory=dict)
 
-    def at(self, degree: int, triangle: Array, places: Array) -> dict[str, Sampled]:
-        """Role -> values and gradients at places (q, 2) in mesh triangles (q, 3)."""
-        out: dict[str, Sampled] = {}
+    def raw(self, degree: int, triangle: Array, places: Array) -> Raw:
+        """Values (q, f), gradients (q, f, 2), disagreement (q, f) of each group of fields by one degree."""
+        out = []
         for number, group in enumerate(self.groups):
             key = (number, degree)
             if key not in self._coefficients:
                 self._coefficients[key] = group.sampler.apply(degree, group.data, group.known)
-            values, gradients = group.sampler.evaluate(degree, self._coefficients[key], triangle, places)
+            out.append(group.sampler.evaluate(degree, self._coefficients[key], triangle, places))
+        return tuple(out)
+
+    def by_role(self, raw: Raw) -> dict[str, Sampled]:
+        """Role -> values and gradients, from what `raw` gives."""
+        out: dict[str, Sampled] = {}
+        for group, (values, gradients, _) in zip(self.groups, raw):
             for role, columns in zip(group.roles, group.columns):
                 value, gradient = values[:, columns], gradients[:, columns]
                 if role not in self.vectors:
@@ -55,6 +92,58 @@ class Probe:
                         np.concatenate([gradient, zero[:, :, None].repeat(2, axis=2)], axis=1),
                     )
         return out
+
+    def samples(self, triangle: Array, places: Array, cell: Array) -> Samples:
+        """All degrees at places (q, 2) in mesh triangles (q, 3), and the degree the data support.
+
+        cell : (q,) which cell each place lies in, numbered from 0; a cell has one degree
+        """
+        raw = {degree: self.raw(degree, triangle, places) for degree in DEGREES}
+        supported = self._supported(raw[DEGREES[-1]], triangle, cell)
+        best = raw[DEGREES[-1]]
+        if np.any(supported < DEGREES[-1]):
+            fell = supported[cell] < DEGREES[-1]
+            best = tuple(
+                (
+                    np.where(fell[:, None], np.clip(plain, *limits), third),
+                    np.where(fell[:, None, None], slope, third_slope),
+                    apart,
+                )
+                for (plain, slope, _), (third, third_slope, apart), limits in zip(
+                    raw[1], best, self._limits(triangle)
+                )
+            )
+        return Samples({d: self.by_role(r) for d, r in raw.items()}, self.by_role(best), supported)
+
+    def _limits(self, triangle: Array) -> list[tuple[Array, Array]]:
+        """Per group: smallest and largest datum (q, f) around the corners of each triangle."""
+        out = []
+        for group in self.groups:
+            low, high = group.sampler.ranges(group.data, group.known)
+            corner = group.sampler.centre_of[triangle]
+            out.append((low[corner].min(axis=1), high[corner].max(axis=1)))
+        return out
+
+    def _supported(self, raw: Raw, triangle: Array, cell: Array) -> Array:
+        """(cells,) the highest degree that the data support in each cell: 3, or 1 around a jump.
+
+        raw : of degree 3. Every field counts; differences small against the
+        whole surface do not.
+        """
+        seeds, overshoots = np.zeros(len(cell), bool), np.zeros(len(cell), bool)
+        for group, (values, _, apart), (low, high) in zip(self.groups, raw, self._limits(triangle)):
+            extent = high - low
+            matters = extent > _LEAST_EXTENT * (high.max(axis=0, initial=0.0) - low.min(axis=0, initial=0.0))
+            excess = np.maximum(values - high, low - values)
+            rim = group.sampler.rim[group.sampler.centres][group.sampler.centre_of[triangle]].any(axis=1)
+            allowed = np.where(rim, _EXCESS_RIM, _EXCESS)[:, None] * extent
+            seeds |= (matters & (excess > allowed) & (apart > _DISAGREE * extent)).any(axis=1)
+            overshoots |= (matters & (excess > _OVERSHOOT * extent)).any(axis=1)
+        supported = np.full(int(cell.max(initial=-1)) + 1, DEGREES[-1])
+        if seeds.any():
+            near = self.groups[0].sampler.within(np.unique(triangle[seeds]), _REACH)
+            supported[cell[seeds | (overshoots & near[triangle].any(axis=1))]] = DEGREES[0]
+        return supported
 
     def shaken(self, seed: int) -> Probe:
         """The same probe on data whose last stored digit is off at random.

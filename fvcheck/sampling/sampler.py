@@ -54,19 +54,25 @@ class Sampler:
 
     points : (p, 2) points of the neighbourhood
     centre_of : (n_mesh_points,) row of each fitted mesh point, -1 elsewhere
-    centre_points : (c,) fitted points, local numbers
+    centres : (c,) fitted points, local numbers
     local_points : (p,) mesh number of each local point
     local_cells : (k,) mesh number of each local cell
     known : (w,) local points with a known value beside cell data
+    rim : (p,) bool, local points on the domain boundary
+    offsets, nodes : the neighbourhood's cells over local points
     fits : degree -> NodeFits; columns index ``[data…, known values…]``
     """
 
     location: str
     mesh_points: Array
     centre_of: Array
+    centres: Array
     local_points: Array
     local_cells: Array
     known: Array
+    rim: Array
+    offsets: Array
+    nodes: Array
     fits: dict[int, NodeFits]
 
     @property
@@ -82,14 +88,45 @@ class Sampler:
         from fvcheck.kernels.fits import apply_fits
 
         fit = self.fits[degree]
-        column = np.asarray(data[self.sources], float)
+        column = np.ascontiguousarray(data[self.sources], float)
         if len(self.known):
             assert known is not None
             column = np.concatenate([column, known[self.local_points[self.known]]])
-        return apply_fits(fit.row_first, fit.columns, fit.operator, np.ascontiguousarray(column))
+        return apply_fits(fit.row_first, fit.columns, fit.operator, column)
 
-    def evaluate(self, degree: int, coefficients: Array, triangle: Array, places: Array) -> tuple[Array, Array]:
-        """Values (q, f) and gradients (q, f, 2) at places (q, 2) in triangles (q, 3) of fitted mesh points."""
+    def ranges(self, data: Array, known: Array | None = None) -> tuple[Array, Array]:
+        """Smallest and largest datum in two rings of cells around each fitted point: two (c, f) arrays."""
+        from fvcheck.kernels.neighbours import ring_range
+
+        column = np.ascontiguousarray(data[self.sources], float)
+        at_points = self.location == "point"
+        low, high = ring_range(self.offsets, self.nodes, len(self.local_points), at_points, column)
+        if known is not None and len(self.known):
+            value = known[self.local_points[self.known]]
+            low[self.known] = np.minimum(low[self.known], value)
+            high[self.known] = np.maximum(high[self.known], value)
+        low, _ = ring_range(self.offsets, self.nodes, len(low), True, low)
+        _, high = ring_range(self.offsets, self.nodes, len(high), True, high)
+        return low[self.centres], high[self.centres]
+
+    def within(self, points: Array, rings: int) -> Array:
+        """(n_mesh_points,) bool: points within so many rings of cells of the given mesh points."""
+        from fvcheck.kernels.neighbours import grow_rings
+
+        mark = np.zeros(len(self.local_points), np.uint8)
+        mark[np.isin(self.local_points, points)] = 1
+        grow_rings(self.offsets, self.nodes, mark, rings)
+        out = np.zeros(len(self.mesh_points), bool)
+        out[self.local_points] = mark > 0
+        return out
+
+    def evaluate(
+        self, degree: int, coefficients: Array, triangle: Array, places: Array
+    ) -> tuple[Array, Array, Array]:
+        """Values (q, f), gradients (q, f, 2) and disagreement of the corners' polynomials (q, f).
+
+        places (q, 2) in triangles (q, 3) of fitted mesh points.
+        """
         from fvcheck.kernels.fits import evaluate
 
         frames = self.fits[degree].frames
@@ -178,7 +215,21 @@ def compile_sampler(
         compiled[degree] = found
     centre_of = np.full(mesh.n_points, -1, np.int64)
     centre_of[centres] = np.arange(len(centres))
-    return Sampler(location, mesh.points, centre_of, local_points, local_cells, known_points, compiled)
+    rim = np.zeros(mesh.n_points, bool)
+    rim[mesh.boundary.edges] = True
+    return Sampler(
+        location=location,
+        mesh_points=mesh.points,
+        centre_of=centre_of,
+        centres=local_centres,
+        local_points=local_points,
+        local_cells=local_cells,
+        known=known_points,
+        rim=rim[local_points],
+        offsets=local_offsets,
+        nodes=local_nodes,
+        fits=compiled,
+    )
 
 
 def _wanted(degree: int, at_points: bool) -> int:
