@@ -78,4 +78,91 @@ PAGES: dict[str, Page] = {
         "A file that was cut within its last number reads without an error, but that number is wrong.",
         "Compare its size with the original; export in binary form.",
     ),
+    "clockwise-cells": Page(
+        "Some cells list their points the other way round than the rest.",
+        "Their normals would point inward and their fluxes count backwards, so they are turned.",
+        "Nothing for a sound run. Many such cells may mean that a block was mirrored when exported.",
+    ),
+    "zero-area-cells": Page(
+        "Cells of no area were met and left out.",
+        "They hold no fluid; fits around them would have no slope across.",
+        "Nothing, if they are collapsed cells of the mesh generator.",
+    ),
+    "hanging-nodes": Page(
+        "Points lie on the edges of larger neighbouring cells, as quadtree refinement leaves them.",
+        "They are put into those cells as corners, so that both sides share the same edges and no flux is lost.",
+        "Nothing.",
+    ),
+    "stitched-points": Page(
+        "Points of blocks or partitions that lie on one another are merged; the hint says how far apart they were.",
+        "Without it each seam would count as a wall.",
+        "Compare the distance with the edge lengths in fvcheck inspect: it should be far smaller.",
+    ),
+    "kept-apart-points": Page(
+        "Points lie on one another and are not merged: two sides of a thin wall, or values that differ.",
+        "Merged, they would let the flow pass a wall, or mix two values.",
+        "If the blocks should join there, look for a seam in the export where the data jump.",
+    ),
+    "open-seams": Page(
+        "Boundary edges face each other at a small distance, as where blocks do not quite meet.",
+        "The gap counts as boundary: what crosses it in the run is missing in the balance.",
+        "Export the blocks with coinciding points, or as one mesh.",
+    ),
+    "narrow-holes": Page(
+        "Holes in the domain are far longer than they are wide.",
+        "A thin plate looks like this, but so does a gap between blocks that do not quite meet.",
+        "Look at the place. If there is no body, export the blocks with coinciding points.",
+    ),
+    "inner-lines": Page(
+        "Line cells lie inside the domain.",
+        "A patch is part of the boundary; what is inside can be none.",
+        "Nothing, if they are the lines of a baffle or a probe.",
+    ),
+    "unknown-faces": Page(
+        "A named patch lists faces that are no edges of the boundary.",
+        "They are left out; the rest of the patch is used.",
+        "Nothing for interior face sets. Otherwise compare the patches in fvcheck inspect with the run.",
+    ),
+    "looks-like-wall": Page(
+        "The velocity on a patch nearly vanishes, but the patch is not told to be a no-slip wall.",
+        "A cell-centred export holds no values at walls. Told of them, the fits near a wall take its velocity "
+        "as known: friction and heat there come out far better, and the bands are narrower.",
+        "If it is a wall: --wall NAME, for a moving one --wall NAME=VX,VY. Leave it if it is not.",
+    ),
+    "unclear-fields": Page(
+        "The roles of the arrays could not all be settled.",
+        "A balance with a guessed array would look like any other.",
+        "Name the array as the hint says, then inspect again; the same --field serves fvcheck balance.",
+    ),
+    "inviscid": Page(
+        "No viscosity is known, so momentum and energy are balanced without friction.",
+        "Near walls and in wakes the missing friction shows up as imbalance.",
+        "--viscosity VALUE (dynamic), or --field viscosity=NAME. Nothing for an inviscid run.",
+    ),
+    "no-conduction": Page(
+        "No conductivity is known, so heat is carried by the flow only.",
+        "At heated walls all heat passes by conduction: without it the heat row is open by that amount.",
+        "--conductivity VALUE, or --field conductivity=NAME.",
+    ),
+    "law-left-out": Page(
+        "A law was not asked for, and the data do not suffice for it.",
+        "Its row is missing; the others are not touched.",
+        "Give what the hint names, or ask for certain laws with --law to have no hint.",
+    ),
+    "option-over-field": Page(
+        "A property was told as a number while an array of it is in the export.",
+        "The told number is used everywhere; the array is not.",
+        "Leave the option out to use the array.",
+    ),
+    "out-of-plane-velocity": Page(
+        "The velocity has a part normal to the plane.",
+        "It carries energy and angular momentum through the surface, and is counted there; the mass balance of "
+        "a plane run does not feel it.",
+        "Nothing for a swirling run. In a run meant to be plane, look at the boundary conditions.",
+    ),
+    "steady-in-moving-frame": Page(
+        "The control surface moves, and no rates of change are known.",
+        "What the moving volume holds is taken as constant: right for a run that is steady in the moving frame.",
+        "For a run that is unsteady there, give rates as fields: --field rate:velocity=NAME and so on.",
+    ),
 }

@@ -251,7 +251,7 @@ def _motion(flow: Flow) -> tuple[dict[str, float], dict[str, float]]:
     sampler = compile_sampler(flow.mesh, np.unique(triangle), field.location, averages=averages)
     if not np.isfinite(whole[sampler.sources]).all():
         return {}, {}  # no numbers at the boundary: nothing can be said
-    velocity, _ = sampler.evaluate(2, sampler.apply(2, whole), triangle, places)
+    velocity = sampler.evaluate(2, sampler.apply(2, whole), triangle, places)[0]
     whole = whole[np.isfinite(whole).all(axis=1)]
     typical = float(np.sqrt(np.mean(np.sum(whole**2, axis=1)))) if len(whole) else 0.0
     through, stillness = {}, {}
