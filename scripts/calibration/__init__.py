@@ -1,0 +1,1 @@
+"""The calibration study: exact fields, random control surfaces, what fvcheck says and what is true."""
