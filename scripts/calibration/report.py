@@ -143,6 +143,7 @@ def summary(records: Sequence[dict]) -> list[str]:
         out.append(
             f"{'resolved' if resolved else 'under-resolved'}: {len(here)} rows, {count} balances; "
             f"covered {sum(r['covered'] for r in here) / count:.4f}; "
-            f"median gain (mass) {np.median(gains):.1f}; median band over error {np.median(widths):.1f}; false alarms {alarms}"
+            f"median gain (mass) {np.median(gains):.1f}; median band over error {np.median(widths):.1f}; "
+            f"false alarms {alarms}"
         )
     return out
