@@ -104,7 +104,7 @@ def test_the_exit_status_tells_the_verdict(verdict, status, monkeypatch, capsys)
         "closed": True,
         "length": 1.0,
     }
-    ledger = Ledger(**(given | {"rows": (row,), "ports": (), "hints": (), "area": 1.0}))
+    ledger = Ledger(**given, degrees={}, rows=(row,), ports=())
     case = dict.fromkeys(("file", "cells", "location", "time", "step"))
     monkeypatch.setattr(balancing, "balance_all", lambda *_, **__: Result(case, (ledger,)))
     assert run(["balance", str(GOOD)]) == status

@@ -50,10 +50,9 @@ def result(*rows, **more):
     ledger = {"name": "a name of some length", "kind": "polygon", "closed": True, "length": 1.2345678}
     ledger["area"] = 0.98765432
     ledger |= {"rows": rows, "ports": (port, port), "degrees": {"3": 1.0}}
-    known = set(Ledger.__dataclass_fields__)
     case = {"file": "some/folder/run.vtu", "cells": 123456, "location": "cell", "time": 1.5, "step": 3}
     hints = (Hint("law-left-out", "heat: no specific heat. Give --specific-heat. " * 4),)
-    return Result(case, (Ledger(**{k: v for k, v in (ledger | more).items() if k in known}),), hints)
+    return Result(case, (Ledger(**(ledger | more)),), hints)
 
 
 HARD = [
@@ -124,6 +123,11 @@ def test_steps_end_with_a_table_of_all():
 
 def test_a_name_with_brackets_is_no_markup():
     assert "[bold]x[/bold]" in result_text(result(row(), name="[bold]x[/bold]"))
+
+
+def test_a_fallen_degree_is_told():
+    assert "degree 3 on" not in result_text(result(row()))
+    assert "degree 3 on 90 %" in result_text(result(row(), degrees={"1": 0.1, "3": 0.9}))
 
 
 def test_names_cannot_steer_a_terminal():

@@ -14,7 +14,7 @@ from fvcheck.text.ledger import ledger_parts, verdict_line
 
 _STORY = (
     "Air at 300 K and 0.12 m/s passes a heated bar in the channel of an enclosure, solved on a coarse mesh. "
-    "A box is drawn around the bar. Does the field conserve mass and momentum in it?"
+    "A box is drawn in the wake behind the bar. Does the field conserve mass, momentum and heat in it?"
 )
 
 

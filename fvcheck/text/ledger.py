@@ -94,6 +94,8 @@ def ledger_parts(ledger: Ledger, amounts: bool = True, patches: bool = False) ->
     if ledger.area is not None:
         facts.append(f"area {short(ledger.area)} m{'²' if rich_characters() else '2'}")
     facts.append(f"length {short(ledger.length)} m")
+    if (full := ledger.degrees.get("3", 1.0)) < 0.995:
+        facts.append(f"degree 3 on {100 * full:.0f} %")
     yield heading(ledger.name, *facts)
     if ledger.closed:
         yield _judgement(ledger.rows)
