@@ -84,7 +84,7 @@ def places_in(m, count=4, seed=0):
 
 
 def sample(m, sampler, degree, data, triangle, places, known=None):
-    values, gradients = sampler.evaluate(degree, sampler.apply(degree, data, known), triangle, places)
+    values, gradients, _ = sampler.evaluate(degree, sampler.apply(degree, data, known), triangle, places)
     x0, y0, x1, y1 = m.bounds
     return values[:, 0], gradients[:, 0] * [0.5 * (x1 - x0), 0.5 * (y1 - y0)]
 
@@ -153,7 +153,7 @@ def test_degree_one_at_points_is_linear_interpolation():
 
 
 def twin_fit(m, centre, degree, reading, data, rows):
-    """Value and gradient at a mesh point, by numpy's least squares on rings of at least ``rows`` neighbours."""
+    """Value and gradient at a mesh point, by numpy's least squares on rings of ``rows`` neighbours."""
     cells = [m.nodes[a:b] for a, b in zip(m.offsets[:-1], m.offsets[1:])]
     powers = [(i, j) for i, j in POWERS if i + j <= degree]
     shape = tm.Cells(m.points, m.offsets, m.nodes)
@@ -167,7 +167,7 @@ def twin_fit(m, centre, degree, reading, data, rows):
     at = (m.points if own else shape.centroids)[members] - origin
     variance, axes = np.linalg.eigh(at.T @ at / len(at))
     whiten = (axes / np.sqrt(variance)).T
-    weight = 1 / np.sqrt(np.sum((at @ whiten.T) ** 2, axis=1) + 0.1)
+    weight = 1 / (np.sum((at @ whiten.T) ** 2, axis=1) + 0.05)  # the weights that fits.py states
 
     def monomial(x, y, i, j):
         xi, eta = whiten @ (np.stack([x, y]) - origin[:, None])
