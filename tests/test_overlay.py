@@ -77,7 +77,8 @@ def surfaces(draw, kinds=KINDS):
             ring = np.round(ring, 1)
         if form == "node star":
             snap = rng.random(n) < 0.7
-            ring[snap] = [m.points[np.argmin(np.hypot(*(m.points - p).T))] for p in ring[snap]]
+            for k in np.flatnonzero(snap):
+                ring[k] = m.points[np.argmin(np.hypot(*(m.points - ring[k]).T))]
         if form == "edges":
             # a whole cell, or the outline of several: every side runs along a mesh edge
             first = rng.integers(m.n_cells)
