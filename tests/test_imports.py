@@ -23,7 +23,7 @@ ROWS = [
     ["surfaces", "overlay"],
     ["sampling"],
     ["laws"],
-    ["balancing", "ledger", "verdict", "bands", "ports", "sources", "checkfile", "checkmodel"],
+    ["balancing", "entries", "volume", "ledger", "verdict", "bands", "ports", "sources", "checkfile", "checkmodel"],
     ["inspection", "history", "study", "forces", "diagnose", "demo"],
     ["cli", "text", "report", "gate", "jsonout", "__main__"],
 ]

@@ -8,6 +8,7 @@ from dataclasses import dataclass, field, replace
 import numpy as np
 
 from fvcheck.errors import FieldError
+from fvcheck.fields import Location
 from fvcheck.flow import Flow
 from fvcheck.sampling.sampled import Sampled
 from fvcheck.sampling.sampler import DEGREES, Sampler, compile_sampler
@@ -174,7 +175,7 @@ def compile_probe(flow: Flow, centres: Array, roles: tuple[str, ...] | None = No
     wanted = tuple(flow.fields) if roles is None else roles
     walls = _wall_points(flow)
     vectors = {role for role in wanted if flow.fields[role].values.ndim == 2}
-    split: dict[tuple[str, bool], list[str]] = {}
+    split: dict[tuple[Location, bool], list[str]] = {}
     for role in wanted:
         location = flow.fields[role].location
         with_walls = location == "cell" and role == "velocity" and len(walls[0]) > 0

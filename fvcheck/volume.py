@@ -1,0 +1,262 @@
+"""A flow sampled on one control volume: states on its border and inside, and what each law makes of them."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass
+
+import numpy as np
+
+from fvcheck.flow import Flow
+from fvcheck.hints import Hint
+from fvcheck.laws import Law, MissingData, State
+from fvcheck.laws.law import convective
+from fvcheck.laws.state import Datum
+from fvcheck.overlay.overlay import DRAWN, Overlay
+from fvcheck.sampling.probe import compile_probe, pin_walls
+from fvcheck.sampling.quadrature import PER_PIECE, PER_TRIANGLE, along, within
+from fvcheck.sampling.sampled import Sampled
+from fvcheck.sampling.sampler import DEGREES
+from fvcheck.surfaces import ControlSurface
+
+Array = np.ndarray
+
+# In place of a degree: the one that the data support, cell by cell.
+BEST = 0
+
+# Samples with a shaken last digit: eight give the spread to a quarter of itself.
+_SHAKES = 8
+
+
+@dataclass(frozen=True, eq=False)
+class Contributions:
+    """Integrated terms of one law by one degree.
+
+    parts : name -> (q, c) flux through each line quadrature point
+    level : (q, c) flux of the uniform state, left out of the scale
+    source, storage : (k, c) per area piece, None where there is none
+    """
+
+    parts: dict[str, Array]
+    level: Array | float
+    source: Array | None
+    storage: Array | None
+
+    @property
+    def total(self) -> Array:
+        return sum(self.parts.values())  # type: ignore[return-value]
+
+
+class SampledVolume:
+    """Samples of a flow on one overlay, made when first asked for."""
+
+    def __init__(self, flow: Flow, surface: ControlSurface, overlay: Overlay, laws: Sequence[Law]) -> None:
+        self.flow, self.surface, self.overlay = flow, surface, overlay
+        self.has_rates = any(role.startswith("rate:") for role in flow.fields)
+        self.depth = flow.case.depth or 1.0
+        self.places, weights = along(overlay.start, overlay.end)
+        self.triangle = np.repeat(overlay.triangle, PER_PIECE, axis=0)
+        self.normals = (overlay.normals[:, None, :] * weights[None, :, None]).reshape(-1, 2) * self.depth
+        self.drawn = np.repeat(overlay.patch == DRAWN, PER_PIECE)
+        self.patch = np.repeat(overlay.patch, PER_PIECE)
+        # One group per cell; what lies on the domain boundary apart from what crosses the fluid.
+        key = 2 * np.repeat(overlay.cell, PER_PIECE) + ~self.drawn
+        groups, self.line_group = np.unique(key, return_inverse=True)
+        self.reaching = (groups % 2 == 1) & (flow.location == "cell")
+        self.surface_velocity = surface.motion.at(self.places) if surface.motion is not None else None
+        self._set_up_area(overlay.closed and any(self.needs_area(law) for law in laws))
+        centres = np.unique(self.triangle)
+        if self.area_triangle is not None:
+            centres = np.unique(np.concatenate([centres, self.area_triangle.ravel()]))
+        self.probe = compile_probe(flow, centres)
+        self.line = self.probe.samples(self.triangle, self.places, self.line_group)
+        self.area = (
+            None
+            if self.area_triangle is None
+            else self.probe.samples(self.area_triangle, self.area_places, self.area_group)
+        )
+        self.datum = Datum()
+        if overlay.closed:
+            self.datum = self._find_datum()
+        self._states: dict[tuple[str, int], State] = {}
+        self._shaken: list[State] | None = None
+
+    def needs_area(self, law: Law) -> bool:
+        """Whether the law's volume terms vary over the volume, so that they must be sampled."""
+        if self.has_rates:
+            return True
+        try:
+            law.source(self._bare_state())
+        except (MissingData, KeyError):
+            return True
+        return False
+
+    def _bare_state(self) -> State:
+        """One place, no fields: what can be had from it is the same everywhere."""
+        known = {role: field for role, field in self.flow.fields.items() if role.endswith("_source")}
+        if known or "body_force" in self.flow.fields:
+            raise MissingData("constant sources", "")
+        return State(self.flow.fluid, {}, np.full((1, 2), np.nan))
+
+    def _set_up_area(self, needed: bool) -> None:
+        self.area_triangle: Array | None = None
+        if not needed:
+            return
+        from fvcheck.kernels.triangulate import triangulate_cells
+
+        mesh, overlay = self.flow.mesh, self.overlay
+        triangles, first = triangulate_cells(mesh.points, mesh.offsets, mesh.nodes, overlay.whole)
+        corners = np.concatenate([mesh.points[triangles], overlay.corners])
+        u, v = corners[:, 1] - corners[:, 0], corners[:, 2] - corners[:, 0]
+        sizes = 0.5 * (u[:, 0] * v[:, 1] - u[:, 1] * v[:, 0])
+        sizes[len(triangles) :] *= overlay.corner_weight
+        self.area_places, weights = within(corners)
+        self.area_triangle = np.repeat(
+            np.concatenate([triangles, overlay.corner_triangle]), PER_TRIANGLE, axis=0
+        )
+        self.area_weights = (sizes[:, None] * weights).ravel() * self.depth
+        cells = np.concatenate([np.repeat(overlay.whole, np.diff(first)), overlay.corner_cell])
+        self.area_cells, self.area_group = np.unique(np.repeat(cells, PER_TRIANGLE), return_inverse=True)
+
+    def _find_datum(self) -> Datum:
+        state = self._line_state_of(self.line.best)
+        weights = np.hypot(*self.normals.T)
+        levels = {}
+        for name in ("pressure", "temperature"):
+            try:
+                levels[name] = float(np.average(getattr(state, name), weights=weights))
+            except (MissingData, KeyError):
+                continue
+        return Datum(**levels)
+
+    def _state(self, fields: Mapping[str, Sampled], places: Array) -> State:
+        return State(self.flow.fluid, fields, places, self.datum)
+
+    def line_state(self, degree: int) -> State:
+        """State at the line quadrature points; degree `BEST` is what the data support."""
+        if ("line", degree) not in self._states:
+            fields = self.line.best if degree == BEST else self.line.by_degree[degree]
+            self._states["line", degree] = self._line_state_of(fields)
+        return self._states["line", degree]
+
+    def _line_state_of(self, sampled: Mapping[str, Sampled]) -> State:
+        names = self.flow.mesh.boundary.names
+        on_wall = np.zeros(len(self.places), bool)
+        velocity = np.zeros((len(self.places), 2))
+        for name, wall in self.flow.walls.items():
+            here = self.patch == names.index(name)
+            on_wall |= here
+            velocity[here] = wall
+        return self._state(pin_walls(sampled, on_wall, velocity), self.places)
+
+    def shaken_line_states(self) -> list[State]:
+        """Line states from data with a shaken last digit; none where data are in double precision."""
+        if self._shaken is None:
+            coarse = self.probe.precision > 1e-13
+            shaken = (self.probe.shaken(seed) for seed in range(_SHAKES * coarse))
+            self._shaken = [
+                self._line_state_of(p.by_role(p.raw(DEGREES[-1], self.triangle, self.places))) for p in shaken
+            ]
+        return self._shaken
+
+    def area_state(self, degree: int) -> State:
+        """State at the area quadrature points; degree `BEST` is what the data support."""
+        if ("area", degree) not in self._states:
+            assert self.area is not None
+            fields = self.area.best if degree == BEST else self.area.by_degree[degree]
+            self._states["area", degree] = self._state(fields, self.area_places)
+        return self._states["area", degree]
+
+    def fluxes(self, law: Law, state: State) -> dict[str, Array]:
+        """Part -> (q, c) flux through each line quadrature point."""
+        parts = {"convective": convective(law, state, self.normals, self.surface_velocity)}
+        for name, flux in law.fluxes.items():
+            value = flux(state, self.normals)
+            if value is not None:
+                parts[name] = value
+        return parts
+
+    def contributions(self, law: Law, degree: int) -> Contributions:
+        state = self.line_state(degree)
+        level = law.level(state, self.normals) if law.level else 0.0
+        parts = self.fluxes(law, state)
+        if not self.overlay.closed:
+            return Contributions(parts, level, None, None)
+        return Contributions(parts, level, self._source(law, degree), self._storage(law, degree))
+
+    def _source(self, law: Law, degree: int) -> Array | None:
+        if self.needs_area(law):
+            source = law.source(self.area_state(degree))
+            return None if source is None else self._per_cell(source * self.area_weights[:, None])
+        constant = law.source(self._bare_state())
+        if constant is None:
+            return None
+        return constant * self.overlay.area(self.flow.mesh) * self.depth
+
+    def _storage(self, law: Law, degree: int) -> Array | None:
+        """∂b/∂t over the volume plus b w·n over its moving border, where rates are given.
+
+        The rate of b follows from those of the fields by a complex step, exact
+        to rounding for any law (Squire & Trapp 1998).
+        """
+        if not self.has_rates:
+            return None
+        state, step = self.area_state(degree), 1e-30
+        moved = {
+            role: Sampled(
+                sampled.value + 1j * step * state.fields[f"rate:{role}"].value,
+                sampled.gradient + 1j * step * state.fields[f"rate:{role}"].gradient,
+            )
+            if f"rate:{role}" in state.fields
+            else sampled
+            for role, sampled in state.fields.items()
+            if not role.startswith("rate:")
+        }
+        rate = np.imag(law.density(self._state(moved, state.x))) / step
+        storage = self._per_cell(rate * self.area_weights[:, None])
+        if self.surface_velocity is not None:
+            swept = np.einsum("qi,qi->q", self.surface_velocity, self.normals)
+            border = law.density(self.line_state(degree)) * swept[:, None]
+            storage = np.concatenate([storage, self.per_line_cell(border)])
+        return storage
+
+    def _per_cell(self, values: Array) -> Array:
+        return _sum_groups(self.area_group, len(self.area_cells), values)
+
+    def per_line_cell(self, values: Array) -> Array:
+        """(q, c) summed per mesh cell."""
+        return _sum_groups(self.line_group, len(self.reaching), values)
+
+    @property
+    def falls(self) -> bool:
+        """Whether the data support less than the highest degree anywhere."""
+        parts = [self.line] if self.area is None else [self.line, self.area]
+        return any(bool(np.any(part.supported < DEGREES[-1])) for part in parts)
+
+    def degree_shares(self) -> dict[str, float]:
+        """Share of the length of the surface that each degree was used on."""
+        length = np.hypot(*self.normals.T)
+        used = self.line.supported[self.line_group]
+        return {str(degree): float(length[used == degree].sum() / length.sum()) for degree in DEGREES}
+
+    def hints(self, laws: Sequence[Law]) -> list[Hint]:
+        """Remarks on what the laws left out."""
+        out = []
+        state = self.line_state(BEST)
+        if state.viscosity is None and any("viscous" in law.fluxes for law in laws):
+            out.append(Hint("inviscid", "no viscosity is known: momentum and energy are taken as inviscid"))
+        conducting = any("conductive" in law.fluxes for law in laws)
+        if conducting and state.conductivity is None and "temperature" in state.fields:
+            out.append(Hint("no-conduction", "no conductivity is known: heat is carried by the flow only"))
+        if self.surface_velocity is not None and not self.has_rates and self.overlay.closed:
+            out.append(
+                Hint(
+                    "steady-in-moving-frame",
+                    f"{self.surface.name}: the content of the moving surface is taken as constant",
+                )
+            )
+        return out
+
+
+def _sum_groups(group: Array, count: int, values: Array) -> Array:
+    return np.column_stack([np.bincount(group, column, count) for column in values.T])
