@@ -12,7 +12,7 @@ from fvcheck.hints import Hint
 from fvcheck.laws import Law, MissingData, State
 from fvcheck.laws.law import convective
 from fvcheck.laws.state import Datum
-from fvcheck.overlay.overlay import DRAWN, Overlay
+from fvcheck.overlay.overlay import DRAWN, Overlay, triangles_of
 from fvcheck.sampling.probe import compile_probe, pin_walls
 from fvcheck.sampling.quadrature import PER_PIECE, PER_TRIANGLE, along, within
 from fvcheck.sampling.sampled import Sampled
@@ -102,10 +102,8 @@ class SampledVolume:
         self.area_triangle: Array | None = None
         if not needed:
             return
-        from fvcheck.kernels.triangulate import triangulate_cells
-
         mesh, overlay = self.flow.mesh, self.overlay
-        triangles, first = triangulate_cells(mesh.points, mesh.offsets, mesh.nodes, overlay.whole)
+        triangles, first = triangles_of(mesh, overlay.whole)
         corners = np.concatenate([mesh.points[triangles], overlay.corners])
         u, v = corners[:, 1] - corners[:, 0], corners[:, 2] - corners[:, 0]
         sizes = 0.5 * (u[:, 0] * v[:, 1] - u[:, 1] * v[:, 0])

@@ -154,15 +154,17 @@ class Probe:
         rng = np.random.default_rng(seed)
         groups = []
         for group in self.groups:
-            precision = np.array([stored_precision(column) for column in group.data.T])
-            noise = rng.uniform(-1.0, 1.0, group.data.shape) * precision
-            groups.append(replace(group, data=group.data * (1.0 + noise)))
+            near = group.sampler.sources
+            precision = np.array([stored_precision(column) for column in group.data[near].T])
+            data = np.array(group.data, float)
+            data[near] *= 1.0 + rng.uniform(-1.0, 1.0, (len(near), data.shape[1])) * precision
+            groups.append(replace(group, data=data))
         return Probe(tuple(groups), self.vectors)
 
     @property
     def precision(self) -> float:
         """The coarsest relative precision among the fields."""
-        return max(stored_precision(c) for group in self.groups for c in group.data.T)
+        return max(stored_precision(c) for group in self.groups for c in group.data[group.sampler.sources].T)
 
 
 def compile_probe(flow: Flow, centres: Array, roles: tuple[str, ...] | None = None) -> Probe:
