@@ -103,6 +103,7 @@ def test_the_exit_status_tells_the_verdict(verdict, status, monkeypatch, capsys)
         "kind": "box",
         "closed": True,
         "length": 1.0,
+        "area": 1.0,
     }
     ledger = Ledger(**given, degrees={}, rows=(row,), ports=())
     case = dict.fromkeys(("file", "cells", "location", "time", "step"))
