@@ -98,14 +98,7 @@ def test_the_exit_status_tells_the_verdict(verdict, status, monkeypatch, capsys)
     from fvcheck import balancing
 
     row = Row("mass", None, "kg/s/m", {}, 1, 1, 0, 0, {}, 0, 0, 0.0, 1.0, 0.1, 0, 0, 0, 0.0, 0.5, verdict)
-    given = dict.fromkeys(Ledger.__dataclass_fields__) | {
-        "name": "a",
-        "kind": "box",
-        "closed": True,
-        "length": 1.0,
-        "area": 1.0,
-    }
-    ledger = Ledger(**given, degrees={}, rows=(row,), ports=())
+    ledger = Ledger("a", "box", True, 1.0, 1.0, degrees={}, rows=(row,), ports=())
     case = dict.fromkeys(("file", "cells", "location", "time", "step"))
     monkeypatch.setattr(balancing, "balance_all", lambda *_, **__: Result(case, (ledger,)))
     assert run(["balance", str(GOOD)]) == status
