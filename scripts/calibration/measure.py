@@ -12,7 +12,7 @@ from trial_meshes import Cells
 import fvcheck
 from calibration.shapes import Drawn, random_surfaces
 from calibration.suite import Setting, flow_of, mesh_of, sample
-from fvcheck import Flow, balancing
+from fvcheck import Flow, entries
 from fvcheck.ledger import Row
 from fvcheck.verdict import OPEN
 
@@ -42,17 +42,17 @@ def listening() -> Iterator[list[tuple[float, float, float]]]:
     A row tells the reported imbalance and that of degree 1 only.
     """
     heard: list[tuple[float, float, float]] = []
-    bands = balancing.bands
+    bands = entries.bands
 
     def listen(first, second, third, *rest, **more):
         heard.append((float(first.sum()), float(second.sum()), float(third.sum())))
         return bands(first, second, third, *rest, **more)
 
-    balancing.bands = listen
+    entries.bands = listen
     try:
         yield heard
     finally:
-        balancing.bands = bands
+        entries.bands = bands
 
 
 def trials(setting: Setting, flow: Flow, surfaces: Sequence[Drawn]) -> dict[str, list[Trial]]:
