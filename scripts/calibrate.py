@@ -43,7 +43,7 @@ def main() -> int:
     parser.add_argument("--plants", type=int, default=100, help="trials with a planted source; 0 for none")
     parser.add_argument("--seed", type=int, default=0)
     parser.add_argument("--json", type=Path, help="write all records to this file")
-    parser.add_argument("--short", action="store_true", help="12 surfaces, two sizes, float64, no planted sources")
+    parser.add_argument("--short", action="store_true", help="12 surfaces, two sizes, no float32, no plants")
     told = parser.parse_args()
     # The arrays of one control surface are too small to share out.
     numba.set_num_threads(1)
