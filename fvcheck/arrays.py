@@ -29,12 +29,15 @@ class Field:
     values : (n,) or, for vectors, (n, 3): the x, y, z parts as in the file, in
         the precision of the file; NaN where the file has it
     slots : which of the three parts the file gives; the others are zero
+    rim : of a cell field, values (e,) or (e, 3) that the file gives on the edges
+        of the domain boundary, NaN where it gives none of its own
     """
 
     name: str
     location: Location
     values: Array
     slots: tuple[int, ...] = ()
+    rim: Array | None = None
 
 
 @dataclass(frozen=True)

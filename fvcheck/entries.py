@@ -54,7 +54,7 @@ def rows_of(
         rounding = _SHAKE_COVERAGE * float(np.std(spread)) if spread else 0.0
         rounding += _ROUNDINGS * np.finfo(float).eps * float(raw)
         chosen = _pieces(volume, best, c) if volume.falls else None
-        band = bands(pieces[0], pieces[1], pieces[2], rounding, chosen, volume.reaching)
+        band = bands(pieces[0], pieces[1], pieces[2], rounding, chosen, volume.reaching(law))
         told_here = sum(share * source.along(component) for share, source in told)
         row = _row(law, component, volume, best, c, told_here)
         if closed:

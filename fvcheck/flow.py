@@ -18,6 +18,7 @@ from fvcheck.hints import Hint
 from fvcheck.mesh.assemble import Assembly, assemble
 from fvcheck.mesh.mesh import Mesh
 from fvcheck.mesh.piece import Export, Piece
+from fvcheck.rim import line_cells, with_rim
 
 Array = np.ndarray
 CellValues = Literal["average", "centroid"]
@@ -287,13 +288,24 @@ def _read_fields(
             mend="Name them with --field velocity=NAME …",
         )
     for role, field in chosen.items():
-        if role in VECTORS or (role.startswith("rate:") and role[5:] in VECTORS):
-            chosen[role] = replace(field, values=_in_plane(role, field, assembly))
-    return chosen, hints
+        chosen[role] = replace(field, values=_in_plane(role, field, assembly))
+    if not any(field.location == "cell" for field in chosen.values()):
+        return chosen, hints
+    edges, lines = line_cells(pieces, assembly)
+    chosen, more = with_rim(
+        chosen,
+        mesh,
+        edges,
+        _joined(pieces, "cell_data", lines),
+        lambda role, field: _in_plane(role, field, assembly),
+    )
+    return chosen, hints + more
 
 
 def _in_plane(role: str, field: Field, assembly: Assembly) -> Array:
-    """Components (n, 3) of a vector field along the axes of the plane."""
+    """Values of a field; of a vector the components (n, 3) along the axes of the plane."""
+    if role.removeprefix("rate:") not in VECTORS:
+        return field.values
     if len(field.slots) == 2 and field.slots == (0, 1) and assembly.plane != "xy":
         if "," in field.name:
             raise FieldError(

@@ -90,11 +90,13 @@ PAGES: dict[str, Page] = {
     ),
     "hanging-nodes": Page(
         "Points lie on the edges of larger neighbouring cells, as quadtree refinement leaves them.",
-        "They are put into those cells as corners, so that both sides share the same edges and no flux is lost.",
+        "They are put into those cells as corners, so that both sides share the same edges and no "
+        "flux is lost.",
         "Nothing.",
     ),
     "stitched-points": Page(
-        "Points of blocks or partitions that lie on one another are merged; the hint says how far apart they were.",
+        "Points of blocks or partitions that lie on one another are merged; the hint says how far "
+        "apart they were.",
         "Without it each seam would count as a wall.",
         "Compare the distance with the edge lengths in fvcheck inspect: it should be far smaller.",
     ),
@@ -125,7 +127,8 @@ PAGES: dict[str, Page] = {
     ),
     "looks-like-wall": Page(
         "The velocity on a patch nearly vanishes, but the patch is not told to be a no-slip wall.",
-        "A cell-centred export holds no values at walls. Told of them, the fits near a wall take its velocity "
+        "A cell-centred export holds no values at walls. Told of them, the fits near a wall take "
+        "its velocity "
         "as known: friction and heat there come out far better, and the bands are narrower.",
         "If it is a wall: --wall NAME, for a moving one --wall NAME=VX,VY. Leave it if it is not.",
     ),
@@ -156,13 +159,22 @@ PAGES: dict[str, Page] = {
     ),
     "out-of-plane-velocity": Page(
         "The velocity has a part normal to the plane.",
-        "It carries energy and angular momentum through the surface, and is counted there; the mass balance of "
+        "It carries energy and angular momentum through the surface, and is counted there; the "
+        "mass balance of "
         "a plane run does not feel it.",
         "Nothing for a swirling run. In a run meant to be plane, look at the boundary conditions.",
     ),
     "steady-in-moving-frame": Page(
         "The control surface moves, and no rates of change are known.",
-        "What the moving volume holds is taken as constant: right for a run that is steady in the moving frame.",
+        "What the moving volume holds is taken as constant: right for a run that is steady in the "
+        "moving frame.",
         "For a run that is unsteady there, give rates as fields: --field rate:velocity=NAME and so on.",
+    ),
+    "patch-values": Page(
+        "The file gives values on a patch itself, in line cells, that are not copies of the cells behind.",
+        "They are taken as known there: fits near the patch lean on them instead of reaching out "
+        "of their data, "
+        "so wall heat and friction are far surer.",
+        "Nothing, if they are the boundary values of the run. If they are not, export without line cells.",
     ),
 }

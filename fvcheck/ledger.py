@@ -109,7 +109,8 @@ class Ledger:
         return worst(row.verdict for row in self.rows)
 
     def _repr_html_(self) -> str:
-        head = "".join(f"<th>{h}</th>" for h in ("law", "in", "out", "boundary", "source", "imbalance", "%", "verdict"))
+        titles = ("law", "in", "out", "boundary", "source", "imbalance", "%", "verdict")
+        head = "".join(f"<th>{title}</th>" for title in titles)
         body = "".join(
             f"<tr><td>{r.label}</td>"
             + "".join(

@@ -13,7 +13,7 @@ from fvcheck.laws import Law, MissingData, State
 from fvcheck.laws.law import convective
 from fvcheck.laws.state import Datum
 from fvcheck.overlay.overlay import DRAWN, Overlay, triangles_of
-from fvcheck.sampling.probe import compile_probe, pin_walls
+from fvcheck.sampling.probe import compile_probe, known_values, pin_walls
 from fvcheck.sampling.quadrature import PER_PIECE, PER_TRIANGLE, along, within
 from fvcheck.sampling.sampled import Sampled
 from fvcheck.sampling.sampler import DEGREES
@@ -61,8 +61,7 @@ class SampledVolume:
         self.patch = np.repeat(overlay.patch, PER_PIECE)
         # One group per cell; what lies on the domain boundary apart from what crosses the fluid.
         key = 2 * np.repeat(overlay.cell, PER_PIECE) + ~self.drawn
-        groups, self.line_group = np.unique(key, return_inverse=True)
-        self.reaching = (groups % 2 == 1) & (flow.location == "cell")
+        self._groups, self.line_group = np.unique(key, return_inverse=True)
         self.surface_velocity = surface.motion.at(self.places) if surface.motion is not None else None
         self._set_up_area(overlay.closed and any(self.needs_area(law) for law in laws))
         centres = np.unique(self.triangle)
@@ -223,13 +222,26 @@ class SampledVolume:
 
     def per_line_cell(self, values: Array) -> Array:
         """(q, c) summed per mesh cell."""
-        return _sum_groups(self.line_group, len(self.reaching), values)
+        return _sum_groups(self.line_group, len(self._groups), values)
 
     @property
     def falls(self) -> bool:
         """Whether the data support less than the highest degree anywhere."""
         parts = [self.line] if self.area is None else [self.line, self.area]
         return any(bool(np.any(part.supported < DEGREES[-1])) for part in parts)
+
+    def reaching(self, law: Law) -> Array:
+        """(groups,) bool: boundary pieces where a field the law leans on must be extrapolated from cells."""
+        roles = ("velocity", "temperature") if "conductive" in law.fluxes else ("velocity",)
+        out = np.zeros(len(self._groups), bool)
+        on_boundary = self._groups % 2 == 1
+        for role in roles:
+            field = self.flow.fields.get(role)
+            if field is not None and field.location == "cell":
+                known = known_values(self.flow, role)
+                cells = np.empty(0, np.int64) if known is None else known[0].cells
+                out |= on_boundary & ~np.isin(self._groups // 2, cells)
+        return out
 
     def degree_shares(self) -> dict[str, float]:
         """Share of the length of the surface that each degree was used on."""

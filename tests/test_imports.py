@@ -19,11 +19,12 @@ ROWS = [
     ["kernels"],
     ["mesh"],
     ["formats"],
-    ["flow", "fields", "fieldnames", "arrays", "fluid"],
+    ["flow", "rim", "fields", "fieldnames", "arrays", "fluid"],
     ["surfaces", "overlay"],
     ["sampling"],
     ["laws"],
-    ["balancing", "entries", "volume", "ledger", "verdict", "bands", "ports", "sources", "checkfile", "checkmodel"],
+    ["balancing", "entries", "volume", "ledger", "verdict", "bands", "ports", "sources"]
+    + ["checkfile", "checkmodel"],
     ["inspection", "history", "study", "forces", "diagnose", "demo"],
     ["cli", "text", "report", "gate", "jsonout", "__main__"],
 ]

@@ -180,11 +180,11 @@ def _solve(matrix, weights, rows, columns, out, work_q, work_r):
 
 
 @njit(cache=True)
-def _fit_one(points, offsets, nodes, centre, entries, size, degree, at_points, averages, own, a, operator):
+def _fit_one(points, offsets, nodes, centre, entries, size, degree, at_points, averages, a, operator):
     """One polynomial: fills ``a`` and ``operator`` (10, size+1); returns the degree reached, -1 for none.
 
-    Column ``size`` of the operator belongs to the centre's own value when
-    ``own`` is set; it is interpolated then.
+    Column ``size`` of the operator belongs to the centre's own value, which
+    point data have and which is interpolated.
     """
     places = np.empty((size, 2))
     x0, y0 = points[centre, 0], points[centre, 1]
@@ -200,7 +200,6 @@ def _fit_one(points, offsets, nodes, centre, entries, size, degree, at_points, a
         degree = 0
         a[0, 0], a[0, 1], a[1, 0], a[1, 1] = 1.0, 0.0, 0.0, 1.0
     matrix, weights, row = np.empty((size, 10)), np.empty(size), np.empty(10)
-    nearest = np.inf
     for s in range(size):
         dx, dy = places[s, 0], places[s, 1]
         x, y = a[0, 0] * dx + a[0, 1] * dy, a[1, 0] * dx + a[1, 1] * dy
@@ -211,14 +210,13 @@ def _fit_one(points, offsets, nodes, centre, entries, size, degree, at_points, a
             cell_moments(points, nodes[offsets[e] : offsets[e + 1]], x0, y0, a, row)
         matrix[s] = row
         weights[s] = x * x + y * y
-        nearest = min(nearest, weights[s])
     for s in range(size):
         # Near data count more: the inverse square of the distance, bounded
         # for cells that touch the centre.
         weights[s] = 1.0 / (weights[s] + 0.05)
     work_q, work_r = np.empty((size, 10)), np.empty((10, 10))
     part = np.empty((10, size))
-    skip = 1 if own else 0
+    skip = 1 if at_points else 0
     for k in range(degree, -1, -1):
         columns = TERMS[k] - skip
         if columns > size:
@@ -230,27 +228,26 @@ def _fit_one(points, offsets, nodes, centre, entries, size, degree, at_points, a
             for i in range(columns):
                 for s in range(size):
                     operator[i + skip, s] = part[i, s]
-                    if own:
+                    if at_points:
                         operator[i + skip, size] -= part[i, s]
-        if own:
+        if at_points:
             operator[0, size] = 1.0
         return k
     return -1
 
 
 @njit(cache=True, parallel=True)
-def fit_points(points, offsets, nodes, centres, first, entries, sizes, degree, at_points, averages, known, keep):
+def fit_points(points, offsets, nodes, centres, first, entries, sizes, degree, at_points, averages, keep):
     """Operators of the fits about ``centres``.
 
     first, entries, sizes (c,): from `stencils`, for this degree; averages: cell
-    values are averages, else values at the centroid; known (n,) bool: points
-    with a value of their own beside cell data; keep: number of leading
+    values are averages, else values at the centroid; keep: number of leading
     coefficients wanted.
 
     Returns (row_first (c+1,), columns, operator (keep, total), frames (c, 2, 2),
     reached (c,)): coefficient i of centre j is Σ operator[i, s]·data[columns[s]]
     over s in row_first[j]:row_first[j+1]. Columns follow `stencils`: points, or
-    cells, or -1-p for known values.
+    cells, or -1-s for known values.
     """
     count = len(centres)
     row_first = np.zeros(count + 1, np.int64)
@@ -264,16 +261,15 @@ def fit_points(points, offsets, nodes, centres, first, entries, sizes, degree, a
     for j in prange(count):
         size = sizes[j]
         one = np.zeros((10, size + 1))
-        own = at_points or known[centres[j]]
         mine = entries[first[j] : first[j] + size]
         reached[j] = _fit_one(
-            points, offsets, nodes, centres[j], mine, size, degree, at_points, averages, own, frames[j], one
+            points, offsets, nodes, centres[j], mine, size, degree, at_points, averages, frames[j], one
         )
         at = row_first[j]
         for s in range(size):
             columns[at + s] = mine[s]
         # Without an own value the last column is zero; any valid number will do.
-        columns[at + size] = centres[j] if at_points else (-1 - centres[j] if own else mine[0])
+        columns[at + size] = centres[j] if at_points else mine[0]
         for i in range(keep):
             for s in range(size + 1):
                 operator[i, at + s] = one[i, s]

@@ -82,15 +82,16 @@ def cells_of_points(offsets, nodes, n_points):
 
 
 @njit(cache=True)
-def stencils(offsets, nodes, point_first, point_cells, centres, at_points, known, targets, rings):
+def stencils(offsets, nodes, point_first, point_cells, spot_first, spots, centres, at_points, targets, rings):
     """Data around each centre point, ring after ring, until there are enough.
 
+    spots[spot_first[c]:spot_first[c+1]] : numbers, beyond those of the points, of
+    the places on the border of cell c whose value is known beside cell data;
     centres (c,) points; at_points: the data live at points, else in cells;
-    known (n,) bool: points whose value is known beside cell data (walls);
     targets (c, d) wanted numbers of equations about each centre, ascending.
 
     Returns (first (c+1,), entries, sizes (c, d)): ``entries[first[j]:first[j+1]]``
-    are point numbers, or cell numbers, or -1-p for the known value at point p.
+    are point numbers, or cell numbers, or -1-s for the known value at spot s.
     The first ``sizes[j, k]`` of them, whole rings always, serve target k. The
     centre itself is left out: its own value is interpolated.
     """
@@ -120,13 +121,17 @@ def stencils(offsets, nodes, point_first, point_cells, centres, at_points, known
                     if seen_cell[c] == j:
                         continue
                     seen_cell[c] = j
-                    if used + (offsets[c + 1] - offsets[c]) + 1 > len(entries):
-                        longer = np.empty(2 * len(entries) + 64, np.int64)
+                    most = used + 1 + offsets[c + 1] - offsets[c] + spot_first[c + 1] - spot_first[c]
+                    if most > len(entries):
+                        longer = np.empty(2 * most + 64, np.int64)
                         longer[:used] = entries[:used]
                         entries = longer
                     if not at_points:
                         entries[used] = c
                         used += 1
+                        for i in range(spot_first[c], spot_first[c + 1]):
+                            entries[used] = -1 - spots[i]
+                            used += 1
                     for i in range(offsets[c], offsets[c + 1]):
                         other = nodes[i]
                         if seen_point[other] == j:
@@ -136,9 +141,6 @@ def stencils(offsets, nodes, point_first, point_cells, centres, at_points, known
                         high += 1
                         if at_points:
                             entries[used] = other
-                            used += 1
-                        elif known[other]:
-                            entries[used] = -1 - other
                             used += 1
             low = old_high
             while reached < wanted and used - start >= targets[j, reached]:

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping, Sequence
+from collections.abc import Mapping
 from dataclasses import dataclass, field, replace
 
 import numpy as np
@@ -11,7 +11,7 @@ from fvcheck.errors import FieldError
 from fvcheck.fields import Location
 from fvcheck.flow import Flow
 from fvcheck.sampling.sampled import Sampled
-from fvcheck.sampling.sampler import DEGREES, Sampler, compile_sampler
+from fvcheck.sampling.sampler import DEGREES, Known, Sampler, compile_sampler
 
 Array = np.ndarray
 Raw = tuple[tuple[Array, Array, Array], ...]
@@ -170,56 +170,65 @@ class Probe:
 def compile_probe(flow: Flow, centres: Array, roles: tuple[str, ...] | None = None) -> Probe:
     """Sampling of ``roles`` (default: all fields) of a flow about mesh points ``centres``.
 
-    Cell-centred velocities take the walls' velocities as known values at the
-    walls' points. FieldError where a field is not finite around the surface.
+    Cell-centred fields lean on what is known on the boundary (`known_values`).
+    FieldError where a field is not finite around the surface.
     """
-    mesh = flow.mesh
     wanted = tuple(flow.fields) if roles is None else roles
-    walls = _wall_points(flow)
-    vectors = {role for role in wanted if flow.fields[role].values.ndim == 2}
-    split: dict[tuple[Location, bool], list[str]] = {}
+    vectors = frozenset(role for role in wanted if flow.fields[role].values.ndim == 2)
+    split: dict[tuple[Location, str], list[str]] = {}
     for role in wanted:
-        location = flow.fields[role].location
-        with_walls = location == "cell" and role == "velocity" and len(walls[0]) > 0
-        split.setdefault((location, with_walls), []).append(role)
+        # Fields with known values of their own need a sampler of their own.
+        own = role if known_values(flow, role) is not None else ""
+        split.setdefault((flow.fields[role].location, own), []).append(role)
     groups = []
-    for (location, with_walls), names in split.items():
+    for (location, own), names in split.items():
+        known = known_values(flow, own) if own else None
         sampler = compile_sampler(
-            mesh,
+            flow.mesh,
             centres,
             location,
             averages=flow.case.cell_values == "average",
-            known=walls[0] if with_walls else None,
+            known=known[0] if known else None,
         )
         parts, columns, at = [], [], 0
         for role in names:
-            values = flow.fields[role].values
-            if role in vectors:
-                values = values if flow.out_of_plane else values[:, :2]
-            else:
-                values = values[:, None]
+            values = _columns(flow, flow.fields[role].values)
             _check_finite(flow, role, values, sampler)
             parts.append(values)
             columns.append(slice(at, at + values.shape[1]))
             at += values.shape[1]
-        known = None
-        if with_walls:
-            known = np.zeros((mesh.n_points, at))
-            known[walls[0], :2] = walls[1]
-        groups.append(_Group(sampler, tuple(names), tuple(columns), np.hstack(parts), known))
-    return Probe(tuple(groups), frozenset(vectors))
+        value = _columns(flow, known[1]) if known else None
+        groups.append(_Group(sampler, tuple(names), tuple(columns), np.hstack(parts), value))
+    return Probe(tuple(groups), vectors)
 
 
-def _wall_points(flow: Flow) -> tuple[Array, Array]:
-    """Mesh points on no-slip walls and their velocities; corners of unlike walls are left out."""
-    velocity: dict[int, tuple[float, float]] = {}
-    clash: set[int] = set()
-    for name, wall in flow.walls.items():
-        for point in np.unique(flow.mesh.patch_edges(name)).tolist():
-            if velocity.setdefault(point, wall) != wall:
-                clash.add(point)
-    points = np.array(sorted(set(velocity) - clash), np.int64)
-    return points, np.array([velocity[p] for p in points.tolist()]).reshape(-1, 2)
+def _columns(flow: Flow, values: Array) -> Array:
+    """(n, f) columns that are sampled: a velocity out of the plane only where there is one."""
+    if values.ndim == 1:
+        return values[:, None]
+    return values if flow.out_of_plane else values[:, :2]
+
+
+def known_values(flow: Flow, role: str) -> tuple[Known, Array] | None:
+    """Where a cell-centred field is known on the domain boundary, and its values (k,) or (k, 3).
+
+    Spots are the middles of boundary edges: on no-slip walls for the velocity,
+    and wherever the file gives a value of its own.
+    """
+    field = flow.fields[role]
+    if field.location != "cell":
+        return None
+    boundary = flow.mesh.boundary
+    shape = (len(boundary.edges), *field.values.shape[1:])
+    values = np.full(shape, np.nan) if field.rim is None else np.array(field.rim, float)
+    if role == "velocity":
+        for name, wall in flow.walls.items():
+            values[boundary.patch == boundary.names.index(name)] = (*wall, 0.0)
+    own = np.isfinite(values.reshape(len(values), -1)).all(axis=1)
+    if not own.any():
+        return None
+    middles = flow.mesh.points[boundary.edges[own]].mean(axis=1)
+    return Known(boundary.cells[own], middles), values[own]
 
 
 def _check_finite(flow: Flow, role: str, values: Array, sampler: Sampler) -> None:

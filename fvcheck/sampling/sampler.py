@@ -38,6 +38,16 @@ _MORE_RINGS = 2
 _SURPLUS = 1.5
 
 
+class Known(NamedTuple):
+    """Spots whose value is known beside cell data: on no-slip walls, on patches with data of their own.
+
+    cells, places : (r,) mesh cells, (r, 2) places on their border
+    """
+
+    cells: Array
+    places: Array
+
+
 class NodeFits(NamedTuple):
     """Fits of one degree: see `fvcheck.kernels.fits.fit_points`."""
 
@@ -57,7 +67,8 @@ class Sampler:
     centres : (c,) fitted points, local numbers
     local_points : (p,) mesh number of each local point
     local_cells : (k,) mesh number of each local cell
-    known : (w,) local points with a known value beside cell data
+    spots : (r,) which of the known values the fits use, in the order of their columns
+    spot_cells : (r,) local cell of each
     rim : (p,) bool, local points on the domain boundary
     offsets, nodes : the neighbourhood's cells over local points
     fits : degree -> NodeFits; columns index ``[data…, known values…]``
@@ -69,7 +80,8 @@ class Sampler:
     centres: Array
     local_points: Array
     local_cells: Array
-    known: Array
+    spots: Array
+    spot_cells: Array
     rim: Array
     offsets: Array
     nodes: Array
@@ -83,15 +95,14 @@ class Sampler:
     def apply(self, degree: int, data: Array, known: Array | None = None) -> Array:
         """Coefficients (c, terms, f) of the fits on data (n_mesh_points or n_mesh_cells, f).
 
-        known : (n_mesh_points, f) values at the points given to `compile_sampler` as known
+        known : (k, f) values at the spots given to `compile_sampler`
         """
         from fvcheck.kernels.fits import apply_fits
 
         fit = self.fits[degree]
         column = np.ascontiguousarray(data[self.sources], float)
-        if len(self.known):
-            assert known is not None
-            column = np.concatenate([column, known[self.local_points[self.known]]])
+        if known is not None:
+            column = np.concatenate([column, known[self.spots]])
         return apply_fits(fit.row_first, fit.columns, fit.operator, column)
 
     def ranges(self, data: Array, known: Array | None = None) -> tuple[Array, Array]:
@@ -101,10 +112,13 @@ class Sampler:
         column = np.ascontiguousarray(data[self.sources], float)
         at_points = self.location == "point"
         low, high = ring_range(self.offsets, self.nodes, len(self.local_points), at_points, column)
-        if known is not None and len(self.known):
-            value = known[self.local_points[self.known]]
-            low[self.known] = np.minimum(low[self.known], value)
-            high[self.known] = np.maximum(high[self.known], value)
+        if known is not None:
+            # A spot counts for all points of its cell.
+            begin, end = self.offsets[self.spot_cells], self.offsets[self.spot_cells + 1]
+            where = np.concatenate([np.empty(0, np.int64), *(self.nodes[a:b] for a, b in zip(begin, end))])
+            value = np.repeat(known[self.spots], end - begin, axis=0)
+            np.minimum.at(low, where, value)
+            np.maximum.at(high, where, value)
         low, _ = ring_range(self.offsets, self.nodes, len(low), True, low)
         _, high = ring_range(self.offsets, self.nodes, len(high), True, high)
         return low[self.centres], high[self.centres]
@@ -139,13 +153,13 @@ def compile_sampler(
     location: str,
     *,
     averages: bool = True,
-    known: Array | None = None,
+    known: Known | None = None,
     degrees: tuple[int, ...] = DEGREES,
 ) -> Sampler:
     """Fit operators about ``centres`` ((c,) mesh points) for data at ``location`` ("point" or "cell").
 
     averages : a cell value is the average over the cell; else the value at its centroid
-    known : (w,) mesh points whose value is known beside cell data (walls)
+    known : where values are known beside cell data; ignored for point data
     """
     from fvcheck.kernels import fits, neighbours
 
@@ -156,24 +170,26 @@ def compile_sampler(
     local_points, local_offsets, local_nodes = neighbours.extract_cells(
         mesh.offsets, mesh.nodes, local_cells, mesh.n_points
     )
-    points = np.ascontiguousarray(mesh.points[local_points])
     number = np.full(mesh.n_points, -1, np.int64)
     number[local_points] = np.arange(len(local_points))
     at_points = location == "point"
-    is_known = np.zeros(len(local_points), bool)
-    if known is not None and not at_points:
-        inside = number[known]
-        is_known[inside[inside >= 0]] = True
-    known_points = np.flatnonzero(is_known)
-
+    used = _Used.of(None if at_points else known, local_cells, len(local_points))
+    points = np.concatenate([mesh.points[local_points], used.places])
     first, cells = neighbours.cells_of_points(local_offsets, local_nodes, len(local_points))
     local_centres = number[centres]
-    known_column = np.full(len(local_points), -1, np.int64)
-    known_column[known_points] = len(local_cells) + np.arange(len(known_points))
 
     def gather(about: Array, targets: Array) -> tuple[Array, Array, Array]:
         return neighbours.stencils(
-            local_offsets, local_nodes, first, cells, about, at_points, is_known, targets, _RINGS
+            local_offsets,
+            local_nodes,
+            first,
+            cells,
+            used.first,
+            used.numbers,
+            about,
+            at_points,
+            targets,
+            _RINGS,
         )
 
     def fit(about: Array, stencil: tuple[Array, Array, Array], k: int) -> NodeFits:
@@ -190,11 +206,10 @@ def compile_sampler(
             degree,
             at_points,
             averages,
-            is_known,
             1 if degree == 1 else fits.TERMS[degree],
         )
         if not at_points:
-            columns = np.where(columns >= 0, columns, known_column[np.maximum(-1 - columns, 0)])
+            columns = np.where(columns >= 0, columns, len(local_cells) + (-1 - columns - len(local_points)))
         return NodeFits(row_first, columns, operator, frames, reached)
 
     targets = np.array([_wanted(degree, at_points) for degree in degrees])
@@ -224,12 +239,44 @@ def compile_sampler(
         centres=local_centres,
         local_points=local_points,
         local_cells=local_cells,
-        known=known_points,
+        spots=used.rows,
+        spot_cells=used.cells,
         rim=rim[local_points],
         offsets=local_offsets,
         nodes=local_nodes,
         fits=compiled,
     )
+
+
+@dataclass(frozen=True, eq=False)
+class _Used:
+    """The known spots within a neighbourhood; they are numbered beyond its points.
+
+    rows : which of the known spots; cells, places : of each;
+    numbers[first[c]:first[c+1]] : those of local cell c
+    """
+
+    rows: Array
+    cells: Array
+    places: Array
+    first: Array
+    numbers: Array
+
+    @classmethod
+    def of(cls, known: Known | None, local_cells: Array, n_points: int) -> _Used:
+        if known is None:
+            known = Known(np.empty(0, np.int64), np.empty((0, 2)))
+        at = np.minimum(np.searchsorted(local_cells, known.cells), len(local_cells) - 1)
+        rows = np.flatnonzero(local_cells[at] == known.cells)
+        rows = rows[np.argsort(at[rows], kind="stable")]
+        count = np.bincount(at[rows], minlength=len(local_cells))
+        return cls(
+            rows=rows,
+            cells=at[rows],
+            places=known.places[rows],
+            first=np.concatenate([[0], np.cumsum(count)]),
+            numbers=n_points + np.arange(len(rows)),
+        )
 
 
 def _wanted(degree: int, at_points: bool) -> int:
