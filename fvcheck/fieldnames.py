@@ -21,16 +21,18 @@ SCALARS = (
     "viscosity",
     "conductivity",
     "eddy_viscosity",
+    "kinematic_viscosity",
+    "kinematic_eddy_viscosity",
     "turbulence_energy",
     "mass_source",
     "heat_source",
 )
 ROLES = VECTORS + SCALARS
-"""Roles an array may play, beside ``scalar:NAME`` and ``rate:ROLE`` (its time derivative).
+"""Roles an array may play, beside ``scalar:NAME``, its ``scalar_source:NAME``, and ``rate:ROLE``.
 
-Viscosities are dynamic [Pa s], total energy and momentum are per volume [J/m³,
-kg/(m² s)], turbulence energy is per mass [m²/s²], body force [N/m³] and sources
-[kg/(m³ s), W/m³] are per volume.
+Viscosities are dynamic [Pa s] where not said to be kinematic [m²/s]. Total energy
+and momentum are per volume [J/m³, kg/(m² s)], turbulence energy is per mass
+[m²/s²], body force [N/m³] and sources [kg/(m³ s), W/m³] are per volume.
 """
 
 # One array with the whole quantity, by key (see `key`).
@@ -101,11 +103,11 @@ SUSPECTS = {
     "kappa": ("conductivity", "may be a thermal conductivity, a diffusivity or a curvature"),
     "lambda": ("conductivity", "may be a thermal conductivity or a second viscosity"),
     "conductivity": ("conductivity", "may be a thermal or an electrical conductivity"),
-    "nu": ("viscosity", "may be the kinematic viscosity; the role wants the dynamic one"),
+    "nu": ("kinematic_viscosity", "may be the kinematic viscosity"),
     "viscosity": ("viscosity", "may be dynamic or kinematic; the role wants the dynamic one"),
-    "viscositykinematic": ("viscosity", "is kinematic; the role wants the dynamic one"),
-    "nut": ("eddy_viscosity", "may be the kinematic eddy viscosity; the role wants the dynamic one"),
-    "viscosityeddykinematic": ("eddy_viscosity", "is kinematic; the role wants the dynamic one"),
+    "viscositykinematic": ("kinematic_viscosity", "is the kinematic viscosity"),
+    "nut": ("kinematic_eddy_viscosity", "may be the kinematic eddy viscosity"),
+    "viscosityeddykinematic": ("kinematic_eddy_viscosity", "is the kinematic eddy viscosity"),
     "e": ("total_energy", "may be inner or total energy, per mass or per volume"),
     "energy": ("total_energy", "may be inner or total energy, per mass or per volume"),
     "totalenergy": ("total_energy", "may be per mass or per volume; the role wants it per volume"),
@@ -116,9 +118,10 @@ _FAMILIES = ("xyz", "012", "uvw")
 
 
 def is_role(role: str) -> bool:
-    """One of `ROLES`, ``scalar:NAME``, or ``rate:`` before either?"""
+    """One of `ROLES`, ``scalar:NAME``, ``scalar_source:NAME``, or ``rate:`` before any?"""
     base = role.removeprefix("rate:")
-    return base in ROLES or (base.startswith("scalar:") and base != "scalar:")
+    prefix, _, name = base.partition(":")
+    return base in ROLES or (prefix in ("scalar", "scalar_source") and name != "")
 
 
 def is_vector(role: str) -> bool:

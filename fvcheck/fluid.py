@@ -3,7 +3,8 @@
 from __future__ import annotations
 
 import math
-from dataclasses import dataclass, fields
+from collections.abc import Mapping
+from dataclasses import dataclass, field, fields
 from typing import Literal
 
 from fvcheck.errors import SetupError, nearest
@@ -13,7 +14,7 @@ Value = float | str | None
 PRESSURE_KINDS = ("static", "kinematic", "reduced")
 MODELS = ("constant-density", "ideal-gas")
 
-_POSITIVE = ("density", "gas_constant", "specific_heat")
+_POSITIVE = ("density", "gas_constant", "specific_heat", "turbulent_prandtl")
 _NOT_NEGATIVE = ("viscosity", "conductivity")
 
 
@@ -30,6 +31,11 @@ class Fluid:
     gas_constant R [J/(kg K)], gamma : of an ideal gas, p = ρRT
     expansion β [1/K], reference_temperature T₀ [K] : Boussinesq buoyancy, body
         force ρ g (1 − β (T − T₀))
+    diffusivity D [m²/s] : name of a scalar -> a number; its flux is −ρD∇φ
+    turbulent_prandtl : Prandtl and Schmidt number of turbulence, by which an eddy
+        viscosity μ_t mixes heat (c_p μ_t/Pr_t) and scalars (μ_t/Pr_t)
+    frame_rate Ω [rad/s], frame_centre : the velocities are those seen in a frame
+        that turns counter-clockwise about that point
     viscous_heating : count the dissipation as a heat source in the heat law
         (solvers leave it out unless asked, and in most flows it is negligible)
     model : "constant-density" or "ideal-gas"; by default the latter when a gas
@@ -48,6 +54,10 @@ class Fluid:
     gamma: float | None = None
     expansion: float | None = None
     reference_temperature: float | None = None
+    diffusivity: Mapping[str, float] = field(default_factory=dict)
+    turbulent_prandtl: float = 0.85
+    frame_rate: float = 0.0
+    frame_centre: tuple[float, float] = (0.0, 0.0)
     viscous_heating: bool = False
     model: str | None = None
 
@@ -65,9 +75,15 @@ class Fluid:
         _one_of("pressure kind", self.pressure_kind, PRESSURE_KINDS)
         if self.model is not None:
             _one_of("fluid model", self.model, MODELS)
-        if len(self.gravity) != 2 or not all(math.isfinite(g) for g in self.gravity):
-            raise SetupError(f"gravity is {self.gravity}", mend="Give its two components GX,GY.")
-        object.__setattr__(self, "gravity", (float(self.gravity[0]), float(self.gravity[1])))
+        for scalar, value in self.diffusivity.items():
+            if not (math.isfinite(value) and value >= 0):
+                raise SetupError(f"the diffusivity of {scalar} is {value:g}", mend="Give a positive number.")
+        for name, form in (("gravity", "GX,GY"), ("frame_centre", "X,Y")):
+            pair = getattr(self, name)
+            if len(pair) != 2 or not all(math.isfinite(part) for part in pair):
+                what = name.replace("_", " ")
+                raise SetupError(f"{what} is {pair}", mend=f"Give its two components {form}.")
+            object.__setattr__(self, name, (float(pair[0]), float(pair[1])))
 
     @property
     def ideal_gas(self) -> bool:

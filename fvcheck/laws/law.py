@@ -32,6 +32,27 @@ class Law:
     source : State -> (q, c) per volume, or None when nothing is made inside
     level : (State, n) -> (q, c) flux of a uniform state that no closed surface
         can feel; left out of the scale
+    tolerance_percent : of the scale, where the user tells none
+    inequality : the imbalance is a production that must not be negative
+    on_request : left out unless asked for by name
+    datum : "pressure", "temperature", "entropy" or "scalar:NAME" where the law
+        counts from the mean of that on the border
+
+    A law of one's own, here of the mass of oxygen where the export holds its
+    share of the mass as ``scalar:oxygen``:
+
+    >>> import fvcheck
+    >>> oxygen = fvcheck.Law(
+    ...     name="oxygen",
+    ...     components=(None,),
+    ...     unit="kg/s/m",
+    ...     density=lambda s: (s.density * s.scalar("oxygen").value)[:, None],
+    ...     on_request=True,
+    ... )
+    >>> fvcheck.register(oxygen).name
+    'oxygen'
+    >>> "oxygen" in fvcheck.laws.law_names()
+    True
     """
 
     name: str
@@ -43,9 +64,13 @@ class Law:
     level: Callable[[State, Array], Array] | None = None
     tolerance_percent: float = 1.0
     summary: str = ""
+    inequality: bool = False
+    on_request: bool = False
+    datum: str | None = None
 
 
 _LAWS: dict[str, Law] = {}
+_FAMILIES: dict[str, Callable[[str], Law]] = {}
 
 
 def register(law: Law) -> Law:
@@ -56,6 +81,11 @@ def register(law: Law) -> Law:
     return law
 
 
+def register_family(prefix: str, law_of: Callable[[str], Law]) -> None:
+    """Make laws known under ``PREFIX:NAME``, each from its NAME."""
+    _FAMILIES[prefix] = law_of
+
+
 def law_names() -> tuple[str, ...]:
     """Names of all registered laws, in the order of registration."""
     return tuple(_LAWS)
@@ -63,11 +93,13 @@ def law_names() -> tuple[str, ...]:
 
 def find_law(name: str) -> Law:
     """The law of that name; SetupError naming the nearest one otherwise."""
-    if name not in _LAWS:
-        raise SetupError(
-            f"unknown law {name!r}", mend=nearest(name, _LAWS) or f"Known laws: {', '.join(_LAWS)}."
-        )
-    return _LAWS[name]
+    if name in _LAWS:
+        return _LAWS[name]
+    prefix, _, rest = name.partition(":")
+    if prefix in _FAMILIES and rest:
+        return _FAMILIES[prefix](rest)
+    known = [*_LAWS, *(f"{family}:NAME" for family in _FAMILIES)]
+    raise SetupError(f"unknown law {name!r}", mend=nearest(name, _LAWS) or f"Known laws: {', '.join(known)}.")
 
 
 def convective(law: Law, state: State, n: Array, surface_velocity: Array | None) -> Array:

@@ -2,185 +2,114 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
-from dataclasses import dataclass, field
+from dataclasses import dataclass
 from functools import cached_property
 
 import numpy as np
 
-from fvcheck.errors import FieldError
-from fvcheck.fluid import Fluid
+from fvcheck.laws.gas import Gas, MissingData
+from fvcheck.laws.places import Datum
 from fvcheck.sampling.sampled import Sampled
+
+__all__ = ["Datum", "MissingData", "State"]
 
 Array = np.ndarray
 
 
-class MissingData(FieldError):
-    """The export and the fluid do not hold what a law needs."""
-
-    def __init__(self, what: str, mend: str) -> None:
-        super().__init__(f"no {what}", mend=mend)
-
-
 @dataclass(frozen=True, eq=False)
-class Datum:
-    """Levels that cannot matter to a closed balance: mean pressure and mean temperature on its border."""
-
-    pressure: float = 0.0
-    temperature: float = 0.0
-
-
-@dataclass(frozen=True, eq=False)
-class State:
+class State(Gas):
     """Fields at q places, with what follows from them.
 
-    fluid : properties; ``fields`` : role -> `Sampled`; ``x`` : (q, 2) places.
-    Velocities have three components; the third is out of the plane and has no
-    gradient along its own axis. All quantities are SI or any consistent units.
-    Everything is computed when asked for; MissingData says what would be needed.
+    Arguments are those of `Places`; thermodynamics stands in `Gas`. Velocities
+    have three components; the third is out of the plane and has no gradient
+    along its own axis. In an axisymmetric run it is the swirl, and divergence,
+    stress and forces carry the terms of cylindrical coordinates (Batchelor, An
+    Introduction to Fluid Dynamics, appendix 2). All quantities are SI or any
+    consistent units. Everything is computed when asked for; MissingData says
+    what would be needed.
     """
 
-    fluid: Fluid
-    fields: Mapping[str, Sampled]
-    x: Array
-    datum: Datum = field(default_factory=Datum)
-
-    def _constant(self, value: float) -> Array:
-        return np.full(len(self.x), value)
-
-    def _property(self, role: str) -> Array | None:
-        told = getattr(self.fluid, role)
-        if isinstance(told, int | float):
-            return self._constant(float(told))
-        return self.fields[role].value if role in self.fields else None
-
-    @cached_property
-    def density(self) -> Array:
-        """(q,) ρ [kg/m³]: told, of a field, or p/(RT) of an ideal gas."""
-        known = self._property("density")
-        if known is not None:
-            return known
-        if (
-            self.fluid.ideal_gas
-            and self.fluid.gas_constant
-            and {"pressure", "temperature"} <= set(self.fields)
-        ):
-            return self.pressure / (self.fluid.gas_constant * self.fields["temperature"].value)
-        raise MissingData("density", "Give --density, or name the array with --field density=NAME.")
-
-    @cached_property
-    def density_gradient(self) -> Array:
-        """(q, 2) ∇ρ; zero where the density is a number."""
-        if isinstance(self.fluid.density, int | float):
-            return np.zeros((len(self.x), 2))
-        if "density" in self.fields:
-            return self.fields["density"].gradient
-        p, t = self.fields["pressure"], self.fields["temperature"]
-        return self.density[:, None] * (p.gradient / p.value[:, None] - t.gradient / t.value[:, None])
-
-    @cached_property
+    @property
     def velocity(self) -> Array:
         """(q, 3) u, v in the plane and w out of it [m/s]."""
-        if "velocity" in self.fields:
-            return self.fields["velocity"].value
-        if "momentum" in self.fields:
-            return self.fields["momentum"].value / self.density[:, None]
-        raise MissingData("velocity", "Name its array with --field velocity=NAME (or velocity=VX,VY).")
+        return self.sampled_velocity.value
 
-    @cached_property
+    @property
     def velocity_gradient(self) -> Array:
         """(q, 3, 2) ∂u_i/∂x_j [1/s]."""
-        if "velocity" in self.fields:
-            return self.fields["velocity"].gradient
-        slope = (
-            self.fields["momentum"].gradient - self.velocity[:, :, None] * self.density_gradient[:, None, :]
-        )
-        return slope / self.density[:, None, None]
+        return self.sampled_velocity.gradient
 
     @cached_property
     def divergence(self) -> Array:
-        """(q,) ∇·u [1/s]."""
-        return self.velocity_gradient[:, 0, 0] + self.velocity_gradient[:, 1, 1]
+        """(q,) ∇·u [1/s], with u_r/r in an axisymmetric run."""
+        plane = self.velocity_gradient[:, 0, 0] + self.velocity_gradient[:, 1, 1]
+        return plane if self.axis is None else plane + self.hoop_rate
+
+    @cached_property
+    def hoop_rate(self) -> Array:
+        """(q,) u_r/r [1/s], the stretching around the axis of an axisymmetric run."""
+        assert self.axis is not None
+        return self.velocity[:, 1 - self.axis] * self.per_radius
 
     @cached_property
     def speed2(self) -> Array:
         """(q,) |u|², all three components."""
         return np.sum(self.velocity**2, axis=1)
 
-    @cached_property
-    def pressure(self) -> Array:
-        """(q,) static pressure [Pa], from whatever kind the export holds."""
-        if "pressure" in self.fields:
-            p = self.fields["pressure"].value
-            if self.fluid.pressure_kind == "kinematic":
-                return p * self.density
-            if self.fluid.pressure_kind == "reduced":
-                return p + self.density * (self.x @ np.asarray(self.fluid.gravity))
-            return p
-        if "total_energy" in self.fields and self.fluid.gamma:
-            inner = self.fields["total_energy"].value - 0.5 * self.density * self.speed2
-            return (self.fluid.gamma - 1.0) * inner
-        if self.fluid.ideal_gas and self.fluid.gas_constant and "temperature" in self.fields:
-            return self.density * self.fluid.gas_constant * self.fields["temperature"].value
-        raise MissingData("pressure", "Name its array with --field pressure=NAME.")
-
     @property
     def gauge_pressure(self) -> Array:
         """(q,) pressure above the datum."""
         return self.pressure - self.datum.pressure
 
-    @cached_property
-    def temperature(self) -> Array:
-        """(q,) T [K]: of a field, or p/(ρR) of an ideal gas."""
-        if "temperature" in self.fields:
-            return self.fields["temperature"].value
-        if self.fluid.ideal_gas and self.fluid.gas_constant:
-            return self.pressure / (self.density * self.fluid.gas_constant)
-        raise MissingData("temperature", "Name its array with --field temperature=NAME.")
+    def _dynamic(self, role: str) -> Array | None:
+        """A viscosity by its role, or ρ times the kinematic one."""
+        known = self._property(role) if role == "viscosity" else self.fields.get(role)
+        if known is not None:
+            return known.value
+        kinematic = self.fields.get(f"kinematic_{role}")
+        return None if kinematic is None else self.density * kinematic.value
 
     @cached_property
-    def temperature_gradient(self) -> Array:
-        """(q, 2) ∇T [K/m]."""
-        if "temperature" in self.fields:
-            return self.fields["temperature"].gradient
-        p = self.fields.get("pressure")
-        if p is None:
-            raise MissingData("temperature", "Name its array with --field temperature=NAME.")
-        return self.temperature[:, None] * (
-            p.gradient / p.value[:, None] - self.density_gradient / self.density[:, None]
-        )
-
-    @cached_property
-    def total_energy(self) -> Array:
-        """(q,) ρE = ρ(e + ½|u|²) [J/m³] of an ideal gas."""
-        if "total_energy" in self.fields:
-            return self.fields["total_energy"].value
-        if not self.fluid.gamma:
-            raise MissingData("ratio of specific heats", "Give --gamma (1.4 for air).")
-        return self.pressure / (self.fluid.gamma - 1.0) + 0.5 * self.density * self.speed2
+    def eddy_viscosity(self) -> Array | None:
+        """(q,) μ_t [Pa s], of a field of it or of ν_t; None when there is none."""
+        return self._dynamic("eddy_viscosity")
 
     @cached_property
     def viscosity(self) -> Array | None:
         """(q,) effective dynamic viscosity μ + μ_t [Pa s]; None when none is known: inviscid."""
-        known = self._property("viscosity")
-        if "eddy_viscosity" in self.fields:
-            eddy = self.fields["eddy_viscosity"].value
-            return eddy if known is None else known + eddy
-        return known
+        known, eddy = self._dynamic("viscosity"), self.eddy_viscosity
+        if known is None or eddy is None:
+            return eddy if known is None else known
+        return known + eddy
 
     @cached_property
     def conductivity(self) -> Array | None:
-        """(q,) k [W/(m K)]; None when none is known."""
-        return self._property("conductivity")
+        """(q,) k + c_p μ_t/Pr_t [W/(m K)]; None when neither is known."""
+        known = self._property("conductivity")
+        k = None if known is None else known.value
+        if self.eddy_viscosity is None or (k is None and not self._knows_heat):
+            return k
+        eddy = self.specific_heat * self.eddy_viscosity / self.fluid.turbulent_prandtl
+        return eddy if k is None else k + eddy
 
-    @cached_property
-    def specific_heat(self) -> float:
-        """c (c_p) [J/(kg K)]: told, or γR/(γ−1) of an ideal gas."""
-        if self.fluid.specific_heat:
-            return self.fluid.specific_heat
-        if self.fluid.gamma and self.fluid.gas_constant:
-            return self.fluid.gamma * self.fluid.gas_constant / (self.fluid.gamma - 1.0)
-        raise MissingData("specific heat", "Give --specific-heat.")
+    @property
+    def _knows_heat(self) -> bool:
+        return bool(self.fluid.specific_heat or (self.fluid.gamma and self.fluid.gas_constant))
+
+    def scalar(self, name: str) -> Sampled:
+        """The transported scalar of that name; MissingData where there is none."""
+        if f"scalar:{name}" not in self.fields:
+            raise MissingData(f"scalar {name}", f"Name its array with --field scalar:{name}=ARRAY.")
+        return self.fields[f"scalar:{name}"]
+
+    def mixing(self, name: str) -> Array | None:
+        """(q,) Γ = ρD + μ_t/Sc_t of a scalar [kg/(m s)]; None when nothing mixes it."""
+        told = self.fluid.diffusivity.get(name)
+        gamma = None if told is None else told * self.density
+        if self.eddy_viscosity is None:
+            return gamma
+        eddy = self.eddy_viscosity / self.fluid.turbulent_prandtl
+        return eddy if gamma is None else gamma + eddy
 
     @cached_property
     def stress(self) -> Array | None:
@@ -204,14 +133,32 @@ class State:
             out = out - 2.0 / 3.0 * self.density * self.fields["turbulence_energy"].value
         return out
 
+    @cached_property
+    def hoop_stress(self) -> Array | None:
+        """(q,) τ_θθ = 2μ u_r/r − ⅔μ∇·u − ⅔ρk [Pa] of an axisymmetric run; None when inviscid."""
+        if self.stress is None:
+            return None
+        stretching = 0.0 if self.viscosity is None else 2.0 * self.viscosity * self.hoop_rate
+        return self._isotropic_stress + stretching
+
+    @cached_property
+    def cross_shear(self) -> Array | None:
+        """(q, 2) shear stress out of the plane on planes normal to x, y [Pa]: μ∇w, less μw/r along r."""
+        if self.viscosity is None:
+            return None
+        slope = self.velocity_gradient[:, 2]
+        if self.axis is not None:
+            slope = slope + 0.0
+            slope[:, 1 - self.axis] -= self.velocity[:, 2] * self.per_radius
+        return self.viscosity[:, None] * slope
+
     def traction_power(self, n: Array) -> Array | None:
         """(q,) u·τ·n, the part of an out-of-plane velocity included; None when inviscid."""
         if self.stress is None:
             return None
         power = np.einsum("qi,qij,qj->q", self.velocity[:, :2], self.stress, n)
-        if self.viscosity is not None:
-            shear = self.viscosity * np.einsum("qj,qj->q", self.velocity_gradient[:, 2], n)
-            power = power + self.velocity[:, 2] * shear
+        if self.cross_shear is not None:
+            power = power + self.velocity[:, 2] * np.einsum("qj,qj->q", self.cross_shear, n)
         return power
 
     @cached_property
@@ -220,13 +167,21 @@ class State:
         if self.stress is None:
             return None
         work = np.einsum("qij,qij->q", self.stress, self.velocity_gradient[:, :2])
-        if self.viscosity is not None:
-            work = work + self.viscosity * np.sum(self.velocity_gradient[:, 2] ** 2, axis=1)
+        if self.viscosity is not None and self.cross_shear is not None:
+            safe = np.where(self.viscosity == 0.0, 1.0, self.viscosity)
+            work = work + np.sum(self.cross_shear**2, axis=1) / safe
+        if self.axis is not None and self.hoop_stress is not None:
+            work = work + self.hoop_stress * self.hoop_rate
         return work
 
     @cached_property
     def body_force(self) -> Array | None:
-        """(q, 2) force per volume [N/m³]: weight, with Boussinesq buoyancy, and a field; None for none."""
+        """(q, 2) force per volume [N/m³]; None for none.
+
+        Weight, with Boussinesq buoyancy; in a rotating frame the Coriolis force
+        −2ρ Ω×u and the centrifugal one ρΩ²(x − x₀) (Batchelor, section 3.2);
+        and a field.
+        """
         force = None
         g = np.asarray(self.fluid.gravity)
         if np.any(g != 0.0):
@@ -239,7 +194,34 @@ class State:
                 rise = self.temperature - self.fluid.reference_temperature
                 weight = weight * (1.0 - self.fluid.expansion * rise)
             force = weight[:, None] * g
+        if self.fluid.frame_rate:
+            rate, u = self.fluid.frame_rate, self.velocity
+            coriolis = 2.0 * rate * np.column_stack([u[:, 1], -u[:, 0]])
+            centrifugal = rate**2 * (self.x - np.asarray(self.fluid.frame_centre))
+            inertia = self.density[:, None] * (coriolis + centrifugal)
+            force = inertia if force is None else force + inertia
         if "body_force" in self.fields:
             told = self.fields["body_force"].value[:, :2]
             force = told if force is None else force + told
         return force
+
+    @cached_property
+    def force_power(self) -> Array | None:
+        """(q,) work of the body force [W/m³]; None for none."""
+        if self.body_force is None:
+            return None
+        power = np.einsum("qi,qi->q", self.body_force, self.velocity[:, :2])
+        if "body_force" in self.fields:
+            power = power + self.fields["body_force"].value[:, 2] * self.velocity[:, 2]
+        return power
+
+    @cached_property
+    def hoop_force(self) -> Array | None:
+        """(q,) what the curvature of the coordinates puts into the radial momentum of an
+        axisymmetric run: (p − τ_θθ + ρu_θ²)/r [N/m³]; None in a plane one."""
+        if self.axis is None:
+            return None
+        force = self.pressure + self.density * self.velocity[:, 2] ** 2
+        if self.hoop_stress is not None:
+            force = force - self.hoop_stress
+        return force * self.per_radius
