@@ -21,8 +21,9 @@ RESOLUTION_FACTOR = 3.0
 
 # Root sum of squares of the pieces' differences, times this. Twice (GUM, JCGM
 # 100:2008, k = 2) would do for independent errors; those of neighbouring pieces
-# share a sign often enough that the study of scripts/calibrate.py asks for three.
-_COVERAGE = 3.0
+# share a sign often enough that the study of scripts/calibrate.py asks for three
+# in the sampling band. The resolution band has its factor of safety already.
+_SAMPLING_COVERAGE, _RESOLUTION_COVERAGE = 3.0, 2.0
 
 # Where fits reach out of their data, degree 3 may be off by as much as it
 # changes degree 2, or by this share of what degree 2 changes degree 1.
@@ -37,9 +38,9 @@ class Bands(NamedTuple):
     rounding: float
 
 
-def spread(difference: Array) -> float:
-    """Half-width from per-piece differences (k,): net, or three times the root sum of squares."""
-    return float(max(abs(difference.sum()), _COVERAGE * np.sqrt(np.sum(difference**2))))
+def spread(difference: Array, coverage: float) -> float:
+    """Half-width from per-piece differences (k,): net, or ``coverage`` times the root sum of squares."""
+    return float(max(abs(difference.sum()), coverage * np.sqrt(np.sum(difference**2))))
 
 
 def bands(
@@ -68,7 +69,9 @@ def bands(
         outside[: len(reaching)] = reaching
     sampling = _half_width(d23[~outside], d12[~outside]) + rounding
     sampling += float(np.maximum(np.abs(d23), _REACHING * np.abs(d12))[outside].sum())
-    resolution = RESOLUTION_FACTOR * (spread(d12[~outside]) + spread(d12[outside]))
+    resolution = RESOLUTION_FACTOR * sum(
+        spread(part, _RESOLUTION_COVERAGE) for part in (d12[~outside], d12[outside])
+    )
     return Bands(sampling, max(resolution, sampling), rounding)
 
 
@@ -76,4 +79,4 @@ def _half_width(d23: Array, d12: Array) -> float:
     if np.abs(d23).sum() > 0.5 * np.abs(d12).sum():
         # The series of degrees does not settle: nothing may be said to cancel.
         return float(np.abs(d23).sum())
-    return spread(d23)
+    return spread(d23, _SAMPLING_COVERAGE)

@@ -33,7 +33,7 @@ def test_the_net_change_counts_where_errors_have_one_sign():
 def test_three_times_the_root_sum_counts_where_errors_cancel():
     band = bands(*arrays((3, 1), (-3, -1), (3, 1), (-3, -1)), 0.0)
     assert band.sampling == pytest.approx(3 * np.sqrt(4))
-    assert band.resolution == pytest.approx(3 * 3 * np.sqrt(36))
+    assert band.resolution == pytest.approx(3 * 2 * np.sqrt(36))  # design: factor 3, twice the root sum
 
 
 def test_nothing_cancels_where_the_series_of_degrees_does_not_settle():
@@ -60,8 +60,8 @@ def test_where_values_are_extrapolated_errors_add_up():
     band = bands(*steps, 0.0, reaching=np.array([True, True]))
     # the larger of |d23| and ½|d12| at the first two, 2 + 3; 3 √(2 · 0.0625) of the others
     assert band.sampling == pytest.approx(5.0 + 3 * np.sqrt(0.125))
-    # 3 × (3 √(2 · 64) + 3 √(2 · 16)), the two kinds apart
-    assert band.resolution == pytest.approx(9 * (np.sqrt(128) + np.sqrt(32)))
+    # 3 × (2 √(2 · 64) + 2 √(2 · 16)), the two kinds apart
+    assert band.resolution == pytest.approx(6 * (np.sqrt(128) + np.sqrt(32)))
 
 
 def test_where_the_degree_fell_the_larger_step_counts():

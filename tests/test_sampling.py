@@ -188,7 +188,10 @@ def twin_fit(m, centre, degree, reading, data, rows):
     at = (m.points if own else shape.centroids)[members] - origin
     variance, axes = np.linalg.eigh(at.T @ at / len(at))
     whiten = (axes / np.sqrt(variance)).T
-    weight = 1 / (np.sum((at @ whiten.T) ** 2, axis=1) + 0.05)  # the weights that fits.py states
+    # the weights that fits.py states: gentler where the patch lies on one side of the centre
+    round_offsets = at @ whiten.T
+    one_sided = np.hypot(*round_offsets.mean(axis=0)) > 0.4
+    weight = 1 / (np.sum(round_offsets**2, axis=1) + 0.1) ** (1 if one_sided else 2)
 
     def monomial(x, y, i, j):
         xi, eta = whiten @ (np.stack([x, y]) - origin[:, None])

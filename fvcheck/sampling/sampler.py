@@ -206,7 +206,7 @@ def compile_sampler(
             degree,
             at_points,
             averages,
-            1 if degree == 1 else fits.TERMS[degree],
+            1 if at_points and degree == 1 else fits.TERMS[degree],
         )
         if not at_points:
             columns = np.where(columns >= 0, columns, len(local_cells) + (-1 - columns - len(local_points)))
