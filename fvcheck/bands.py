@@ -38,7 +38,7 @@ class Bands(NamedTuple):
     rounding: float
 
 
-def spread(difference: Array, coverage: float) -> float:
+def spread(difference: Array, coverage: float = _SAMPLING_COVERAGE) -> float:
     """Half-width from per-piece differences (k,): net, or ``coverage`` times the root sum of squares."""
     return float(max(abs(difference.sum()), coverage * np.sqrt(np.sum(difference**2))))
 
@@ -79,4 +79,4 @@ def _half_width(d23: Array, d12: Array) -> float:
     if np.abs(d23).sum() > 0.5 * np.abs(d12).sum():
         # The series of degrees does not settle: nothing may be said to cancel.
         return float(np.abs(d23).sum())
-    return spread(d23, _SAMPLING_COVERAGE)
+    return spread(d23)

@@ -10,6 +10,7 @@ import numpy as np
 from fvcheck.errors import FieldError
 from fvcheck.fields import Location
 from fvcheck.flow import Flow
+from fvcheck.sampling.conserved import with_conserved_averages
 from fvcheck.sampling.sampled import Sampled
 from fvcheck.sampling.sampler import DEGREES, Known, Sampler, compile_sampler
 
@@ -42,6 +43,7 @@ class _Group:
     columns: tuple[slice, ...]
     data: Array
     known: Array | None
+    places: Known | None
 
 
 @dataclass(frozen=True, eq=False)
@@ -161,6 +163,21 @@ class Probe:
             groups.append(replace(group, data=data))
         return Probe(tuple(groups), self.vectors)
 
+    def refilled(self, flow: Flow) -> Probe | None:
+        """The same fits on the data of another flow over the same mesh; None where they do not serve it."""
+        flow = with_conserved_averages(flow)
+        split = _split(flow, tuple(flow.fields))
+        if list(split.values()) != [list(group.roles) for group in self.groups]:
+            return None
+        groups = []
+        for ((location, own), names), old in zip(split.items(), self.groups):
+            known = known_values(flow, own) if own else None
+            places = None if known is None else known[0]
+            if old.sampler.location != location or not _same_places(places, old.places):
+                return None
+            groups.append(_fill(flow, old.sampler, names, known))
+        return Probe(tuple(groups), _vectors(flow, tuple(flow.fields)))
+
     @property
     def precision(self) -> float:
         """The coarsest relative precision among the fields."""
@@ -173,15 +190,10 @@ def compile_probe(flow: Flow, centres: Array, roles: tuple[str, ...] | None = No
     Cell-centred fields lean on what is known on the boundary (`known_values`).
     FieldError where a field is not finite around the surface.
     """
+    flow = with_conserved_averages(flow)
     wanted = tuple(flow.fields) if roles is None else roles
-    vectors = frozenset(role for role in wanted if flow.fields[role].values.ndim == 2)
-    split: dict[tuple[Location, str], list[str]] = {}
-    for role in wanted:
-        # Fields with known values of their own need a sampler of their own.
-        own = role if known_values(flow, role) is not None else ""
-        split.setdefault((flow.fields[role].location, own), []).append(role)
     groups = []
-    for (location, own), names in split.items():
+    for (location, own), names in _split(flow, wanted).items():
         known = known_values(flow, own) if own else None
         sampler = compile_sampler(
             flow.mesh,
@@ -190,16 +202,40 @@ def compile_probe(flow: Flow, centres: Array, roles: tuple[str, ...] | None = No
             averages=flow.case.cell_values == "average",
             known=known[0] if known else None,
         )
-        parts, columns, at = [], [], 0
-        for role in names:
-            values = _columns(flow, flow.fields[role].values)
-            _check_finite(flow, role, values, sampler)
-            parts.append(values)
-            columns.append(slice(at, at + values.shape[1]))
-            at += values.shape[1]
-        value = _columns(flow, known[1]) if known else None
-        groups.append(_Group(sampler, tuple(names), tuple(columns), np.hstack(parts), value))
-    return Probe(tuple(groups), vectors)
+        groups.append(_fill(flow, sampler, names, known))
+    return Probe(tuple(groups), _vectors(flow, wanted))
+
+
+def _vectors(flow: Flow, roles: tuple[str, ...]) -> frozenset[str]:
+    return frozenset(role for role in roles if flow.fields[role].values.ndim == 2)
+
+
+def _split(flow: Flow, roles: tuple[str, ...]) -> dict[tuple[Location, str], list[str]]:
+    """Roles by what their fits need: (location, role with known values of its own or "")."""
+    split: dict[tuple[Location, str], list[str]] = {}
+    for role in roles:
+        own = role if known_values(flow, role) is not None else ""
+        split.setdefault((flow.fields[role].location, own), []).append(role)
+    return split
+
+
+def _fill(flow: Flow, sampler: Sampler, names: list[str], known: tuple[Known, Array] | None) -> _Group:
+    """A group of fields with the data of a flow; FieldError where they are not finite."""
+    parts, columns, at = [], [], 0
+    for role in names:
+        values = _columns(flow, flow.fields[role].values)
+        _check_finite(flow, role, values, sampler)
+        parts.append(values)
+        columns.append(slice(at, at + values.shape[1]))
+        at += values.shape[1]
+    places, value = (known[0], _columns(flow, known[1])) if known else (None, None)
+    return _Group(sampler, tuple(names), tuple(columns), np.hstack(parts), value, places)
+
+
+def _same_places(one: Known | None, other: Known | None) -> bool:
+    if one is None or other is None:
+        return one is other
+    return all(np.array_equal(a, b) for a, b in zip(one, other))
 
 
 def _columns(flow: Flow, values: Array) -> Array:
@@ -221,8 +257,10 @@ def known_values(flow: Flow, role: str) -> tuple[Known, Array] | None:
     boundary = flow.mesh.boundary
     shape = (len(boundary.edges), *field.values.shape[1:])
     values = np.full(shape, np.nan) if field.rim is None else np.array(field.rim, float)
-    if role == "velocity":
+    if role in ("velocity", "momentum"):
         for name, wall in flow.walls.items():
+            if role == "momentum" and any(wall):
+                continue  # the density there is not known
             values[boundary.patch == boundary.names.index(name)] = (*wall, 0.0)
     own = np.isfinite(values.reshape(len(values), -1)).all(axis=1)
     if not own.any():
@@ -274,9 +312,13 @@ def pin_walls(sampled: Mapping[str, Sampled], on_wall: Array, velocity: Array) -
     on_wall (q,) bool, velocity (q, 2). Gradients stay those of the fits.
     """
     out = dict(sampled)
-    if on_wall.any() and "velocity" in out:
-        value = out["velocity"].value.copy()
-        value[on_wall, :2] = velocity[on_wall]
-        value[on_wall, 2] = 0.0
-        out["velocity"] = Sampled(value, out["velocity"].gradient)
+    factors = {"velocity": np.ones(len(on_wall))}
+    if "density" in out:
+        factors["momentum"] = out["density"].value
+    for role, factor in factors.items():
+        if on_wall.any() and role in out:
+            value = out[role].value.copy()
+            value[on_wall, :2] = velocity[on_wall] * factor[on_wall, None]
+            value[on_wall, 2] = 0.0
+            out[role] = Sampled(value, out[role].gradient)
     return out
