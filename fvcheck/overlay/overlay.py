@@ -137,8 +137,10 @@ def _segments(surface: ControlSurface) -> tuple[Array, Array]:
 def _cut(mesh: Mesh, start: Array, end: Array, closed: bool, shift: int) -> Overlay:
     from fvcheck.kernels.grid import INSIDE, NEAR, build_grid, classify_cells
     from fvcheck.kernels.overlay import cut_triangles, winding_numbers
+    from fvcheck.kernels.threads import use_for
 
     grid = build_grid(start, end, _RESOLUTION)
+    use_for(mesh.n_cells)
     status = classify_cells(mesh.points, mesh.offsets, mesh.nodes, grid)
     near = np.flatnonzero(status == NEAR)
     whole = np.flatnonzero(status == INSIDE) if closed else np.empty(0, np.int64)

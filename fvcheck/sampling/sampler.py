@@ -34,6 +34,9 @@ _RINGS = 5
 # not determine it well (corners and sides of even grids) before its degree falls.
 _MORE_RINGS = 2
 
+# A fit is worth so many items of a simple loop.
+_HEAVY = 30
+
 # Equations wanted per unknown, to keep the fit from following single values.
 _SURPLUS = 1.5
 
@@ -98,11 +101,13 @@ class Sampler:
         known : (k, f) values at the spots given to `compile_sampler`
         """
         from fvcheck.kernels.fits import apply_fits
+        from fvcheck.kernels.threads import use_for
 
         fit = self.fits[degree]
         column = np.ascontiguousarray(data[self.sources], float)
         if known is not None:
             column = np.concatenate([column, known[self.spots]])
+        use_for(_HEAVY * len(self.centres))
         return apply_fits(fit.row_first, fit.columns, fit.operator, column)
 
     def ranges(self, data: Array, known: Array | None = None) -> tuple[Array, Array]:
@@ -142,8 +147,10 @@ class Sampler:
         places (q, 2) in triangles (q, 3) of fitted mesh points.
         """
         from fvcheck.kernels.fits import evaluate
+        from fvcheck.kernels.threads import use_for
 
         frames = self.fits[degree].frames
+        use_for(len(places))
         return evaluate(self.mesh_points, triangle, self.centre_of, frames, coefficients, places)
 
 
@@ -161,10 +168,11 @@ def compile_sampler(
     averages : a cell value is the average over the cell; else the value at its centroid
     known : where values are known beside cell data; ignored for point data
     """
-    from fvcheck.kernels import fits, neighbours
+    from fvcheck.kernels import fits, neighbours, threads
 
     mark = np.zeros(mesh.n_points, np.uint8)
     mark[centres] = 1
+    threads.use_for(mesh.n_cells)
     cell_ring = neighbours.grow_rings(mesh.offsets, mesh.nodes, mark, _RINGS)
     local_cells = np.flatnonzero(cell_ring)
     local_points, local_offsets, local_nodes = neighbours.extract_cells(
@@ -194,6 +202,7 @@ def compile_sampler(
 
     def fit(about: Array, stencil: tuple[Array, Array, Array], k: int) -> NodeFits:
         begin, entries, sizes = stencil
+        threads.use_for(_HEAVY * len(about))
         degree = degrees[k]
         row_first, columns, operator, frames, reached = fits.fit_points(
             points,
