@@ -48,6 +48,8 @@ def flow_data(flow: ExactFlow, cells: Cells, where: str = "point", degree: int =
         raise ValueError(f"where {where!r}: expected point, centroid or average")
     x, y = at[where].T
     data = {"velocity": flow.velocity(x, y), "pressure": flow.p(x, y)}
+    if flow.w is not None:
+        data["velocity"] = np.column_stack([data["velocity"], flow.w(x, y)])
     if flow.T is not None:
         data["temperature"] = flow.T(x, y)
     if flow.rho is not None:

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 
@@ -41,6 +41,10 @@ class Assembly:
     origin : (3,); plane coordinates are (raw - origin) @ e1, e2. It has no
         in-plane part, so that coordinates stay those of the file
     thickness : of a one-cell-thick export, else 0
+    point_axes : as ``axes``, for data at points where those lie in another plane
+        than the mesh: the front plane of a wedge
+    wedge : of an export between two planes that meet in an axis, the coordinate
+        (0, 1) that runs along it
     """
 
     mesh: Mesh
@@ -51,6 +55,8 @@ class Assembly:
     origin: Array
     thickness: float
     hints: tuple[Hint, ...]
+    point_axes: Array | None = None
+    wedge: int | None = None
 
 
 def assemble(pieces: Sequence[Piece], *, plane: str = "auto", keep_centres: bool = False) -> Assembly:
@@ -67,11 +73,14 @@ def assemble(pieces: Sequence[Piece], *, plane: str = "auto", keep_centres: bool
     check_name(plane)
     hints: list[Hint] = []
     raw = gather(pieces)
-    front, thickness = None, 0.0
+    front, thickness, wedge = None, 0.0, None
     solid = bool((raw.dimension == 3).any())
     if solid:
         layer = flatten(pieces, raw, plane)
         where, cells, front, thickness = layer.plane, layer.cells, layer.front, layer.thickness
+        wedge = layer.wedge
+        if wedge is not None:
+            raw = replace(raw, points=wedge.onto_middle(raw.points))
     else:
         flat = raw.cells_of(2)
         if len(flat) == 0:
@@ -99,7 +108,16 @@ def assemble(pieces: Sequence[Piece], *, plane: str = "auto", keep_centres: bool
         cells, edges = filled, edges_of(filled, len(points))
     mesh, point_source = _mesh(points, cells, edges, finder, number, hints)
     return Assembly(
-        mesh, point_source, cells.source, where.name, where.axes, where.origin, thickness, tuple(hints)
+        mesh,
+        point_source,
+        cells.source,
+        where.name,
+        where.axes,
+        where.origin,
+        thickness,
+        tuple(hints),
+        point_axes=None if wedge is None else wedge.front_axes,
+        wedge=None if wedge is None else wedge.axis,
     )
 
 

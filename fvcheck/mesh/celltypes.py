@@ -185,4 +185,11 @@ SOLID_FACES: dict[int, tuple[int, list[Part]]] = {
 }
 """3D types that can be one cell thick: number of nodes, faces (centre nodes of faces left out)."""
 
+WEDGE_FACES: dict[int, tuple[int, list[Part]]] = {
+    **SOLID_FACES,
+    10: (4, [[0, 1, 2], [0, 1, 3], [1, 2, 3], [2, 0, 3]]),
+    14: (5, [[0, 1, 2, 3], [0, 1, 4], [1, 2, 4], [2, 3, 4], [3, 0, 4]]),
+}
+"""Those of a wedge: its cells at the axis may be tetrahedra and pyramids too."""
+
 QUADRATIC_SOLIDS = (25, 26, 29, 32, 33)

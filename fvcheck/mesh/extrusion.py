@@ -8,7 +8,7 @@ from dataclasses import dataclass
 import numpy as np
 
 from fvcheck.errors import MeshError
-from fvcheck.mesh.celltypes import POLYHEDRON, QUADRATIC_SOLIDS, SOLID_FACES
+from fvcheck.mesh.celltypes import POLYHEDRON, QUADRATIC_SOLIDS, SOLID_FACES, WEDGE_FACES, Part
 from fvcheck.mesh.gather import Polygons, Raw
 from fvcheck.mesh.piece import Piece
 from fvcheck.mesh.plane import (
@@ -21,45 +21,49 @@ from fvcheck.mesh.plane import (
     rotated_axes,
     slack,
 )
+from fvcheck.mesh.wedge import Wedge, find_wedge
 
 Array = np.ndarray
 
 _ADVICE = "Export a plane mesh, a slice, or a run that is one cell thick."
-_FRONT, _BACK, _BETWEEN, _ELSEWHERE = 0, 1, 2, 3
+_FRONT, _BACK, _BETWEEN, _ELSEWHERE, _AXIS = 0, 1, 2, 3, 4
 
 
 @dataclass(frozen=True, eq=False)
 class Layer:
-    """The front plane of a one-cell-thick export: its cells, which raw points lie in it, the thickness."""
+    """The front plane of a one-cell-thick export: its cells, which raw points lie in it, the thickness.
+
+    wedge : where the planes meet in an axis; ``plane`` is then the mid plane, which
+        the points have to be turned onto
+    """
 
     plane: Plane
     cells: Polygons
     front: Array
     thickness: float
+    wedge: Wedge | None = None
 
 
 def flatten(pieces: Sequence[Piece], raw: Raw, wanted: str) -> Layer:
     """Take the front face of every 3D cell.
 
     The front plane is the one with the larger coordinate along the plane's
-    normal. Raises MeshError when the points do not lie in two parallel planes
-    or a cell does not reach from one to the other.
+    normal. The planes may be parallel, or meet in a coordinate axis at a small
+    angle. Raises MeshError when the points do not lie in two such planes or a
+    cell does not reach from one to the other.
     """
     check_name(wanted)
     cells = raw.cells_of(3)
     kinds = np.unique(raw.types[cells]).tolist()
-    for kind in kinds:
-        if kind not in SOLID_FACES and kind != POLYHEDRON:
-            raise MeshError(
-                f"3D cells of type {kind} (tetrahedra, pyramids or the like) cannot be one cell thick",
-                mend=_ADVICE,
-            )
+    tapered = next((kind for kind in kinds if kind not in SOLID_FACES and kind != POLYHEDRON), None)
+    if tapered is not None and any(kind not in WEDGE_FACES and kind != POLYHEDRON for kind in kinds):
+        raise _tapered(tapered)
     faces = _global_faces(pieces, raw)
     own = np.isin(np.arange(len(raw.points)), _nodes_of(raw, cells, faces))
     used = raw.points[own]
     tolerance = slack(used, raw.precision)
     between = any(kind in QUADRATIC_SOLIDS for kind in kinds)
-    for name, axes in _directions(raw, cells, used, wanted):
+    for name, axes in _directions(raw, cells, used, wanted) if tapered is None else ():
         heights = used @ axes[2] if name == "rotated" else used[:, NORMAL_COLUMN[name]] * axes[2].sum()
         low, high = float(heights.min()), float(heights.max())
         near = (heights - low <= tolerance) | (high - heights <= tolerance)
@@ -68,6 +72,11 @@ def flatten(pieces: Sequence[Piece], raw: Raw, wanted: str) -> Layer:
         if high - low > 4 * tolerance and near.all():
             break
     else:
+        wedge = find_wedge(used, wanted, 4 * tolerance)
+        if wedge is not None:
+            return _of_wedge(raw, cells, faces, wedge, 4 * tolerance)
+        if tapered is not None:
+            raise _tapered(tapered)
         raise MeshError(
             "the 3D cells are not one cell thick: their points do not lie in two parallel planes"
             + ("" if wanted == "auto" else f" parallel to {wanted}"),
@@ -79,7 +88,34 @@ def flatten(pieces: Sequence[Piece], raw: Raw, wanted: str) -> Layer:
     side[np.abs(heights - 0.5 * (low + high)) <= tolerance] = _BETWEEN
     side[np.abs(heights - low) <= tolerance] = _BACK
     side[np.abs(heights - high) <= tolerance] = _FRONT
-    return Layer(plane, _front_cells(raw, cells, faces, side), side == _FRONT, high - low)
+    return Layer(plane, _front_cells(raw, cells, faces, side, SOLID_FACES), side == _FRONT, high - low)
+
+
+def _of_wedge(raw: Raw, cells: Array, faces: _AllFaces, wedge: Wedge, tolerance: float) -> Layer:
+    front, back, on_axis = wedge.sides(raw.points, tolerance)
+    side = np.full(len(raw.points), _ELSEWHERE, np.int8)
+    for mask, where in ((back, _BACK), (front, _FRONT), (on_axis, _AXIS)):
+        side[mask] = where
+    outlines = _front_cells(raw, cells, faces, side, WEDGE_FACES)
+    return Layer(at_level(wedge.name, wedge.axes, 0.0), _simple(outlines), front | on_axis, 0.0, wedge)
+
+
+def _simple(cells: Polygons) -> Polygons:
+    """Outlines without the points that a collapsed cell lists twice in a row."""
+    before = np.roll(cells.nodes, 1)
+    before[cells.offsets[:-1]] = cells.nodes[cells.offsets[1:] - 1]
+    keep = cells.nodes != before
+    if keep.all():
+        return cells
+    offsets = np.concatenate([[0], np.cumsum(np.add.reduceat(keep.astype(np.int64), cells.offsets[:-1]))])
+    return Polygons(offsets, cells.nodes[keep], cells.source)
+
+
+def _tapered(kind: int) -> MeshError:
+    return MeshError(
+        f"3D cells of type {kind} (tetrahedra, pyramids or the like) cannot be one cell thick",
+        mend=_ADVICE,
+    )
 
 
 def _directions(raw: Raw, cells: Array, used: Array, wanted: str) -> Iterator[tuple[str, Array]]:
@@ -149,25 +185,27 @@ def _nodes_of(raw: Raw, cells: Array, faces: _AllFaces) -> Array:
     return np.concatenate([plain, faces.face_nodes[np.repeat(wanted, np.diff(faces.face_offsets))]])
 
 
-def _front_cells(raw: Raw, cells: Array, faces: _AllFaces, side: Array) -> Polygons:
+def _front_cells(
+    raw: Raw, cells: Array, faces: _AllFaces, side: Array, faces_of: dict[int, tuple[int, list[Part]]]
+) -> Polygons:
     from fvcheck.kernels.prisms import front_faces, front_faces_of_polyhedra
 
     solid = raw.types[cells] == POLYHEDRON
-    kinds = sorted(SOLID_FACES)
+    kinds = sorted(faces_of)
     plain, poly = cells[~solid], cells[solid]
     sizes = raw.offsets[plain + 1] - raw.offsets[plain]
-    expected = np.array([SOLID_FACES[kind][0] for kind in kinds])
+    expected = np.array([faces_of[kind][0] for kind in kinds])
     template = np.searchsorted(kinds, raw.types[plain])
     if (sizes != expected[template]).any():
         bad = int(plain[np.argmax(sizes != expected[template])])
         raise MeshError(f"cell {bad} has a wrong number of nodes for its type {raw.types[bad]}")
-    every = [face for kind in kinds for face in SOLID_FACES[kind][1]]
+    every = [face for kind in kinds for face in faces_of[kind][1]]
     offsets, nodes = front_faces(
         plain,
         raw.offsets,
         raw.nodes,
         template,
-        np.cumsum([0, *(len(SOLID_FACES[kind][1]) for kind in kinds)]),
+        np.cumsum([0, *(len(faces_of[kind][1]) for kind in kinds)]),
         np.cumsum([0, *(len(face) for face in every)]),
         np.array([node for face in every for node in face]),
         side,

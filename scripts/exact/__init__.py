@@ -6,10 +6,13 @@ papers stand in each docstring.
 
 from exact.compressible import isentropic_vortex, oblique_shock, uniform_gas
 from exact.flow import ExactFlow, box_contour, circle_contour, fluxes, gradient, polygon_contour
+from exact.gas_dynamics import expansion_fan, normal_shock, nozzle, rayleigh
 from exact.potential import cylinder, rankine_half_body, source
+from exact.revolved import burgers_vortex, hagen_poiseuille, landau_force, landau_jet, stokes_sphere
 from exact.similarity import hiemenz, hiemenz_profile, jeffery_hamel, jeffery_hamel_profile
 from exact.viscous import (
     couette,
+    cylindrical_couette,
     kovasznay,
     lamb_oseen,
     linear,
@@ -24,11 +27,15 @@ __all__ = [
     "ExactFlow",
     "all_flows",
     "box_contour",
+    "burgers_vortex",
     "circle_contour",
     "couette",
     "cylinder",
+    "cylindrical_couette",
+    "expansion_fan",
     "fluxes",
     "gradient",
+    "hagen_poiseuille",
     "hiemenz",
     "hiemenz_profile",
     "isentropic_vortex",
@@ -36,13 +43,19 @@ __all__ = [
     "jeffery_hamel_profile",
     "kovasznay",
     "lamb_oseen",
+    "landau_force",
+    "landau_jet",
     "linear",
+    "normal_shock",
+    "nozzle",
     "oblique_shock",
     "poiseuille",
     "polygon_contour",
     "rankine_half_body",
+    "rayleigh",
     "shear_layer",
     "source",
+    "stokes_sphere",
     "suction_layer",
     "taylor_green",
     "uniform",

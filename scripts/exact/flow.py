@@ -31,6 +31,7 @@ class ExactFlow:
         sense of exp(x/l) or sin(x/l)
     speed, length : the scales a textbook would use
     u, v, p : velocity and static pressure
+    w : velocity out of the plane, the swirl of an axisymmetric flow; None for none
     T, rho : temperature, density (``rho`` only when it varies)
     rates : name -> exact time derivative of that quantity; empty when steady
     body_force : (f_x, f_y) per volume that the momentum equations need
@@ -57,6 +58,7 @@ class ExactFlow:
     viscous_heating: bool = False
     hole: tuple[float, float, float] | None = None
     jump: tuple[float, float, float] | None = None
+    w: Scalar | None = None
 
     @property
     def compressible(self) -> bool:

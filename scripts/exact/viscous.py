@@ -140,6 +140,33 @@ def lamb_oseen(gamma: float = 1.0, nu: float = 0.01, time: float = 1.0) -> Exact
     )
 
 
+def cylindrical_couette(mu: float = 1.0, spin: float = 1.0) -> ExactFlow:
+    """Between circles r = 1, turning at ``spin``, and r = 2, at rest (Schlichting & Gersten). ρ = 1.
+
+    u_θ = Ar + B/r; torque per length 4πμΩ R₁²R₂²/(R₂² − R₁²) = 16.755161 μΩ.
+    """
+    b = spin * 4.0 / 3.0
+    a = -b / 4.0
+
+    def turning(x, y):  # u_θ / r
+        return a + b / (x * x + y * y)
+
+    def p(x, y):
+        r2 = x * x + y * y
+        return 0.5 * (a * a * r2 - b * b / r2) + a * b * np.log(r2)
+
+    return ExactFlow(
+        name="cylindrical-couette",
+        domain=(-2.0, -2.0, 2.0, 2.0),
+        fluid={"density": 1.0, "viscosity": mu},
+        feature=0.5,
+        u=lambda x, y: -y * turning(x, y),
+        v=lambda x, y: x * turning(x, y),
+        p=p,
+        speed=spin,
+    )
+
+
 def shear_layer(thickness: float = 0.1, mean: float = 1.0, half_jump: float = 0.5) -> ExactFlow:
     """Parallel flow u = mean + half_jump tanh(y/δ), held steady by a body force −μu''.
 
