@@ -24,32 +24,48 @@ Array = np.ndarray
 def balance(
     flow: Flow,
     surface: ControlSurface,
-    laws: Iterable[str] | None = None,
+    laws: Iterable[str | Law] | None = None,
     *,
     tolerance: Mapping[str, float] | None = None,
     scale: Mapping[str, float] | None = None,
     sources: Sequence[Source] = (),
+    about: tuple[float, float] = (0.0, 0.0),
 ) -> Ledger:
     """The ledger of one control surface.
 
-    laws : names; by default every law that the data allow
+    laws : names, or laws themselves; by default see `choose_laws`
     tolerance : law -> percent of its scale
     scale : law -> reference flux, in place of half the summed |flux|
     sources : what enters the volume otherwise
+    about : the point that angular momentum of a plane run counts from
 
     Raises SurfaceError for a surface outside the domain, FieldError or
     SetupError for a law that was asked for and cannot be evaluated.
     """
+    chosen = choose_laws(flow, laws)
     placed = surface.resolve(flow.mesh)
-    overlay = lay_over(flow.mesh, placed)
-    chosen, hints = _choose_laws(flow, laws)
-    volume = SampledVolume(flow, placed, overlay, chosen)
+    volume = SampledVolume(flow, placed, lay_over(flow.mesh, placed), chosen, about=about)
+    return ledger_of(volume, chosen, tolerance, scale, sources, strict=laws is not None)
+
+
+def ledger_of(
+    volume: SampledVolume,
+    laws: Sequence[Law],
+    tolerance: Mapping[str, float] | None = None,
+    scale: Mapping[str, float] | None = None,
+    sources: Sequence[Source] = (),
+    *,
+    strict: bool = True,
+) -> Ledger:
+    """The ledger of a sampled volume; ``strict``: a law that cannot be evaluated is an error, not a hint."""
+    placed, overlay, flow = volume.surface, volume.overlay, volume.flow
     rows: list[Row] = []
-    for law in chosen:
+    hints: list[Hint] = []
+    for law in laws:
         try:
             rows += rows_of(law, volume, dict(tolerance or {}), dict(scale or {}), sources)
         except MissingData as missing:
-            if laws is not None:
+            if strict:
                 raise FieldError(
                     f"the {law.name} law cannot be evaluated: {missing.what}", mend=missing.mend
                 ) from None
@@ -59,7 +75,7 @@ def balance(
             "no law can be evaluated with these data",
             where="; ".join(hint.message for hint in hints if hint.code == "law-left-out"),
         )
-    hints += volume.hints(chosen)
+    hints += volume.hints(laws)
     return Ledger(
         name=placed.name or placed.kind,
         kind=placed.kind,
@@ -76,17 +92,19 @@ def balance(
 def balance_all(
     flow: Flow,
     surfaces: Sequence[ControlSurface] | None = None,
-    laws: Iterable[str] | None = None,
+    laws: Iterable[str | Law] | None = None,
     *,
     tolerance: Mapping[str, float] | None = None,
     scale: Mapping[str, float] | None = None,
     sources: Sequence[Source] = (),
+    about: tuple[float, float] = (0.0, 0.0),
 ) -> Result:
     """Ledgers of several control surfaces; by default the whole domain and one around each body."""
     chosen = list(surfaces) if surfaces else default_surfaces(flow)
     names = list(laws) if laws is not None else None
     ledgers = [
-        balance(flow, surface, names, tolerance=tolerance, scale=scale, sources=sources) for surface in chosen
+        balance(flow, surface, names, tolerance=tolerance, scale=scale, sources=sources, about=about)
+        for surface in chosen
     ]
     hints = dict.fromkeys([*flow.hints, *(hint for ledger in ledgers for hint in ledger.hints)])
     return Result(case_dict(flow), tuple(ledgers), tuple(hints))
@@ -103,16 +121,26 @@ def default_surfaces(flow: Flow) -> list[ControlSurface]:
     return out
 
 
-def _choose_laws(flow: Flow, names: Iterable[str] | None) -> tuple[list[Law], list[Hint]]:
+def choose_laws(flow: Flow, names: Iterable[str | Law] | None) -> list[Law]:
+    """Laws by their names; for None all that the kind of fluid and its fields suggest.
+
+    That leaves out laws on request. Scalars that the user named are among them,
+    and angular momentum where an axisymmetric run swirls: there no other law
+    sees the swirl.
+    """
     if names is not None:
-        chosen = [find_law(name) for name in dict.fromkeys(names)]
+        chosen = [find_law(law) if isinstance(law, str) else law for law in dict.fromkeys(names)]
         if not chosen:
             raise SetupError("no law is asked for", mend=f"Laws: {', '.join(law_names())}.")
-        return chosen, []
+        return chosen
     skip = {"heat", "kinetic-energy"} if flow.fluid.ideal_gas else {"total-energy"}
     if "temperature" not in flow.fields:
         skip.add("heat")
-    return [find_law(name) for name in law_names() if name not in skip], []
+    swirls = flow.case.axis is not None and flow.out_of_plane
+    wanted = {"angular-momentum"} if swirls else set()
+    laws = [find_law(name) for name in law_names() if name not in skip]
+    scalars = [find_law(role) for role in flow.fields if role.startswith("scalar:")]
+    return [law for law in laws if not law.on_request or law.name in wanted] + scalars
 
 
 def check_tolerance(tolerance: Mapping[str, float]) -> None:

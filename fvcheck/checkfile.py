@@ -69,7 +69,7 @@ def _check_laws(check: CheckFile, laws: Collection[str]) -> None:
     named += [(f"[[source]] {number}", source.law) for number, source in enumerate(check.source, start=1)]
     named += [(f"[[expect]] {n}", expect.law) for n, expect in enumerate(check.expect, start=1) if expect.law]
     for place, law in named:
-        if law not in laws:
+        if law not in laws and not law.startswith("scalar:"):
             raise SetupError(
                 f"There is no law {law!r}",
                 where=f"{check.path}, {place}",

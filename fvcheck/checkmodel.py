@@ -50,6 +50,8 @@ class Case(Table):
     symmetry: Literal["planar", "axisymmetric"] = Field(
         default="planar", description='"planar" or "axisymmetric"'
     )
+    axis: Literal["auto", "x", "y"] = Field(default="auto", description='"auto", "x" or "y"')
+    about: Pair = Field(default=(0.0, 0.0), description="a list of two numbers")
     depth: Positive | None = Field(default=None, description=POSITIVE)
     step: Annotated[int, Field(ge=0)] | Literal["last", "all"] = Field(
         default="last", description='a step from 0 on, "last" or "all"'
@@ -75,6 +77,10 @@ class FluidTable(Table):
     )
     viscous_heating: bool = Field(default=False, description="true or false")
     gravity: Pair = Field(default=(0.0, 0.0), description="a list of two numbers")
+    diffusivity: dict[str, float] = Field(default={}, description="names of scalars with their diffusivity")
+    turbulent_prandtl: Positive = Field(default=0.85, description=POSITIVE)
+    frame_rate: float = Field(default=0.0, description=NUMBER)
+    frame_centre: Pair = Field(default=(0.0, 0.0), description="a list of two numbers")
 
 
 class Patches(Table):
@@ -84,6 +90,18 @@ class Patches(Table):
     moving_wall: dict[str, Pair] = Field(
         default={}, description="patch names with their velocity, { NAME = [VX, VY] }"
     )
+
+
+class LawEntry(Table):
+    """[[law]]: a transported scalar; its law is called ``scalar:NAME``."""
+
+    name: str = Field(min_length=1, description="a name for the scalar")
+    field: str = Field(description="the name of an array, per mass of fluid")
+    diffusivity: Annotated[float, Field(ge=0)] | None = Field(
+        default=None, description="a number, zero or more"
+    )
+    source: str | None = Field(default=None, description="the name of an array, per volume")
+    tolerance_percent: Percent | None = Field(default=None, description=PERCENT)
 
 
 class SurfaceEntry(Table):
@@ -241,6 +259,7 @@ class CheckFile(Table):
     )
     patches: Patches = Field(default=Patches(), description="a table")
     surface: tuple[SurfaceEntry, ...] = Field(default=(), description="[[surface]] tables", strict=False)
+    law: tuple[LawEntry, ...] = Field(default=(), description="[[law]] tables", strict=False)
     source: tuple[SourceEntry, ...] = Field(default=(), description="[[source]] tables", strict=False)
     body: tuple[BodyEntry, ...] = Field(default=(), description="[[body]] tables", strict=False)
     tolerance: dict[str, Percent] = Field(default={}, description=PERCENT)
@@ -266,6 +285,23 @@ class CheckFile(Table):
     def folder(self) -> Path:
         """Where relative paths start."""
         return self._path.parent
+
+    def law_fields(self) -> dict[str, str]:
+        """Role -> array of the scalars in [[law]], and of their sources."""
+        out = {f"scalar:{law.name}": law.field for law in self.law}
+        return out | {f"scalar_source:{law.name}": law.source for law in self.law if law.source}
+
+    def law_diffusivities(self) -> dict[str, float]:
+        """Scalar -> diffusivity of [[law]], where told."""
+        return {law.name: law.diffusivity for law in self.law if law.diffusivity is not None}
+
+    def law_tolerances(self) -> dict[str, float]:
+        """Law -> percent of [[law]], where told."""
+        return {
+            f"scalar:{law.name}": law.tolerance_percent
+            for law in self.law
+            if law.tolerance_percent is not None
+        }
 
     def case_files(self) -> tuple[Path, ...]:
         """Exports named by [case] file, patterns expanded, run_2 before run_10.

@@ -12,7 +12,7 @@ from fvcheck.laws import Law
 from fvcheck.ledger import Row
 from fvcheck.sampling.sampler import DEGREES
 from fvcheck.sources import Source, share_inside
-from fvcheck.verdict import CLOSED, judge
+from fvcheck.verdict import CLOSED, judge, judge_production
 from fvcheck.volume import BEST, Contributions, SampledVolume
 
 Array = np.ndarray
@@ -42,7 +42,7 @@ def rows_of(
     felt = best.total - best.level
     size = scale.get(law.name, 0.5 * float(np.hypot.reduce(felt, axis=1).sum())) if closed else None
     told = [
-        (share_inside(source, volume.surface, volume.flow.mesh), source)
+        (share_inside(source, volume.surface, volume.flow.mesh, volume.axis), source)
         for source in sources
         if source.law == law.name and closed
     ]
@@ -96,11 +96,11 @@ def _row(
     flux, boundary = float(total[drawn].sum()), float(total[~drawn].sum())
     source = told + (0.0 if terms.source is None else float(terms.source[:, c].sum()))
     storage = 0.0 if terms.storage is None else float(terms.storage[:, c].sum())
-    datum = {"heat": volume.datum.temperature, "kinetic-energy": volume.datum.pressure}.get(law.name)
+    datum = volume.level(law)
     return Row(
         law=law.name,
         component=component,
-        unit=law.unit if volume.flow.case.depth is None else law.unit.removesuffix("/m"),
+        unit=law.unit if volume.flow.case.per_metre else law.unit.removesuffix("/m"),
         parts=parts,
         inflow=float(-np.minimum(total[drawn], 0.0).sum()),
         outflow=float(np.maximum(total[drawn], 0.0).sum()),
@@ -119,6 +119,7 @@ def _row(
         tolerance_percent=None,
         verdict=None,
         datum=datum if closed else None,
+        inequality=law.inequality,
     )
 
 
@@ -137,6 +138,8 @@ def _close(
     nothing = size <= floor
     if nothing and abs(row.imbalance) <= floor + band.rounding:
         verdict = CLOSED
+    elif law.inequality:
+        verdict = judge_production(row.imbalance, band.resolution)
     else:
         verdict = judge(row.imbalance, band.sampling, band.resolution, 0.01 * percent * size)
     return replace(

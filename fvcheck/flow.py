@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping, Sequence
+from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass, replace
 from functools import cached_property
 from pathlib import Path
@@ -18,6 +18,7 @@ from fvcheck.hints import Hint
 from fvcheck.mesh.assemble import Assembly, assemble
 from fvcheck.mesh.mesh import Mesh
 from fvcheck.mesh.piece import Export, Piece
+from fvcheck.revolution import axis_of
 from fvcheck.rim import line_cells, with_rim
 
 Array = np.ndarray
@@ -27,7 +28,12 @@ FieldNames = Mapping[str, str | Sequence[str]]
 
 @dataclass(frozen=True)
 class Case:
-    """Where a flow comes from and how it is read; ``depth`` None means results per metre."""
+    """Where a flow comes from and how it is read.
+
+    depth : None for results per metre
+    axis : of an axisymmetric run, the coordinate (0, 1) along the axis; results
+        are then for the whole turn
+    """
 
     file: str
     format: str
@@ -38,6 +44,12 @@ class Case:
     symmetry: str = "planar"
     depth: float | None = None
     cell_values: CellValues = "average"
+    axis: int | None = None
+
+    @property
+    def per_metre(self) -> bool:
+        """Whether results are per metre of depth."""
+        return self.depth is None and self.axis is None
 
 
 @dataclass(frozen=True, eq=False)
@@ -164,7 +176,9 @@ def flow_of_export(
     cell_values: CellValues = "average",
     walls: Mapping[str, tuple[float, float]] | Sequence[str] | None = None,
     symmetry: str = "planar",
+    axis: str = "auto",
     depth: float | None = None,
+    assembler: Callable[..., Assembly] = assemble,
 ) -> Flow:
     """One step of an opened export as a flow.
 
@@ -175,7 +189,11 @@ def flow_of_export(
     step : "last", or the number of a stored state (negative from the end)
     cell_values : a cell value is the "average" over the cell or its value at the "centroid"
     walls : no-slip patches, with a velocity in the plane where they move
-    depth : out-of-plane extent that results are multiplied by [m]
+    symmetry : "planar" or "axisymmetric"; a wedge is recognised as the latter
+    axis : of an axisymmetric run, the coordinate along it: "x", "y" or "auto"
+        (see `fvcheck.revolution.axis_of`)
+    depth : out-of-plane extent of a plane run that results are multiplied by [m]
+    assembler : how pieces become a mesh; a series gives one that keeps the last mesh
     """
     fluid = fluid or Fluid()
     number = step_number(export, step)
@@ -183,11 +201,11 @@ def flow_of_export(
         raise SetupError(f"unknown cell values {cell_values!r}", mend="Use average or centroid.")
     if depth is not None and not depth > 0:
         raise SetupError(f"depth is {depth}", mend="Give a positive depth.")
-    if symmetry != "planar":
-        raise SetupError(f"{symmetry} runs cannot be balanced yet", mend="Only planar runs are handled.")
     pieces = export.load(number)
     points_only = not any(piece.cell_data for piece in pieces)
-    assembly = assemble(pieces, plane=plane, keep_centres=points_only)
+    assembly = assembler(pieces, plane=plane, keep_centres=points_only)
+    along, axis_hints = axis_of(symmetry, axis, assembly)
+    _check_turn(along, depth, fluid)
     told = dict(fields or {}) | _named_properties(fluid, fields or {})
     chosen, field_hints = _read_fields(pieces, assembly, told)
     fluid, chosen, hints = _settle(fluid, chosen)
@@ -198,9 +216,10 @@ def flow_of_export(
         steps=export.steps,
         time=export.times[number] if export.times else None,
         plane=assembly.plane,
-        symmetry=symmetry,
+        symmetry="planar" if along is None else "axisymmetric",
         depth=depth,
         cell_values=cell_values,
+        axis=along,
     )
     flow = Flow(
         mesh=assembly.mesh,
@@ -208,7 +227,7 @@ def flow_of_export(
         fluid=fluid,
         case=case,
         walls=_walls(assembly.mesh, walls),
-        hints=(*export.hints, *assembly.hints, *field_hints, *hints),
+        hints=(*export.hints, *assembly.hints, *axis_hints, *field_hints, *hints),
         assembly=assembly,
     )
     if flow.out_of_plane:
@@ -219,6 +238,21 @@ def flow_of_export(
         )
         flow = replace(flow, hints=(*flow.hints, note))
     return flow
+
+
+def _check_turn(axis: int | None, depth: float | None, fluid: Fluid) -> None:
+    """SetupError for what an axisymmetric run cannot have."""
+    if axis is None:
+        return
+    for wrong, what in (
+        (depth is not None, "a depth"),
+        (fluid.frame_rate != 0.0, "a rotating frame"),
+        (fluid.gravity[1 - axis] != 0.0, "gravity across the axis"),
+    ):
+        if wrong:
+            raise SetupError(
+                f"an axisymmetric run cannot have {what}", mend="Leave it out, or set the symmetry to planar."
+            )
 
 
 def step_number(export: Export, step: int | str) -> int:
@@ -315,6 +349,8 @@ def _in_plane(role: str, field: Field, assembly: Assembly) -> Array:
             )
         # An array of two components can only mean the two of the plane.
         return field.values
+    if field.location == "point" and assembly.point_axes is not None:
+        return _turn(field.values, assembly.point_axes)
     return _turn(field.values, assembly.axes)
 
 

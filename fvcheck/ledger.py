@@ -23,8 +23,10 @@ class Row:
     boundary : net over the enclosed domain boundary; ``patches`` splits it
     imbalance : storage + flux + boundary − source
     scale : half the summed |flux| around the volume
-    datum : level of pressure or temperature that fluxes are counted from, where one is
+    datum : level of pressure, temperature, … that fluxes are counted from, where one is
     linear_imbalance : what plain linear interpolation would have given
+    inequality : the imbalance is a production; only one below zero can be open
+    time_band : part of the sampling band that comes from the steps in time
     """
 
     law: str
@@ -48,6 +50,8 @@ class Row:
     tolerance_percent: float | None
     verdict: str | None
     datum: float | None = None
+    inequality: bool = False
+    time_band: float = 0.0
 
     @property
     def label(self) -> str:
@@ -186,6 +190,7 @@ def case_dict(flow: Flow) -> dict[str, Any]:
         "location": flow.location,
         "plane": case.plane,
         "symmetry": case.symmetry,
+        "axis": None if case.axis is None else "xy"[case.axis],
         "depth": case.depth,
         "fields": {role: field.name for role, field in flow.fields.items()},
         "patches": list(flow.mesh.boundary.names),

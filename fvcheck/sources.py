@@ -37,12 +37,22 @@ class Source:
         return self.rate["xy".index(str(component))] if isinstance(self.rate, tuple) else self.rate
 
 
-def share_inside(source: Source, surface: ControlSurface, mesh: Mesh) -> float:
-    """Share of a source's shape that lies inside a resolved control surface, 0 to 1."""
+def share_inside(source: Source, surface: ControlSurface, mesh: Mesh, axis: int | None = None) -> float:
+    """Share of a source's shape that lies inside a resolved control surface, 0 to 1.
+
+    axis : coordinate along the axis of an axisymmetric run; shares are then of the body of revolution
+    """
     if surface.kind == "domain":
         return 1.0
     inside, shape = outline(surface), outline(source.shape.resolve(mesh))
-    return float(inside.intersection(shape).area / shape.area)
+    return _size(inside.intersection(shape), axis) / _size(shape, axis)
+
+
+def _size(shape: Any, axis: int | None) -> float:
+    """Area, or what it sweeps around the axis but for 2π (second theorem of Pappus)."""
+    if axis is None or shape.area == 0.0:
+        return float(shape.area)
+    return float(shape.area * (shape.centroid.y if axis == 0 else shape.centroid.x))
 
 
 def outline(surface: ControlSurface) -> Any:

@@ -29,6 +29,11 @@ def judge(imbalance: float, sampling: float, resolution: float, tolerance: float
     return MESH_LIMITED if size <= resolution else OPEN
 
 
+def judge_production(amount: float, resolution: float) -> str:
+    """Verdict on what may only be made: open where less than nothing is, beyond what the mesh explains."""
+    return OPEN if amount < -resolution else CLOSED
+
+
 def worst(verdicts: Iterable[str | None]) -> str | None:
     """The worst of them; None when none was reached."""
     reached = [v for v in verdicts if v is not None]

@@ -2,11 +2,13 @@
 
 from __future__ import annotations
 
+import copy
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 
 import numpy as np
 
+from fvcheck.errors import SurfaceError
 from fvcheck.flow import Flow
 from fvcheck.hints import Hint
 from fvcheck.laws import Law, MissingData, State
@@ -50,24 +52,72 @@ class Contributions:
 class SampledVolume:
     """Samples of a flow on one overlay, made when first asked for."""
 
-    def __init__(self, flow: Flow, surface: ControlSurface, overlay: Overlay, laws: Sequence[Law]) -> None:
-        self.flow, self.surface, self.overlay = flow, surface, overlay
+    def __init__(
+        self,
+        flow: Flow,
+        surface: ControlSurface,
+        overlay: Overlay,
+        laws: Sequence[Law],
+        *,
+        unsteady: bool = False,
+        point_velocity: Array | None = None,
+        about: tuple[float, float] = (0.0, 0.0),
+    ) -> None:
+        """``unsteady``: contents are wanted, and what is not drawn moves with the mesh.
+
+        point_velocity : (n, 2) of the mesh's points, None for a mesh at rest
+        about : the point that angular momentum counts from
+        """
+        self.flow, self.surface, self.overlay, self.about = flow, surface, overlay, about
+        self.axis = flow.case.axis
+        self._levels = {law.datum for law in laws}
+        _check_motion(surface, self.axis)
+        self.unsteady = unsteady and overlay.closed
         self.has_rates = any(role.startswith("rate:") for role in flow.fields)
         self.depth = flow.case.depth or 1.0
         self.places, weights = along(overlay.start, overlay.end)
         self.triangle = np.repeat(overlay.triangle, PER_PIECE, axis=0)
-        self.normals = (overlay.normals[:, None, :] * weights[None, :, None]).reshape(-1, 2) * self.depth
+        self.normals = (overlay.normals[:, None, :] * weights[None, :, None]).reshape(-1, 2)
+        self.normals *= self._extent(self.places)[:, None]
         self.drawn = np.repeat(overlay.patch == DRAWN, PER_PIECE)
         self.patch = np.repeat(overlay.patch, PER_PIECE)
         # One group per cell; what lies on the domain boundary apart from what crosses the fluid.
         key = 2 * np.repeat(overlay.cell, PER_PIECE) + ~self.drawn
         self._groups, self.line_group = np.unique(key, return_inverse=True)
-        self.surface_velocity = surface.motion.at(self.places) if surface.motion is not None else None
+        self.surface_velocity = self._border_velocity(unsteady, point_velocity)
         self._set_up_area(overlay.closed and any(self.needs_area(law) for law in laws))
         centres = np.unique(self.triangle)
         if self.area_triangle is not None:
             centres = np.unique(np.concatenate([centres, self.area_triangle.ravel()]))
-        self.probe = compile_probe(flow, centres)
+        self._take(flow, compile_probe(flow, centres))
+        self._centres = centres
+
+    def with_flow(self, flow: Flow) -> SampledVolume:
+        """The same volume and fits with the data of another flow over the same mesh."""
+        if flow.mesh is not self.flow.mesh:
+            raise ValueError("the flow is on another mesh")
+        other = copy.copy(self)
+        other._take(flow, self.probe.refilled(flow) or compile_probe(flow, self._centres))
+        return other
+
+    def _border_velocity(self, unsteady: bool, point_velocity: Array | None) -> Array | None:
+        """(q, 2) of the border at the line places; None where all of it is at rest."""
+        motion = self.surface.motion
+        if not unsteady:
+            return None if motion is None else motion.at(self.places)
+        if motion is None and point_velocity is None:
+            return None
+        out = np.zeros_like(self.places) if motion is None else motion.at(self.places)
+        out[~self.drawn] = 0.0
+        if point_velocity is not None:
+            corners = self.triangle[~self.drawn]
+            share = _barycentric(self.flow.mesh.points[corners], self.places[~self.drawn])
+            out[~self.drawn] = np.einsum("qk,qki->qi", share, point_velocity[corners])
+        return out
+
+    def _take(self, flow: Flow, probe: Probe) -> None:
+        """Sample a flow."""
+        self.flow, self.probe = flow, probe
         self.line = self.probe.samples(self.triangle, self.places, self.line_group)
         self.area = (
             None
@@ -75,7 +125,7 @@ class SampledVolume:
             else self.probe.samples(self.area_triangle, self.area_places, self.area_group)
         )
         self.datum = Datum()
-        if overlay.closed:
+        if self.overlay.closed:
             self.datum = self._find_datum()
         self._states: dict[tuple[str, int], State] = {}
         self._shaken: list[State] | None = None
@@ -85,17 +135,26 @@ class SampledVolume:
         if self.has_rates:
             return True
         try:
-            law.source(self._bare_state())
+            constants = [law.source(self._bare_state())]
+            if self.unsteady:
+                constants.append(law.density(self._bare_state()))
         except (MissingData, KeyError):
             return True
-        return False
+        there = [values for values in constants if values is not None]
+        # What depends on the place comes out as NaN; around an axis so does every volume.
+        return any(self.axis is not None or bool(np.isnan(values).any()) for values in there)
 
     def _bare_state(self) -> State:
         """One place, no fields: what can be had from it is the same everywhere."""
-        known = {role: field for role, field in self.flow.fields.items() if role.endswith("_source")}
-        if known or "body_force" in self.flow.fields:
+        if any("source" in role or role == "body_force" for role in self.flow.fields):
             raise MissingData("constant sources", "")
-        return State(self.flow.fluid, {}, np.full((1, 2), np.nan))
+        return self._state({}, np.full((1, 2), np.nan), Datum())
+
+    def _extent(self, places: Array) -> Array:
+        """(q,) out-of-plane extent at places: the depth, or once around the axis."""
+        if self.axis is None:
+            return np.full(len(places), self.depth)
+        return 2.0 * np.pi * np.maximum(places[:, 1 - self.axis], 0.0)
 
     def _set_up_area(self, needed: bool) -> None:
         self.area_triangle: Array | None = None
@@ -111,23 +170,36 @@ class SampledVolume:
         self.area_triangle = np.repeat(
             np.concatenate([triangles, overlay.corner_triangle]), PER_TRIANGLE, axis=0
         )
-        self.area_weights = (sizes[:, None] * weights).ravel() * self.depth
+        self.area_weights = (sizes[:, None] * weights).ravel() * self._extent(self.area_places)
         cells = np.concatenate([np.repeat(overlay.whole, np.diff(first)), overlay.corner_cell])
         self.area_cells, self.area_group = np.unique(np.repeat(cells, PER_TRIANGLE), return_inverse=True)
 
     def _find_datum(self) -> Datum:
         state = self._line_state_of(self.line.best)
         weights = np.hypot(*self.normals.T)
-        levels = {}
-        for name in ("pressure", "temperature"):
+        levels: dict[str, float] = {}
+        for name in ("pressure", "temperature", *(["entropy"] if "entropy" in self._levels else [])):
             try:
                 levels[name] = float(np.average(getattr(state, name), weights=weights))
             except (MissingData, KeyError):
                 continue
-        return Datum(**levels)
+        scalars = {
+            role.removeprefix("scalar:"): float(np.average(sampled.value, weights=weights))
+            for role, sampled in state.fields.items()
+            if role.startswith("scalar:")
+        }
+        return Datum(**levels, scalars=scalars)
 
-    def _state(self, fields: Mapping[str, Sampled], places: Array) -> State:
-        return State(self.flow.fluid, fields, places, self.datum)
+    def level(self, law: Law) -> float | None:
+        """What the law counts from on this border; None for a law that counts from zero."""
+        if law.datum is None:
+            return None
+        _, scalar, name = law.datum.partition("scalar:")
+        return self.datum.scalars.get(name) if scalar else float(getattr(self.datum, law.datum))
+
+    def _state(self, fields: Mapping[str, Sampled], places: Array, datum: Datum | None = None) -> State:
+        datum = self.datum if datum is None else datum
+        return State(self.flow.fluid, fields, places, datum, self.about, self.axis)
 
     def line_state(self, degree: int) -> State:
         """State at the line quadrature points; degree `BEST` is what the data support."""
@@ -217,6 +289,14 @@ class SampledVolume:
             storage = np.concatenate([storage, self.per_line_cell(border)])
         return storage
 
+    def content(self, law: Law, degree: int, datum: Datum) -> tuple[Array, Array]:
+        """Mesh cells (k,) and what the law stores in the part of them inside, (k, c), from a given datum."""
+        if self.needs_area(law):
+            state = self._state(self.area_state(degree).fields, self.area_places, datum)
+            return self.area_cells, self._per_cell(law.density(state) * self.area_weights[:, None])
+        area = self.overlay.area(self.flow.mesh) * self.depth
+        return np.full(1, -1), law.density(self._bare_state()) * area
+
     def _per_cell(self, values: Array) -> Array:
         return _sum_groups(self.area_group, len(self.area_cells), values)
 
@@ -232,7 +312,7 @@ class SampledVolume:
 
     def reaching(self, law: Law) -> Array:
         """(groups,) bool: boundary pieces where a field the law leans on must be extrapolated from cells."""
-        roles = ("velocity", "temperature") if "conductive" in law.fluxes else ("velocity",)
+        roles = ["velocity", *(["temperature"] if "conductive" in law.fluxes else []), str(law.datum)]
         out = np.zeros(len(self._groups), bool)
         on_boundary = self._groups % 2 == 1
         for role in roles:
@@ -250,15 +330,25 @@ class SampledVolume:
         return {str(degree): float(length[used == degree].sum() / length.sum()) for degree in DEGREES}
 
     def hints(self, laws: Sequence[Law]) -> list[Hint]:
-        """Remarks on what the laws left out."""
+        """Remarks on what the laws left out, and on data that support less than the highest degree."""
         out = []
+        low = 1.0 - self.degree_shares()[str(DEGREES[-1])]
+        if low > 0.0:
+            out.append(
+                Hint(
+                    "degree-fell",
+                    f"{self.surface.name or self.surface.kind}: on {100 * low:.2g} % of its length the data "
+                    "jump, and plain linear sampling within their range is used there",
+                )
+            )
         state = self.line_state(BEST)
         if state.viscosity is None and any("viscous" in law.fluxes for law in laws):
             out.append(Hint("inviscid", "no viscosity is known: momentum and energy are taken as inviscid"))
         conducting = any("conductive" in law.fluxes for law in laws)
         if conducting and state.conductivity is None and "temperature" in state.fields:
             out.append(Hint("no-conduction", "no conductivity is known: heat is carried by the flow only"))
-        if self.surface_velocity is not None and not self.has_rates and self.overlay.closed:
+        told = self.has_rates or self.unsteady
+        if self.surface_velocity is not None and not told and self.overlay.closed:
             out.append(
                 Hint(
                     "steady-in-moving-frame",
@@ -266,6 +356,29 @@ class SampledVolume:
                 )
             )
         return out
+
+
+def _check_motion(surface: ControlSurface, axis: int | None) -> None:
+    """SurfaceError for a motion that an axisymmetric surface cannot make."""
+    motion = surface.motion
+    if axis is not None and motion is not None and (motion.omega or motion.velocity[1 - axis]):
+        raise SurfaceError(
+            "a surface in an axisymmetric run can move along the axis only",
+            where=surface.text,
+            mend="Leave the spin and the radial velocity out.",
+        )
+
+
+def _barycentric(corners: Array, places: Array) -> Array:
+    """(q, 3) weights of the corners (q, 3, 2) of triangles at places (q, 2)."""
+    a, b, c = corners[:, 0], corners[:, 1], corners[:, 2]
+
+    def cross(u: Array, v: Array) -> Array:
+        return u[:, 0] * v[:, 1] - u[:, 1] * v[:, 0]
+
+    twice = cross(b - a, c - a)
+    second, third = cross(places - a, c - a) / twice, cross(b - a, places - a) / twice
+    return np.column_stack([1.0 - second - third, second, third])
 
 
 def _sum_groups(group: Array, count: int, values: Array) -> Array:

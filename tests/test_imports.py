@@ -19,7 +19,7 @@ ROWS = [
     ["kernels"],
     ["mesh"],
     ["formats"],
-    ["flow", "rim", "fields", "fieldnames", "arrays", "fluid"],
+    ["flow", "revolution", "rim", "fields", "fieldnames", "arrays", "fluid"],
     ["surfaces", "overlay"],
     ["sampling"],
     ["laws"],

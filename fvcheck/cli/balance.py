@@ -46,6 +46,7 @@ def command(
             tolerance=settings.tolerance,
             scale=settings.scale,
             sources=settings.sources,
+            about=settings.about,
         )
         for number in numbers
     ]

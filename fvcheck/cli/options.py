@@ -75,6 +75,9 @@ class Reading:
     )
     step: Annotated[str | None, _read(metavar="INDEX|last|all", text="Stored state; default last.")] = None
     axisymmetric: Annotated[bool, _read("--axisymmetric", text="The run is axisymmetric.")] = False
+    axis: Annotated[
+        str | None, _read(metavar="auto|x|y", text="Its axis; default x, or where radii are not negative.")
+    ] = None
     depth: Annotated[str | None, _read(metavar="D", text="Depth; without it results are per metre.")] = None
 
 
@@ -94,6 +97,16 @@ class FluidOptions:
     conductivity: Annotated[str | None, _fluid("VALUE|ARRAY", "Thermal conductivity.")] = None
     expansion: Annotated[str | None, _fluid("BETA", "Thermal expansion, for buoyancy.")] = None
     reference_temperature: Annotated[str | None, _fluid("T0", "Where buoyancy vanishes.")] = None
+    diffusivity: Annotated[
+        list[str] | None, _fluid("NAME=D", "Of a scalar that --field scalar:NAME=… names. Repeatable.")
+    ] = None
+    turbulent_prandtl: Annotated[
+        str | None, _fluid("VALUE", "By which an eddy viscosity mixes heat and scalars; default 0.85.")
+    ] = None
+    frame_rate: Annotated[
+        str | None, _fluid("OMEGA", "Velocities are seen in a frame that turns at this rate, rad/s.")
+    ] = None
+    frame_centre: Annotated[str | None, _fluid("X,Y", "What the frame turns about; default 0,0.")] = None
 
 
 @dataclass(frozen=True)
@@ -102,6 +115,9 @@ class Limits:
 
     law: Annotated[
         list[str] | None, _check(metavar="LAW,…", text="Laws; default every law that the data allow.")
+    ] = None
+    about: Annotated[
+        str | None, _check(metavar="X,Y", text="Point of the angular-momentum law; default 0,0.")
     ] = None
     tolerance: Annotated[
         list[str] | None, _check(metavar="LAW=PERCENT", text="Of the law's scale. Repeatable.")

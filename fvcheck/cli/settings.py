@@ -43,6 +43,7 @@ class Settings:
     tolerance: dict[str, float]
     scale: dict[str, float]
     sources: tuple[Source, ...]
+    about: tuple[float, float]
 
 
 def settle(
@@ -58,7 +59,9 @@ def settle(
     limits = limits or Limits()
     check = _load(reading.check)
     laws = words(limits.law)
-    tolerance = check.tolerance | numbers(limits.tolerance, "--tolerance", "LAW=PERCENT")
+    tolerance = (
+        check.law_tolerances() | check.tolerance | numbers(limits.tolerance, "--tolerance", "LAW=PERCENT")
+    )
     scale = numbers(limits.scale, "--scale", "LAW=VALUE")
     _check_laws(laws, tolerance, scale)
     drawn = parse_all(surfaces) if surfaces else check.control_surfaces()
@@ -71,6 +74,7 @@ def settle(
         tolerance=tolerance,
         scale=scale,
         sources=_sources(check),
+        about=check.case.about if limits.about is None else vector(limits.about, "--about", "--about X,Y"),
     )
 
 
@@ -117,19 +121,24 @@ def _reading(check: CheckFile, reading: Reading, options: FluidOptions) -> dict[
     from fvcheck.fluid import Fluid
 
     told = _fluid_told(options)
-    fields_told: dict[str, Any] = dict(check.fields)
+    fields_told: dict[str, Any] = check.law_fields() | dict(check.fields)
     for role in _PROPERTIES:
         if role in told:
             fields_told.pop(role, None)  # the option is of the same meaning, and wins
     fields_told |= pairs(reading.field, "--field", "ROLE=ARRAY")
     case = check.case
+    properties = check.fluid.model_dump(exclude_unset=True) | told
+    properties["diffusivity"] = (
+        check.law_diffusivities() | check.fluid.diffusivity | told.get("diffusivity", {})
+    )
     return {
-        "fluid": Fluid(**(check.fluid.model_dump(exclude_unset=True) | told)),
+        "fluid": Fluid(**properties),
         "fields": fields_told,
         "plane": reading.plane or case.plane,
         "cell_values": reading.cell_values or case.cell_values,
         "walls": _walls(check, reading.wall),
         "symmetry": "axisymmetric" if reading.axisymmetric else case.symmetry,
+        "axis": reading.axis or case.axis,
         "depth": case.depth if reading.depth is None else number(reading.depth, "--depth", "--depth METRES"),
     }
 
@@ -141,8 +150,10 @@ def _fluid_told(options: FluidOptions) -> dict[str, Any]:
         option = f"--{name.replace('_', '-')}"
         if name in _PROPERTIES:
             told[name] = property_value(text)
-        elif name == "gravity":
-            told[name] = vector(text, option, "--gravity GX,GY")
+        elif name in ("gravity", "frame_centre"):
+            told[name] = vector(text, option, f"{option} {'GX,GY' if name == 'gravity' else 'X,Y'}")
+        elif name == "diffusivity":
+            told[name] = numbers(text, option, "NAME=VALUE")
         elif name != "pressure_kind":
             told[name] = number(text, option, f"{option} NUMBER")
     return told
