@@ -177,4 +177,10 @@ PAGES: dict[str, Page] = {
         "so wall heat and friction are far surer.",
         "Nothing, if they are the boundary values of the run. If they are not, export without line cells.",
     ),
+    "degree-fell": Page(
+        "Somewhere on the surface the data jump: a shock, a contact, a layer thinner than the cells.",
+        "A polynomial across a jump overshoots. There, values are interpolated linearly within the range of the "
+        "data around, and the band takes the larger of the two steps between degrees.",
+        "Nothing for a shock. For a thin layer, refine there, or draw the surface where the flow is smooth.",
+    ),
 }
