@@ -23,7 +23,7 @@ def ports(flow: Flow, surface: ControlSurface, overlay: Overlay, state: State) -
     state : at the line quadrature points of the overlay
     """
     n, weight = _unit(overlay)
-    depth = flow.case.depth or 1.0
+    weight = weight * (flow.case.depth or 1.0 if state.axis is None else 2.0 * np.pi * state.radius)
     try:
         through = np.einsum("qi,qi->q", state.velocity[:, :2], n)
     except (MissingData, KeyError):
@@ -32,7 +32,7 @@ def ports(flow: Flow, surface: ControlSurface, overlay: Overlay, state: State) -
         name = surface.name or surface.kind
         everything = np.ones(len(weight), bool)
         patch = surface.target if surface.kind == "patch" else None
-        return (_port(patch, None if patch else name, everything, state, through, weight * depth),)
+        return (_port(patch, None if patch else name, everything, state, through, weight),)
     names = flow.mesh.boundary.names
     patch_of = np.repeat(overlay.patch, PER_PIECE)
     flows = {
@@ -41,7 +41,7 @@ def ports(flow: Flow, surface: ControlSurface, overlay: Overlay, state: State) -
     }
     busiest = max([*flows.values(), np.abs((through * weight)[patch_of < 0]).sum() / 2.0], default=0.0)
     return tuple(
-        _port(names[k], None, patch_of == k, state, through, weight * depth)
+        _port(names[k], None, patch_of == k, state, through, weight)
         for k, flow_k in flows.items()
         if flow_k > _LEAST_SHARE * busiest and names[k] not in flow.walls
     )

@@ -111,7 +111,7 @@ def nozzle(mach_before: float = 2.0, exit_area: float = 2.0) -> ExactFlow:
     """
     from scipy.optimize import brentq
 
-    p, rho, rise = jump_ratios(mach_before)
+    *_, rise = jump_ratios(mach_before)
     behind = np.sqrt((1 + 0.2 * mach_before**2) / (GAMMA * mach_before**2 - 0.2))
     lost = np.exp(-rise)  # p₀ ratio, as T₀ is constant
     # A/A* behind the shock is A/A_throat times the loss of stagnation pressure.

@@ -1,4 +1,4 @@
-"""Closed-form axisymmetric flows. The axis is x, the radius y; ``w`` is the swirl u_θ, right-handed about x."""
+"""Closed-form axisymmetric flows: the axis is x, the radius y, ``w`` the swirl, right-handed about x."""
 
 from __future__ import annotations
 
@@ -8,7 +8,7 @@ from exact.flow import ExactFlow, constant
 
 
 def hagen_poiseuille(radius: float = 1.0, gradient: float = 1.0, mu: float = 0.1) -> ExactFlow:
-    """Developed pipe flow: Q = πR⁴G/8μ, momentum factor 4/3, energy factor 2 (Hagen 1839; Poiseuille 1840)."""
+    """Developed pipe flow: Q = πR⁴G/8μ, momentum factor 4/3, energy factor 2 (Hagen; Poiseuille)."""
     return ExactFlow(
         name="hagen-poiseuille",
         domain=(0.0, 0.0, 3.0 * radius, radius),
