@@ -139,7 +139,9 @@ def test_a_reader_that_goes_away_is_no_error():
 
 
 def test_ctrl_c_ends_with_one_line():
-    code = "import fvcheck.balancing, time\nfrom fvcheck.cli import app\n"
+    # a shell that runs the tests in the background has its children ignore the signal
+    code = "import signal\nsignal.signal(signal.SIGINT, signal.default_int_handler)\n"
+    code += "import fvcheck.balancing, time\nfrom fvcheck.cli import app\n"
     code += "fvcheck.balancing.balance_all = lambda *_, **__: (print('here', flush=True), time.sleep(60))\n"
     code += f"raise SystemExit(app.run(['balance', {str(GOOD)!r}, '--density', '1']))"
     child = subprocess.Popen(
