@@ -14,6 +14,7 @@ from fvcheck.hints import Hint
 from fvcheck.laws import Law, MissingData, find_law, law_names
 from fvcheck.ledger import Ledger, Result, Row, case_dict
 from fvcheck.overlay.overlay import lay_over
+from fvcheck.plausible import field_hints, force_hints
 from fvcheck.sources import Source
 from fvcheck.surfaces import ControlSurface
 from fvcheck.volume import BEST, SampledVolume
@@ -75,7 +76,7 @@ def ledger_of(
             "no law can be evaluated with these data",
             where="; ".join(hint.message for hint in hints if hint.code == "law-left-out"),
         )
-    hints += volume.hints(laws)
+    hints += [*volume.hints(laws), *force_hints(volume, rows)]
     return Ledger(
         name=placed.name or placed.kind,
         kind=placed.kind,
@@ -106,7 +107,8 @@ def balance_all(
         balance(flow, surface, names, tolerance=tolerance, scale=scale, sources=sources, about=about)
         for surface in chosen
     ]
-    hints = dict.fromkeys([*flow.hints, *(hint for ledger in ledgers for hint in ledger.hints)])
+    found = (hint for ledger in ledgers for hint in ledger.hints)
+    hints = dict.fromkeys([*flow.hints, *field_hints(flow), *found])
     return Result(case_dict(flow), tuple(ledgers), tuple(hints))
 
 

@@ -170,6 +170,54 @@ PAGES: dict[str, Page] = {
         "moving frame.",
         "For a run that is unsteady there, give rates as fields: --field rate:velocity=NAME and so on.",
     ),
+    "wedge": Page(
+        "A 3D export is one cell thick between two planes that meet in an axis: a slice of an axisymmetric run.",
+        "Its points are turned onto the mid plane, velocities at points with them; coordinates are the axial "
+        "and the radial one. Fluxes are for the whole turn, not for the slice.",
+        "Draw surfaces in those coordinates; fvcheck inspect shows their ranges.",
+    ),
+    "axis-taken": Page(
+        "The mesh could turn about either coordinate axis, and one is taken.",
+        "Every flux carries the weight 2 pi r, so a wrong axis makes every number wrong.",
+        "If it is the other one: --axis y (or x).",
+    ),
+    "gas-law-misfit": Page(
+        "The export holds more fields of a gas than are needed, and they do not fit together.",
+        "Which of them a law uses then decides its numbers; a wrong gas constant or ratio of specific heats, "
+        "or a gauge pressure, shows up like this.",
+        "Compare --gas-constant and --gamma with the run's; pressure and temperature must be absolute.",
+    ),
+    "density-not-constant": Page(
+        "The density varies over the domain, while the fluid is taken as one of constant density.",
+        "Mass and momentum use the density as it is; heat leaves out what compression does.",
+        "For a gas: --gas-constant and --gamma. Nothing for a mixture of liquids.",
+    ),
+    "wall-with-throughflow": Page(
+        "A patch that is called a wall, by you or by its name, lets flow through.",
+        "As a no-slip wall its velocity is taken as known, which would hide that flow.",
+        "Compare with fvcheck inspect; leave the patch out of --wall if it is none.",
+    ),
+    "kinematic-pressure": Page(
+        "The momentum balance is open, and would close if the pressure were p/rho (or were not).",
+        "Many solvers of constant density export the pressure divided by the density.",
+        "--pressure-kind kinematic (or static), if that is what the run writes.",
+    ),
+    "reduced-pressure-likely": Page(
+        "The momentum balance is open by just the weight of the fluid.",
+        "Some solvers export the pressure without its hydrostatic part, p - rho g.x.",
+        "--pressure-kind reduced (or static), if that is what the run writes.",
+    ),
+    "viscosity-off-by-density": Page(
+        "The momentum balance is open, and would close with the viscosity times, or over, the density.",
+        "--viscosity is dynamic, in Pa s; many set-ups hold the kinematic one, in m2/s.",
+        "Give the dynamic one, or name an array of the other: --field kinematic_viscosity=NAME.",
+    ),
+    "not-steady": Page(
+        "The stored state before (or after) this one is different, and no rates of change are known.",
+        "Without them the content of the volume counts as constant: what it stores shows up as imbalance.",
+        "fvcheck history takes the rates from the states; or give them as fields: "
+        "--field rate:velocity=NAME. If the states are iterations, the run was still moving.",
+    ),
     "patch-values": Page(
         "The file gives values on a patch itself, in line cells, that are not copies of the cells behind.",
         "They are taken as known there: fits near the patch lean on them instead of reaching out "

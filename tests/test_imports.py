@@ -23,7 +23,7 @@ ROWS = [
     ["surfaces", "overlay"],
     ["sampling"],
     ["laws"],
-    ["balancing", "entries", "volume", "ledger", "verdict", "bands", "ports", "sources"]
+    ["balancing", "entries", "volume", "ledger", "verdict", "bands", "ports", "plausible", "sources"]
     + ["checkfile", "checkmodel"],
     ["inspection", "history", "study", "forces", "diagnose", "demo"],
     ["cli", "text", "report", "gate", "jsonout", "__main__"],

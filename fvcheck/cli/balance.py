@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from dataclasses import replace
 from typing import Annotated
 
 from typer import Option
@@ -29,8 +30,9 @@ def command(
     from fvcheck.balancing import balance_all
     from fvcheck.cli.output import check_target, history_data, show
     from fvcheck.cli.settings import settle
-    from fvcheck.flow import flow_of_export, step_number
+    from fvcheck.flow import Flow, flow_of_export, step_number
     from fvcheck.formats.registry import open_export
+    from fvcheck.plausible import change_hints
     from fvcheck.text.ledger import result_text, steps_text
     from fvcheck.verdict import EXIT_STATUS, worst
 
@@ -38,9 +40,16 @@ def command(
     settings = settle(file, reading, fluid, surface, limits)
     export = open_export(settings.file)
     numbers = range(export.steps) if settings.step == "all" else [step_number(export, settings.step)]
+
+    def flow_at(number: int) -> Flow:
+        flow = flow_of_export(export, step=number, **settings.reading)
+        if settings.step == "all":
+            return flow
+        return replace(flow, hints=(*flow.hints, *change_hints(export, number, flow, settings.reading)))
+
     results = [
         balance_all(
-            flow_of_export(export, step=number, **settings.reading),
+            flow_at(number),
             settings.surfaces,
             settings.laws,
             tolerance=settings.tolerance,
