@@ -26,8 +26,9 @@ RESOLUTION_FACTOR = 3.0
 _SAMPLING_COVERAGE, _RESOLUTION_COVERAGE = 3.0, 2.0
 
 # Where fits reach out of their data, degree 3 may be off by as much as it
-# changes degree 2, or by this share of what degree 2 changes degree 1.
-_REACHING = 0.5
+# changes degree 2, or by this share of what degree 2 changes degree 1: on a
+# coarse curved boundary the series of degrees hardly converges outside the data.
+_REACHING = 1.0
 
 
 class Bands(NamedTuple):

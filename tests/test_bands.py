@@ -58,8 +58,8 @@ def test_rounding_adds_to_the_sampling_band():
 def test_where_values_are_extrapolated_errors_add_up():
     steps = arrays((4, 0.5), (-4, -3.0), (8, 0.25), (-8, -0.25))
     band = bands(*steps, 0.0, reaching=np.array([True, True]))
-    # the larger of |d23| and ½|d12| at the first two, 2 + 3; 3 √(2 · 0.0625) of the others
-    assert band.sampling == pytest.approx(5.0 + 3 * np.sqrt(0.125))
+    # the larger of |d23| and |d12| at the first two, 4 + 4; 3 √(2 · 0.0625) of the others
+    assert band.sampling == pytest.approx(8.0 + 3 * np.sqrt(0.125))
     # 3 × (2 √(2 · 64) + 2 √(2 · 16)), the two kinds apart
     assert band.resolution == pytest.approx(6 * (np.sqrt(128) + np.sqrt(32)))
 
