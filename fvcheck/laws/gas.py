@@ -131,7 +131,8 @@ class Gas(Places):
         if not (gas.ideal_gas and gas.gamma and gas.gas_constant):
             raise MissingData("ideal gas", "Give --gamma and --gas-constant for the entropy law.")
         specific_heat = gas.gas_constant / (gas.gamma - 1.0)
-        return specific_heat * np.log(self.pressure / self.density**gas.gamma) - self.datum.entropy
+        p, rho = _above_zero(self.pressure), _above_zero(self.density)
+        return specific_heat * (np.log(p) - gas.gamma * np.log(rho)) - self.datum.entropy
 
     @cached_property
     def specific_heat(self) -> float:
@@ -142,3 +143,13 @@ class Gas(Places):
         if gas.gamma and gas.gas_constant:
             return gas.gamma * gas.gas_constant / (gas.gamma - 1.0)
         raise MissingData("specific heat", "Give --specific-heat.")
+
+
+def _above_zero(values: Array) -> Array:
+    """The values, those below a thousandth of the typical one raised to it.
+
+    High degrees overshoot across a shock, even below zero. Where they do, they
+    are not used, but their logarithm must not spoil the sums.
+    """
+    least = 1e-3 * float(np.median(np.real(values))) if len(values) else 0.0
+    return np.where(np.real(values) > least, values, max(least, np.finfo(float).tiny))
