@@ -7,7 +7,7 @@ import numpy as np
 from fvcheck.flow import Flow
 from fvcheck.laws import MissingData, State
 from fvcheck.ledger import Port
-from fvcheck.overlay.overlay import Overlay
+from fvcheck.overlay.pieces import Overlay
 from fvcheck.sampling.quadrature import PER_PIECE
 from fvcheck.surfaces import ControlSurface
 

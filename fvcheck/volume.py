@@ -14,8 +14,8 @@ from fvcheck.hints import Hint
 from fvcheck.laws import Law, MissingData, State
 from fvcheck.laws.law import convective
 from fvcheck.laws.state import Datum
-from fvcheck.overlay.overlay import DRAWN, Overlay, triangles_of
-from fvcheck.sampling.probe import compile_probe, known_values, pin_walls
+from fvcheck.overlay.pieces import DRAWN, Overlay, triangles_of
+from fvcheck.sampling.probe import Probe, compile_probe, known_values, pin_walls
 from fvcheck.sampling.quadrature import PER_PIECE, PER_TRIANGLE, along, within
 from fvcheck.sampling.sampled import Sampled
 from fvcheck.sampling.sampler import DEGREES

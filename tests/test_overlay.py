@@ -14,7 +14,8 @@ from hypothesis import strategies as st
 
 from fvcheck.errors import MeshError, SurfaceError
 from fvcheck.mesh.mesh import Boundary, Mesh
-from fvcheck.overlay.overlay import DRAWN, lay_over
+from fvcheck.overlay.overlay import lay_over
+from fvcheck.overlay.pieces import DRAWN
 from fvcheck.surfaces import ControlSurface
 
 KINDS = tuple(meshes())
