@@ -1,4 +1,4 @@
-"""Gas flows with shocks, fans and heat against closed forms (NACA Report 1135; Shapiro 1953; see scripts/exact)."""
+"""Gas flows with shocks, fans and heat against closed forms (NACA Report 1135; Shapiro 1953)."""
 
 from __future__ import annotations
 
