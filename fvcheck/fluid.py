@@ -54,7 +54,7 @@ class Fluid:
     gamma: float | None = None
     expansion: float | None = None
     reference_temperature: float | None = None
-    diffusivity: Mapping[str, float] = field(default_factory=dict)
+    diffusivity: Mapping[str, float] = field(default_factory=dict, hash=False)
     turbulent_prandtl: float = 0.85
     frame_rate: float = 0.0
     frame_centre: tuple[float, float] = (0.0, 0.0)

@@ -20,7 +20,7 @@ from fvcheck.laws.state import State
 Array = np.ndarray
 
 
-@dataclass(frozen=True)
+@dataclass(frozen=True, eq=False)
 class Law:
     """One balance law.
 
