@@ -31,7 +31,7 @@ def cavity(request):
 
 
 def test_the_mean_nusselt_number_of_a_cavity_is_met_by_a_control_surface(cavity):
-    # Hortmann et al. 1990, Le Quéré 1991 (recalled; our own solution with 20,000 unknowns agrees: cavity.json).
+    # Hortmann et al. 1990, Le Quéré 1991 (recalled; our own solution agrees: cavity.json).
     # Heat crosses every upright line alike; the wall is where it is hardest to tell.
     name, flow = cavity
     expected = CAVITY[name]["reference"]["nusselt"]

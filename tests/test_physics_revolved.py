@@ -70,6 +70,27 @@ def test_the_pressure_drop_of_a_pipe_is_the_wall_friction_and_is_dissipated():
         assert abs(row.imbalance) < 1e-9, row.label
 
 
+def test_averages_over_rings_are_read_as_such():
+    # A finite-volume cell of an axisymmetric run holds ∫qr dA / ∫r dA: the pipe stays exact.
+    pipe = exact.hagen_poiseuille()
+    cells = tm.mixed(pipe.domain, 0.15, seed=3)
+    volume = tm.cell_integrals(lambda x, y: y, cells)
+
+    def average(function):
+        return tm.cell_integrals(lambda x, y: y * function(x, y), cells) / volume
+
+    flow = fvcheck.Flow.from_arrays(
+        cells.points,
+        (cells.offsets, cells.nodes),
+        cell_data={"U": np.column_stack([average(pipe.u), average(pipe.v)]), "p": average(pipe.p)},
+        fluid=Fluid(**pipe.fluid),
+        symmetry="axisymmetric",
+        axis="x",
+    )
+    for row in fvcheck.balance(flow, ControlSurface.box(0.6, 0.0, 2.2, 0.7)).rows:
+        assert abs(row.imbalance) < 1e-9 * row.scale, row.label
+
+
 # --- vortices ----------------------------------------------------------------------------------
 
 

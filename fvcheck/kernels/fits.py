@@ -37,12 +37,22 @@ def monomials(x, y, out):
 
 
 @njit(cache=True)
-def cell_moments(points, ring, x0, y0, a, out):
+def cell_moments(points, ring, x0, y0, a, radial, out):
     """Averages of the monomials over a polygon, in coordinates ξ = a (x − x0).
 
     By the divergence theorem, ∫f dA = ∮F dη with ∂F/∂ξ = f, three Gauss points
-    an edge: exact for cubics. ring (k,) point numbers, either orientation.
+    an edge: exact for cubics. ring (k,) point numbers, either orientation;
+    radial: coordinate (0, 1) whose value weighs the average, as in the volume of
+    an axisymmetric cell, or -1 for none.
     """
+    # The weight as r + r1 ξ + r2 η.
+    r, r1, r2 = 1.0, 0.0, 0.0
+    if radial >= 0:
+        det = a[0, 0] * a[1, 1] - a[0, 1] * a[1, 0]
+        if radial == 0:
+            r, r1, r2 = x0, a[1, 1] / det, -a[0, 1] / det
+        else:
+            r, r1, r2 = y0, -a[1, 0] / det, a[0, 0] / det
     k = len(ring)
     area = 0.0
     for j in range(10):
@@ -57,17 +67,21 @@ def cell_moments(points, ring, x0, y0, a, out):
         for g in range(3):
             x, y = ux + _G[g] * (vx - ux), uy + _G[g] * dy
             w = _W[g] * dy * x
-            area += w
-            # ∫ of each monomial over ξ is ξ/(m+1) times it, m its power of ξ.
-            out[1] += w * x / 2.0
-            out[2] += w * y
-            out[3] += w * x * x / 6.0
-            out[4] += w * x * y / 2.0
-            out[5] += w * y * y / 2.0
-            out[6] += w * x * x * x / 24.0
-            out[7] += w * x * x * y / 6.0
-            out[8] += w * x * y * y / 4.0
-            out[9] += w * y * y * y / 6.0
+            # ∫ of each monomial over ξ is ξ/(m+1) times it, m its power of ξ; with a weight
+            # r1 ξ it is r1 ξ²/(m+2) times it.
+            here = r + r2 * y
+            w0, w1 = w * (here + r1 * x / 2.0), w * (here / 2.0 + r1 * x / 3.0)
+            w2, w3 = w * (here / 3.0 + r1 * x / 4.0), w * (here / 4.0 + r1 * x / 5.0)
+            area += w0
+            out[1] += w1 * x
+            out[2] += w0 * y
+            out[3] += w2 * x * x / 2.0
+            out[4] += w1 * x * y
+            out[5] += w0 * y * y / 2.0
+            out[6] += w3 * x * x * x / 6.0
+            out[7] += w2 * x * x * y / 2.0
+            out[8] += w1 * x * y * y / 2.0
+            out[9] += w0 * y * y * y / 6.0
     out[0] = 1.0
     for j in range(1, 10):
         out[j] /= area
@@ -184,7 +198,7 @@ def _solve(matrix, weights, rows, columns, out, work_q, work_r):
 
 
 @njit(cache=True)
-def _fit_one(points, offsets, nodes, centre, entries, size, degree, at_points, averages, a, operator):
+def _fit_one(points, offsets, nodes, centre, entries, size, degree, at_points, averages, radial, a, operator):
     """One polynomial: fills ``a`` and ``operator`` (10, size+1); returns the degree reached, -1 for none.
 
     Column ``size`` of the operator belongs to the centre's own value, which
@@ -211,7 +225,7 @@ def _fit_one(points, offsets, nodes, centre, entries, size, degree, at_points, a
         if at_points or e < 0 or not averages:
             monomials(x, y, row)
         else:
-            cell_moments(points, nodes[offsets[e] : offsets[e + 1]], x0, y0, a, row)
+            cell_moments(points, nodes[offsets[e] : offsets[e + 1]], x0, y0, a, radial, row)
         matrix[s] = row
         weights[s] = x * x + y * y
     # Near data count more. All around a centre, the inverse fourth power of the distance
@@ -246,12 +260,14 @@ def _fit_one(points, offsets, nodes, centre, entries, size, degree, at_points, a
 
 
 @njit(cache=True, parallel=True)
-def fit_points(points, offsets, nodes, centres, first, entries, sizes, degree, at_points, averages, keep):
+def fit_points(
+    points, offsets, nodes, centres, first, entries, sizes, degree, at_points, averages, radial, keep
+):
     """Operators of the fits about ``centres``.
 
     first, entries, sizes (c,): from `stencils`, for this degree; averages: cell
-    values are averages, else values at the centroid; keep: number of leading
-    coefficients wanted.
+    values are averages, else values at the centroid; radial: what weighs the
+    averages, see `cell_moments`; keep: number of leading coefficients wanted.
 
     Returns (row_first (c+1,), columns, operator (keep, total), frames (c, 2, 2),
     reached (c,)): coefficient i of centre j is Σ operator[i, s]·data[columns[s]]
@@ -272,7 +288,18 @@ def fit_points(points, offsets, nodes, centres, first, entries, sizes, degree, a
         one = np.zeros((10, size + 1))
         mine = entries[first[j] : first[j] + size]
         reached[j] = _fit_one(
-            points, offsets, nodes, centres[j], mine, size, degree, at_points, averages, frames[j], one
+            points,
+            offsets,
+            nodes,
+            centres[j],
+            mine,
+            size,
+            degree,
+            at_points,
+            averages,
+            radial,
+            frames[j],
+            one,
         )
         at = row_first[j]
         for s in range(size):

@@ -200,6 +200,7 @@ def compile_probe(flow: Flow, centres: Array, roles: tuple[str, ...] | None = No
             centres,
             location,
             averages=flow.case.cell_values == "average",
+            axis=flow.case.axis,
             known=known[0] if known else None,
         )
         groups.append(_fill(flow, sampler, names, known))

@@ -160,12 +160,15 @@ def compile_sampler(
     location: str,
     *,
     averages: bool = True,
+    axis: int | None = None,
     known: Known | None = None,
     degrees: tuple[int, ...] = DEGREES,
 ) -> Sampler:
     """Fit operators about ``centres`` ((c,) mesh points) for data at ``location`` ("point" or "cell").
 
     averages : a cell value is the average over the cell; else the value at its centroid
+    axis : of an axisymmetric run, the coordinate along it: averages are then over
+        the body of revolution, with the weight r
     known : where values are known beside cell data; ignored for point data
     """
     from fvcheck.kernels import fits, neighbours, threads
@@ -215,6 +218,7 @@ def compile_sampler(
             degree,
             at_points,
             averages,
+            -1 if axis is None else 1 - axis,
             1 if at_points and degree == 1 else fits.TERMS[degree],
         )
         if not at_points:
