@@ -231,4 +231,68 @@ PAGES: dict[str, Page] = {
         "data around, and the band takes the larger of the two steps between degrees.",
         "Nothing for a shock. For a thin layer, refine there, or draw the surface where the flow is smooth.",
     ),
+    "times-unused": Page(
+        "Several files were given, and not each of them has a time of its own.",
+        "Without times nothing is known of how fast the content of a volume changes, so there is no storage.",
+        "Nothing for iterations of a steady run. Else export with times, or as one series (PVD, XDMF, …).",
+    ),
+    "time-or-iteration": Page(
+        "The times of the steps are whole numbers in even steps.",
+        "Some writers put the number of the iteration where a time belongs; storage would then be wrong.",
+        "For iterations of a steady run: --steady. Else nothing.",
+    ),
+    "rates-over-series": Page(
+        "The export holds rates of change (rate:ROLE) and several times.",
+        "Both could give the storage; the rates of the run itself are surer than differences of snapshots.",
+        "Leave --field rate:ROLE=NAME out to have the snapshots differenced.",
+    ),
+    "few-snapshots": Page(
+        "There are fewer than three times.",
+        "A rate of change from two of them is right halfway between, not at either; its band is as wide as "
+        "the fluxes change.",
+        "Export one more time. Over the whole interval the balance is as good as with many.",
+    ),
+    "mesh-moves": Page(
+        "The points of the mesh move from one snapshot to the next, its cells stay the same.",
+        "The domain boundary then moves with it, and what it sweeps counts; drawn surfaces stay where they are "
+        "drawn, or move as told.",
+        "Nothing, if the run has a moving mesh.",
+    ),
+    "mesh-changes": Page(
+        "A snapshot has other cells than the one before.",
+        "Everything is prepared anew for it, and errors of sampling in what a volume holds no longer cancel "
+        "between the two: bands of storage are wider.",
+        "Nothing, if the run adapts its mesh. Else look whether the files belong to one run.",
+    ),
+    "snapshot-left-out": Page(
+        "A file of a run that is watched could not be read, and did not change any more.",
+        "It was cut off, or is no export; the history goes on without it.",
+        "fvcheck inspect FILE says what is wrong with it.",
+    ),
+    "two-meshes": Page(
+        "A study has two meshes.",
+        "Two values show a difference but no order, so second order is assumed, and the factor of safety is 3 "
+        "in place of 1.25 (Roache 1998).",
+        "Run a third mesh, coarser or finer by 1.3 or more.",
+    ),
+    "close-meshes": Page(
+        "Two meshes of a study are close in cell size.",
+        "Differences between them are small against noise of the mesh, and the observed order is uncertain.",
+        "Use meshes whose cell sizes differ by a factor of 1.3 or more.",
+    ),
+    "no-convergence": Page(
+        "Values differ more between the finer meshes than between the coarser ones.",
+        "Nothing can be extrapolated; the band given is three times the range of the values.",
+        "See that each run is converged in its iterations, and that the meshes are refined alike everywhere.",
+    ),
+    "study-within-bands": Page(
+        "Values on two meshes differ by less than the bands of reading them from the data.",
+        "Order and extrapolation are then those of noise; the number itself is as good as its sampling band.",
+        "Nothing, if the band is small enough. Else move the surface, or tell the walls.",
+    ),
+    "study-incomplete": Page(
+        "A quantity could be had on some meshes only, such as the flux of a patch of another name.",
+        "Over fewer meshes it would say less than it seems to; the exit status is 2.",
+        "Give the meshes the same patches and fields, or restrict the study with -s and --law.",
+    ),
 }

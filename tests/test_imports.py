@@ -25,8 +25,10 @@ ROWS = [
     ["laws"],
     ["balancing", "entries", "volume", "ledger", "verdict", "bands", "ports", "plausible", "sources"]
     + ["checkfile", "checkmodel"],
-    ["inspection", "history", "study", "forces", "diagnose", "demo"],
-    ["cli", "text", "report", "gate", "jsonout", "__main__"],
+    ["inspection", "history", "study", "forces", "diagnose", "demo"]
+    + ["series", "timeweights", "content", "evolution", "trends", "timeseries", "following"]
+    + ["convergence", "meshstudy"],
+    ["cli", "text", "charts", "report", "gate", "jsonout", "__main__"],
 ]
 ROW = {room: number for number, rooms in enumerate(ROWS) for room in rooms}
 
@@ -116,6 +118,7 @@ def test_the_public_names_are_these():
         "Fluid",
         "FormatError",
         "FvcheckError",
+        "History",
         "Inspection",
         "Law",
         "Ledger",
@@ -123,15 +126,22 @@ def test_the_public_names_are_these():
         "Motion",
         "Result",
         "Row",
+        "Series",
         "SetupError",
         "Source",
         "State",
+        "Study",
         "SurfaceError",
         "balance",
         "balance_all",
+        "follow",
+        "grid_convergence",
+        "history",
         "inspect_file",
         "open_flow",
+        "open_series",
         "register",
+        "study",
     ]
 
 

@@ -7,9 +7,29 @@ from fvcheck.hints import Page
 TERMS: dict[str, Page] = {
     "laws": Page(
         "Each law is a balance: storage + flux + boundary - source = imbalance, zero for an exact solution.\n"
-        "mass, momentum (x, y), kinetic-energy; heat for constant density; total-energy for an ideal gas.",
+        "mass, momentum (x, y), kinetic-energy; heat for constant density; total-energy for an ideal gas; "
+        "scalar:NAME for each scalar named. On request: angular-momentum, entropy.",
         "They fail one by one: which of them is open says where to look.",
         "fvcheck explain mass (momentum, …). --law mass,momentum picks; without it every law the data allow.",
+    ),
+    "axisymmetric": Page(
+        "--axisymmetric (symmetry in [case]): one coordinate runs along the axis, the other is the radius. "
+        "All fluxes, areas and volumes carry 2 pi r: results are for the whole turn, without /m.\n"
+        "The axis is x, or y where only there radii are not negative; --axis x|y settles it. A 3D slice "
+        "of a few degrees, one cell thick, is recognised and needs no option.",
+        "The row of momentum along the axis is the force along it. That across is the radial sum, which is "
+        "no force: its source holds pressure, hoop stress and swirl over r. Velocity out of the plane is "
+        "the swirl, and has the row angular-momentum.",
+        "Cell values are averages over rings. Surfaces are drawn in the half plane; those that end on the "
+        "axis pass nothing there.",
+    ),
+    "rotating-frame": Page(
+        "--frame-rate OMEGA (rad/s, counter-clockwise) and --frame-centre X,Y: the exported velocities are "
+        "those seen from a frame that turns.",
+        "Coriolis and centrifugal forces then count as sources of momentum and angular momentum; the "
+        "centrifugal one does work.",
+        "For a pressure that holds the centrifugal part already, export the static one. A surface that moves "
+        "through a frame at rest is another matter: fvcheck explain surfaces.",
     ),
     "verdicts": Page(
         "closed: |imbalance| + sampling band within the tolerance. undecided: the band straddles the "
@@ -42,6 +62,25 @@ TERMS: dict[str, Page] = {
         "right of its direction.",
         'fvcheck balance run.vtu -s "outer=box(0, 0, 1, 1)". Keep surfaces a few cells away from bodies and '
         "out of steep layers, unless they are what you ask about.",
+    ),
+    "history": Page(
+        "The ledger at every snapshot of a run. With times, storage is the rate of change of what the volume "
+        "holds, by three snapshots (second order, at both ends too); the step to the next order is its band "
+        "in time, part of the sampling band. Below stands the balance from the first to the last time.\n"
+        "level and drift: over the last quarter; settled: it stays there within a quarter of the tolerance, or "
+        "period by period. mean: over whole periods where the number swings, else behind the start-up, with "
+        "a 95 % band for correlated values.",
+        "One state cannot say whether a run is done, nor close an unsteady balance.",
+        "fvcheck history 'run_*.vtu' -s …; --steady for iterations, --follow while the run writes, --csv, --plot.",
+    ),
+    "study": Page(
+        "The same numbers on several meshes. Cell size: root of area over cells. Observed order p, "
+        "extrapolated value and grid convergence index (GCI) by the procedure of Celik et al. 2008 from the "
+        "three finest meshes; two meshes: order 2 assumed, factor 3 in place of 1.25.\n"
+        "+-95 %: the index in the number's own unit, p held between 1/2 and 2; half of it is the standard "
+        "uncertainty of ASME V&V 20.",
+        "A number without its mesh error cannot be compared, neither with a test nor with another run.",
+        "fvcheck study coarse.vtu medium.vtu fine.vtu -s …, runs converged, sizes apart by 1.3 or more.",
     ),
     "exit": Page(
         "0: closed, or nothing to judge. 1: open. 2: the command, check file or data cannot be used. "

@@ -1,0 +1,161 @@
+"""``fvcheck history FILE|FILES… -s SURFACE …``."""
+
+from __future__ import annotations
+
+from pathlib import Path
+from typing import Annotated, Any
+
+from typer import Argument, Option
+
+from fvcheck.cli.options import FluidOptions, Limits, Output, Reading, SurfaceList, number, spread
+from fvcheck.errors import SetupError
+
+_OVER, _WATCH, _SHOW = "Over the steps", "Watching", "Output"
+
+
+@spread
+def command(
+    limits: Limits,
+    reading: Reading,
+    fluid: FluidOptions,
+    output: Output,
+    files: Annotated[
+        list[str] | None,
+        Argument(metavar="FILES", help="A file with steps, files, or a pattern; a directory with --follow."),
+    ] = None,
+    surface: SurfaceList = None,
+    steady: Annotated[
+        bool,
+        Option("--steady", help="Steps are iterations, whatever times they carry.", rich_help_panel=_OVER),
+    ] = False,
+    reference_length: Annotated[
+        str | None, Option(metavar="L", help="For the Strouhal number.", rich_help_panel=_OVER)
+    ] = None,
+    reference_velocity: Annotated[
+        str | None, Option(metavar="U", help="For the Strouhal number.", rich_help_panel=_OVER)
+    ] = None,
+    follow: Annotated[
+        bool, Option("--follow", help="Watch a run that still writes.", rich_help_panel=_WATCH)
+    ] = False,
+    every: Annotated[str, Option(metavar="SECONDS", help="Between two looks.", rich_help_panel=_WATCH)] = "1",
+    limit: Annotated[
+        int | None,
+        Option(metavar="N", min=1, help="End after so many snapshots.", rich_help_panel=_WATCH),
+    ] = None,
+    patience: Annotated[
+        str | None,
+        Option(metavar="SECONDS", help="End when nothing new comes for so long.", rich_help_panel=_WATCH),
+    ] = None,
+    to_the_end: Annotated[
+        bool, Option("--to-the-end", help="Go on when all has settled.", rich_help_panel=_WATCH)
+    ] = False,
+    csv: Annotated[
+        str | None,
+        Option(metavar="PATH", help="Write all numbers as CSV; - is standard output.", rich_help_panel=_SHOW),
+    ] = None,
+    plot: Annotated[
+        Path | None, Option(metavar="PNG|SVG", help="Draw imbalances and fluxes.", rich_help_panel=_SHOW)
+    ] = None,
+) -> int:
+    """The ledger over time steps or iterations: has it settled, does it swing?
+
+    With times, what the volume stores counts. The exit status is that of the last step.
+    """
+    from fvcheck.charts import check_plot_path, save_history
+    from fvcheck.cli.manyfiles import files_and_settings
+    from fvcheck.cli.output import check_target, show
+    from fvcheck.cli.progress import progress
+    from fvcheck.following import follow as watch
+    from fvcheck.text.history import history_text, line_text
+    from fvcheck.timeseries import Entry, history
+    from fvcheck.verdict import EXIT_STATUS
+
+    check_target(output)
+    _check_csv(csv, output)
+    if plot is not None:
+        check_plot_path(plot)
+    reference = _reference(reference_length, reference_velocity)
+    named, settings = files_and_settings(files, reading, fluid, surface, limits)
+    judged: dict[str, Any] = {
+        "tolerance": settings.tolerance,
+        "scale": settings.scale,
+        "sources": settings.sources,
+        "about": settings.about,
+        "reference": reference,
+    }
+    silent = output.quiet or "-" in (output.json, csv)
+    if follow:
+        interval = number(every, "--every", "--every SECONDS")
+        if interval <= 0:
+            raise SetupError(f"--every is {every}", mend="Give a positive number of seconds.")
+
+        def tell(entry: Entry) -> None:
+            if not silent:
+                print(line_text(entry), flush=True)
+
+        found = watch(
+            named if len(named) > 1 else named[0],
+            settings.surfaces,
+            settings.laws,
+            every=interval,
+            limit=limit,
+            patience=None if patience is None else number(patience, "--patience", "--patience SECONDS"),
+            until_settled=not to_the_end,
+            steady=steady,
+            on_step=tell,
+            settings=judged,
+            reading=settings.reading,
+        )
+    else:
+        with progress("snapshots", silent) as advance:
+            found = history(
+                named,
+                settings.surfaces,
+                settings.laws,
+                steady=steady,
+                on_step=lambda _entry, total: advance(total),
+                **judged,
+                **settings.reading,
+            )
+    if plot is not None:
+        save_history(found, plot)
+    if csv not in (None, "-"):
+        _write_csv(Path(str(csv)), found.to_csv())
+    if csv == "-":
+        show(output, found.to_dict, found.to_csv)
+    else:
+        show(output, found.to_dict, lambda: history_text(found, output.quiet))
+    return 0 if found.verdict is None else EXIT_STATUS[found.verdict]
+
+
+def _reference(length: str | None, velocity: str | None) -> tuple[float, float] | None:
+    if length is None and velocity is None:
+        return None
+    if length is None or velocity is None:
+        raise SetupError(
+            "a Strouhal number needs two references",
+            mend="Give --reference-length and --reference-velocity.",
+        )
+    both = (
+        number(length, "--reference-length", "a number"),
+        number(velocity, "--reference-velocity", "a number"),
+    )
+    if min(both) <= 0:
+        raise SetupError("a reference is not positive", mend="Give positive numbers.")
+    return both
+
+
+def _check_csv(csv: str | None, output: Output) -> None:
+    if csv == "-" and output.json == "-":
+        raise SetupError("JSON and CSV cannot both go to standard output", mend="Give one of them a path.")
+    if csv not in (None, "-"):
+        path = Path(str(csv))
+        if path.is_dir() or not path.parent.is_dir():
+            raise SetupError("the CSV cannot be written there", where=path, mend="Give the path of a file.")
+
+
+def _write_csv(path: Path, text: str) -> None:
+    try:
+        path.write_text(text, encoding="utf-8")
+    except OSError as error:
+        raise SetupError(f"the CSV cannot be written: {error.strerror}", where=path) from None
