@@ -134,7 +134,8 @@ def _close(
 ) -> Row:
     """The row with scale, percent and verdict."""
     assert row.imbalance is not None and size is not None
-    percent = tolerance.get(law.name, law.tolerance_percent)
+    # A production has no tolerance: its limit is nothing.
+    percent = 0.0 if law.inequality else tolerance.get(law.name, law.tolerance_percent)
     nothing = size <= floor
     if nothing and abs(row.imbalance) <= floor + band.rounding:
         verdict = CLOSED

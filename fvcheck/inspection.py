@@ -18,6 +18,7 @@ from fvcheck.hints import Hint
 from fvcheck.mesh.assemble import Assembly, assemble
 from fvcheck.mesh.mesh import Mesh
 from fvcheck.mesh.piece import Export, Piece
+from fvcheck.plausible import field_hints
 from fvcheck.version import __version__
 
 Array = np.ndarray
@@ -145,7 +146,11 @@ def inspect_file(path: str | Path, *, step: int | str = "last", **settings: Any)
         arrays=arrays,
         patches=patches,
         bodies=mesh.bodies,
-        hints=(*hints, *_suspicions(patches, flow.location if flow else None)),
+        hints=(
+            *hints,
+            *(field_hints(flow) if flow else ()),
+            *_suspicions(patches, flow.location if flow else None),
+        ),
     )
 
 
@@ -248,7 +253,9 @@ def _motion(flow: Flow) -> tuple[dict[str, float], dict[str, float]]:
     places, weights = along(overlay.start, overlay.end)
     triangle = np.repeat(overlay.triangle, PER_PIECE, axis=0)
     averages = flow.case.cell_values == "average"
-    sampler = compile_sampler(flow.mesh, np.unique(triangle), field.location, averages=averages)
+    sampler = compile_sampler(
+        flow.mesh, np.unique(triangle), field.location, averages=averages, axis=flow.case.axis
+    )
     if not np.isfinite(whole[sampler.sources]).all():
         return {}, {}  # no numbers at the boundary: nothing can be said
     velocity = sampler.evaluate(2, sampler.apply(2, whole), triangle, places)[0]

@@ -20,6 +20,14 @@ LAWS: dict[str, Page] = {
         "Needs velocity, density, pressure; viscosity unless the run is inviscid; --gravity where the "
         "run has weight; --pressure-kind where the export is p/rho or lacks the weight.",
     ),
+    "angular-momentum": Page(
+        "Net outflow of r x rho u, with the moments of pressure, friction and forces, about the point "
+        "--about X,Y (about in [case] of a check file). In an axisymmetric run it is that of the swirl "
+        "about the axis, with the torque of its shear.",
+        "It gives the torque on a body or a rotor, and sees moments that both rows of momentum miss.",
+        "On request, --law angular-momentum; by default in axisymmetric runs with swirl, where no other law "
+        "sees the swirl. Needs what momentum needs. The drawn flux is that of all torques outward.",
+    ),
     "kinetic-energy": Page(
         "Mechanical power: transport of rho u2/2, work of pressure and friction on the border, less the "
         "work of body forces, of expansion, and plus what friction turns into heat inside "
@@ -39,6 +47,23 @@ LAWS: dict[str, Page] = {
     "total-energy": Page(
         "Transport of rho E with the work of pressure and friction and with conduction, for an ideal gas.",
         "It holds across shocks, where kinetic energy alone does not.",
-        "Needs --gamma, and --gas-constant unless density and pressure (or rho E) are in the export.",
+        "Needs --gamma, and any two of pressure, temperature, density and rho E beside a velocity or a "
+        "momentum; --gas-constant where temperature is one of them.",
+    ),
+    "entropy": Page(
+        "Net outflow of rho s with s = c_v ln(p/rho^gamma), and conduction q.n/T: what is left over is made "
+        "inside. An inequality, shown as entropy >= 0: the imbalance is the production.",
+        "Friction, conduction and shocks make entropy, nothing destroys it. A production below zero beyond "
+        "the resolution band is open: an expansion shock, a wrong heat source. All else is closed, and its "
+        "size says how much is lost; the percentage has little meaning where the flow is isentropic.",
+        "On request, --law entropy. Needs --gamma and --gas-constant.",
+    ),
+    "scalar": Page(
+        "Transport of rho phi and mixing -Gamma grad phi, Gamma = rho D + mu_t/Sc_t, for each scalar that is "
+        "named: the law scalar:NAME. phi is per mass of fluid and counts from its mean on the border.",
+        "Concentrations, mixture fractions and the like are conserved as mass is.",
+        "--field scalar:NAME=ARRAY --diffusivity NAME=D [m2/s]; a source as --field "
+        "scalar_source:NAME=ARRAY [per m3 s]. Or [[law]] in a check file: name, field, diffusivity, source, "
+        "tolerance_percent.",
     ),
 }

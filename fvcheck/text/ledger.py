@@ -109,7 +109,7 @@ def ledger_parts(ledger: Ledger, amounts: bool = True, patches: bool = False) ->
         yield _origins(ledger.rows)
     if ledger.ports:
         yield Text()
-        yield _ports(ledger.ports)
+        yield _ports(ledger.ports, per_metre=any(row.unit.endswith("/m") for row in ledger.rows))
 
 
 def _judgement(rows: Sequence[Row]) -> Table:
@@ -127,7 +127,7 @@ def _judgement(rows: Sequence[Row]) -> Table:
     for row in rows:
         per = None if not row.scale or row.imbalance_percent is None else 100.0 / row.scale
         table.add_row(
-            row.label,
+            f"{row.label} >= 0" if row.inequality else row.label,
             percent(row.imbalance_percent),
             percent(None if per is None else per * row.sampling_band),
             percent(None if per is None else per * row.resolution_band),
@@ -203,10 +203,10 @@ def _origins(rows: Sequence[Row]) -> Table:
     return table
 
 
-def _ports(ports: Sequence[Port]) -> Table:
+def _ports(ports: Sequence[Port], per_metre: bool) -> Table:
     table = plain_table(
         ("\nport", FOLDED | {"min_width": 8}),
-        "area\nm",
+        "area\nm" if per_metre else f"area\nm{'²' if rich_characters() else '2'}",
         "mass flow\nkg/s",
         "velocity\nm/s",
         "total pressure\nPa",
