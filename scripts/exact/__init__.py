@@ -6,7 +6,7 @@ papers stand in each docstring.
 
 from exact.compressible import isentropic_vortex, oblique_shock, uniform_gas
 from exact.flow import ExactFlow, box_contour, circle_contour, fluxes, gradient, polygon_contour
-from exact.gas_dynamics import expansion_fan, normal_shock, nozzle, rayleigh
+from exact.gas_dynamics import diamond, expansion_fan, normal_shock, nozzle, rayleigh
 from exact.potential import cylinder, rankine_half_body, source
 from exact.revolved import burgers_vortex, hagen_poiseuille, landau_force, landau_jet, stokes_sphere
 from exact.similarity import hiemenz, hiemenz_profile, jeffery_hamel, jeffery_hamel_profile
@@ -32,6 +32,7 @@ __all__ = [
     "couette",
     "cylinder",
     "cylindrical_couette",
+    "diamond",
     "expansion_fan",
     "fluxes",
     "gradient",
