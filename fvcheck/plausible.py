@@ -12,7 +12,8 @@ from fvcheck.flow import Flow, flow_of_export
 from fvcheck.hints import Hint
 from fvcheck.laws import MissingData, State, find_law
 from fvcheck.ledger import Row
-from fvcheck.mesh.piece import Export
+from fvcheck.mesh.assemble import Assembly, assemble
+from fvcheck.mesh.piece import Export, Piece
 from fvcheck.sampling.sampled import Sampled
 from fvcheck.volume import BEST, SampledVolume
 
@@ -206,8 +207,15 @@ def change_hints(export: Export, step: int, flow: Flow, reading: dict[str, Any])
     rates = any(name.startswith("rate:") for name in flow.fields)
     if export.steps < 2 or rates or role not in flow.fields:
         return []
+
+    def same_mesh(pieces: Sequence[Piece], **options: Any) -> Assembly:
+        """A mesh that did not change is not made twice."""
+        points, cells = (sum(len(getattr(p, name)) for p in pieces) for name in ("points", "types"))
+        fits = flow.assembly.point_source.max() < points and flow.assembly.cell_source.max() < cells
+        return flow.assembly if fits else assemble(pieces, **options)
+
     try:
-        other = flow_of_export(export, step=step - 1 if step > 0 else 1, **reading)
+        other = flow_of_export(export, step=step - 1 if step > 0 else 1, assembler=same_mesh, **reading)
     except FvcheckError:
         return []  # that state cannot be read, which is not what was asked for
     here, there = flow.fields[role].values, other.fields[role].values if role in other.fields else None

@@ -229,6 +229,16 @@ def test_a_third_of_the_force_on_a_stokes_sphere_is_pressure(sphere):
     assert row.parts["viscous"] == pytest.approx(4 * np.pi, rel=4e-2)
 
 
+def test_a_surface_around_a_body_on_the_axis_holds_its_force(sphere):
+    patch = min(
+        sphere.mesh.boundary.names,
+        key=lambda name: np.hypot(*sphere.mesh.points[sphere.mesh.patch_edges(name)].reshape(-1, 2).T).max(),
+    )
+    row = fvcheck.balance(sphere, ControlSurface.around(patch, 0.6), laws=["momentum"])["momentum-x"]
+    assert -row.flux == pytest.approx(6 * np.pi, rel=2e-3)
+    assert row.patches[patch] == pytest.approx(6 * np.pi, rel=3e-2)  # as for the patch itself
+
+
 # --- the set-up of axisymmetric runs -----------------------------------------------------------
 
 

@@ -117,6 +117,49 @@ def test_a_wedge_between_no_coordinate_planes_is_recognised(duplicate):
         assert np.allclose(found[label], values, rtol=0, atol=1e-9 * size), label
 
 
+def polyhedra(half):
+    """The slice with every cell a polyhedron, as VTK holds it: faces of two corners dropped."""
+    import pyvista
+
+    mesh = wedge(FRAMES["x"], half)
+    n = len(CELLS.points)
+    far = np.where(CELLS.points[:, 1] == 0.0, np.arange(n), np.arange(n) + n)
+    stream = []
+    for i in range(len(CELLS.sizes)):
+        a = CELLS.nodes[CELLS.offsets[i] : CELLS.offsets[i + 1]].tolist()
+        b = far[a].tolist()
+        faces = [a[::-1], b]
+        for (p, q), (r, s) in zip(zip(a, a[1:] + a[:1]), zip(b, b[1:] + b[:1])):
+            faces.append(list(dict.fromkeys([p, q, s, r])))
+        faces = [face for face in faces if len(face) > 2]
+        flat = [len(faces), *(number for face in faces for number in (len(face), *face))]
+        stream += [len(flat), *flat]
+    kinds = np.full(len(CELLS.sizes), 42, np.uint8)
+    grid = pyvista.UnstructuredGrid(np.array(stream), kinds, mesh.points)
+    for name, values in mesh.point_data.items():
+        grid.point_data[name] = values
+    return grid
+
+
+def test_a_wedge_of_polyhedra_is_recognised():
+    flow = fvcheck.Flow.from_pyvista(polyhedra(np.radians(2.0)), fluid=Fluid(**VORTEX.fluid))
+    found, expected = numbers(fvcheck.balance(flow, BOX)), numbers(plane_ledger("point"))
+    for label, values in expected.items():
+        size = max(abs(v) for v in values)
+        assert np.allclose(found[label], values, rtol=0, atol=1e-9 * size), label
+
+
+def test_a_wedge_from_a_file_in_single_precision_is_recognised(tmp_path):
+    mesh = wedge(FRAMES["z"], np.radians(2.5))
+    mesh.points = mesh.points.astype(np.float32)
+    meshio.write(tmp_path / "wedge.vtu", mesh)
+    flow = fvcheck.open_flow(tmp_path / "wedge.vtu", fluid=Fluid(**VORTEX.fluid))
+    assert (flow.case.plane, flow.case.axis) == ("xz", 1)
+    ledger = fvcheck.balance(flow, ControlSurface.box(0.0, 0.1, 1.0, 1.0))
+    for row in ledger.rows:
+        assert row.verdict == "closed", row.label
+
+
 def test_a_wedge_as_wide_as_a_quarter_is_refused():
     mesh = wedge(FRAMES["x"], np.radians(45.0))
     with pytest.raises(fvcheck.MeshError):
