@@ -239,6 +239,61 @@ def test_a_surface_around_a_body_on_the_axis_holds_its_force(sphere):
     assert row.patches[patch] == pytest.approx(6 * np.pi, rel=3e-2)  # as for the patch itself
 
 
+# --- gas and heat ------------------------------------------------------------------------------
+
+
+@pytest.mark.parametrize("where", ["point", "average"])
+def test_gas_from_a_point_source_keeps_mass_momentum_energy_and_entropy(where):
+    source = exact.spherical_source()
+    laws = ["mass", "momentum", "total-energy", "entropy"]
+    flow = revolved(source, 0.1, where=where)
+    ledger = fvcheck.balance(flow, ControlSurface.box(1.5, 0.0, 2.7, 1.2), laws=laws)
+    for row in ledger.rows:
+        assert row.verdict == "closed", row.label
+    through = fvcheck.balance(flow, _arc(2.2, 0.5), laws=["mass"])["mass"]
+    # ρ*u* times the share of the sphere: 2π(1 − cos .5) √γ at A* = 1.
+    assert through.flux == pytest.approx(2 * np.pi * (1 - np.cos(0.5)) * np.sqrt(1.4), rel=1e-3)
+
+
+def _arc(radius, angle):
+    t = np.linspace(0.0, angle, 200)
+    return ControlSurface.line(radius * np.column_stack([np.cos(t), np.sin(t)]))
+
+
+def test_an_evenly_heated_pipe_has_its_nusselt_number():
+    # 48/11 = 4.363636 on the diameter (Shah & London 1978; "verified").
+    pipe = exact.heated_pipe()
+    flow = revolved(pipe, 0.08)
+    ledger = fvcheck.balance(flow, ControlSurface.box(1.0, 0.5, 2.0, 3.0), laws=["heat"])
+    row = ledger["heat"]
+    flux = -row.boundary / (2 * np.pi)  # wall of unit length
+    assert flux == pytest.approx(2.0, rel=1e-3)
+    assert row.verdict == "closed"
+    station = fvcheck.balance(flow, ControlSurface.line([(1.5, 0.0), (1.5, 1.0)]), laws=["mass"])
+    wall = float(pipe.T(np.array(1.5), np.array(1.0)))
+    number = flux * 2 / (0.05 * (wall - station.ports[0].temperature))
+    # The profile is of degree four: cubics leave a few 1e-4 of it.
+    assert number == pytest.approx(48 / 11, rel=2e-3)
+
+
+def test_heat_through_a_pipe_wall_is_that_of_fourier():
+    # 2πkΔT/ln 2 = 9.0647203 per length for radii 1, 2 (Fourier; "verified"), k = ΔT = 1.
+    cells = tm.quads((0.0, 1.0, 1.0, 2.0), 0.1, 1)
+    x, y = cells.points.T
+    flow = fvcheck.Flow.from_arrays(
+        cells.points,
+        (cells.offsets, cells.nodes),
+        point_data={"U": np.zeros((len(x), 2)), "T": -np.log2(y)},
+        fluid=Fluid(density=1.0, specific_heat=1.0, conductivity=1.0),
+        symmetry="axisymmetric",
+        axis="x",
+    )
+    for radius in (1.25, 1.8):
+        line = ControlSurface.line([(0.8, radius), (0.3, radius)])
+        row = fvcheck.balance(flow, line, laws=["heat"])["heat"]
+        assert row.flux == pytest.approx(0.5 * 9.0647203, rel=1e-3)
+
+
 # --- the set-up of axisymmetric runs -----------------------------------------------------------
 
 

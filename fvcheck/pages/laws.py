@@ -42,7 +42,8 @@ LAWS: dict[str, Page] = {
         "bands are widest.",
         "Needs temperature, velocity, --density, --specific-heat and --conductivity. T counts from its "
         "mean on the border (fvcheck explain datum). Friction heat is left out, as most solvers do; "
-        "viscous_heating = true in [fluid] of a check file counts it.",
+        "viscous_heating = true in [fluid] of a check file counts it. An eddy viscosity adds c_p mu_t/Pr_t "
+        "(--turbulent-prandtl, 0.85) to the conductivity.",
     ),
     "total-energy": Page(
         "Transport of rho E with the work of pressure and friction and with conduction, for an ideal gas.",

@@ -8,7 +8,15 @@ from exact.compressible import isentropic_vortex, oblique_shock, uniform_gas
 from exact.flow import ExactFlow, box_contour, circle_contour, fluxes, gradient, polygon_contour
 from exact.gas_dynamics import diamond, expansion_fan, normal_shock, nozzle, rayleigh
 from exact.potential import cylinder, rankine_half_body, source
-from exact.revolved import burgers_vortex, hagen_poiseuille, landau_force, landau_jet, stokes_sphere
+from exact.revolved import (
+    burgers_vortex,
+    hagen_poiseuille,
+    heated_pipe,
+    landau_force,
+    landau_jet,
+    spherical_source,
+    stokes_sphere,
+)
 from exact.similarity import hiemenz, hiemenz_profile, jeffery_hamel, jeffery_hamel_profile
 from exact.viscous import (
     couette,
@@ -37,6 +45,7 @@ __all__ = [
     "fluxes",
     "gradient",
     "hagen_poiseuille",
+    "heated_pipe",
     "hiemenz",
     "hiemenz_profile",
     "isentropic_vortex",
@@ -56,6 +65,7 @@ __all__ = [
     "rayleigh",
     "shear_layer",
     "source",
+    "spherical_source",
     "stokes_sphere",
     "suction_layer",
     "taylor_green",

@@ -90,6 +90,61 @@ def landau_force(strength: float) -> float:
     return 16 * np.pi * a * (1 + 4 / (3 * (a * a - 1)) - a / 2 * np.log((a + 1) / (a - 1)))
 
 
+def heated_pipe(flux: float = 2.0) -> ExactFlow:
+    """Developed pipe flow, R = 1, mean speed 1, evenly heated by ``flux`` per area: Nu = 48/11 (Shah & London).
+
+    ρ = 1, c = 2, k = 0.05; T rises along the pipe by 2q/(ρcU), so axial conduction is even.
+    """
+    rho, c, k = 1.0, 2.0, 0.05
+    base = hagen_poiseuille(1.0, 0.8, 0.1)
+    rise = 2 * flux / (rho * c)
+
+    def temperature(x, y):
+        return 300.0 + rise * x + flux / k * (y * y - 0.25 * y**4)
+
+    return ExactFlow(
+        name="heated-pipe",
+        domain=base.domain,
+        fluid={"density": rho, "viscosity": 0.1, "conductivity": k, "specific_heat": c},
+        feature=base.feature,
+        u=base.u,
+        v=base.v,
+        p=base.p,
+        T=temperature,
+    )
+
+
+def spherical_source(gamma: float = 1.4) -> ExactFlow:
+    """Supersonic gas from a point, A/A* = R² (NACA Report 1135 for the relation); ρ* = p* = R_gas = 1."""
+    from exact.gas_dynamics import area_ratio
+
+    def mach(x, y):
+        size2 = x * x + y * y
+        m = 1.0 + np.sqrt(np.maximum(size2 - 1.0, 0.0))
+        for _ in range(60):  # Newton's method on ln(A/A*), whose slope is (M² − 1)/(M(1 + 0.2 M²))
+            slope = (m * m - 1) / (m * (1 + 0.2 * m * m))
+            m = np.maximum(m - (np.log(area_ratio(m)) - np.log(size2)) / slope, 1.0 + 1e-9)
+        return m
+
+    def temperature(x, y):
+        return 1.2 / (1 + 0.2 * mach(x, y) ** 2)
+
+    def speed(x, y):
+        return mach(x, y) * np.sqrt(gamma * temperature(x, y)) / np.sqrt(x * x + y * y)
+
+    return ExactFlow(
+        name="spherical-source",
+        domain=(1.2, 0.0, 3.0, 1.5),
+        fluid={"gamma": gamma, "gas_constant": 1.0, "viscosity": 0.0},
+        feature=0.5,
+        u=lambda x, y: x * speed(x, y),
+        v=lambda x, y: y * speed(x, y),
+        p=lambda x, y: temperature(x, y) ** 3.5,
+        T=temperature,
+        rho=lambda x, y: temperature(x, y) ** 2.5,
+    )
+
+
 def stokes_sphere(radius: float = 1.0, speed: float = 1.0, mu: float = 1.0) -> ExactFlow:
     """Creeping stream past a sphere (Stokes 1851): force 6πμRU, a third of it pressure.
 
