@@ -9,7 +9,7 @@ and the changes of successive steps add up to the change over all of them.
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import Any
 
 import numpy as np
@@ -25,9 +25,13 @@ from fvcheck.volume import BEST, SampledVolume
 Array = np.ndarray
 
 # The difference between the formulas through four and through three times is the
-# error of the latter to leading order; this factor (Roache 1998, three levels)
-# covers what is beyond.
-_TIME_FACTOR = 1.25
+# error of the latter to leading order; these factors cover what is beyond. Within
+# the series that of Roache 1998 for three levels does; at both ends, all times lie
+# on one side, and the error is told by what happens more than a step away.
+_TIME_FACTOR, _TIME_FACTOR_ENDS = 1.25, 2.0
+
+# Units in the last place that sums and weighted averages may be off by.
+_ROUNDINGS = 64.0
 
 # Standard deviations that cover 99 in 100.
 _COVERAGE = 3.0
@@ -62,6 +66,7 @@ class Change:
 
     linear : of linear interpolation; sampling, resolution, rounding : half-widths
         as in a `Row`; time : half-width from the steps in time
+    floor : rounding of our own sums; nothing below it is a change
     """
 
     value: Array
@@ -70,6 +75,7 @@ class Change:
     resolution: Array
     rounding: Array
     time: Array
+    floor: Array
 
 
 def content_of(volume: SampledVolume, law: Law) -> Content:
@@ -117,12 +123,13 @@ def rate_of(contents: Sequence[Content], times: Array, at: int, datum: float, hi
     else:
         # One-sided sets of four on both sides: the error of three may have a zero at one of them.
         firsts = {max(min(at - shift, n - 4), 0) for shift in (1, 2)}
+        factor = _TIME_FACTOR if 0 < at < n - 1 else _TIME_FACTOR_ENDS
         time = np.zeros_like(change.value)
         for first in firsts:
             four = slice(first, first + 4)
             finer = combined(contents[four], rate_weights(times[four], at - first), datum)
-            time = np.maximum(time, _TIME_FACTOR * np.abs(finer.value - change.value))
-    return Change(change.value, change.linear, change.sampling, change.resolution, change.rounding, time)
+            time = np.maximum(time, factor * np.abs(finer.value - change.value))
+    return replace(change, time=time)
 
 
 def combined(contents: Sequence[Content], weights: Array, datum: float) -> Change:
@@ -154,7 +161,9 @@ def combined(contents: Sequence[Content], weights: Array, datum: float) -> Chang
                 sampling[c] += abs(w) * spread((third - second)[:, c])
                 resolution[c] += abs(w) * RESOLUTION_FACTOR * spread((second - first)[:, c])
         resolution = np.maximum(resolution, sampling)
-    return Change(value, linear, sampling, resolution, rounding, np.zeros_like(value))
+    size = sum(abs(w) * np.abs(content.amounts[BEST]).sum(axis=0) for w, content in zip(weights, contents))
+    floor = _ROUNDINGS * np.finfo(float).eps * np.asarray(size)
+    return Change(value, linear, sampling, resolution, rounding, np.zeros_like(value), floor)
 
 
 def _comparable(contents: Sequence[Content]) -> bool:

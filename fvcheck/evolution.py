@@ -17,7 +17,7 @@ from fvcheck.overlay.overlay import lay_over
 from fvcheck.sources import Source
 from fvcheck.surfaces import ControlSurface, Motion
 from fvcheck.timeweights import integral_weights
-from fvcheck.verdict import judge, judge_production
+from fvcheck.verdict import CLOSED, judge, judge_production
 from fvcheck.volume import SampledVolume
 
 Array = np.ndarray
@@ -176,19 +176,19 @@ class Evolution:
             0.0 if row.law in self._told_scale else 0.5 * float(np.hypot.reduce(change.value))
         )
         imbalance = row.imbalance + value
-        same = value == 0.0 and row.imbalance_percent is None
+        nothing = row.imbalance_percent is None and bool(np.all(np.abs(change.value) <= change.floor))
         return replace(
             row,
             storage=value,
             imbalance=imbalance,
             scale=size,
-            imbalance_percent=None if same or size == 0.0 else 100.0 * imbalance / size,
+            imbalance_percent=None if nothing or size == 0.0 else 100.0 * imbalance / size,
             sampling_band=sampling,
             resolution_band=resolution,
             rounding_band=row.rounding_band + float(change.rounding[c]),
             time_band=time,
             linear_imbalance=(row.linear_imbalance or 0.0) + float(change.linear[c]),
-            verdict=row.verdict if same else _judged(row, imbalance, sampling, resolution, size),
+            verdict=row.verdict if nothing else _judged(row, imbalance, sampling, resolution, size),
         )
 
     def totals(self, scales: Sequence[Sequence[float]]) -> tuple[Total, ...]:
@@ -216,6 +216,10 @@ class Evolution:
             sampling = float(change.sampling[c] + trapezoid @ [r.sampling_band for r in rows]) + time
             resolution = float(change.resolution[c] + trapezoid @ [r.resolution_band for r in rows]) + time
             total = float(change.value[c]) + float(fine @ passed)
+            # As in a row: where nothing flows and nothing changes, rounding is not judged.
+            nothing = (
+                all(r.imbalance_percent is None for r in rows) and abs(change.value[c]) <= change.floor[c]
+            )
             out.append(
                 Total(
                     law=row.law,
@@ -227,12 +231,14 @@ class Evolution:
                     passed=float(fine @ passed),
                     imbalance=total,
                     scale=size,
-                    imbalance_percent=100.0 * total / size if size > 0 else None,
+                    imbalance_percent=None if nothing or size <= 0 else 100.0 * total / size,
                     sampling_band=sampling,
                     resolution_band=max(resolution, sampling),
                     time_band=time,
                     tolerance_percent=row.tolerance_percent or 0.0,
-                    verdict=_judged(row, total, sampling, max(resolution, sampling), size),
+                    verdict=CLOSED
+                    if nothing
+                    else _judged(row, total, sampling, max(resolution, sampling), size),
                 )
             )
         return tuple(out)

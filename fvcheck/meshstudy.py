@@ -28,6 +28,7 @@ class Quantity:
 
     surface, name, unit : which; ``name`` is a row's label with ``imbalance`` or ``flux``,
         or the port and what of it
+    scale : of an imbalance, the scale of its row on the finest mesh; else None
     sampling_bands : of each value, from fine to coarse: differences below them are noise of reading
     convergence : what the finest value is worth
     standard_uncertainty : root sum of squares of u_num and half the finest sampling band
@@ -36,6 +37,7 @@ class Quantity:
     surface: str
     name: str
     unit: str
+    scale: float | None
     sampling_bands: tuple[float, ...]
     convergence: Convergence
     standard_uncertainty: float
@@ -160,23 +162,26 @@ def _quantities(
                 missing.append(f"{ledger.name}: {name}")
                 continue
             values = [one[name][0] for one in per_mesh]
+            if not any(values):
+                continue  # no flow through a wall, say: there is nothing to study
             bands = tuple(one[name][1] for one in per_mesh)
             found = grid_convergence(values, sizes)
             total = float(np.hypot(found.uncertainty, 0.5 * bands[0]))
-            out.append(Quantity(ledger.name, name, per_mesh[0][name][2], bands, found, total))
+            _, _, unit, scale = per_mesh[0][name]
+            out.append(Quantity(ledger.name, name, unit, scale, bands, found, total))
     return tuple(out), tuple(missing)
 
 
-def _numbers(ledger: Ledger) -> dict[str, tuple[float, float, str]]:
-    """Name -> value, sampling band, unit."""
-    out: dict[str, tuple[float, float, str]] = {}
+def _numbers(ledger: Ledger) -> dict[str, tuple[float, float, str, float | None]]:
+    """Name -> value, sampling band, unit, scale of an imbalance."""
+    out: dict[str, tuple[float, float, str, float | None]] = {}
     for row in ledger.rows:
         if row.imbalance is not None:
-            out[f"{row.label} imbalance"] = (row.imbalance, row.sampling_band, row.unit)
-        if row.inflow or row.outflow:
-            out[f"{row.label} flux"] = (row.flux, row.sampling_band, row.unit)
+            out[f"{row.label} imbalance"] = (row.imbalance, row.sampling_band, row.unit, row.scale)
+        if (row.inflow or row.outflow) and row.flux != row.imbalance:
+            out[f"{row.label} flux"] = (row.flux, row.sampling_band, row.unit, None)
         for patch, amount in row.patches.items():
-            out[f"{row.label} of {patch}"] = (amount, row.sampling_band, row.unit)
+            out[f"{row.label} of {patch}"] = (amount, row.sampling_band, row.unit, None)
     return out
 
 

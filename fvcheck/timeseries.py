@@ -210,14 +210,9 @@ class Recorder:
         ]
         times = self.series.times
         if self.unsteady and times is not None and len(times) > 2:
-            steps = np.diff(times)
-            if np.all(times == np.round(times)) and np.all(steps == steps[0]):
-                self._note(
-                    Hint(
-                        "time-or-iteration",
-                        "the times are whole numbers in even steps and count as times, with storage",
-                    )
-                )
+            if np.all(times == np.round(times)) and times[-1] >= 2.0:
+                note = "the times are whole numbers; they count as times, with storage"
+                self._note(Hint("time-or-iteration", note))
 
     def _velocity(self, number: int, flow: Flow) -> Array | None:
         velocity = self.series.point_velocity(number)
@@ -307,11 +302,19 @@ def _trends(entries: Sequence[Entry], steps: Array, reference: tuple[float, floa
                 values = np.array([100.0 * (r.imbalance or 0.0) / scale for r in rows])
                 name = f"{row.label} imbalance"
                 yield trend_of(ledger.name, name, "%", steps, values, 100.0 * limit, reference)
-            if any(r.inflow or r.outflow for r in rows):
+            if any(r.inflow or r.outflow for r in rows) and not _same(rows):
                 flux = np.array([r.flux for r in rows])
                 size = max(r.inflow + r.outflow for r in rows)
                 name = f"{row.label} flux"
                 yield trend_of(ledger.name, name, row.unit, steps, flux, limit * size, reference)
+
+
+def _same(rows: Sequence[Row]) -> bool:
+    """Whether a row's flux is its imbalance: nothing else enters the balance."""
+    return all(
+        row.imbalance is not None and abs(row.flux - row.imbalance) <= 1e-9 * (row.scale or 0.0)
+        for row in rows
+    )
 
 
 def history(

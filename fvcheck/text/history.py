@@ -5,7 +5,6 @@ from __future__ import annotations
 from collections.abc import Iterator
 
 from rich.console import RenderableType
-from rich.table import Table
 from rich.text import Text
 
 from fvcheck.ledger import Ledger
@@ -44,7 +43,7 @@ def history_text(history: History, quiet: bool = False) -> str:
     for number, ledger in enumerate(last.ledgers):
         parts += [*_steps(history, number, ledger), Text()]
     if history.trends:
-        parts += [_trends(history), Text()]
+        parts += [*_trends(history)]
     if history.totals:
         parts += [*_totals(history), Text()]
     parts += hint_lines(history.hints)
@@ -106,31 +105,34 @@ def shown(count: int, lines: int) -> list[int]:
     return sorted({round(k * (count - 1) / (lines - 1)) for k in range(lines)})
 
 
-def _trends(history: History) -> Table:
+def _trends(history: History) -> Iterator[RenderableType]:
     sign = "±" if rich_characters() else "+-"
-    strouhal = any(trend.strouhal is not None for trend in history.trends)
-    table = plain_table(
-        ("\nover the steps", FOLDED | {"min_width": 20}),
-        "\nlevel",
-        "drift\n/ step",
-        "\nmean",
-        f"\n{sign}95 %",
-        "ampli-\ntude",
-        "Strouhal\nnumber" if strouhal else "\nperiod",
-        ("\nsettled", LEFT),
-    )
-    for trend in history.trends:
-        table.add_row(
-            f"{trend.surface}: {trend.name}",
-            short(trend.level),
-            f"{trend.drift:.1e}",
-            short(trend.mean),
-            short(trend.mean_band, 2),
-            short(trend.amplitude, 3),
-            _period(trend, strouhal),
-            "yes" if trend.settled else "no",
+    for name in dict.fromkeys(trend.surface for trend in history.trends):
+        mine = [trend for trend in history.trends if trend.surface == name]
+        strouhal = any(trend.strouhal is not None for trend in mine)
+        table = plain_table(
+            (f"\n{name}", FOLDED | {"min_width": 20}),
+            "\nlevel",
+            "drift\n/ step",
+            "\nmean",
+            f"\n{sign}95 %",
+            "ampli-\ntude",
+            "Strouhal\nnumber" if strouhal else "\nperiod",
+            ("\nsettled", LEFT),
         )
-    return table
+        for trend in mine:
+            table.add_row(
+                f"{trend.name} [{trend.unit}]",
+                short(trend.level),
+                f"{trend.drift:.1e}",
+                short(trend.mean),
+                short(trend.mean_band, 2),
+                short(trend.amplitude, 3),
+                _period(trend, strouhal),
+                "yes" if trend.settled else "no",
+            )
+        yield table
+        yield Text()
 
 
 def _period(trend: Trend, strouhal: bool) -> str:

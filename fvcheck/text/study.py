@@ -5,7 +5,7 @@ from __future__ import annotations
 from rich.console import RenderableType
 from rich.text import Text
 
-from fvcheck.meshstudy import Study
+from fvcheck.meshstudy import Quantity, Study
 from fvcheck.text.console import (
     FOLDED,
     LEFT,
@@ -59,13 +59,21 @@ def study_text(study: Study, quiet: bool = False) -> str:
             short(c.values[1]),
             MISSING if c.order is None else f"{c.order:.2f}",
             short(c.extrapolated),
-            percent(None if c.gci is None else 100.0 * c.gci),
+            percent(_index(quantity)),
             short(c.band, 2),
             short(quantity.sampling_bands[0], 2),
             _KIND.get(c.kind, c.kind),
         )
     parts += hint_lines(study.hints)
     return render(parts)
+
+
+def _index(quantity: Quantity) -> float | None:
+    """Grid convergence index in percent: of the value, of an imbalance in percent of its scale."""
+    found = quantity.convergence
+    if quantity.scale:
+        return 100.0 * found.band / quantity.scale
+    return None if found.gci is None else 100.0 * found.gci
 
 
 _KIND = {"oscillatory": "osc.", "monotone": "mono.", "diverging": "div.", "two meshes": "two"}
