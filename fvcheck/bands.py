@@ -56,18 +56,18 @@ def bands(
 
     rounding : half-width from the precision of the stored data
     chosen : contributions by the degree that the data support, where that is
-        not degree 3 everywhere: there, the larger of the two steps counts
-    reaching : (m,) bool, m ≤ k, leading pieces where values are extrapolated:
-        cell data on the domain boundary. All fits there reach out on the same
-        side, so their errors have one sign and add up
+        not degree 3 everywhere. Around a jump the errors have one sign, that of
+        the jump's unknown place in its cell, and add up
+    reaching : (m,) bool, m ≤ k, leading pieces whose errors have one sign and add
+        up: where values are extrapolated (cell data on the domain boundary, all
+        fits reach out on the same side), and near a jump
     """
     d23, d12 = third - second, second - first
-    if chosen is not None:
-        larger = np.where(np.abs(d12) > np.abs(d23), d12, d23)
-        d23 = np.where(chosen != third, larger, d23)
     outside = np.zeros(len(d23), bool)
     if reaching is not None:
         outside[: len(reaching)] = reaching
+    if chosen is not None:
+        outside |= chosen != third
     sampling = _half_width(d23[~outside], d12[~outside]) + rounding
     sampling += float(np.maximum(np.abs(d23), _REACHING * np.abs(d12))[outside].sum())
     resolution = RESOLUTION_FACTOR * sum(

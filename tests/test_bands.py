@@ -68,8 +68,8 @@ def test_where_the_degree_fell_the_larger_step_counts():
     first, second, third = arrays((8, 0.25), (-8, -0.25), (6, 0.5))
     chosen = np.array([third[0], third[1], first[2]])
     band = bands(first, second, third, 0.0, chosen)
-    # steps 0.25, -0.25 and 6: net 6, three times the root sum of squares 18.03
-    assert band.sampling == pytest.approx(3 * np.sqrt(0.125 + 36))
+    # three times the root sum of squares of 0.25 and -0.25, and the whole larger step at the jump
+    assert band.sampling == pytest.approx(3 * np.sqrt(0.125) + 6.0)
 
 
 @pytest.mark.parametrize("scale", [1e-12, 1e12])

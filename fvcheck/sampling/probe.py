@@ -53,11 +53,13 @@ class Samples:
     by_degree : degree -> role -> `Sampled`
     best : role -> `Sampled`, by the degree that the data support
     supported : (cells,) that degree
+    near_jump : (cells,) bool, cells whose fits may feel a jump
     """
 
     by_degree: dict[int, dict[str, Sampled]]
     best: dict[str, Sampled]
     supported: Array
+    near_jump: Array
 
 
 @dataclass(frozen=True, eq=False)
@@ -102,7 +104,7 @@ class Probe:
         cell : (q,) which cell each place lies in, numbered from 0; a cell has one degree
         """
         raw = {degree: self.raw(degree, triangle, places) for degree in DEGREES}
-        supported = self._supported(raw[DEGREES[-1]], triangle, cell)
+        supported, near_jump = self._supported(raw[DEGREES[-1]], triangle, cell)
         best = raw[DEGREES[-1]]
         if np.any(supported < DEGREES[-1]):
             fell = supported[cell] < DEGREES[-1]
@@ -116,7 +118,8 @@ class Probe:
                     raw[1], best, self._limits(triangle)
                 )
             )
-        return Samples({d: self.by_role(r) for d, r in raw.items()}, self.by_role(best), supported)
+        by_degree = {degree: self.by_role(part) for degree, part in raw.items()}
+        return Samples(by_degree, self.by_role(best), supported, near_jump)
 
     def _limits(self, triangle: Array) -> list[tuple[Array, Array]]:
         """Per group: smallest and largest datum (q, f) around the corners of each triangle."""
@@ -127,8 +130,8 @@ class Probe:
             out.append((low[corner].min(axis=1), high[corner].max(axis=1)))
         return out
 
-    def _supported(self, raw: Raw, triangle: Array, cell: Array) -> Array:
-        """(cells,) the highest degree that the data support in each cell: 3, or 1 around a jump.
+    def _supported(self, raw: Raw, triangle: Array, cell: Array) -> tuple[Array, Array]:
+        """(cells,) the highest degree that the data support, 3, or 1 at a jump; (cells,) which are near one.
 
         raw : of degree 3. Every field counts; differences small against the
         whole surface do not.
@@ -143,10 +146,13 @@ class Probe:
             seeds |= (matters & (excess > allowed) & (apart > _DISAGREE * extent)).any(axis=1)
             overshoots |= (matters & (excess > _OVERSHOOT * extent)).any(axis=1)
         supported = np.full(int(cell.max(initial=-1)) + 1, DEGREES[-1])
+        near_jump = np.zeros(len(supported), bool)
         if seeds.any():
             near = self.groups[0].sampler.within(np.unique(triangle[seeds]), _REACH)
-            supported[cell[seeds | (overshoots & near[triangle].any(axis=1))]] = DEGREES[0]
-        return supported
+            around = near[triangle].any(axis=1)
+            near_jump[cell[around]] = True
+            supported[cell[seeds | (overshoots & around)]] = DEGREES[0]
+        return supported, near_jump
 
     def shaken(self, seed: int) -> Probe:
         """The same probe on data whose last stored digit is off at random.
