@@ -344,7 +344,11 @@ class SampledVolume:
         return any(bool(np.any(part.supported < DEGREES[-1])) for part in parts)
 
     def reaching(self, law: Law) -> Array:
-        """(groups,) bool: boundary pieces where a field the law leans on must be extrapolated from cells."""
+        """(groups,) bool: where errors have one sign and add up.
+
+        Boundary pieces where a field the law leans on must be extrapolated from
+        cells, and pieces near a jump.
+        """
         roles = ["velocity", *(["temperature"] if "conductive" in law.fluxes else []), str(law.datum)]
         out = np.zeros(len(self._groups), bool)
         on_boundary = self._groups % 2 == 1
@@ -354,7 +358,7 @@ class SampledVolume:
                 known = known_values(self.flow, role)
                 cells = np.empty(0, np.int64) if known is None else known[0].cells
                 out |= on_boundary & ~np.isin(self._groups // 2, cells)
-        return out
+        return out | self.line.near_jump
 
     def degree_shares(self) -> dict[str, float]:
         """Share of the length of the surface that each degree was used on."""
@@ -378,7 +382,9 @@ class SampledVolume:
         if state.viscosity is None and any("viscous" in law.fluxes for law in laws):
             out.append(Hint("inviscid", "no viscosity is known: momentum and energy are taken as inviscid"))
         conducting = any("conductive" in law.fluxes for law in laws)
-        if conducting and state.conductivity is None and "temperature" in state.fields:
+        frictionless = state.viscosity is not None and not np.any(state.viscosity)
+        unknown = conducting and state.conductivity is None and not frictionless
+        if unknown and "temperature" in state.fields:
             out.append(Hint("no-conduction", "no conductivity is known: heat is carried by the flow only"))
         told = self.has_rates or self.unsteady
         if self.surface_velocity is not None and not told and self.overlay.closed:
