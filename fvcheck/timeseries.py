@@ -209,10 +209,9 @@ class Recorder:
             Evolution(surface, self._laws, unsteady=self.unsteady, **self._settings) for surface in surfaces
         ]
         times = self.series.times
-        if self.unsteady and times is not None and len(times) > 2:
-            if np.all(times == np.round(times)) and times[-1] >= 2.0:
-                note = "the times are whole numbers; they count as times, with storage"
-                self._note(Hint("time-or-iteration", note))
+        if self.unsteady and times is not None and np.all(times == np.round(times)) and times[-1] >= 2.0:
+            note = "the times are whole numbers; they count as times, with storage"
+            self._note(Hint("time-or-iteration", note))
 
     def _velocity(self, number: int, flow: Flow) -> Array | None:
         velocity = self.series.point_velocity(number)

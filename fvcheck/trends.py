@@ -82,8 +82,8 @@ def trend_of(
     settled = n >= _LEAST and float(np.ptp(last)) <= _SETTLED * limit
     found = dominant_period(times, values)
     if found is not None:
-        period, period_band = found
-        mean, mean_band, amplitude, count, repeats = _over_periods(times, values, period)
+        period, period_band, start = found
+        mean, mean_band, amplitude, count, repeats = _over_periods(times[start:], values[start:], period)
         settled = settled or repeats <= _SETTLED * limit
     else:
         period, period_band, count = None, None, 0
@@ -153,22 +153,39 @@ def t95(freedom: float) -> float:
     return float(np.interp(freedom, np.arange(1, len(_T95) + 1), _T95))
 
 
-def dominant_period(times: Array, values: Array) -> tuple[float, float] | None:
-    """Period of the strongest oscillation and its 95 % half-width; None where there is none.
+def dominant_period(times: Array, values: Array) -> tuple[float, float, int] | None:
+    """Period of the strongest oscillation, its 95 % half-width, and the steps left out at the start.
 
-    The peak of the spectrum of the second half or more, made sharper by the
-    sinusoid with harmonics that leaves least; it must explain nine tenths of
-    the variance, fit in twice, and be resolved by six values.
+    None where there is none: the sinusoid with harmonics, about a straight
+    line, must explain nine tenths of the variance, fit in twice, and be
+    resolved by six values. Later starts are taken where they leave far less.
+    """
+    n = len(values)
+    starts = sorted({min(start_up(values), n // 2), n // 4, n // 2})
+    best: tuple[float, float, int] | None = None
+    least = 1.0 - _EXPLAINED
+    for start in starts:
+        found = _fitted(np.asarray(times[start:], float), np.asarray(values[start:], float))
+        if found is not None and found[1] < least:
+            (frequency, left), least = found, 0.5 * found[1]
+            extent = float(times[-1] - times[start])
+            # Fisher information of a sinusoid's frequency (Rife & Boorstyn 1974, recalled from memory).
+            noise = 2.0 * np.sqrt(6.0 * left / (1.0 - left) / (n - start)) / (np.pi * extent)
+            best = 1.0 / frequency, float(noise / frequency**2), start
+    return best
+
+
+def _fitted(t: Array, v: Array) -> tuple[float, float] | None:
+    """The frequency whose sinusoid leaves the least share of the variance, and that share.
+
+    Begun at the peak of the spectrum of the values between even times.
     """
     from scipy.optimize import minimize_scalar
 
-    skip = min(start_up(values), len(values) // 2)
-    t, v = np.asarray(times[skip:], float), np.asarray(values[skip:], float)
     n = len(t)
-    extent = float(t[-1] - t[0]) if n > 1 else 0.0
-    swing = float(np.ptp(v)) if n else 0.0
-    if n < _PERIODS * _PER_PERIOD or swing <= 1e-9 * np.abs(v).max(initial=0.0):
+    if n < _PERIODS * _PER_PERIOD or np.ptp(v) <= 1e-9 * np.abs(v).max(initial=0.0):
         return None
+    extent = float(t[-1] - t[0])
     even = np.linspace(t[0], t[-1], n)
     about = np.interp(even, t, v)
     about = about - np.polyval(np.polyfit(even - t[0], about, 1), even - t[0])
@@ -178,8 +195,7 @@ def dominant_period(times: Array, values: Array) -> tuple[float, float] | None:
     spectrum[frequency > (n - 1) / (extent * _PER_PERIOD)] = 0.0
     if not spectrum.any():
         return None
-    peak = float(frequency[np.argmax(spectrum)])
-    near = 0.5 / extent
+    peak, near = float(frequency[np.argmax(spectrum)]), 0.5 / extent
     best = minimize_scalar(
         lambda f: _left(t, v, f),
         bounds=(max(peak - near, 0.5 * peak), peak + near),
@@ -187,11 +203,7 @@ def dominant_period(times: Array, values: Array) -> tuple[float, float] | None:
         options={"xatol": 1e-9 * peak},
     )
     f = float(best.x)
-    if best.fun > (1.0 - _EXPLAINED) or f * extent < _PERIODS - 0.05:
-        return None
-    # Fisher information of a sinusoid's frequency (Rife & Boorstyn 1974, recalled from memory).
-    noise = 2.0 * np.sqrt(6.0 * best.fun / max(1.0 - best.fun, 1e-12) / n) / (np.pi * extent)
-    return 1.0 / f, float(noise / f**2)
+    return (f, float(best.fun)) if f * extent >= _PERIODS - 0.05 else None
 
 
 def _left(t: Array, v: Array, f: float) -> float:
@@ -207,8 +219,7 @@ def _left(t: Array, v: Array, f: float) -> float:
 
 def _over_periods(times: Array, values: Array, period: float) -> tuple[float, float, float, int, float]:
     """Mean over the last whole periods, its half-width, amplitude, their number, last change."""
-    kept = times[-1] - times[min(start_up(values), len(values) // 2)]
-    count = max(1, int(kept / period + 0.02))
+    count = max(1, int((times[-1] - times[0]) / period + 0.02))
     ends = times[-1] - period * np.arange(count, -1, -1)
     means = np.array([_mean_between(times, values, a, b) for a, b in itertools.pairwise(ends)])
     inside = values[times >= ends[0] - 1e-9 * period]

@@ -6,6 +6,8 @@ project's table of check values (Lamb-Oseen, uniform expansion, Sod), which says
 
 from __future__ import annotations
 
+from itertools import pairwise
+
 import numpy as np
 import pytest
 import trial_meshes as tm
@@ -91,7 +93,7 @@ def test_lamb_oseen_momentum_and_angular_momentum_close():
 
 
 def test_stokes_first_problem_closes_and_gives_the_wall_friction():
-    # Stokes 1851; Rayleigh 1911. Wall friction rho U sqrt(nu/(pi t)), momentum 2 rho U sqrt(nu t/pi) per length.
+    # Stokes 1851; Rayleigh 1911. Friction rho U sqrt(nu/(pi t)), momentum 2 rho U sqrt(nu t/pi) per length.
     nu, speed = 0.01, 2.0
 
     def load(t):
@@ -264,7 +266,7 @@ def test_sods_tube_closes_over_the_run_though_a_shock_passes_through_the_volume(
         breaks = t * np.array([-np.sqrt(gamma), speed - np.sqrt(gamma * pressure / left), speed, shock])
         total = np.zeros((3, len(a)))
         ends = np.concatenate([[-np.inf], breaks, [np.inf]])
-        for low, high in zip(ends, ends[1:]):  # Gauss points may not straddle a jump
+        for low, high in pairwise(ends):  # Gauss points may not straddle a jump
             first, last = np.clip(a, low, high), np.clip(b, low, high)
             x = 0.5 * (first + last)[:, None] + 0.5 * (last - first)[:, None] * nodes
             rho, u, p = sod(x, t)
