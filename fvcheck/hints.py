@@ -237,7 +237,7 @@ PAGES: dict[str, Page] = {
         "Nothing for iterations of a steady run. Else export with times, or as one series (PVD, XDMF, …).",
     ),
     "time-or-iteration": Page(
-        "The times of the steps are whole numbers in even steps.",
+        "The times of the steps are whole numbers.",
         "Some writers put the number of the iteration where a time belongs; storage would then be wrong.",
         "For iterations of a steady run: --steady. Else nothing.",
     ),
