@@ -33,7 +33,8 @@ class Motion:
         wx, wy, omega, x, y = _rings.finite([*self.velocity, self.omega, *self.centre], "The motion")
         object.__setattr__(self, "velocity", (wx, wy))
         object.__setattr__(self, "omega", omega)
-        object.__setattr__(self, "centre", (x, y))
+        # Without a spin the centre means nothing; equal motions then compare and are spelled alike.
+        object.__setattr__(self, "centre", (x, y) if omega else (0.0, 0.0))
 
     def at(self, x: Array) -> Array:
         """(n, 2) boundary velocity w = velocity + omega e_z × (x − centre) at points x (n, 2)."""
