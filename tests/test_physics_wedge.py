@@ -117,6 +117,43 @@ def test_a_wedge_between_no_coordinate_planes_is_recognised(duplicate):
         assert np.allclose(found[label], values, rtol=0, atol=1e-9 * size), label
 
 
+def test_patches_of_a_wedge_are_those_of_the_half_plane():
+    mesh = wedge(FRAMES["x"], np.radians(2.5))
+    n = len(CELLS.points)
+    far = np.where(CELLS.points[:, 1] == 0.0, np.arange(n), np.arange(n) + n)
+    tags = {"inlet": (0, 0.0), "outlet": (0, 1.2), "shell": (1, 1.2)}
+    faces, marks = {"triangle": [], "quad": []}, {"triangle": [], "quad": []}
+
+    def add(corners, tag):
+        corners = list(dict.fromkeys(corners))
+        kind = {3: "triangle", 4: "quad"}[len(corners)]
+        faces[kind].append(corners)
+        marks[kind].append(tag)
+
+    for i in range(len(CELLS.sizes)):
+        a = CELLS.nodes[CELLS.offsets[i] : CELLS.offsets[i + 1]]
+        add(a.tolist(), 4)  # the two sides of the slice are marked as well
+        add(far[a].tolist(), 5)
+        for p, q in zip(a, np.roll(a, -1)):
+            for tag, (axis, level) in enumerate(tags.values(), start=1):
+                if (CELLS.points[[p, q], axis] == level).all():
+                    add([p, q, far[q], far[p]], tag)
+    cells = {kind: block.data for kind, block in zip([b.type for b in mesh.cells], mesh.cells)}
+    cells |= {kind: np.array(listed) for kind, listed in faces.items()}
+    data = [np.array(marks.get(kind, [0] * len(listed))) for kind, listed in cells.items()]
+    marked = meshio.Mesh(mesh.points, cells, point_data=mesh.point_data, cell_data={"patch": data})
+    flow = fvcheck.Flow.from_meshio(marked, fluid=Fluid(**VORTEX.fluid))
+    level = {
+        name: flow.mesh.points[flow.mesh.patch_edges(name)].mean(axis=(0, 1))
+        for name in flow.mesh.boundary.names
+    }
+    assert {"patch-1", "patch-2", "patch-3"} <= set(level)
+    assert not {"patch-4", "patch-5"} & set(level)
+    assert np.allclose(level["patch-1"], [0.0, 0.6]) and np.allclose(level["patch-3"], [0.6, 1.2])
+    shell = fvcheck.balance(flow, ControlSurface.patch("patch-3"), laws=["mass"])["mass"]
+    assert shell.flux == pytest.approx(-np.pi * 1.2**3, rel=1e-9)  # 2πr · u_r = −πr² over the length 1.2
+
+
 def polyhedra(half):
     """The slice with every cell a polyhedron, as VTK holds it: faces of two corners dropped."""
     import pyvista

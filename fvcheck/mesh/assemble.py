@@ -19,7 +19,7 @@ from fvcheck.mesh.gather import Polygons, expand_cells, gather
 from fvcheck.mesh.hanging import insert_hanging
 from fvcheck.mesh.mesh import Boundary, Mesh
 from fvcheck.mesh.piece import Piece
-from fvcheck.mesh.plane import check_name, plane_of
+from fvcheck.mesh.plane import check_name, plane_of, slack
 from fvcheck.mesh.sides import name_all
 from fvcheck.mesh.soundness import check_joined, check_regions, seam_hints
 from fvcheck.mesh.stitch import stitch
@@ -95,6 +95,17 @@ def assemble(pieces: Sequence[Piece], *, plane: str = "auto", keep_centres: bool
     points = where.coordinates(raw.points)
     cells = tidy(points, cells, raw.precision, hints, flat_file=not solid)
     claims = collect(pieces, raw, front)
+    if wedge is not None:
+        # Faces on the sides of a wedge reach the axis too, but are no boundary of the half plane.
+        on_axis = points[:, 1 - wedge.axis] <= 4 * slack(points, raw.precision)
+        off = ~on_axis[claims.ends].all(axis=1)
+        claims = replace(
+            claims,
+            ends=claims.ends[off],
+            patch=claims.patch[off],
+            face=claims.face[off],
+            origin=claims.origin[off],
+        )
     edges = edges_of(cells, len(points))
     seams = stitch(points, cells, edges, raw, pieces, claims, hints)
     number, finder = seams.number, seams.finder
