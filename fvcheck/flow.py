@@ -292,11 +292,14 @@ def _settle(fluid: Fluid, chosen: dict[str, Field]) -> tuple[Fluid, dict[str, Fi
         value = getattr(fluid, role)
         if isinstance(value, str):
             changes[role] = None
-        elif value is not None and role in chosen:
-            field = chosen.pop(role)
-            hints.append(
-                Hint("option-over-field", f"{role} = {value:g} as told; the array {field.name!r} is not used")
-            )
+        if isinstance(value, str) or value is None:
+            continue
+        for spelled in (role, f"kinematic_{role}"):
+            if spelled in chosen:
+                unused = chosen.pop(spelled).name
+                hints.append(
+                    Hint("option-over-field", f"{role} = {value:g} as told; the array {unused!r} is not used")
+                )
     return replace(fluid, **changes), chosen, tuple(hints)
 
 

@@ -351,14 +351,23 @@ class SampledVolume:
         """
         roles = ["velocity", *(["temperature"] if "conductive" in law.fluxes else []), str(law.datum)]
         out = np.zeros(len(self._groups), bool)
-        on_boundary = self._groups % 2 == 1
         for role in roles:
             field = self.flow.fields.get(role)
             if field is not None and field.location == "cell":
                 known = known_values(self.flow, role)
                 cells = np.empty(0, np.int64) if known is None else known[0].cells
-                out |= on_boundary & ~np.isin(self._groups // 2, cells)
+                out |= self.on_boundary & ~np.isin(self.line_cells, cells)
         return out | self.line.near_jump
+
+    @property
+    def line_cells(self) -> Array:
+        """(groups,) mesh cell of each row of `per_line_cell`."""
+        return self._groups // 2
+
+    @property
+    def on_boundary(self) -> Array:
+        """(groups,) bool: the row is of pieces on the domain boundary, not of drawn ones."""
+        return self._groups % 2 == 1
 
     def degree_shares(self) -> dict[str, float]:
         """Share of the length of the surface that each degree was used on."""

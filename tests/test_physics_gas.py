@@ -115,6 +115,29 @@ def test_the_isentropic_vortex_keeps_everything_angular_momentum_too():
         assert abs(row.imbalance) <= row.resolution_band, row.label
 
 
+@pytest.mark.parametrize(
+    ("law", "radius", "content"), [("mass", 1.0, 2.0699899), ("angular-momentum", 5.0, 15.4333496)]
+)
+def test_the_content_of_the_isentropic_vortex_is_met(law, radius, content):
+    # Mass in r < 1 and angular momentum in r < 5 (Shu 1998; check values, "verified"), from their rates
+    # of change: every quantity grows as its own size, so that the storage is the content.
+    vortex = exact.isentropic_vortex()
+    cells = tm.triangles((-5.2, -5.2, 5.2, 5.2), 0.2, 1)
+    x, y = cells.points.T
+    rho = vortex.rho(x, y)
+    data = {"U": vortex.velocity(x, y), "rho": rho, "p": vortex.p(x, y), "drho": rho}
+    flow = Flow.from_arrays(
+        cells.points,
+        (cells.offsets, cells.nodes),
+        point_data=data,
+        fields={"rate:density": "drho"},
+        fluid=Fluid(gamma=1.4, gas_constant=1.0),
+    )
+    row = fvcheck.balance(flow, ControlSurface.circle(0, 0, radius), laws=[law])[law]
+    # Five cells in the core radius.
+    assert row.storage == pytest.approx(content, rel=1e-3)
+
+
 # --- the nozzle and heat -----------------------------------------------------------------------
 
 
@@ -305,6 +328,19 @@ def test_turbulence_energy_presses_on_the_surface():
 def test_an_eddy_viscosity_mixes_heat_by_the_turbulent_prandtl_number():
     row = fvcheck.balance(shear(mut=lambda y: 1 + y), LINE, laws=["heat"])["heat"]
     assert row.parts["conductive"] == pytest.approx(-0.6 * 5.0 * 1.6 / 0.5 * 3.0, rel=1e-9)
+
+
+def test_a_told_viscosity_wins_over_an_array_of_the_kinematic_one():
+    x, y = np.array([[0.0, 0, 1, 1], [0.0, 1, 1, 0]])
+    flow = Flow.from_arrays(
+        np.column_stack([x, y]),
+        [[0, 3, 2, 1]],
+        point_data={"U": np.column_stack([y, x]), "nu": x},
+        fields={"kinematic_viscosity": "nu"},
+        fluid=Fluid(density=2.0, viscosity=0.1),
+    )
+    assert "kinematic_viscosity" not in flow.fields
+    assert "option-over-field" in [hint.code for hint in flow.hints]
 
 
 def test_conductivity_may_vary():
