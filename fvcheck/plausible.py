@@ -154,21 +154,22 @@ def _wall_hints(flow: Flow) -> list[Hint]:
 def force_hints(volume: SampledVolume, rows: Sequence[Row]) -> list[Hint]:
     """Whether a momentum balance that is open would close with another meaning of pressure or viscosity."""
     momentum = [row for row in rows if row.law == "momentum"]
-    if not volume.overlay.closed or len(momentum) != 2:
+    fluid = volume.flow.fluid
+    if not volume.overlay.closed or len(momentum) != 2 or fluid.ideal_gas:
         return []
-    open_by = np.array([row.imbalance or 0.0 for row in momentum])
-    band = np.array([row.resolution_band for row in momentum])
+    # Around an axis pressure acts across it in more ways than through the border.
+    which = slice(None) if volume.axis is None else slice(volume.axis, volume.axis + 1)
+    open_by = np.array([row.imbalance or 0.0 for row in momentum])[which]
+    band = np.array([row.resolution_band for row in momentum])[which]
     if not np.any(np.abs(open_by) > _OPEN * band):
         return []
     band = np.maximum(band, 1e-3 * np.abs(open_by).max())
-    fluid, state = volume.flow.fluid, volume.line_state(BEST)
     terms = volume.contributions(find_law("momentum"), BEST)
-    rho = float(np.mean(state.density))
-    pressure = terms.parts["pressure"].sum(axis=0)
-    viscous = terms.parts["viscous"].sum(axis=0) if "viscous" in terms.parts else np.zeros(2)
-    weight = np.zeros(2)
-    if volume.axis is None and terms.source is not None and "body_force" not in volume.flow.fields:
-        weight = terms.source.sum(axis=0) if any(fluid.gravity) else weight
+    rho = float(np.mean(volume.line_state(BEST).density))
+    pressure = terms.parts["pressure"].sum(axis=0)[which]
+    viscous = terms.parts["viscous"].sum(axis=0)[which] if "viscous" in terms.parts else 0.0 * open_by
+    only_weight = not fluid.frame_rate and "body_force" not in volume.flow.fields
+    weight = terms.source.sum(axis=0)[which] if only_weight and terms.source is not None else 0.0 * open_by
     told = fluid.pressure_kind
     causes = [
         ("kinematic-pressure", told == "static", (rho - 1.0) * pressure, "the pressure is kinematic, p/rho"),

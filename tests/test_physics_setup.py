@@ -65,6 +65,23 @@ def test_a_wrong_meaning_of_pressure_or_viscosity_is_named(pressure, fluid, code
     assert found(kovasznay(pressure, fluid)) == code
 
 
+def test_a_kinematic_pressure_in_a_pipe_is_named():
+    pipe = exact.hagen_poiseuille()
+    cells = tm.mixed(pipe.domain, 0.12, seed=1)
+    x, y = cells.points.T
+    data = {"U": pipe.velocity(x, y), "p": pipe.p(x, y) / 3.0}
+    flow = Flow.from_arrays(
+        cells.points,
+        (cells.offsets, cells.nodes),
+        point_data=data,
+        fluid=Fluid(density=3.0, viscosity=pipe.viscosity),
+        symmetry="axisymmetric",
+        axis="x",
+    )
+    result = fvcheck.balance_all(flow, [ControlSurface.box(0.5, 0.0, 2.5, 0.8)], ["momentum"])
+    assert codes(result) == {"kinematic-pressure"}
+
+
 def test_an_imbalance_of_another_kind_is_not_put_down_to_the_set_up():
     # Half the viscosity is a fault, but none that a density explains.
     assert found(kovasznay(fluid={"viscosity": 0.3 * RHO * KOVASZNAY.fluid["viscosity"]})) == set()
