@@ -119,7 +119,9 @@ def follow(
                         recorder.drop()
                         continue
                     last_news = time.monotonic()
-                    if on_step is not None:
+                    if on_step is not None and not (recorder.unsteady and recorder.taken == 1):
+                        if recorder.unsteady and recorder.taken == 2:
+                            on_step(recorder.entry(0))  # a first one without storage says nothing yet
                         on_step(entry)
                     ended = _end(recorder, limit, until_settled) or (
                         "stopped from the keyboard" if stopped else ""

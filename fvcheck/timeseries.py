@@ -208,10 +208,6 @@ class Recorder:
         self._evolutions = [
             Evolution(surface, self._laws, unsteady=self.unsteady, **self._settings) for surface in surfaces
         ]
-        times = self.series.times
-        if self.unsteady and times is not None and np.all(times == np.round(times)) and times[-1] >= 2.0:
-            note = "the times are whole numbers; they count as times, with storage"
-            self._note(Hint("time-or-iteration", note))
 
     def _velocity(self, number: int, flow: Flow) -> Array | None:
         velocity = self.series.point_velocity(number)
@@ -278,7 +274,10 @@ class Recorder:
         hints = dict(self._hints)
         for entry in entries:
             hints |= dict.fromkeys(entry.result.hints)
-        if self.unsteady and self.taken < 3:
+        if self.unsteady and len(steps) > 1 and np.all(steps == np.round(steps)) and steps[-1] >= 2.0:
+            note = "the times are whole numbers; they count as times, with storage"
+            hints[Hint("time-or-iteration", note)] = None
+        if self.unsteady and self.taken == 2:
             note = "storage by fewer than three snapshots is of first order in the step"
             hints[Hint("few-snapshots", note)] = None
         return History(

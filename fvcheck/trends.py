@@ -37,7 +37,7 @@ class Trend:
     drift : change per step there, by a straight line
     reduction : first value over the last one, in magnitude
     settled : whether the last quarter stays within a quarter of the tolerance, or its periods repeat
-    mean, mean_band : over whole periods where there are any, else behind the start-up; 95 % for
+    mean, mean_band : (None for a single value) over whole periods where there are any, else behind the start-up; 95 % for
         correlated values
     amplitude : half of highest minus lowest there
     period, period_band : of the dominant oscillation [time, else steps]; None where there is none
@@ -53,7 +53,7 @@ class Trend:
     reduction: float | None
     settled: bool
     mean: float
-    mean_band: float
+    mean_band: float | None
     amplitude: float
     period: float | None = None
     period_band: float | None = None
@@ -88,7 +88,7 @@ def trend_of(
     else:
         period, period_band, count = None, None, 0
         rest = values[start_up(values) :]
-        mean, mean_band = float(rest.mean()), mean_half_width(rest)
+        mean, mean_band = float(rest.mean()), mean_half_width(rest) if len(rest) > 1 else None
         amplitude = 0.5 * float(np.ptp(rest))
     return Trend(
         surface=surface,
