@@ -19,9 +19,11 @@ from fvcheck.version import __version__
 
 _HOME = {
     "ControlSurface": "fvcheck.surfaces",
+    "Estimate": "fvcheck.routes",
     "FieldError": "fvcheck.errors",
     "Flow": "fvcheck.flow",
     "Fluid": "fvcheck.fluid",
+    "Forces": "fvcheck.routes",
     "FormatError": "fvcheck.errors",
     "FvcheckError": "fvcheck.errors",
     "History": "fvcheck.timeseries",
@@ -30,6 +32,7 @@ _HOME = {
     "Ledger": "fvcheck.ledger",
     "MeshError": "fvcheck.errors",
     "Motion": "fvcheck.surfaces",
+    "Reference": "fvcheck.routes",
     "Result": "fvcheck.ledger",
     "Row": "fvcheck.ledger",
     "Series": "fvcheck.series",
@@ -41,6 +44,7 @@ _HOME = {
     "balance": "fvcheck.balancing",
     "balance_all": "fvcheck.balancing",
     "follow": "fvcheck.following",
+    "forces": "fvcheck.routes",
     "grid_convergence": "fvcheck.convergence",
     "history": "fvcheck.timeseries",
     "inspect_file": "fvcheck.inspection",

@@ -295,4 +295,48 @@ PAGES: dict[str, Page] = {
         "Over fewer meshes it would say less than it seems to; the exit status is 2.",
         "Give the meshes the same patches and fields, or restrict the study with -s and --law.",
     ),
+    "routes-disagree": Page(
+        "Two routes give a force on a body that differs by more than their resolution bands.",
+        "All routes measure the same force of an exact solution. So large a gap is not the mesh alone: the "
+        "run is not done, the flow is not steady, or a setting (viscosity, pressure, wall) is wrong.",
+        "fvcheck balance with a surface around the body shows which law is open; trust no route before.",
+    ),
+    "routes-differ": Page(
+        "Two routes give a force that differs by more than their sampling bands, within the resolution bands.",
+        "The gap is what this mesh is worth: the run conserves only to the order of its scheme.",
+        "Take the band, which averages over many surfaces; refine around the body to narrow the gap.",
+    ),
+    "route-refused": Page(
+        "A route to the force on a body could not be gone; its entry has no numbers.",
+        "A control surface has to hold the whole body and lie in the fluid; the wake and circulation "
+        "formulas hold under assumptions only, which are checked as far as the data show them.",
+        "Do what the hint says, or leave the route out with --method.",
+    ),
+    "body-no-wall": Page(
+        "The data lie in cells, and the body is not told to be a no-slip wall.",
+        "The velocity on its surface is then extrapolated, and the friction of the body-surface route with it.",
+        "--wall NAME where it is one. The control-surface and band routes hardly feel it.",
+    ),
+    "open-body": Page(
+        "The patch does not close around a body: it is a part of a wall, say.",
+        "Its force then contains the pressure level times its projected length, and control surfaces around it "
+        "also hold parts of its neighbours.",
+        "Give a pressure that counts from the level you mean, or all patches of the body as one.",
+    ),
+    "other-patch-inside": Page(
+        "Control surfaces around a body also hold parts of other patches.",
+        "What acts on these is taken off by integrating p and friction along them, which is less sure than "
+        "fluxes through the fluid; the bands say by how much.",
+        "Smaller distances (--distance, --band), where the gap allows any.",
+    ),
+    "no-reference": Page(
+        "No reference velocity, length and density are told.",
+        "Coefficients of drag, lift and moment need them; forces do not.",
+        "--reference VELOCITY,LENGTH,DENSITY, or reference = { … } in [[body]] of the check file.",
+    ),
+    "no-plateau": Page(
+        "A number swept over positions is level nowhere: no three neighbours agree to 1 % or their bands.",
+        "Where a momentum balance closes, the force does not depend on the surface.",
+        "Sweep over distances at which the mesh is fine; if it drifts there too, the run is not done.",
+    ),
 }

@@ -27,7 +27,7 @@ ROWS = [
     + ["checkfile", "checkmodel"],
     ["inspection", "history", "study", "forces", "diagnose", "demo"]
     + ["series", "timeweights", "content", "evolution", "trends", "timeseries", "following"]
-    + ["convergence", "meshstudy"],
+    + ["convergence", "meshstudy", "routes"],
     ["cli", "text", "charts", "report", "gate", "jsonout", "__main__"],
 ]
 ROW = {room: number for number, rooms in enumerate(ROWS) for room in rooms}
@@ -113,9 +113,11 @@ def test_the_public_names_are_these():
     assert fvcheck.__all__ == [
         "__version__",
         "ControlSurface",
+        "Estimate",
         "FieldError",
         "Flow",
         "Fluid",
+        "Forces",
         "FormatError",
         "FvcheckError",
         "History",
@@ -124,6 +126,7 @@ def test_the_public_names_are_these():
         "Ledger",
         "MeshError",
         "Motion",
+        "Reference",
         "Result",
         "Row",
         "Series",
@@ -135,6 +138,7 @@ def test_the_public_names_are_these():
         "balance",
         "balance_all",
         "follow",
+        "forces",
         "grid_convergence",
         "history",
         "inspect_file",
