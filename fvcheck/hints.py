@@ -302,7 +302,7 @@ PAGES: dict[str, Page] = {
         "fvcheck balance with a surface around the body shows which law is open; trust no route before.",
     ),
     "routes-differ": Page(
-        "Two routes give a force that differs by more than their sampling bands, within the resolution bands.",
+        "Two routes differ by more than their sampling bands, but within the resolution bands.",
         "The gap is what this mesh is worth: the run conserves only to the order of its scheme.",
         "Take the band, which averages over many surfaces; refine around the body to narrow the gap.",
     ),
@@ -314,13 +314,13 @@ PAGES: dict[str, Page] = {
     ),
     "body-no-wall": Page(
         "The data lie in cells, and the body is not told to be a no-slip wall.",
-        "The velocity on its surface is then extrapolated, and the friction of the body-surface route with it.",
+        "The velocity on its surface is then extrapolated, and friction by the body-surface route with it.",
         "--wall NAME where it is one. The control-surface and band routes hardly feel it.",
     ),
     "open-body": Page(
         "The patch does not close around a body: it is a part of a wall, say.",
-        "Its force then contains the pressure level times its projected length, and control surfaces around it "
-        "also hold parts of its neighbours.",
+        "Its force then contains the pressure level times its projected length, and control surfaces "
+        "around it also hold parts of its neighbours.",
         "Give a pressure that counts from the level you mean, or all patches of the body as one.",
     ),
     "other-patch-inside": Page(

@@ -33,6 +33,7 @@ class Settings:
 
     step : "last", "all" or the number of a step; it is not in ``reading``
     surfaces, laws : None for the default ones
+    bodies : name -> reference of those in the check file
     """
 
     file: Path
@@ -44,6 +45,7 @@ class Settings:
     scale: dict[str, float]
     sources: tuple[Source, ...]
     about: tuple[float, float]
+    bodies: dict[str, dict[str, float] | None]
 
 
 def settle(
@@ -75,6 +77,7 @@ def settle(
         scale=scale,
         sources=_sources(check),
         about=check.case.about if limits.about is None else vector(limits.about, "--about", "--about X,Y"),
+        bodies={b.name: None if b.reference is None else b.reference.model_dump() for b in check.body},
     )
 
 

@@ -105,8 +105,11 @@ class _BandVolume(SampledVolume):
         if len(cells) == 0:
             raise SurfaceError(f"no cell lies within {outer:g} of {view.body}")
         mine = mesh.boundary.names.index(view.body)
-        there = np.isin(mesh.boundary.cells, cells)
-        chosen = np.flatnonzero(there & (mesh.boundary.patch != mine))
+        # Others count wherever ψ is above zero, up to where they meet the body.
+        ends = mesh.points[mesh.boundary.edges]
+        spots = np.concatenate([ends[:, 0], ends[:, 1], ends.mean(axis=1)])
+        nearest = distances(mesh, view.body, spots, outer).reshape(3, -1).min(axis=0)
+        chosen = np.flatnonzero((nearest < outer) & (mesh.boundary.patch != mine))
         edge, triangle = edge_triangles(mesh, chosen)
         ends = mesh.points[mesh.boundary.edges[edge]]
         overlay = edge_pieces(mesh, edge, triangle, ends[:, 0], ends[:, 1], cells, True)

@@ -73,6 +73,14 @@ def wake(
             mend="Make the line longer; in a duct use control-surface or band.",
         )
     head = 0.5 * float(total[ends[0]] + total[ends[1]])
+    above = (float(total.max()) - head) / reference.pressure
+    if above > _ENDS:
+        raise SurfaceError(
+            f"between its ends the total pressure is higher by {100 * above:.3g} % of the dynamic pressure: "
+            "the ends lie in layers on walls, or within the wake",
+            where=line.text,
+            mend="Let the line end in the outer flow; in a duct use control-surface or band.",
+        )
 
     def deficit(state: State) -> Array:
         rho, u = state.density, state.velocity[:, :2] @ along
