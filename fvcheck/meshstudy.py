@@ -19,6 +19,7 @@ from fvcheck.laws import Law
 from fvcheck.ledger import SCHEMA, Ledger, Result
 from fvcheck.series import file_list
 from fvcheck.surfaces import ControlSurface, name_all
+from fvcheck.timeseries import reaction
 from fvcheck.version import __version__
 
 
@@ -180,6 +181,8 @@ def _numbers(ledger: Ledger) -> dict[str, tuple[float, float, str, float | None]
             out[f"{row.label} imbalance"] = (row.imbalance, row.sampling_band, row.unit, row.scale)
         if (row.inflow or row.outflow) and row.flux != row.imbalance:
             out[f"{row.label} flux"] = (row.flux, row.sampling_band, row.unit, None)
+        if row.law == "momentum" and row.boundary:
+            out[f"{row.label} force"] = (reaction(row), row.sampling_band, row.unit, None)
         for patch, amount in row.patches.items():
             out[f"{row.label} of {patch}"] = (amount, row.sampling_band, row.unit, None)
     return out

@@ -42,7 +42,7 @@ class History:
 
     unsteady : whether the snapshots have times, so that storage counts
     trends : of every judged row's imbalance in percent of the largest scale of
-        the run, and of the flux of the others
+        the run, of fluxes, and of the force on what a surface encloses
     totals : surface -> the balance between first and last snapshot, row by row
     hints : those of all snapshots, and what was noticed between them
     ended : why watching a run that still writes came to its end, else ""
@@ -305,6 +305,16 @@ def _trends(entries: Sequence[Entry], steps: Array, reference: tuple[float, floa
                 size = max(r.inflow + r.outflow for r in rows)
                 name = f"{row.label} flux"
                 yield trend_of(ledger.name, name, row.unit, steps, flux, limit * size, reference)
+            if row.law == "momentum" and ledger.closed and row.boundary:
+                force = np.array([reaction(r) for r in rows])
+                size = float(np.abs(force).max())
+                name = f"{row.label} force"
+                yield trend_of(ledger.name, name, row.unit, steps, force, limit * size, reference)
+
+
+def reaction(row: Row) -> float:
+    """Force of the fluid on all boundary within a surface, by the ledger: −(storage + flux − source)."""
+    return (row.source or 0.0) - (row.storage or 0.0) - row.flux
 
 
 def _same(rows: Sequence[Row]) -> bool:

@@ -32,13 +32,14 @@ _T95 = (12.706, 4.303, 3.182, 2.776, 2.571, 2.447, 2.365, 2.306, 2.262, 2.228)
 class Trend:
     """One quantity over the steps of a run.
 
-    surface, name, unit : which; ``name`` is a row's label with ``imbalance`` (in % of the scale) or ``flux``
+    surface, name, unit : which; ``name`` is a row's label with ``imbalance`` (in % of the scale),
+        ``flux`` or ``force``
     level : mean of the last quarter of the steps
     drift : change per step there, by a straight line
     reduction : first value over the last one, in magnitude
     settled : whether the last quarter stays within a quarter of the tolerance, or its periods repeat
-    mean, mean_band : (None for a single value) over whole periods where there are any, else behind the start-up; 95 % for
-        correlated values
+    mean, mean_band : over whole periods where there are any, else behind the start-up; the band (None
+        for a single value) is that of 95 % for correlated values
     amplitude : half of highest minus lowest there
     period, period_band : of the dominant oscillation [time, else steps]; None where there is none
     strouhal : length / (period × velocity) of the reference
@@ -80,6 +81,7 @@ def trend_of(
     last = values[tail]
     drift = float(np.polyfit(np.arange(len(last)), last, 1)[0]) if len(last) > 1 else 0.0
     settled = n >= _LEAST and float(np.ptp(last)) <= _SETTLED * limit
+    mean_band: float | None
     found = dominant_period(times, values)
     if found is not None:
         period, period_band, start = found
