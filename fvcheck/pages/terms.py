@@ -69,8 +69,8 @@ TERMS: dict[str, Page] = {
         "in time, part of the sampling band. Below stands the balance from the first to the last time.\n"
         "force: of the fluid on all that a surface encloses, by the momentum ledger.\n"
         "level and drift: over the last quarter; settled: it stays there within a quarter of the tolerance, "
-        "or period by period. mean: over whole periods where the number swings, else behind the start-up, with "
-        "a 95 % band for correlated values.",
+        "or period by period. mean: over whole periods where the number swings, else behind the start-up, "
+        "with a 95 % band for correlated values.",
         "One state cannot say whether a run is done, nor close an unsteady balance.",
         "fvcheck history 'run_*.vtu' -s …; --steady for iterations, --follow while the run writes; --csv, "
         "--plot.",
