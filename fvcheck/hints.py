@@ -254,8 +254,8 @@ PAGES: dict[str, Page] = {
     ),
     "mesh-moves": Page(
         "The points of the mesh move from one snapshot to the next, its cells stay the same.",
-        "The domain boundary then moves with it, and what it sweeps counts; drawn surfaces stay where they are "
-        "drawn, or move as told.",
+        "The domain boundary then moves with it, and what it sweeps counts; drawn surfaces stay where they "
+        "are drawn, or move as told.",
         "Nothing, if the run has a moving mesh.",
     ),
     "mesh-changes": Page(
@@ -271,8 +271,8 @@ PAGES: dict[str, Page] = {
     ),
     "two-meshes": Page(
         "A study has two meshes.",
-        "Two values show a difference but no order, so second order is assumed, and the factor of safety is 3 "
-        "in place of 1.25 (Roache 1998).",
+        "Two values show a difference but no order, so second order is assumed, and the factor of safety is "
+        "3 in place of 1.25 (Roache 1998).",
         "Run a third mesh, coarser or finer by 1.3 or more.",
     ),
     "close-meshes": Page(
