@@ -22,7 +22,7 @@ from reference_cylinder import CHANNEL, CYLINDER, VISCOSITY
 from trial_meshes import Cells, with_hole
 
 MEAN_SPEED = 1.0
-STEP, EVERY, END, KEPT = 4e-4, 20, 5.6, 92
+STEP, EVERY, END, KEPT = 4e-4, 20, 7.6, 92
 PART = (0.0, 0.0, 0.5, 0.41)
 DATA = Path(__file__).parents[1] / "tests" / "data"
 

@@ -73,8 +73,8 @@ def forces():
 
 
 def test_the_solution_is_the_published_flow():
-    # largest drag 3.22 to 3.24; the finest published series has lift from peak to peak 2.0079. The swing
-    # here still grows by a few percent.
+    # largest drag 3.22 to 3.24; the finest published series has lift from peak to peak 2.0079. The
+    # solver's mesh, coarse in the wake, loses 2 % of that.
     times, lift, drag = (np.array(FACTS[key]) for key in ("times", "cl", "cd"))
     assert 3.20 <= drag.max() <= 3.26 and 1.94 <= np.ptp(lift) <= 2.04
     trend = trend_of("", "cl", "", times, lift, 0.01, reference=(0.1, 1.0))
@@ -118,7 +118,7 @@ def test_mean_drag_and_strouhal_number_are_those_of_the_solution():
     assert lift.strouhal == pytest.approx(its_lift.strouhal, rel=1e-3)
     assert lift.periods >= 2
     # Drag swings at twice the frequency of lift.
-    assert drag.period == pytest.approx(lift.period / 2, rel=1e-2)
+    assert abs(drag.period - lift.period / 2) <= drag.period_band
     band = forces()["far"][1][:, 0].mean()
     assert abs(SCALE * drag.mean - its_drag.mean) <= SCALE * drag.mean_band + band
     assert abs(SCALE * drag.mean - its_drag.mean) <= 0.01 * its_drag.mean
