@@ -89,7 +89,7 @@ def test_slow_libraries_are_imported_where_they_are_used(path):
 
 
 @pytest.mark.parametrize(
-    "arguments", [["--help"], ["--version"], ["balance", "--help"], ["explain", "bands"]]
+    "arguments", [["--help"], ["--version"], ["balance", "--help"], ["forces", "--help"], ["explain", "bands"]]
 )
 def test_help_and_version_come_without_slow_imports(arguments):
     code = (

@@ -44,7 +44,7 @@ def command(
         str | None, _body(metavar="U,L,RHO", text="Reference values of coefficients.")
     ] = None,
     direction: Annotated[
-        str | None, _body(metavar="X,Y", text="Of the stream, and of drag; default 1,0.")
+        str | None, _body(metavar="X,Y", text="Of the stream and of drag; default 1,0.")
     ] = None,
     about: Annotated[str | None, _body(metavar="X,Y", text="Point of the moment; default 0,0.")] = None,
     method: Annotated[
@@ -96,7 +96,7 @@ def command(
         "wake_formula": wake_formula,
         "sweep": None if sweep is None else parse_family(sweep),
         "about": settings.about if about is None else vector(about, "--about", "--about X,Y"),
-        "direction": (1.0, 0.0) if direction is None else vector(direction, "--direction", "--direction X,Y"),
+        "direction": None if direction is None else vector(direction, "--direction", "--direction X,Y"),
         "reference": settings.bodies if reference is None else _reference(reference),
     }
     export = open_export(settings.file)

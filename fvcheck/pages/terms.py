@@ -119,4 +119,29 @@ TERMS: dict[str, Page] = {
         "mostly show mass again, a hundred times enlarged in kelvin.",
         "The levels are in the result file (datum). To see mass, look at the mass row.",
     ),
+    "forces": Page(
+        "What the fluid does to a body, by independent routes, each with its bands.\n"
+        "body-surface: pressure and friction on the body itself. control-surface: what the momentum ledger "
+        "of a surface around it leaves. band: the mean of that ledger over all surfaces between two "
+        "distances. wake: the deficit behind it (momentum; betz, jones). circulation: lift = -rho U Gamma.\n"
+        "Drag is along --direction, lift 90 degrees counter-clockwise from it; moments count "
+        "counter-clockwise about --about. Coefficients: force/(rho U2 L/2), moment/(rho U2 L2/2), with "
+        "--reference U,L,RHO; around an axis the area is that of a disc of diameter L. A frequency times "
+        "L/U (strouhal_scale) is a Strouhal number.\n"
+        "pressure and viscous are those at the surface where the route measures.",
+        "On a coarse mesh the integral over the body is the worst estimate there is, the band the best; "
+        "where routes disagree beyond their bands, none is to be trusted. wake and circulation take a "
+        "uniform, steady stream for granted and are refused where the data show none.",
+        "fvcheck forces run.vtu --body pier --wall pier --reference 1,0.1,1.2. Distances come from the "
+        "gap to the next boundary and the cells around the body; --distance, --band and -s replace them.",
+    ),
+    "families": Page(
+        "a .. b in place of a number, and a count as last argument, sweep a surface: "
+        "around(pier, 0.2 .. 1.0, 9), line(1 .. 3 0, 1 .. 3 1, 5). Ranges run together in equal steps.",
+        "Behind a body, along a duct and around it, fluxes and forces must not depend on where they are "
+        "measured. Marked with = is the level stretch: the longest of three or more positions that agree "
+        "with their mean to 1 % or their bands.",
+        "-s FAMILY with fvcheck balance gives fluxes against position; --sweep FAMILY with fvcheck forces "
+        "the force (of lines: the drag by the wake route).",
+    ),
 }

@@ -64,7 +64,7 @@ def band(flow: Flow, view: View, inner: float, outer: float) -> Estimate:
         reaching=np.concatenate([reaching(volume), volume.area.near_jump]),
         parts=_parts(volume, crossing(volume.area_state(BEST)), border(volume.line_state(BEST))),
     )
-    return estimate(terms, view, "band", distance=(inner, outer))
+    return estimate(terms, view, "band", distance=(inner, outer), degrees=_degrees(volume.area.supported))
 
 
 def smooth_step(distance: Array, inner: float, outer: float) -> Array:
@@ -180,6 +180,10 @@ def _cells_between(mesh: Mesh, body: str, inner: float, outer: float) -> Array:
     nearest = np.minimum.reduceat(np.minimum(corner, middle), mesh.offsets[:-1])
     farthest = np.maximum.reduceat(np.maximum(corner, middle), mesh.offsets[:-1])
     return np.flatnonzero((nearest < outer) & (farthest > inner))
+
+
+def _degrees(supported: Array) -> dict[str, float]:
+    return {str(degree): float(np.mean(supported == degree)) for degree in DEGREES}
 
 
 def _has_sources(flow: Flow) -> bool:

@@ -36,7 +36,7 @@ def body_surface(flow: Flow, view: View) -> Estimate:
     volume = sampled(flow, ControlSurface.patch(view.body), view)
     everywhere = np.ones(len(volume.places), bool)
     terms = line_terms(volume, 1.0, everywhere, carried=False)
-    return estimate(terms, view, "body-surface", distance=0.0)
+    return estimate(terms, view, "body-surface", distance=0.0, degrees=volume.degree_shares())
 
 
 def control_surface(flow: Flow, view: View, surface: ControlSurface, distance: float | None) -> Estimate:
@@ -60,7 +60,14 @@ def control_surface(flow: Flow, view: View, surface: ControlSurface, distance: f
             mend="Draw it around the body; a surface that cuts it has only a part of the force.",
         )
     terms = line_terms(volume, -1.0, volume.patch != mine, carried=True)
-    return estimate(terms, view, "control-surface", distance=distance, surface=surface.name or None)
+    return estimate(
+        terms,
+        view,
+        "control-surface",
+        distance=distance,
+        surface=surface.name or None,
+        degrees=volume.degree_shares(),
+    )
 
 
 def line_terms(volume: SampledVolume, sign: float, counted: Array, carried: bool) -> Terms:

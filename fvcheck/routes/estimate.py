@@ -48,6 +48,7 @@ class Estimate:
     sampling_band, resolution_band : half-widths about ``force``
     bands : number -> its half-widths, {"sampling": …, "resolution": …}
     distance : from the body, of the control surface, or (from, to) of the band
+    degrees : degree of the sampling polynomials -> share of the surface or cells it was used on
     assumptions : what the route takes for granted
     """
 
@@ -69,6 +70,7 @@ class Estimate:
     distance: float | tuple[float, float] | None = None
     surface: str | None = None
     formula: str | None = None
+    degrees: Mapping[str, float] = field(default_factory=dict)
     assumptions: str = ""
     refused: str = ""
 

@@ -7,12 +7,13 @@ from collections.abc import Iterable, Mapping, Sequence
 from dataclasses import asdict, dataclass, field
 from typing import Any
 
-from fvcheck.errors import MeshError, SetupError, SurfaceError, nearest
+from fvcheck.errors import FieldError, MeshError, SetupError, SurfaceError, nearest
 from fvcheck.flow import Flow
 from fvcheck.hints import Hint
 from fvcheck.laws import MissingData
 from fvcheck.ledger import SCHEMA, case_dict
 from fvcheck.mesh.boundary import clearance
+from fvcheck.plausible import field_hints
 from fvcheck.routes.band import band
 from fvcheck.routes.circulation import circulation
 from fvcheck.routes.contour import body_surface, control_surface
@@ -89,7 +90,7 @@ def forces(
     wake_formula: str = "momentum",
     sweep: Family | None = None,
     about: tuple[float, float] = (0.0, 0.0),
-    direction: tuple[float, float] = (1.0, 0.0),
+    direction: tuple[float, float] | None = None,
     reference: Reference | Mapping[str, Any] | None = None,
 ) -> Forces:
     """Forces that the fluid exerts on bodies, by independent routes.
@@ -107,7 +108,8 @@ def forces(
         force against position, and where it is level (`fvcheck.routes.sweep`)
     wake_formula : "momentum", "betz" or "jones" (see `fvcheck.routes.wake.wake`)
     about : point of the moment, which counts counter-clockwise
-    direction : of the stream; the lift is 90° counter-clockwise from it
+    direction : of the stream, by default x, or the axis of an axisymmetric run; the lift is
+        90° counter-clockwise from it
     reference : velocity, length, density for coefficients, of all bodies; or body -> such a reference
 
     A route that cannot be had gives an entry without numbers and a hint.
@@ -117,12 +119,12 @@ def forces(
     wanted = _methods(methods, wake_line, reference)
     if wake_formula not in FORMULAS:
         raise SetupError(f"unknown formula {wake_formula!r}", mend=f"Known: {', '.join(FORMULAS)}.")
-    along = _unit(direction)
+    along = _unit(direction or ((0.0, 1.0) if flow.case.axis == 1 else (1.0, 0.0)))
     for value in distances or ():
         if not (math.isfinite(value) and value > 0):
             raise SetupError(f"a distance is {value:g}", mend="Distances from a body are above zero.")
     estimates: list[Estimate] = []
-    hints: list[Hint] = list(flow.hints)
+    hints: list[Hint] = [*flow.hints, *field_hints(flow)]
     sweeps: list[Sweep] = []
     for name in _bodies(flow, body):
         told = _reference(reference, name)
@@ -219,7 +221,7 @@ class _Job:
             return route()
         except MissingData:
             raise
-        except (SurfaceError, MeshError, SetupError) as error:
+        except (SurfaceError, MeshError, SetupError, FieldError) as error:
             return Estimate(
                 self.view.body,
                 method,
@@ -232,6 +234,14 @@ class _Job:
     def hints(self, found: Sequence[Estimate]) -> list[Hint]:
         body, flow = self.view.body, self.flow
         out = [Hint("route-refused", f"{e.body}, {e.label}: {e.refused}") for e in found if e.refused]
+        direct = [e for e in found if e.method in DIRECT and not e.refused]
+        if direct and not any("viscous" in e.parts for e in direct):
+            out.append(Hint("inviscid", f"{body}: no viscosity is known: the force is without friction"))
+        low = {e.label: 1.0 - e.degrees["3"] for e in found if e.degrees.get("3", 1.0) < 1.0}
+        if low:
+            shares = ", ".join(f"{100 * share:.2g} % of {label}" for label, share in low.items())
+            message = f"{body}: on {shares} the data jump, and plain linear sampling is used there"
+            out.append(Hint("degree-fell", message))
         velocity = flow.fields.get("velocity") or flow.fields.get("momentum")
         cells = velocity is not None and velocity.location == "cell" and velocity.rim is None
         if cells and body not in flow.walls and any(e.method == "body-surface" for e in found):

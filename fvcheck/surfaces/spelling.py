@@ -58,8 +58,16 @@ def parse(text: str, *, name: str = "", base: str | Path | None = None) -> Contr
 
 
 def parse_all(texts: Iterable[str], *, base: str | Path | None = None) -> tuple[ControlSurface, ...]:
-    """Surfaces from their spellings, each with a name of its own (see `name_all`)."""
-    return name_all([parse(text, base=base) for text in texts])
+    """Surfaces from their spellings, each with a name of its own (see `name_all`).
+
+    A family (`fvcheck.surfaces.family`) gives all its members.
+    """
+    from fvcheck.surfaces.family import is_family, parse_family
+
+    drawn: list[ControlSurface] = []
+    for text in texts:
+        drawn += parse_family(text, base=base).surfaces if is_family(text) else [parse(text, base=base)]
+    return name_all(drawn)
 
 
 def name_all(surfaces: Sequence[ControlSurface]) -> tuple[ControlSurface, ...]:

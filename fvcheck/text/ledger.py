@@ -23,6 +23,7 @@ from fvcheck.text.console import (
     rich_characters,
     verdict_text,
 )
+from fvcheck.text.family import families_of, family_parts
 from fvcheck.text.numbers import MISSING, decimals, exponent, gauge, percent, scaled, short, unit
 from fvcheck.verdict import CLOSED, MEANING
 from fvcheck.verdict import VERDICTS as ORDER
@@ -33,8 +34,11 @@ def result_text(result: Result, patches: bool = False, quiet: bool = False) -> s
     if quiet:
         return render(verdict_line(result.verdict))
     parts: list[RenderableType] = [_case_line(result), Text()]
-    for ledger in result.ledgers:
+    families, single = families_of(result.ledgers)
+    for ledger in single:
         parts += [*ledger_parts(ledger, patches=patches), Text()]
+    for name, members in families.items():
+        parts += [*family_parts(name, members), Text()]
     parts += hint_lines(result.hints)
     if result.hints:
         parts.append(Text())
