@@ -255,11 +255,13 @@ class SampledVolume:
         """Line states from data with a shaken last digit; none where data are in double precision."""
         if self._shaken is None:
             coarse = self.probe.precision > 1e-13
-            shaken = (self.probe.shaken(seed) for seed in range(_SHAKES * coarse))
-            self._shaken = [
-                self._line_state_of(p.by_role(p.raw(DEGREES[-1], self.triangle, self.places))) for p in shaken
-            ]
+            self._shaken = [self.shaken_state(seed) for seed in range(_SHAKES * coarse)]
         return self._shaken
+
+    def shaken_state(self, seed: int) -> State:
+        """Line state from data whose last stored digit is off at random."""
+        shaken = self.probe.shaken(seed)
+        return self._line_state_of(shaken.by_role(shaken.raw(DEGREES[-1], self.triangle, self.places)))
 
     def area_state(self, degree: int) -> State:
         """State at the area quadrature points; degree `BEST` is what the data support."""
@@ -331,6 +333,7 @@ class SampledVolume:
         return np.full(1, -1), law.density(self._bare_state()) * area
 
     def _per_cell(self, values: Array) -> Array:
+        """(q, c) at the area places, summed per cell of ``area_cells``."""
         return _sum_groups(self.area_group, len(self.area_cells), values)
 
     def per_line_cell(self, values: Array) -> Array:

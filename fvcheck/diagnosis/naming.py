@@ -1,0 +1,90 @@
+"""Which of the causes may be named: those that leave almost nothing, and far less than the others."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass
+
+import numpy as np
+
+from fvcheck.diagnosis.causes import Cause, Told
+from fvcheck.diagnosis.fitting import Fit, Ledgers, fit
+
+Array = np.ndarray
+
+# Mean square of imbalances in sampling bands. Bands stand for three standard
+# deviations, so that clean ledgers leave some 0.02.
+_NOTHING, _WITHIN = 0.3, 0.3
+
+# Share that a named cause may leave: of what it leaves beyond the bands, of what it leaves within them.
+_LEFT, _LEFT_WITHIN = 0.005, 0.05
+
+# A rival that leaves at most this many times as much is as good.
+_AS_GOOD = 4.0
+
+
+@dataclass(frozen=True, eq=False)
+class Candidate:
+    """A cause with its fit; ``told`` is None where its coefficient makes no sense."""
+
+    cause: Cause
+    fit: Fit
+    told: Told | None
+
+
+@dataclass(frozen=True, eq=False)
+class Why:
+    """What one law's ledgers say.
+
+    before : mean square imbalance in sampling bands; coarse : in resolution bands
+    named : causes that explain it; ranked : all, the best first
+    """
+
+    law: str
+    before: float
+    coarse: float
+    named: tuple[Candidate, ...]
+    ranked: tuple[Candidate, ...]
+
+    @property
+    def silent(self) -> bool:
+        """Whether there is nothing to explain."""
+        return self.before < _NOTHING
+
+
+def explain(law: str, ledgers: Ledgers, causes: Sequence[Cause]) -> Why:
+    found = ledgers.found()
+    before = float(np.mean((found.value / np.maximum(found.sampling, 1e-300)) ** 2))
+    coarse = float(np.mean((found.value / np.maximum(found.resolution, 1e-300)) ** 2))
+    if before < _NOTHING:
+        return Why(law, before, coarse, (), ())
+    tried = []
+    for cause in causes:
+        fitted = fit(ledgers, cause.model)
+        if fitted is not None and np.isfinite(fitted.theta).all():
+            tried.append(Candidate(cause, fitted, cause.tell(fitted)))
+    tried.sort(key=lambda c: c.fit.left)
+    return Why(law, before, coarse, tuple(_named(tried)), tuple(tried))
+
+
+def _named(tried: Sequence[Candidate]) -> list[Candidate]:
+    good = [c for c in tried if c.told is not None and _explains(c.fit)]
+    if not good:
+        return []
+    least = good[0].fit.left
+    good = [
+        c
+        for c in tried
+        if c.told is not None
+        and c.fit.left <= _LEFT_WITHIN
+        and (c.fit.left <= _AS_GOOD * least or (c.fit.misfit <= _WITHIN and c.fit.left <= 100.0 * least))
+    ]
+    # More unknowns always leave less; fewer that leave as little say more.
+    few = min(c.cause.model.unknowns for c in good)
+    good = [c for c in good if c.cause.model.unknowns == few]
+    idle = frozenset().union(*(c.cause.makes_idle for c in good))
+    return [c for c in good if c.cause.name not in idle]
+
+
+def _explains(fit: Fit) -> bool:
+    return fit.left <= _LEFT or (fit.left <= _LEFT_WITHIN and fit.misfit <= _WITHIN)
