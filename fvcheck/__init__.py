@@ -19,6 +19,7 @@ from fvcheck.version import __version__
 
 _HOME = {
     "ControlSurface": "fvcheck.surfaces",
+    "Diagnosis": "fvcheck.diagnosis",
     "Estimate": "fvcheck.routes",
     "FieldError": "fvcheck.errors",
     "Flow": "fvcheck.flow",
@@ -43,6 +44,7 @@ _HOME = {
     "SurfaceError": "fvcheck.errors",
     "balance": "fvcheck.balancing",
     "balance_all": "fvcheck.balancing",
+    "diagnose": "fvcheck.diagnosis",
     "follow": "fvcheck.following",
     "forces": "fvcheck.routes",
     "grid_convergence": "fvcheck.convergence",

@@ -334,6 +334,16 @@ PAGES: dict[str, Page] = {
         "Coefficients of drag, lift and moment need them; forces do not.",
         "--reference VELOCITY,LENGTH,DENSITY, or reference = { … } in [[body]] of the check file.",
     ),
+    "storage-unknown": Page(
+        "An imbalance that no setting explains was found in a single state.",
+        "In an unsteady run, what the volumes store is missing from each ledger; one state cannot show it.",
+        "Diagnose a file with several states and their times, or take fvcheck history.",
+    ),
+    "too-few-cells": Page(
+        "The mesh has too few cells for many control volumes of a dozen cells or more.",
+        "Causes are told apart by how they differ from volume to volume.",
+        "Diagnose a finer export.",
+    ),
     "no-plateau": Page(
         "A number swept over positions is level nowhere: no three neighbours agree to 1 % or their bands.",
         "Where a momentum balance closes, the force does not depend on the surface.",

@@ -27,7 +27,7 @@ ROWS = [
     + ["checkfile", "checkmodel"],
     ["inspection", "history", "study", "forces", "diagnose", "demo"]
     + ["series", "timeweights", "content", "evolution", "trends", "timeseries", "following"]
-    + ["convergence", "meshstudy", "routes"],
+    + ["convergence", "meshstudy", "routes", "diagnosis"],
     ["cli", "text", "charts", "report", "gate", "jsonout", "__main__"],
 ]
 ROW = {room: number for number, rooms in enumerate(ROWS) for room in rooms}
@@ -113,6 +113,7 @@ def test_the_public_names_are_these():
     assert fvcheck.__all__ == [
         "__version__",
         "ControlSurface",
+        "Diagnosis",
         "Estimate",
         "FieldError",
         "Flow",
@@ -137,6 +138,7 @@ def test_the_public_names_are_these():
         "SurfaceError",
         "balance",
         "balance_all",
+        "diagnose",
         "follow",
         "forces",
         "grid_convergence",

@@ -101,6 +101,23 @@ def _both(*changes: Change | None) -> Change | None:
     return change
 
 
+def storage_cause() -> Cause:
+    """What is stored between two states, left out."""
+
+    def tell(fit: Fit) -> Told | None:
+        value, half = float(fit.theta[0]), float(fit.half[0])
+        if not _is(value, half, 1.0) or half > 0.5:
+            return None
+        return Told(
+            "storage: the run is unsteady, and what the volumes store is missing",
+            value,
+            (value - half, value + half),
+            "fvcheck history, which takes storage from the snapshots",
+        )
+
+    return Cause("storage", _linear("storage"), tell)
+
+
 # ---- momentum
 
 
@@ -121,9 +138,7 @@ def _momentum(known: Setting) -> list[Cause]:
             )
         )
     if not np.any(weight) and not gas:
-        out.append(
-            Cause("density-factor", _linear("convective"), lambda f: _density(known, f, "momentum"))
-        )
+        out.append(Cause("density-factor", _linear("convective"), lambda f: _density(known, f, "momentum")))
     out += [
         Cause("uniform-force-x", _linear("force-x"), lambda f: _force(known, f, (0,))),
         Cause("uniform-force-y", _linear("force-y"), lambda f: _force(known, f, (1,))),
@@ -316,7 +331,9 @@ def _buoyancy(known: Setting, fit: Fit, c: int) -> Told | None:
         pair = [0.0, 0.0]
         pair[c] = along
         if any(fluid.gravity):
-            return Told(f"buoyancy in {'xy'[c]}, coefficient {b:.5g} per unit of T", b, (b - half, b + half), "")
+            return Told(
+                f"buoyancy in {'xy'[c]}, coefficient {b:.5g} per unit of T", b, (b - half, b + half), ""
+            )
         changes |= {"gravity": (pair[0], pair[1])}
         if fluid.pressure_kind == "static":
             changes |= {"pressure_kind": "reduced"}
@@ -466,7 +483,9 @@ def _heating(fit: Fit) -> Told | None:
         return replace(flow, fields={**flow.fields, "heat_source": added})
 
     text = f"uniform heat source {q:.4g} per volume"
-    return Told(text, q, (q - half, q + half), "[[source]] with law and shape, or --field heat_source=ARRAY", change)
+    return Told(
+        text, q, (q - half, q + half), "[[source]] with law and shape, or --field heat_source=ARRAY", change
+    )
 
 
 def _energy(known: Setting) -> list[Cause]:

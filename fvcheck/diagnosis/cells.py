@@ -90,7 +90,8 @@ class CellLedgers:
     outside : (e,) bool, edges whose errors have one sign and add up
     shaken : law name -> (s, e, c) what a shaken last digit changes
     magnitude : law name -> (e, c) |flux| without what cannot matter
-    centres : (m, 2) of the cells
+    centres : (m, 2) of the cells; datum : levels on the border of the domain, for all cells alike
+    missing : terms that the data do not allow
     """
 
     flow: Flow
@@ -102,6 +103,7 @@ class CellLedgers:
     shaken: dict[str, Array]
     magnitude: dict[str, Array]
     centres: Array
+    datum: Datum
     missing: tuple[str, ...] = field(default=())
 
 
@@ -192,7 +194,7 @@ def cell_ledgers(flow: Flow, laws: Sequence[Law], terms: dict[str, Term]) -> Cel
     for number, cells in enumerate(chunks):
         chosen = np.flatnonzero(owner_chunk == number)
         volume = _SampledCells(flow, _overlay_of(mesh, edges, chosen, cells), laws, datum)
-        _take(volume, laws, terms, chosen, build, missing, len(laws))
+        _take(volume, laws, terms, chosen, build, missing)
         group = volume.line_group[::PER_PIECE]
         for law in laws:
             outside[chosen] |= volume.reaching(law)[group]
@@ -213,6 +215,7 @@ def cell_ledgers(flow: Flow, laws: Sequence[Law], terms: dict[str, Term]) -> Cel
         shaken={law.name: build.shaken[law.name] for law in laws if law.name in build.shaken},
         magnitude={law.name: build.magnitude[law.name] for law in laws},
         centres=centres,
+        datum=datum,
         missing=tuple(missing),
     )
 
@@ -251,7 +254,6 @@ def _take(
     chosen: Array,
     build: _Build,
     missing: dict[str, None],
-    n_laws: int,
 ) -> None:
     def per_edge(values: Array) -> Array:
         return values.reshape(len(chosen), PER_PIECE, -1).sum(axis=1)

@@ -100,7 +100,7 @@ class Ledgers:
             None if shaken is None else shaken[:, used],
         )
 
-    def found(self, names: Sequence[str] = (), amounts: Sequence[float] = ()) -> Found:
+    def found(self, names: Sequence[str] = (), amounts: Sequence[float] | Array = ()) -> Found:
         """The ledger with so much of the columns added."""
         whole = self.total
         for name, amount in zip(names, amounts):

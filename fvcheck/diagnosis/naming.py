@@ -47,6 +47,17 @@ class Why:
     ranked: tuple[Candidate, ...]
 
     @property
+    def next_left(self) -> float | None:
+        """What the best of the causes leaves that are not named, nor hold one that is."""
+        held = [set(c.cause.model.columns) for c in self.named]
+        others = [
+            c.fit.left
+            for c in self.ranked
+            if c.told is not None and not any(columns <= set(c.cause.model.columns) for columns in held)
+        ]
+        return min(others, default=None)
+
+    @property
     def silent(self) -> bool:
         """Whether there is nothing to explain."""
         return self.before < _NOTHING

@@ -84,6 +84,19 @@ TERMS: dict[str, Page] = {
         "A number without its mesh error cannot be compared, neither with a test nor with another run.",
         "fvcheck study coarse.vtu medium.vtu fine.vtu -s …, runs converged, sizes apart by 1.3 or more.",
     ),
+    "diagnose": Page(
+        "where: the domain is halved again and again down to six cells, and looked at through round windows "
+        "of 2.5 to 16 cells in radius. What is beyond the resolution band there is measured: place, "
+        "diameter, amount, sampling band, share of all that stands out.\n"
+        "why: sixty blocks of cells give sixty ledgers. Each set-up error has a signature over them (net "
+        "pressure, net friction, area, warmth, resistance, rotation, ...); weighted least squares finds its "
+        "coefficient. Named is what leaves less than 0.5 % of the squared imbalances (5 % where all lie "
+        "within the bands), and all that leave about as little. The interval counts bands and residual.",
+        "An open verdict leaves the question whether the run or the set-up is at fault. A wrong depth "
+        "multiplies every flux and cannot be seen in a balance.",
+        "fvcheck diagnose run.vtu -c check.toml; --try balances again with the first proposal, --vtu FILE "
+        "writes the imbalance per cell. Exit status 1 where something is beyond what the mesh explains.",
+    ),
     "exit": Page(
         "0: closed, or nothing to judge. 1: open. 2: the command, check file or data cannot be used. "
         "3: undecided or mesh-limited.",
