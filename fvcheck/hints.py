@@ -171,7 +171,8 @@ PAGES: dict[str, Page] = {
         "For a run that is unsteady there, give rates as fields: --field rate:velocity=NAME and so on.",
     ),
     "wedge": Page(
-        "A 3D export is one cell thick between two planes that meet in an axis: a slice of an axisymmetric run.",
+        "A 3D export is one cell thick between two planes that meet in an axis: a slice of an "
+        "axisymmetric run.",
         "Its points are turned onto the mid plane, velocities at points with them; coordinates are the axial "
         "and the radial one. Fluxes are for the whole turn, not for the slice.",
         "Draw surfaces in those coordinates; fvcheck inspect shows their ranges.",
@@ -227,7 +228,8 @@ PAGES: dict[str, Page] = {
     ),
     "degree-fell": Page(
         "Somewhere on the surface the data jump: a shock, a contact, a layer thinner than the cells.",
-        "A polynomial across a jump overshoots. There, values are interpolated linearly within the range of the "
+        "A polynomial across a jump overshoots. There, values are interpolated linearly within the "
+        "range of the "
         "data around, and the band takes the larger of the two steps between degrees.",
         "Nothing for a shock. For a thin layer, refine there, or draw the surface where the flow is smooth.",
     ),

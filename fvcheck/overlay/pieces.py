@@ -72,7 +72,7 @@ _PIECE_FIELDS = ("start", "end", "triangle", "cell", "patch", "winding")
 
 def select(overlay: Overlay, keep: Array) -> Overlay:
     kept = {name: getattr(overlay, name)[keep] for name in _PIECE_FIELDS}
-    return replace(overlay, **kept)  # type: ignore[arg-type]
+    return replace(overlay, **kept)
 
 
 def join(first: Overlay, second: Overlay) -> Overlay:

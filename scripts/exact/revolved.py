@@ -91,7 +91,9 @@ def landau_force(strength: float) -> float:
 
 
 def heated_pipe(flux: float = 2.0) -> ExactFlow:
-    """Developed pipe flow, R = 1, mean speed 1, evenly heated by ``flux`` per area: Nu = 48/11 (Shah & London).
+    """Developed pipe flow, R = 1, mean speed 1, evenly heated by ``flux`` per area.
+
+    Nu = 48/11 (Shah & London 1978).
 
     ρ = 1, c = 2, k = 0.05; T rises along the pipe by 2q/(ρcU), so axial conduction is even.
     """
