@@ -286,6 +286,13 @@ def test_the_table_fits_a_terminal_and_shows_what_a_refused_route_lacks(capsys):
     assert "route-refused" in text and "level from" in text and "5.577" in text
 
 
+def test_a_body_without_any_number_leaves_the_command_undecided(capsys):
+    options = ["--density", "1", "--viscosity", "1e-3", "--method", "wake", "--json", "-"]
+    assert run(["forces", CYLINDER, *options]) == 3
+    (entry,) = json.loads(capsys.readouterr().out)["forces"]
+    assert entry["drag"] is None and entry["force"] == [None, None] and entry["refused"]
+
+
 @pytest.mark.parametrize(
     "arguments",
     [

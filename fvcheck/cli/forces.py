@@ -71,7 +71,8 @@ def command(
 ) -> int:
     """Forces and moments on bodies, by every route side by side.
 
-    With -s: the control surfaces to use, in place of those at distances.
+    With -s: the control surfaces to use, in place of those at distances. The exit
+    status is 3 where no route to a body could be gone.
     """
     from fvcheck.cli.output import check_target, show
     from fvcheck.cli.settings import settle
@@ -82,6 +83,7 @@ def command(
     from fvcheck.surfaces import ControlSurface
     from fvcheck.surfaces.family import parse_family
     from fvcheck.text.forces import forces_text
+    from fvcheck.verdict import EXIT_STATUS, UNDECIDED
 
     check_target(output)
     settings = settle(file, reading, fluid, surface)
@@ -105,7 +107,9 @@ def command(
     flow = replace(flow, hints=(*flow.hints, *change_hints(export, step, flow, settings.reading)))
     found = forces(flow, body or list(settings.bodies) or None, **options)
     show(output, found.to_dict, lambda: forces_text(found, output.quiet))
-    return 0
+    # A body whose every route was refused is left undecided.
+    numbered = {e.body for e in found.estimates if not e.refused}
+    return 0 if all(e.body in numbered for e in found.estimates) else EXIT_STATUS[UNDECIDED]
 
 
 def _reference(text: str) -> dict[str, float]:

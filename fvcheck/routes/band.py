@@ -26,7 +26,9 @@ from fvcheck.mesh.mesh import Mesh
 from fvcheck.overlay.pieces import edge_pieces, edge_triangles
 from fvcheck.routes.contour import NAMES, pair, reaching, shaken_sums
 from fvcheck.routes.estimate import Estimate
+from fvcheck.routes.reach import distances
 from fvcheck.routes.terms import Terms, View, estimate, fluxes, laws, rows, volume_rows
+from fvcheck.sampling.quadrature import PER_TRIANGLE
 from fvcheck.sampling.sampler import DEGREES
 from fvcheck.surfaces import ControlSurface
 from fvcheck.volume import BEST, SampledVolume
@@ -77,20 +79,6 @@ def smooth_step(distance: Array, inner: float, outer: float) -> Array:
     return 1.0 - s**3 * (10.0 - 15.0 * s + 6.0 * s * s)
 
 
-def distances(mesh: Mesh, body: str, places: Array, limit: float) -> Array:
-    """(n,) distance of places (n, 2) from a body, inf where it is beyond ``limit`` along x or y."""
-    import shapely
-
-    edges = mesh.points[mesh.patch_edges(body)]
-    low, high = edges.min(axis=(0, 1)) - limit, edges.max(axis=(0, 1)) + limit
-    near = np.flatnonzero(((places >= low) & (places <= high)).all(axis=1))
-    out = np.full(len(places), np.inf)
-    tree = shapely.STRtree(shapely.linestrings(edges))
-    at, found = tree.query_nearest(shapely.points(places[near]), all_matches=False, return_distance=True)
-    out[near[at[0]]] = found
-    return out
-
-
 class _BandVolume(SampledVolume):
     """The cells that a band touches, whole, with what lies in them of other patches.
 
@@ -128,6 +116,10 @@ class _BandVolume(SampledVolume):
         assert corners is not None
         x = self.flow.mesh.points[corners]
         a, b, c = x[:, 0], x[:, 1], x[:, 2]
+        # ψ at corners and middles of sides, once per triangle.
+        nodes, node = np.unique(corners[::PER_TRIANGLE], return_inverse=True)
+        spots = self._step(self.flow.mesh.points[nodes])[node.reshape(-1, 3)]
+        at_corner = np.repeat(spots, PER_TRIANGLE, axis=0)
         twice = _cross(b - a, c - a)
         share = np.column_stack([np.zeros(len(a)), _cross(self.area_places - a, c - a) / twice,
                                  _cross(b - a, self.area_places - a) / twice])  # fmt: skip
@@ -135,11 +127,10 @@ class _BandVolume(SampledVolume):
         # ∇ of each barycentric weight: the inward normal of the opposite side over twice the area.
         sides = np.stack([c - b, a - c, b - a], axis=1)
         rise = np.stack([-sides[..., 1], sides[..., 0]], axis=-1) / twice[:, None, None]
-        at_corner = np.stack([self._step(x[:, k]) for k in range(3)], axis=1)
         step = np.sum(at_corner * share * (2.0 * share - 1.0), axis=1)
         slope = np.einsum("qk,qki->qi", at_corner * (4.0 * share - 1.0), rise)
         for i, j in ((0, 1), (1, 2), (2, 0)):
-            middle = self._step(0.5 * (x[:, i] + x[:, j]))
+            middle = np.repeat(self._step(0.5 * (x[::PER_TRIANGLE, i] + x[::PER_TRIANGLE, j])), PER_TRIANGLE)
             step += 4.0 * middle * share[:, i] * share[:, j]
             along = share[:, i, None] * rise[:, j] + share[:, j, None] * rise[:, i]
             slope += 4.0 * middle[:, None] * along

@@ -100,7 +100,14 @@ def shaken_sums(volume: SampledVolume, to_rows: Callable[[State], Array]) -> Arr
 
 
 def reaching(volume: SampledVolume) -> Array:
-    """(groups,) bool: near a jump, and where velocity or pressure on the border must be extrapolated."""
+    """(groups,) bool: where errors have one sign and add up.
+
+    Near a jump; on the border where there is friction, since all slopes are
+    one-sided there; and where velocity or pressure on it must be extrapolated.
+    """
+    viscosity = volume.line_state(BEST).viscosity
+    if viscosity is not None and np.any(viscosity):
+        return volume.on_boundary | volume.line.near_jump
     out = np.zeros(len(volume.line_cells), bool)
     for role in ("velocity", "momentum", "pressure"):
         field = volume.flow.fields.get(role)

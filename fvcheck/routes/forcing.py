@@ -18,7 +18,7 @@ from fvcheck.routes.band import band
 from fvcheck.routes.circulation import circulation
 from fvcheck.routes.contour import body_surface, control_surface
 from fvcheck.routes.estimate import Estimate, Reference
-from fvcheck.routes.reach import default_distances, default_range, is_closed
+from fvcheck.routes.reach import default_band, default_distances, default_range, is_closed
 from fvcheck.routes.sweep import Sweep
 from fvcheck.routes.terms import View
 from fvcheck.routes.wake import FORMULAS, wake
@@ -159,10 +159,13 @@ class _Job:
         flow, view = self.flow, self.view
         if method == "body-surface":
             return [self._tried(method, lambda: body_surface(flow, view))]
-        near, far = self.band_between or default_range(flow, view.body)
-        chosen = tuple(self.distances) if self.distances else default_distances(near, far)
         if method == "band":
+            near, far = self.band_between or default_band(flow, view.body)
             return [self._tried(method, lambda: band(flow, view, near, far), distance=(near, far))]
+        if self.distances:
+            chosen = tuple(self.distances)
+        else:
+            chosen = default_distances(*(self.band_between or default_range(flow, view.body)))
         if method == "control-surface" and self.surfaces:
             return [
                 self._tried(
