@@ -109,7 +109,12 @@ def test_two_component_vectors_are_padded_with_zero():
 
 @pytest.mark.parametrize(
     ("name", "role"),
-    [("k", "turbulence_energy"), ("nu", "kinematic_viscosity"), ("nut", "kinematic_eddy_viscosity"), ("E", "total_energy")],
+    [
+        ("k", "turbulence_energy"),
+        ("nu", "kinematic_viscosity"),
+        ("nut", "kinematic_eddy_viscosity"),
+        ("E", "total_energy"),
+    ],
 )
 def test_ambiguous_names_are_not_taken_silently(name, role):
     fields, hints = cells(**{name: scalar()})
