@@ -23,12 +23,35 @@ ROWS = [
     ["surfaces", "overlay"],
     ["sampling"],
     ["laws"],
-    ["balancing", "entries", "volume", "ledger", "verdict", "bands", "ports", "plausible", "sources"]
-    + ["checkfile", "checkmodel"],
-    ["inspection", "history", "study", "forces", "diagnose", "demo"]
-    + ["series", "timeweights", "content", "evolution", "trends", "timeseries", "following"]
-    + ["convergence", "meshstudy", "routes", "diagnosis"],
-    ["cli", "text", "charts", "report", "gate", "jsonout", "__main__"],
+    [
+        "ledger",
+        "bands",
+        "verdict",
+        "entries",
+        "volume",
+        "balancing",
+        "ports",
+        "plausible",
+        "sources",
+        "checkmodel",
+    ],
+    [
+        "checkfile",
+        "inspection",
+        "demo",
+        "series",
+        "timeweights",
+        "content",
+        "evolution",
+        "trends",
+        "timeseries",
+        "following",
+        "convergence",
+        "meshstudy",
+        "routes",
+        "diagnosis",
+    ],
+    ["cli", "text", "charts", "jsonout", "__main__"],
 ]
 ROW = {room: number for number, rooms in enumerate(ROWS) for room in rooms}
 
@@ -89,7 +112,8 @@ def test_slow_libraries_are_imported_where_they_are_used(path):
 
 
 @pytest.mark.parametrize(
-    "arguments", [["--help"], ["--version"], ["balance", "--help"], ["forces", "--help"], ["explain", "bands"]]
+    "arguments",
+    [["--help"], ["--version"], ["balance", "--help"], ["forces", "--help"], ["explain", "bands"]],
 )
 def test_help_and_version_come_without_slow_imports(arguments):
     code = (

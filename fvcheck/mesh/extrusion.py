@@ -25,7 +25,10 @@ from fvcheck.mesh.wedge import Wedge, find_wedge
 
 Array = np.ndarray
 
-_ADVICE = "Export a plane mesh, a slice, or a run that is one cell thick."
+_ADVICE = (
+    "Export a plane mesh, a slice, or a run that is one cell thick; the sides of a wedge have to meet in a "
+    "coordinate axis."
+)
 _FRONT, _BACK, _BETWEEN, _ELSEWHERE, _AXIS = 0, 1, 2, 3, 4
 
 
