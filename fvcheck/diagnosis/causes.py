@@ -34,12 +34,17 @@ class Told:
 
 @dataclass(frozen=True, eq=False)
 class Cause:
-    """One candidate. ``makes_idle``: others that say the same in a vaguer way."""
+    """One candidate.
+
+    makes_idle : others that say the same in a vaguer way
+    fixed : its coefficient can be one number only
+    """
 
     name: str
     model: Model
     tell: Callable[[Fit], Told | None]
     makes_idle: frozenset[str] = field(default=frozenset())
+    fixed: bool = False
 
 
 @dataclass(frozen=True, eq=False)
@@ -115,7 +120,7 @@ def storage_cause() -> Cause:
             "fvcheck history, which takes storage from the snapshots",
         )
 
-    return Cause("storage", _linear("storage"), tell)
+    return Cause("storage", _linear("storage"), tell, frozenset({"resistance"}), fixed=True)
 
 
 # ---- momentum
@@ -135,6 +140,7 @@ def _momentum(known: Setting) -> list[Cause]:
                 Model(("force-x", "force-y"), 1, lambda t: -t[0] * weight),
                 lambda f: _hydrostatic(known, f),
                 frozenset({"uniform-force-x", "uniform-force-y", "uniform-force"}),
+                fixed=True,
             )
         )
     if not np.any(weight) and not gas:

@@ -55,16 +55,15 @@ class Fit:
     """One cause fitted.
 
     theta, half : (p,) and the half-width of its interval
-    left : share of the weighted squares not explained
     misfit : mean square of what is left, in sampling bands of the corrected ledger
-    coarse : the same in resolution bands
+    left : the same as a share of the mean square before, in the bands of then. Both are
+        counted in bands of their own: a cause that makes all terms small makes bands small too
     """
 
     theta: Array
     half: Array
     left: float
     misfit: float
-    coarse: float
 
 
 @dataclass(frozen=True, eq=False)
@@ -113,6 +112,11 @@ class Ledgers:
         return self.blocks.sums(c.edge[-1], None if c.cell is None else c.cell[-1]).ravel()
 
 
+def in_bands(found: Found, kind: str = "sampling") -> float:
+    """Mean square of the imbalances in bands of a kind."""
+    return float(np.mean((found.value.ravel() / _sigma(found, kind)) ** 2))
+
+
 def _sigma(found: Found, kind: str = "sampling") -> Array:
     band = getattr(found, kind)
     typical = np.median(band, axis=0)
@@ -151,13 +155,12 @@ def fit(ledgers: Ledgers, model: Model) -> Fit | None:
     sigma = _sigma(after)
     rest = after.value.ravel()
     misfit = float(np.mean((rest / sigma) ** 2))
-    left = float(np.sum((rest / sigma) ** 2) / max(np.sum((r / sigma) ** 2), 1e-300))
-    coarse = float(np.mean((rest / _sigma(after, "resolution")) ** 2))
+    left = misfit / max(in_bands(before), 1e-300)
     slopes = matrix @ model.slopes(theta) / sigma[:, None]
     inverse = np.linalg.pinv(slopes.T @ slopes)
     # Where more is left than the bands allow, the residual tells how sure the coefficients are.
     half = _COVERAGE * np.sqrt(np.maximum(np.diag(inverse), 0.0) * max(1.0, 9.0 * misfit))
-    return Fit(theta, half, left, misfit, coarse)
+    return Fit(theta, half, left, misfit)
 
 
 def _starts(model: Model, matrix: Array, r: Array, sigma: Array) -> list[Array]:

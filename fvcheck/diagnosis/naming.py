@@ -8,19 +8,19 @@ from dataclasses import dataclass
 import numpy as np
 
 from fvcheck.diagnosis.causes import Cause, Told
-from fvcheck.diagnosis.fitting import Fit, Ledgers, fit
+from fvcheck.diagnosis.fitting import Fit, Ledgers, fit, in_bands
 
 Array = np.ndarray
 
 # Mean square of imbalances in sampling bands. Bands stand for three standard
 # deviations, so that clean ledgers leave some 0.02.
-_NOTHING, _WITHIN = 0.3, 0.3
+_NOTHING, _WITHIN = 0.3, 1.0
 
 # Share that a named cause may leave: of what it leaves beyond the bands, of what it leaves within them.
 _LEFT, _LEFT_WITHIN = 0.005, 0.05
 
-# A rival that leaves at most this many times as much is as good.
-_AS_GOOD = 4.0
+# A rival that leaves at most this many times as much is as good; clean ledgers leave so much.
+_AS_GOOD, _CLEAN = 4.0, 0.02
 
 
 @dataclass(frozen=True, eq=False)
@@ -65,8 +65,7 @@ class Why:
 
 def explain(law: str, ledgers: Ledgers, causes: Sequence[Cause]) -> Why:
     found = ledgers.found()
-    before = float(np.mean((found.value / np.maximum(found.sampling, 1e-300)) ** 2))
-    coarse = float(np.mean((found.value / np.maximum(found.resolution, 1e-300)) ** 2))
+    before, coarse = in_bands(found), in_bands(found, "resolution")
     if before < _NOTHING:
         return Why(law, before, coarse, (), ())
     tried = []
@@ -82,19 +81,15 @@ def _named(tried: Sequence[Candidate]) -> list[Candidate]:
     good = [c for c in tried if c.told is not None and _explains(c.fit)]
     if not good:
         return []
-    least = good[0].fit.left
-    good = [
-        c
-        for c in tried
-        if c.told is not None
-        and c.fit.left <= _LEFT_WITHIN
-        and (c.fit.left <= _AS_GOOD * least or (c.fit.misfit <= _WITHIN and c.fit.left <= 100.0 * least))
-    ]
+    # What lies within the bands lies there: less is luck.
+    least = max(good[0].fit.misfit, _CLEAN)
+    good = [c for c in good if c.fit.misfit <= _AS_GOOD * least]
     # More unknowns always leave less; fewer that leave as little say more.
     few = min(c.cause.model.unknowns for c in good)
     good = [c for c in good if c.cause.model.unknowns == few]
     idle = frozenset().union(*(c.cause.makes_idle for c in good))
-    return [c for c in good if c.cause.name not in idle]
+    # A coefficient that had to be one number, and is, speaks for its cause.
+    return sorted((c for c in good if c.cause.name not in idle), key=lambda c: not c.cause.fixed)
 
 
 def _explains(fit: Fit) -> bool:
