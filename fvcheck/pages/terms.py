@@ -90,8 +90,8 @@ TERMS: dict[str, Page] = {
         "diameter, amount, sampling band, share of all that stands out.\n"
         "why: sixty blocks of cells give sixty ledgers. Each set-up error has a signature over them (net "
         "pressure, net friction, area, warmth, resistance, rotation, ...); weighted least squares finds its "
-        "coefficient. Named is what leaves less than 0.5 % of the squared imbalances (5 % where all lie "
-        "within the bands), and all that leave about as little. The interval counts bands and residual.",
+        "coefficient. Named is what leaves at most 5 % of the squared imbalances and these within the "
+        "bands (0.5 % where up to three bands are left), and all that leave about as little.",
         "An open verdict leaves the question whether the run or the set-up is at fault. A wrong depth "
         "multiplies every flux and cannot be seen in a balance.",
         "fvcheck diagnose run.vtu -c check.toml; --try balances again with the first proposal, --vtu FILE "
