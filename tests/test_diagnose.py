@@ -22,8 +22,8 @@ from fvcheck.cli.app import run
 from fvcheck.diagnosis import try_cause
 from fvcheck.diagnosis.cells import cell_ledgers
 from fvcheck.diagnosis.diagnosing import NONE_EXPLAINS
+from fvcheck.diagnosis.tree import bisect
 from fvcheck.diagnosis.volumes import blocks_by_label, measure
-from fvcheck.diagnosis.where import hierarchy
 from fvcheck.laws import find_law
 
 CAVITY = trials.cavity("1e4")
@@ -169,7 +169,7 @@ def test_a_smooth_error_that_looks_like_a_factor_by_chance_is_blamed_on_no_setti
 def test_children_add_up_to_their_parent_and_the_root_is_the_ledger_of_the_domain():
     laws = [find_law(name) for name in ("mass", "momentum", "heat")]
     cells = cell_ledgers(CAVITY, laws, {})
-    labels = hierarchy(cells)
+    labels = bisect(cells.centres)
     ledger = fvcheck.balance(CAVITY, fvcheck.ControlSurface.domain(name="d"), ["mass", "momentum", "heat"])
     for law in laws:
         column = cells.columns[law.name]

@@ -15,7 +15,7 @@ from fvcheck.diagnosis.columns import terms_of
 from fvcheck.diagnosis.fitting import Ledgers
 from fvcheck.diagnosis.naming import Candidate, Why, explain
 from fvcheck.diagnosis.volumes import random_blocks
-from fvcheck.diagnosis.where import Place, hierarchy, where
+from fvcheck.diagnosis.where import Place, Tiling, where
 from fvcheck.errors import FieldError, SetupError, SurfaceError
 from fvcheck.fields import Field
 from fvcheck.flow import Flow
@@ -170,12 +170,12 @@ def diagnose(
     ledgers = cell_ledgers(flow, chosen, terms_of(flow, names))
     ledgers = _with_sources(ledgers, sources)
     blocks = random_blocks(ledgers, volumes, _SEED)
-    labels = hierarchy(ledgers)
+    tiling = Tiling.of(ledgers)
     known = _known(ledgers)
     stored = _storage(flow, previous, chosen, ledgers)
     why, places = [], []
     for law in chosen:
-        places += where(ledgers, law.name, law.components, labels)
+        places += where(ledgers, law.name, law.components, tiling)
         if len(blocks.size) == 0:
             hints.append(Hint("too-few-cells", f"{flow.mesh.n_cells} cells are too few to tell causes apart"))
             why.append(Why(law.name, 0.0, 0.0, (), ()))

@@ -10,7 +10,7 @@ Array = np.ndarray
 _LEAST = 6
 
 
-def bisect(centres: Array, areas: Array) -> list[Array]:
+def bisect(centres: Array) -> list[Array]:
     """Labels (m,) of each cell per level, from the whole (all 0) down.
 
     Block k of one level is made of 2k and 2k + 1 of the next: halved across

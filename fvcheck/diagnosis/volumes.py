@@ -144,8 +144,9 @@ def _box(centres: Array, middle: Array, aspect: float, share: float) -> Array:
     """(m,) bool: the box about ``middle`` that holds a share of all cells."""
     extent = np.maximum(np.ptp(centres, axis=0), 1e-300)
     scaled = np.abs(centres - middle) / extent * np.array([np.sqrt(aspect), 1.0 / np.sqrt(aspect)])
-    reach = scaled.max(axis=1)
-    return reach <= np.partition(reach, int(share * (len(reach) - 1)))[int(share * (len(reach) - 1))]
+    reach = np.maximum(scaled[:, 0], scaled[:, 1])
+    rank = int(share * (len(reach) - 1))
+    return reach <= np.partition(reach, rank)[rank]
 
 
 def _beside_boundary(mesh: Mesh) -> Array:

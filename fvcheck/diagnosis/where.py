@@ -76,27 +76,34 @@ class Place:
     tested: int
 
 
-def where(
-    ledgers: CellLedgers, law: str, components: tuple[str | None, ...], labels: list[Array]
-) -> list[Place]:
+@dataclass(frozen=True, eq=False)
+class Tiling:
+    """Blocks to look at, the same for all laws: labels (m,) and blocks by level; round windows."""
+
+    labels: list[Array]
+    blocks: list[Blocks]
+    windows: list[Blocks]
+
+    @classmethod
+    def of(cls, ledgers: CellLedgers) -> Tiling:
+        labels = bisect(ledgers.centres)
+        blocks = [blocks_by_label(ledgers.edges, label, 2**number) for number, label in enumerate(labels)]
+        windows = [window for radius in _RADII if (window := _windows(ledgers, radius)) is not None]
+        return cls(labels, blocks, windows)
+
+
+def where(ledgers: CellLedgers, law: str, components: tuple[str | None, ...], tiling: Tiling) -> list[Place]:
     """Each component of a law."""
     column, shaken = ledgers.columns[law], ledgers.shaken.get(law)
-    levels, blocks = [], []
-    for number, label in enumerate(labels):
-        block = blocks_by_label(ledgers.edges, label, 2**number)
-        blocks.append(block)
-        levels.append(Level(label, measure(block, column, ledgers.outside, shaken)))
-    windows = [window for radius in _RADII if (window := _windows(ledgers, radius)) is not None]
-    seen = [measure(window, column, ledgers.outside, shaken) for window in windows]
+    levels = [
+        Level(label, measure(block, column, ledgers.outside, shaken))
+        for label, block in zip(tiling.labels, tiling.blocks)
+    ]
+    seen = [measure(window, column, ledgers.outside, shaken) for window in tiling.windows]
     return [
-        _place(ledgers, law, component, c, column, shaken, levels, windows, seen)
+        _place(ledgers, law, component, c, column, shaken, levels, tiling.windows, seen)
         for c, component in enumerate(components)
     ]
-
-
-def hierarchy(ledgers: CellLedgers) -> list[Array]:
-    """Labels (m,) per level."""
-    return bisect(ledgers.centres, ledgers.flow.mesh.areas)
 
 
 def stands_out(found: Found, c: int) -> Array:
