@@ -220,6 +220,16 @@ def trials_throughflow(flow):
     return row.scale
 
 
+def test_the_point_force_that_drives_a_jet_is_located_with_its_size():
+    flow = trials.exact_flow(exact.landau_jet(), 1000, "point", symmetry="axisymmetric", axis="x")
+    along, _ = fvcheck.diagnose(flow, ["momentum"]).where
+    region = along.regions[0]
+    h = np.sqrt(4.1 * 2.0 / flow.mesh.n_cells)
+    # Landau 1944: a force at the origin; off the axis the centre lies by what the half plane shows of it.
+    assert np.hypot(*region.centre) < 2 * h
+    assert region.amount == pytest.approx(exact.landau_force(1.5), abs=region.band)
+
+
 def test_a_missing_force_is_spread_over_the_domain():
     x, _ = trials.places(JEFFERY).T
     found, _ = momentum(trials.added(JEFFERY, "pressure", 400.0 * x))
@@ -274,3 +284,12 @@ def test_the_command_ends_with_zero_where_nothing_is_beyond_the_mesh():
 def test_a_law_that_is_not_diagnosed_is_an_error(capsys):
     status = run(["diagnose", str(trials.ROOT / "meshes/demo-coarse.vtu"), "--law", "entropy"])
     assert status == 2 and "entropy is not diagnosed" in capsys.readouterr().err
+
+
+def test_one_cell_is_too_few_and_no_fault():
+    square = np.array([[0, 0], [1, 0], [1, 1], [0, 1.0]])
+    data = {"U": np.zeros((4, 2)), "p": np.zeros(4)}
+    fluid = fvcheck.Fluid(density=1.0, viscosity=1.0)
+    flow = fvcheck.Flow.from_arrays(square, [[0, 1, 2, 3]], point_data=data, fluid=fluid)
+    found = fvcheck.diagnose(flow)
+    assert [hint.code for hint in found.hints] == ["too-few-cells"] and not found.open

@@ -141,19 +141,22 @@ def _place(
 
 def _map(levels: list[Level], areas: Array, c: int) -> tuple[Array, Array]:
     """Per cell, of the smallest block that stands out, or of the smallest there is."""
-    last = levels[-1]
-    totals = np.bincount(last.labels, areas)
-    density = (last.found.value[:, c] / totals)[last.labels]
-    ratio = (np.abs(last.found.value[:, c]) / last.found.resolution[:, c])[last.labels]
-    done = stands_out(last.found, c)[last.labels]
+    density, ratio = _per_cell(levels[-1], areas, c)
+    done = stands_out(levels[-1].found, c)[levels[-1].labels]
     for level in levels[-2::-1]:
         here = stands_out(level.found, c)[level.labels] & ~done
         if here.any():
-            totals = np.bincount(level.labels, areas)
-            density[here] = (level.found.value[:, c] / totals)[level.labels][here]
-            ratio[here] = (np.abs(level.found.value[:, c]) / level.found.resolution[:, c])[level.labels][here]
+            wider, stronger = _per_cell(level, areas, c)
+            density[here], ratio[here] = wider[here], stronger[here]
             done |= here
     return density, ratio
+
+
+def _per_cell(level: Level, areas: Array, c: int) -> tuple[Array, Array]:
+    """(m,) imbalance per area, and in resolution bands, of each cell's block."""
+    value, band = level.found.value[:, c], level.found.resolution[:, c]
+    ratio = np.abs(value) / np.where(band > 0.0, band, np.inf)
+    return (value / np.bincount(level.labels, areas))[level.labels], ratio[level.labels]
 
 
 def _windows(ledgers: CellLedgers, radius: float) -> Blocks | None:
