@@ -82,11 +82,11 @@ class SampledVolume:
         self.drawn = np.repeat(overlay.patch == DRAWN, PER_PIECE)
         self.patch = np.repeat(overlay.patch, PER_PIECE)
         # One group per cell; what lies on the domain boundary apart from what crosses the fluid.
-        key = 2 * np.repeat(overlay.cell, PER_PIECE) + ~self.drawn
-        self._groups, self.line_group = np.unique(key, return_inverse=True)
+        self._groups, of_piece = np.unique(2 * overlay.cell + (overlay.patch != DRAWN), return_inverse=True)
+        self.line_group = np.repeat(of_piece, PER_PIECE)
         self.surface_velocity = self._border_velocity(unsteady, point_velocity)
         self._set_up_area(overlay.closed and any(self.needs_area(law) for law in laws))
-        centres = np.unique(self.triangle)
+        centres = np.unique(overlay.triangle)
         if self.area_triangle is not None:
             centres = np.unique(np.concatenate([centres, self.area_triangle.ravel()]))
         self._take(flow, compile_probe(flow, centres))
@@ -143,10 +143,10 @@ class SampledVolume:
         cut = np.isin(self.area_cells, self.overlay.corner_cell)
         weight = _sum_groups(self.area_group, len(self.area_cells), self.area_weights[:, None])
         known = {
-            role: group.data[self.area_cells, columns]
+            role: values[self.area_cells].astype(float)
             for group in self.probe.groups
             if group.sampler.location == "cell"
-            for role, columns in zip(group.roles, group.columns)
+            for role, values in zip(group.roles, group.values)
         }
 
         def shifted(sampled: Mapping[str, Sampled]) -> dict[str, Sampled]:
@@ -236,6 +236,8 @@ class SampledVolume:
 
     def line_state(self, degree: int) -> State:
         """State at the line quadrature points; degree `BEST` is what the data support."""
+        if degree == BEST and self.line.best is self.line.by_degree[DEGREES[-1]]:
+            degree = DEGREES[-1]
         if ("line", degree) not in self._states:
             fields = self.line.best if degree == BEST else self.line.by_degree[degree]
             self._states["line", degree] = self._line_state_of(fields)

@@ -12,6 +12,9 @@ TERMS = (1, 3, 6, 10)
 # would amplify the data's own roughness; the degree falls instead.
 _WORST_CONDITION = 2e3
 
+# Places evaluated by one task of a parallel loop.
+_RUN = 512
+
 # Distance of the mean of a patch from its centre, in units of its own spread, beyond
 # which it lies on one side: about 0.9 on a straight boundary, 0 inside.
 _ONE_SIDED = 0.4
@@ -136,44 +139,60 @@ def whitening(places, count, out):
     return True
 
 
+# Sums may be taken in any order: four at a time. The order is that of the entries either way.
+_FAST = {"reassoc", "contract"}
+
+
+@njit(cache=True, fastmath=_FAST)
+def _dot(a, b, n):
+    total = 0.0
+    for s in range(n):
+        total += a[s] * b[s]
+    return total
+
+
+@njit(cache=True, fastmath=_FAST)
+def _add(a, factor, b, n):
+    """b += factor·a."""
+    for s in range(n):
+        b[s] += factor * a[s]
+
+
 @njit(cache=True)
 def _solve(matrix, weights, rows, columns, out, work_q, work_r):
-    """out (columns, rows) = pseudo-inverse of diag(weights)·matrix, times diag(weights).
+    """out (columns, rows) = pseudo-inverse of diag(weights)·matrixᵀ, times diag(weights).
 
-    Modified Gram–Schmidt, each column orthogonalised twice, columns scaled to
-    one first. Returns False when the scaled matrix is too badly conditioned.
+    matrix (columns, rows): a row for each unknown, so that sums run along memory.
+    Modified Gram–Schmidt, columns scaled to one first, and orthogonalised again
+    where the first time took most of them away ("twice is enough", Parlett 1980,
+    section 6.9). Returns False when the scaled matrix is too badly conditioned.
     """
     scale = np.empty(columns)
     for j in range(columns):
-        norm = 0.0
+        q = work_q[j]
         for s in range(rows):
-            work_q[s, j] = weights[s] * matrix[s, j]
-            norm += work_q[s, j] ** 2
-        norm = np.sqrt(norm)
+            q[s] = weights[s] * matrix[j, s]
+        norm = np.sqrt(_dot(q, q, rows))
         if norm == 0.0:
             return False
         scale[j] = 1.0 / norm
         for s in range(rows):
-            work_q[s, j] *= scale[j]
+            q[s] *= scale[j]
         for i in range(columns):
             work_r[i, j] = 0.0
         for _ in range(2):
             for i in range(j):
-                dot = 0.0
-                for s in range(rows):
-                    dot += work_q[s, i] * work_q[s, j]
+                dot = _dot(work_q[i], q, rows)
                 work_r[i, j] += dot
-                for s in range(rows):
-                    work_q[s, j] -= dot * work_q[s, i]
-        norm = 0.0
-        for s in range(rows):
-            norm += work_q[s, j] ** 2
-        norm = np.sqrt(norm)
+                _add(work_q[i], -dot, q, rows)
+            norm = np.sqrt(_dot(q, q, rows))
+            if norm > 0.5:
+                break
         if norm < 1e-10:
             return False
         work_r[j, j] = norm
         for s in range(rows):
-            work_q[s, j] /= norm
+            q[s] /= norm
     inverse = np.zeros((columns, columns))
     size = 0.0
     for j in range(columns):
@@ -189,11 +208,11 @@ def _solve(matrix, weights, rows, columns, out, work_q, work_r):
     if np.sqrt(size * columns) > _WORST_CONDITION:
         return False
     for i in range(columns):
+        out[i, :rows] = 0.0
+        for k in range(i, columns):
+            _add(work_q[k], inverse[i, k] * scale[i], out[i], rows)
         for s in range(rows):
-            total = 0.0
-            for k in range(i, columns):
-                total += inverse[i, k] * work_q[s, k]
-            out[i, s] = total * scale[i] * weights[s]
+            out[i, s] *= weights[s]
     return True
 
 
@@ -217,7 +236,7 @@ def _fit_one(points, offsets, nodes, centre, entries, size, degree, at_points, a
     if size == 0 or not whitening(places, size, a):
         degree = 0
         a[0, 0], a[0, 1], a[1, 0], a[1, 1] = 1.0, 0.0, 0.0, 1.0
-    matrix, weights, row = np.empty((size, 10)), np.empty(size), np.empty(10)
+    matrix, weights, row = np.empty((10, size)), np.empty(size), np.empty(10)
     for s in range(size):
         dx, dy = places[s, 0], places[s, 1]
         x, y = a[0, 0] * dx + a[0, 1] * dy, a[1, 0] * dx + a[1, 1] * dy
@@ -226,18 +245,19 @@ def _fit_one(points, offsets, nodes, centre, entries, size, degree, at_points, a
             monomials(x, y, row)
         else:
             cell_moments(points, nodes[offsets[e] : offsets[e + 1]], x0, y0, a, radial, row)
-        matrix[s] = row
+        for j in range(10):
+            matrix[j, s] = row[j]
         weights[s] = x * x + y * y
     # Near data count more. All around a centre, the inverse fourth power of the distance
     # leaves the least error of the powers tried in scripts/calibrate.py; where the data
     # lie on one side, it makes a fit lean on too few of them, and the square is better.
-    mean_x, mean_y = matrix[:, 1].sum() / max(size, 1), matrix[:, 2].sum() / max(size, 1)
+    mean_x, mean_y = matrix[1].sum() / max(size, 1), matrix[2].sum() / max(size, 1)
     one_sided = mean_x * mean_x + mean_y * mean_y > _ONE_SIDED**2
     for s in range(size):
         weights[s] = 1.0 / (weights[s] + 0.1)
         if not one_sided:
             weights[s] *= weights[s]
-    work_q, work_r = np.empty((size, 10)), np.empty((10, 10))
+    work_q, work_r = np.empty((10, size)), np.empty((10, 10))
     part = np.empty((10, size))
     skip = 1 if at_points else 0
     for k in range(degree, -1, -1):
@@ -246,7 +266,7 @@ def _fit_one(points, offsets, nodes, centre, entries, size, degree, at_points, a
             continue
         operator[:, :] = 0.0
         if columns > 0:
-            if not _solve(matrix[:, skip:], weights, size, columns, part, work_q, work_r):
+            if not _solve(matrix[skip:], weights, size, columns, part, work_q, work_r):
                 continue
             for i in range(columns):
                 for s in range(size):
@@ -327,19 +347,14 @@ def apply_fits(row_first, columns, operator, data):
     return out
 
 
-@njit(cache=True, parallel=True)
-def evaluate(points, triangle, centre_of, frames, coefficients, places):
-    """Blend Σ L_i p_i of the three corner polynomials, and its gradient.
-
-    points (n, 2); triangle (q, 3) corner points, centre_of (n,) row of each
-    point in frames (c, 2, 2) and coefficients (c, t, f); places (q, 2).
-    Returns values (q, f), gradients (q, f, 2) and the disagreement (q, f) of the
-    three polynomials, largest minus smallest.
-    """
-    count, terms, fields = len(places), coefficients.shape[1], coefficients.shape[2]
-    values, gradients = np.zeros((count, fields)), np.zeros((count, fields, 2))
-    disagreement = np.empty((count, fields))
-    for q in prange(count):
+@njit(cache=True)
+def _evaluate_run(points, triangle, centre_of, frames, coefficients, places, values, gradients, disagreement):
+    """`evaluate` for one run of places: what it needs to work with is made once."""
+    terms, fields = coefficients.shape[1], coefficients.shape[2]
+    mono, least, most = np.empty(10), np.empty(fields), np.empty(fields)
+    for q in range(len(places)):
+        least[:] = np.inf
+        most[:] = -np.inf
         a, b, c = triangle[q, 0], triangle[q, 1], triangle[q, 2]
         ax, ay = points[a, 0], points[a, 1]
         ux, uy, vx, vy = points[b, 0] - ax, points[b, 1] - ay, points[c, 0] - ax, points[c, 1] - ay
@@ -347,7 +362,6 @@ def evaluate(points, triangle, centre_of, frames, coefficients, places):
         bx, by, cx, cy = vy / det, -vx / det, -uy / det, ux / det
         dx, dy = places[q, 0] - ax, places[q, 1] - ay
         lb, lc = bx * dx + by * dy, cx * dx + cy * dy
-        mono, least, most = np.empty(10), np.full(fields, np.inf), np.full(fields, -np.inf)
         for k in range(3):
             p = triangle[q, k]
             if k == 0:
@@ -382,4 +396,31 @@ def evaluate(points, triangle, centre_of, frames, coefficients, places):
                 gradients[q, f, 1] += gy * value + weight * (f01 * px + f11 * py)
         for f in range(fields):
             disagreement[q, f] = most[f] - least[f]
+
+
+@njit(cache=True, parallel=True)
+def evaluate(points, triangle, centre_of, frames, coefficients, places):
+    """Blend Σ L_i p_i of the three corner polynomials, and its gradient.
+
+    points (n, 2); triangle (q, 3) corner points, centre_of (n,) row of each
+    point in frames (c, 2, 2) and coefficients (c, t, f); places (q, 2).
+    Returns values (q, f), gradients (q, f, 2) and the disagreement (q, f) of the
+    three polynomials, largest minus smallest.
+    """
+    count, fields = len(places), coefficients.shape[2]
+    values, gradients = np.zeros((count, fields)), np.zeros((count, fields, 2))
+    disagreement = np.empty((count, fields))
+    for part in prange((count + _RUN - 1) // _RUN):
+        begin, end = part * _RUN, min((part + 1) * _RUN, count)
+        _evaluate_run(
+            points,
+            triangle[begin:end],
+            centre_of,
+            frames,
+            coefficients,
+            places[begin:end],
+            values[begin:end],
+            gradients[begin:end],
+            disagreement[begin:end],
+        )
     return values, gradients, disagreement

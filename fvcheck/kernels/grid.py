@@ -7,6 +7,8 @@ from typing import NamedTuple
 import numpy as np
 from numba import njit, prange
 
+from fvcheck.kernels.blocks import PER_BLOCK
+
 OUTSIDE, INSIDE, NEAR = 0, 1, 2
 
 
@@ -139,35 +141,46 @@ def build_grid(start, end, resolution):
     return SurfaceGrid(x0, y0, dx, dy, nx, ny, first, segments, row_first, row_segments, marks, winding)
 
 
-@njit(cache=True, parallel=True)
-def classify_cells(points, offsets, nodes, grid):
-    """OUTSIDE, INSIDE or NEAR (the surface may touch it) for every cell: one streaming pass.
+@njit(cache=True)
+def _status(low_x, low_y, high_x, high_y, grid):
+    """`OUTSIDE`, `INSIDE` or `NEAR` of a box."""
+    x1, y1 = grid.x0 + grid.nx * grid.dx, grid.y0 + grid.ny * grid.dy
+    if high_x < grid.x0 or low_x > x1 or high_y < grid.y0 or low_y > y1:
+        return OUTSIDE
+    i0 = _clip(int((low_x - grid.x0) / grid.dx), 0, grid.nx - 1)
+    i1 = _clip(int((high_x - grid.x0) / grid.dx), 0, grid.nx - 1) + 1
+    j0 = _clip(int((low_y - grid.y0) / grid.dy), 0, grid.ny - 1)
+    j1 = _clip(int((high_y - grid.y0) / grid.dy), 0, grid.ny - 1) + 1
+    marks = grid.marks
+    if marks[j1, i1] - marks[j0, i1] - marks[j1, i0] + marks[j0, i0] > 0:
+        return NEAR
+    if low_x < grid.x0 or high_x > x1 or low_y < grid.y0 or high_y > y1:
+        return OUTSIDE
+    return INSIDE if grid.winding[j0, i0] != 0 else OUTSIDE
 
-    points (n, 2), offsets (m+1,), nodes (k,) -> (m,) uint8
+
+@njit(cache=True, parallel=True)
+def classify_cells(points, offsets, nodes, boxes, grid):
+    """OUTSIDE, INSIDE or NEAR (the surface may touch it) for every cell.
+
+    points (n, 2), offsets (m+1,), nodes (k,), boxes (b, 4) of runs of cells, see
+    `block_boxes` -> (m,) uint8. Cells are looked at only where their run is near.
     """
     m = len(offsets) - 1
     status = np.empty(m, np.uint8)
-    x1, y1 = grid.x0 + grid.nx * grid.dx, grid.y0 + grid.ny * grid.dy
-    for c in prange(m):
-        a = nodes[offsets[c]]
-        low_x = high_x = points[a, 0]
-        low_y = high_y = points[a, 1]
-        for k in range(offsets[c] + 1, offsets[c + 1]):
-            x, y = points[nodes[k], 0], points[nodes[k], 1]
-            low_x, high_x = min(low_x, x), max(high_x, x)
-            low_y, high_y = min(low_y, y), max(high_y, y)
-        if high_x < grid.x0 or low_x > x1 or high_y < grid.y0 or low_y > y1:
-            status[c] = OUTSIDE
-            continue
-        i0 = _clip(int((low_x - grid.x0) / grid.dx), 0, grid.nx - 1)
-        i1 = _clip(int((high_x - grid.x0) / grid.dx), 0, grid.nx - 1) + 1
-        j0 = _clip(int((low_y - grid.y0) / grid.dy), 0, grid.ny - 1)
-        j1 = _clip(int((high_y - grid.y0) / grid.dy), 0, grid.ny - 1) + 1
-        marks = grid.marks
-        if marks[j1, i1] - marks[j0, i1] - marks[j1, i0] + marks[j0, i0] > 0:
-            status[c] = NEAR
-        elif low_x < grid.x0 or high_x > x1 or low_y < grid.y0 or high_y > y1:
-            status[c] = OUTSIDE
-        else:
-            status[c] = INSIDE if grid.winding[j0, i0] != 0 else OUTSIDE
+    for b in prange(len(boxes)):
+        first, last = b * PER_BLOCK, min((b + 1) * PER_BLOCK, m)
+        of_block = _status(boxes[b, 0], boxes[b, 1], boxes[b, 2], boxes[b, 3], grid)
+        for c in range(first, last):
+            if of_block != NEAR:
+                status[c] = of_block
+                continue
+            a = nodes[offsets[c]]
+            low_x = high_x = points[a, 0]
+            low_y = high_y = points[a, 1]
+            for k in range(offsets[c] + 1, offsets[c + 1]):
+                x, y = points[nodes[k], 0], points[nodes[k], 1]
+                low_x, high_x = min(low_x, x), max(high_x, x)
+                low_y, high_y = min(low_y, y), max(high_y, y)
+            status[c] = _status(low_x, low_y, high_x, high_y, grid)
     return status

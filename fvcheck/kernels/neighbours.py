@@ -3,65 +3,21 @@
 from __future__ import annotations
 
 import numpy as np
-from numba import njit, prange
-
-
-@njit(cache=True, parallel=True)
-def grow_rings(offsets, nodes, point_ring, rings):
-    """Cells within ``rings`` rings of the marked points, by streaming passes.
-
-    offsets (m+1,), nodes (k,) cells over points; point_ring (n,) uint8, 1 at the
-    marked points and 0 elsewhere, edited here: r+1 for points first reached by
-    ring r. Returns (m,) uint8: the ring of each cell, 0 for cells out of reach.
-    """
-    m = len(offsets) - 1
-    cell_ring = np.zeros(m, np.uint8)
-    for ring in range(1, rings + 1):
-        for c in prange(m):
-            if cell_ring[c] == 0:
-                for k in range(offsets[c], offsets[c + 1]):
-                    if point_ring[nodes[k]] != 0:
-                        cell_ring[c] = ring
-                        break
-        # Threads may mark a point twice, always with the same value.
-        for c in prange(m):
-            if cell_ring[c] == ring:
-                for k in range(offsets[c], offsets[c + 1]):
-                    if point_ring[nodes[k]] == 0:
-                        point_ring[nodes[k]] = ring + 1
-    return cell_ring
+from numba import njit
 
 
 @njit(cache=True)
-def extract_cells(offsets, nodes, cells, n_points):
-    """The chosen cells with points renumbered: (points (p,), offsets, nodes).
-
-    ``points`` gives the old number of each new point, in ascending order.
-    """
-    new = np.full(n_points, -1, np.int64)
-    length = 0
-    for j in range(len(cells)):
-        for k in range(offsets[cells[j]], offsets[cells[j] + 1]):
-            new[nodes[k]] = 0
-            length += 1
-    count = 0
-    for p in range(n_points):
-        if new[p] == 0:
-            new[p] = count
-            count += 1
-    points = np.empty(count, np.int64)
-    for p in range(n_points):
-        if new[p] >= 0:
-            points[new[p]] = p
-    out_offsets = np.zeros(len(cells) + 1, np.int64)
-    out_nodes = np.empty(length, np.int64)
-    at = 0
-    for j in range(len(cells)):
-        for k in range(offsets[cells[j]], offsets[cells[j] + 1]):
-            out_nodes[at] = new[nodes[k]]
-            at += 1
-        out_offsets[j + 1] = at
-    return points, out_offsets, out_nodes
+def mark_rings(offsets, nodes, mark, rings):
+    """Mark (n,) uint8, edited here, the points within ``rings`` rings of cells of those marked."""
+    for ring in range(1, rings + 1):
+        for c in range(len(offsets) - 1):
+            reached = False
+            for k in range(offsets[c], offsets[c + 1]):
+                reached = reached or 0 < mark[nodes[k]] <= ring
+            if reached:
+                for k in range(offsets[c], offsets[c + 1]):
+                    if mark[nodes[k]] == 0:
+                        mark[nodes[k]] = ring + 1
 
 
 @njit(cache=True)
@@ -90,10 +46,11 @@ def stencils(offsets, nodes, point_first, point_cells, spot_first, spots, centre
     centres (c,) points; at_points: the data live at points, else in cells;
     targets (c, d) wanted numbers of equations about each centre, ascending.
 
-    Returns (first (c+1,), entries, sizes (c, d)): ``entries[first[j]:first[j+1]]``
+    Returns (first (c+1,), entries, sizes (c, d), unmet): ``entries[first[j]:first[j+1]]``
     are point numbers, or cell numbers, or -1-s for the known value at spot s.
     The first ``sizes[j, k]`` of them, whole rings always, serve target k. The
-    centre itself is left out: its own value is interpolated.
+    centre itself is left out: its own value is interpolated. unmet: whether a
+    target was missed though further rings exist.
     """
     count = len(centres)
     n_points = len(point_first) - 1
@@ -104,6 +61,7 @@ def stencils(offsets, nodes, point_first, point_cells, spot_first, spots, centre
     wanted = targets.shape[1]
     sizes = np.zeros((count, wanted), np.int64)
     used = 0
+    unmet = False
     queue = np.empty(n_points, np.int64)
     for j in range(count):
         centre = centres[j]
@@ -148,10 +106,26 @@ def stencils(offsets, nodes, point_first, point_cells, spot_first, spots, centre
                 reached += 1
             if reached == wanted or low == high:
                 break
+        unmet = unmet or (reached < wanted and low < high)
         for k in range(reached, wanted):
             sizes[j, k] = used - start
         first[j + 1] = used
-    return first, entries[:used], sizes
+    return first, entries[:used], sizes, unmet
+
+
+@njit(cache=True)
+def corner_range(low, high, row_of, triangle):
+    """Least of ``low`` and most of ``high`` (c, f) over the corners of triangles (q, 3): two (q, f) arrays.
+
+    row_of : row of each point in ``low`` and ``high``
+    """
+    least, most = np.empty((len(triangle), low.shape[1])), np.empty((len(triangle), low.shape[1]))
+    for q in range(len(triangle)):
+        a, b, c = row_of[triangle[q, 0]], row_of[triangle[q, 1]], row_of[triangle[q, 2]]
+        for f in range(low.shape[1]):
+            least[q, f] = min(low[a, f], low[b, f], low[c, f])
+            most[q, f] = max(high[a, f], high[b, f], high[c, f])
+    return least, most
 
 
 @njit(cache=True)

@@ -71,6 +71,15 @@ class Mesh:
 
         return polygon_areas(self.points, self.offsets, self.nodes)
 
+    @cached_property
+    def boxes(self) -> Array:
+        """(b, 4) bounding boxes of runs of consecutive cells, see `fvcheck.kernels.blocks`."""
+        from fvcheck.kernels.blocks import block_boxes
+        from fvcheck.kernels.threads import use_for
+
+        use_for(self.n_cells)
+        return block_boxes(self.points, self.offsets, self.nodes)
+
     def patch_edges(self, name: str) -> Array:
         """(e, 2) directed edges of one patch, fluid on their left."""
         index = self.boundary.names.index(name)

@@ -25,9 +25,9 @@ from fvcheck.surfaces import ControlSurface
 
 Array = np.ndarray
 
-# Grid cells across the surface: fine enough that few cells are looked at in
-# vain on a million-cell mesh, small enough to fill in a millisecond.
-_RESOLUTION = 256
+# Grid cells across the surface, by the root of the number of mesh cells: fine enough
+# that few cells are looked at in vain, small enough to fill in a millisecond.
+_RESOLUTION, _COARSEST, _FINEST = 0.35, 64, 512
 
 
 def lay_over(mesh: Mesh, surface: ControlSurface) -> Overlay:
@@ -68,23 +68,24 @@ def _segments(surface: ControlSurface) -> tuple[Array, Array]:
 
 
 def _cut(mesh: Mesh, start: Array, end: Array, closed: bool, shift: int) -> Overlay:
+    from fvcheck.kernels.blocks import distinct, group_boxes
     from fvcheck.kernels.grid import INSIDE, NEAR, build_grid, classify_cells
     from fvcheck.kernels.overlay import cut_triangles, winding_numbers
     from fvcheck.kernels.threads import use_for
 
-    grid = build_grid(start, end, _RESOLUTION)
+    grid = build_grid(start, end, min(max(int(_RESOLUTION * mesh.n_cells**0.5), _COARSEST), _FINEST))
     use_for(mesh.n_cells)
-    status = classify_cells(mesh.points, mesh.offsets, mesh.nodes, grid)
+    status = classify_cells(mesh.points, mesh.offsets, mesh.nodes, mesh.boxes, grid)
     near = np.flatnonzero(status == NEAR)
     whole = np.flatnonzero(status == INSIDE) if closed else np.empty(0, np.int64)
     triangles, first = triangles_of(mesh, near)
     sides = boundary_sides(mesh, near, triangles, first)
 
-    corners = np.unique(triangles)
+    corners = distinct(triangles.ravel(), mesh.n_points)
     winding = np.zeros(mesh.n_points, np.int64) if closed else np.zeros(1, np.int64)
     if closed:
         winding[corners] = winding_numbers(mesh.points, corners, start, end, grid, shift)
-    boxes = _boxes(mesh.points, triangles, first)
+    boxes = group_boxes(mesh.points, triangles, first)
     cuts = cut_triangles(
         mesh.points, triangles, first, boxes, sides, winding, start, end, grid, shift, closed
     )
@@ -119,18 +120,6 @@ def _boundary_only(mesh: Mesh, chosen: Array, whole: Array, closed: bool) -> Ove
     edge, triangle = edge_triangles(mesh, np.flatnonzero(chosen))
     ends = mesh.points[mesh.boundary.edges[edge]]
     return edge_pieces(mesh, edge, triangle, ends[:, 0], ends[:, 1], whole, closed)
-
-
-def _boxes(points: Array, triangles: Array, first: Array) -> Array:
-    """(cells, 4) bounding boxes x0, y0, x1, y1 of groups of triangles."""
-    if len(triangles) == 0:
-        return np.zeros((len(first) - 1, 4))
-    corners = points[triangles]
-    # reduceat cannot take empty groups; they are never looked at either.
-    at = np.minimum(first[:-1], len(triangles) - 1)
-    low = np.minimum.reduceat(corners.min(axis=1), at)
-    high = np.maximum.reduceat(corners.max(axis=1), at)
-    return np.hstack([low, high])
 
 
 def _open_line(mesh: Mesh, start: Array, end: Array) -> Overlay:

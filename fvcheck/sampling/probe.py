@@ -36,11 +36,16 @@ _REACH = 2
 
 @dataclass(frozen=True, eq=False)
 class _Group:
-    """Fields that share one sampler: columns of one data matrix."""
+    """Fields that share one sampler.
+
+    columns : of each role in ``data`` (n, f), the rows that the sampler uses
+    values : of each role over the whole mesh
+    """
 
     sampler: Sampler
     roles: tuple[str, ...]
     columns: tuple[slice, ...]
+    values: tuple[Array, ...]
     data: Array
     known: Array | None
     places: Known | None
@@ -76,7 +81,7 @@ class Probe:
         for number, group in enumerate(self.groups):
             key = (number, degree)
             if key not in self._coefficients:
-                self._coefficients[key] = group.sampler.apply(degree, group.data, group.known)
+                self._coefficients[key] = group.sampler.apply_local(degree, group.data, group.known)
             out.append(group.sampler.evaluate(degree, self._coefficients[key], triangle, places))
         return tuple(out)
 
@@ -105,29 +110,31 @@ class Probe:
         """
         raw = {degree: self.raw(degree, triangle, places) for degree in DEGREES}
         supported, near_jump = self._supported(raw[DEGREES[-1]], triangle, cell)
-        best = raw[DEGREES[-1]]
+        by_degree = {degree: self.by_role(part) for degree, part in raw.items()}
+        best = by_degree[DEGREES[-1]]
         if np.any(supported < DEGREES[-1]):
             fell = supported[cell] < DEGREES[-1]
-            best = tuple(
+            chosen = tuple(
                 (
                     np.where(fell[:, None], np.clip(plain, *limits), third),
                     np.where(fell[:, None, None], slope, third_slope),
                     apart,
                 )
                 for (plain, slope, _), (third, third_slope, apart), limits in zip(
-                    raw[1], best, self._limits(triangle)
+                    raw[1], raw[DEGREES[-1]], self._limits(triangle)
                 )
             )
-        by_degree = {degree: self.by_role(part) for degree, part in raw.items()}
-        return Samples(by_degree, self.by_role(best), supported, near_jump)
+            best = self.by_role(chosen)
+        return Samples(by_degree, best, supported, near_jump)
 
     def _limits(self, triangle: Array) -> list[tuple[Array, Array]]:
         """Per group: smallest and largest datum (q, f) around the corners of each triangle."""
+        from fvcheck.kernels.neighbours import corner_range
+
         out = []
         for group in self.groups:
             low, high = group.sampler.ranges(group.data, group.known)
-            corner = group.sampler.centre_of[triangle]
-            out.append((low[corner].min(axis=1), high[corner].max(axis=1)))
+            out.append(corner_range(low, high, group.sampler.centre_of, triangle))
         return out
 
     def _supported(self, raw: Raw, triangle: Array, cell: Array) -> tuple[Array, Array]:
@@ -162,11 +169,9 @@ class Probe:
         rng = np.random.default_rng(seed)
         groups = []
         for group in self.groups:
-            near = group.sampler.sources
-            precision = np.array([stored_precision(column) for column in group.data[near].T])
-            data = np.array(group.data, float)
-            data[near] *= 1.0 + rng.uniform(-1.0, 1.0, (len(near), data.shape[1])) * precision
-            groups.append(replace(group, data=data))
+            precision = np.array([stored_precision(column) for column in group.data.T])
+            change = 1.0 + rng.uniform(-1.0, 1.0, group.data.shape) * precision
+            groups.append(replace(group, data=group.data * change))
         return Probe(tuple(groups), self.vectors)
 
     def refilled(self, flow: Flow) -> Probe | None:
@@ -187,7 +192,7 @@ class Probe:
     @property
     def precision(self) -> float:
         """The coarsest relative precision among the fields."""
-        return max(stored_precision(c) for group in self.groups for c in group.data[group.sampler.sources].T)
+        return max(stored_precision(c) for group in self.groups for c in group.data.T)
 
 
 def compile_probe(flow: Flow, centres: Array, roles: tuple[str, ...] | None = None) -> Probe:
@@ -228,15 +233,16 @@ def _split(flow: Flow, roles: tuple[str, ...]) -> dict[tuple[Location, str], lis
 
 def _fill(flow: Flow, sampler: Sampler, names: list[str], known: tuple[Known, Array] | None) -> _Group:
     """A group of fields with the data of a flow; FieldError where they are not finite."""
-    parts, columns, at = [], [], 0
+    parts, whole, columns, at = [], [], [], 0
     for role in names:
         values = _columns(flow, flow.fields[role].values)
-        _check_finite(flow, role, values, sampler)
-        parts.append(values)
+        parts.append(sampler.gather(values))
+        _check_finite(flow, role, parts[-1], sampler)
+        whole.append(values)
         columns.append(slice(at, at + values.shape[1]))
         at += values.shape[1]
     places, value = (known[0], _columns(flow, known[1])) if known else (None, None)
-    return _Group(sampler, tuple(names), tuple(columns), np.hstack(parts), value, places)
+    return _Group(sampler, tuple(names), tuple(columns), tuple(whole), np.hstack(parts), value, places)
 
 
 def _same_places(one: Known | None, other: Known | None) -> bool:
@@ -276,8 +282,7 @@ def known_values(flow: Flow, role: str) -> tuple[Known, Array] | None:
     return Known(boundary.cells[own], middles), values[own]
 
 
-def _check_finite(flow: Flow, role: str, values: Array, sampler: Sampler) -> None:
-    local = values[sampler.sources]
+def _check_finite(flow: Flow, role: str, local: Array, sampler: Sampler) -> None:
     bad = ~np.isfinite(local).all(axis=1)
     if not bad.any():
         return

@@ -27,15 +27,15 @@ Array = np.ndarray
 DEGREES = (1, 2, 3)
 
 # Rings of cells a fit may reach for. Thin strips of cells need more than the
-# two or three of an open mesh; beyond this the data are too far to matter.
-_RINGS = 5
+# three of an open mesh; beyond the last the data are too far to matter.
+_RINGS = (3, 5)
 
 # How many further rings a fit may take in where those that hold enough data do
 # not determine it well (corners and sides of even grids) before its degree falls.
 _MORE_RINGS = 2
 
-# A fit is worth so many items of a simple loop.
-_HEAVY = 30
+# A fit, and an evaluation, are worth so many items of a simple loop.
+_HEAVY, _LIGHT = 30, 6
 
 # Equations wanted per unknown, to keep the fit from following single values.
 _SURPLUS = 1.5
@@ -65,8 +65,8 @@ class NodeFits(NamedTuple):
 class Sampler:
     """Fits about a set of mesh points, for data at one location.
 
-    points : (p, 2) points of the neighbourhood
-    centre_of : (n_mesh_points,) row of each fitted mesh point, -1 elsewhere
+    mesh_points : (n_mesh_points, 2)
+    centre_of : (n_mesh_points,) row of each fitted mesh point, 0 elsewhere
     centres : (c,) fitted points, local numbers
     local_points : (p,) mesh number of each local point
     local_cells : (k,) mesh number of each local cell
@@ -100,21 +100,30 @@ class Sampler:
 
         known : (k, f) values at the spots given to `compile_sampler`
         """
+        return self.apply_local(degree, self.gather(data), known)
+
+    def gather(self, data: Array) -> Array:
+        """The rows of data (n_mesh_points or n_mesh_cells, f) that the fits use, in double precision."""
+        return np.ascontiguousarray(data[self.sources], float)
+
+    def apply_local(self, degree: int, column: Array, known: Array | None = None) -> Array:
+        """`apply` on what `gather` gives."""
         from fvcheck.kernels.fits import apply_fits
         from fvcheck.kernels.threads import use_for
 
         fit = self.fits[degree]
-        column = np.ascontiguousarray(data[self.sources], float)
         if known is not None:
             column = np.concatenate([column, known[self.spots]])
         use_for(_HEAVY * len(self.centres))
         return apply_fits(fit.row_first, fit.columns, fit.operator, column)
 
-    def ranges(self, data: Array, known: Array | None = None) -> tuple[Array, Array]:
-        """Smallest and largest datum in two rings of cells around each fitted point: two (c, f) arrays."""
+    def ranges(self, column: Array, known: Array | None = None) -> tuple[Array, Array]:
+        """Smallest and largest datum in two rings of cells around each fitted point: two (c, f) arrays.
+
+        column : what `gather` gives
+        """
         from fvcheck.kernels.neighbours import ring_range
 
-        column = np.ascontiguousarray(data[self.sources], float)
         at_points = self.location == "point"
         low, high = ring_range(self.offsets, self.nodes, len(self.local_points), at_points, column)
         if known is not None:
@@ -130,11 +139,11 @@ class Sampler:
 
     def within(self, points: Array, rings: int) -> Array:
         """(n_mesh_points,) bool: points within so many rings of cells of the given mesh points."""
-        from fvcheck.kernels.neighbours import grow_rings
+        from fvcheck.kernels.neighbours import mark_rings
 
         mark = np.zeros(len(self.local_points), np.uint8)
         mark[np.isin(self.local_points, points)] = 1
-        grow_rings(self.offsets, self.nodes, mark, rings)
+        mark_rings(self.offsets, self.nodes, mark, rings)
         out = np.zeros(len(self.mesh_points), bool)
         out[self.local_points] = mark > 0
         return out
@@ -150,7 +159,7 @@ class Sampler:
         from fvcheck.kernels.threads import use_for
 
         frames = self.fits[degree].frames
-        use_for(len(places))
+        use_for(_LIGHT * len(places))
         return evaluate(self.mesh_points, triangle, self.centre_of, frames, coefficients, places)
 
 
@@ -171,40 +180,60 @@ def compile_sampler(
         the body of revolution, with the weight r
     known : where values are known beside cell data; ignored for point data
     """
-    from fvcheck.kernels import fits, neighbours, threads
+    few, most = _RINGS
+    settings = mesh, centres, location, averages, axis, known, degrees
+    sampler = _compile(*settings, rings=few) or _compile(*settings, rings=most)
+    assert sampler is not None
+    return sampler
 
-    mark = np.zeros(mesh.n_points, np.uint8)
-    mark[centres] = 1
-    threads.use_for(mesh.n_cells)
-    cell_ring = neighbours.grow_rings(mesh.offsets, mesh.nodes, mark, _RINGS)
-    local_cells = np.flatnonzero(cell_ring)
-    local_points, local_offsets, local_nodes = neighbours.extract_cells(
-        mesh.offsets, mesh.nodes, local_cells, mesh.n_points
+
+def _compile(
+    mesh: Mesh,
+    centres: Array,
+    location: str,
+    averages: bool,
+    axis: int | None,
+    known: Known | None,
+    degrees: tuple[int, ...],
+    *,
+    rings: int,
+) -> Sampler | None:
+    """The sampler from so many rings of cells; None where they do not hold enough and there are more."""
+    from fvcheck.kernels import blocks, fits, neighbours, threads
+
+    near, reached = blocks.grow_rings(mesh.points, mesh.offsets, mesh.nodes, mesh.boxes, centres, rings)
+    local_cells, local_points = np.flatnonzero(near.view(bool)), np.flatnonzero(reached > 0)
+    local_offsets, local_nodes = blocks.renumber(
+        mesh.offsets, mesh.nodes, local_cells, local_points, mesh.n_points
     )
-    number = np.full(mesh.n_points, -1, np.int64)
-    number[local_points] = np.arange(len(local_points))
     at_points = location == "point"
     used = _Used.of(None if at_points else known, local_cells, len(local_points))
     points = np.concatenate([mesh.points[local_points], used.places])
-    first, cells = neighbours.cells_of_points(local_offsets, local_nodes, len(local_points))
-    local_centres = number[centres]
+    point_first, point_cells = neighbours.cells_of_points(local_offsets, local_nodes, len(local_points))
+    local_centres = np.searchsorted(local_points, centres)
+    short = False
 
     def gather(about: Array, targets: Array) -> tuple[Array, Array, Array]:
-        return neighbours.stencils(
+        nonlocal short
+        first, entries, sizes, unmet = neighbours.stencils(
             local_offsets,
             local_nodes,
-            first,
-            cells,
+            point_first,
+            point_cells,
             used.first,
             used.numbers,
             about,
             at_points,
             targets,
-            _RINGS,
+            rings,
         )
+        short = short or unmet
+        return first, entries, sizes
 
     def fit(about: Array, stencil: tuple[Array, Array, Array], k: int) -> NodeFits:
         begin, entries, sizes = stencil
+        if at_points and degrees[k] == 1:
+            return _plain_values(about)
         threads.use_for(_HEAVY * len(about))
         degree = degrees[k]
         row_first, columns, operator, frames, reached = fits.fit_points(
@@ -219,7 +248,7 @@ def compile_sampler(
             at_points,
             averages,
             -1 if axis is None else 1 - axis,
-            1 if at_points and degree == 1 else fits.TERMS[degree],
+            fits.TERMS[degree],
         )
         if not at_points:
             columns = np.where(columns >= 0, columns, len(local_cells) + (-1 - columns - len(local_points)))
@@ -241,7 +270,9 @@ def compile_sampler(
             better = again.reached > found.reached[weak]
             found = _merged(found, again, weak[better], np.flatnonzero(better))
         compiled[degree] = found
-    centre_of = np.full(mesh.n_points, -1, np.int64)
+    if short and rings < _RINGS[-1]:
+        return None
+    centre_of = np.zeros(mesh.n_points, np.int32)
     centre_of[centres] = np.arange(len(centres))
     rim = np.zeros(mesh.n_points, bool)
     rim[mesh.boundary.edges] = True
@@ -290,6 +321,13 @@ class _Used:
             first=np.concatenate([[0], np.cumsum(count)]),
             numbers=n_points + np.arange(len(rows)),
         )
+
+
+def _plain_values(centres: Array) -> NodeFits:
+    """The points' own values: with them the blend is linear interpolation."""
+    count = len(centres)
+    frames = np.broadcast_to(np.eye(2), (count, 2, 2)).copy()
+    return NodeFits(np.arange(count + 1), centres, np.ones((1, count)), frames, np.ones(count, np.int64))
 
 
 def _wanted(degree: int, at_points: bool) -> int:
