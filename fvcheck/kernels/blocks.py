@@ -82,9 +82,21 @@ def _blocks_with(points, chosen, boxes):
     return out[:found]
 
 
+@njit(cache=True, parallel=True)
+def _mark_cells(offsets, nodes, blocks, ring_of, ring, seen_cell):
+    """Give ``ring`` to the cells in some blocks that hold a point of it and had none."""
+    for j in prange(len(blocks)):
+        for c in range(blocks[j] * PER_BLOCK, min((blocks[j] + 1) * PER_BLOCK, len(seen_cell))):
+            if seen_cell[c] == 0:
+                for k in range(offsets[c], offsets[c + 1]):
+                    if ring_of[nodes[k]] == ring:
+                        seen_cell[c] = ring
+                        break
+
+
 @njit(cache=True)
 def grow_rings(points, offsets, nodes, boxes, centres, rings):
-    """(m,) and (n,) uint8 marks of the cells within ``rings`` rings of mesh points, and of their points.
+    """Cells within ``rings`` rings of mesh points, and their points: (m,), (n,) uint8, 0 beyond.
 
     points (n, 2); offsets (m+1,), nodes (k,) cells over them; boxes from
     `block_boxes`; centres (c,) points. Only blocks that may hold a point reached
@@ -106,17 +118,13 @@ def grow_rings(points, offsets, nodes, boxes, centres, rings):
         begin = n_points
         if len(frontier) == 0:
             break
-        for b in _blocks_with(points, frontier, boxes):
+        hit = _blocks_with(points, frontier, boxes)
+        _mark_cells(offsets, nodes, hit, ring_of, ring, seen_cell)
+        for b in hit:
             for c in range(b * PER_BLOCK, min((b + 1) * PER_BLOCK, m)):
-                if seen_cell[c] != 0:
+                if seen_cell[c] != ring:
                     continue
                 first, last = offsets[c], offsets[c + 1]
-                for k in range(first, last):
-                    if ring_of[nodes[k]] == ring:
-                        seen_cell[c] = 1
-                        break
-                if seen_cell[c] == 0:
-                    continue
                 if n_points + last - first > len(out):
                     out = _longer(out, n_points + last - first)
                 for k in range(first, last):

@@ -159,73 +159,60 @@ def _add(a, factor, b, n):
 
 
 @njit(cache=True)
-def _solve(matrix, weights, rows, columns, out, work_q, work_r):
-    """out (columns, rows) = pseudo-inverse of diag(weights)·matrixᵀ, times diag(weights).
+def _factor(matrix, weights, rows, columns, q, inverse, size, scale):
+    """diag(weights)·matrixᵀ·diag(scale) = Q R, column by column; returns how many are independent.
 
     matrix (columns, rows): a row for each unknown, so that sums run along memory.
-    Modified Gram–Schmidt, columns scaled to one first, and orthogonalised again
-    where the first time took most of them away ("twice is enough", Parlett 1980,
-    section 6.9). Returns False when the scaled matrix is too badly conditioned.
+    Fills q (columns, rows): the columns of Q; inverse (columns, columns): of R;
+    size (columns,): squared length of its columns; scale (columns,): to length one.
+    The inverse of a leading block of R is a leading block of the inverse, so one
+    factorisation serves all degrees. Modified Gram–Schmidt; orthogonalised again
+    where the first time took most of a column away ("twice is enough", Parlett
+    1980, section 6.9).
     """
-    scale = np.empty(columns)
+    r = np.empty((columns, columns))
     for j in range(columns):
-        q = work_q[j]
         for s in range(rows):
-            q[s] = weights[s] * matrix[j, s]
-        norm = np.sqrt(_dot(q, q, rows))
+            q[j, s] = weights[s] * matrix[j, s]
+        norm = np.sqrt(_dot(q[j], q[j], rows))
         if norm == 0.0:
-            return False
+            return j
         scale[j] = 1.0 / norm
         for s in range(rows):
-            q[s] *= scale[j]
+            q[j, s] *= scale[j]
         for i in range(columns):
-            work_r[i, j] = 0.0
+            r[i, j] = 0.0
         for _ in range(2):
             for i in range(j):
-                dot = _dot(work_q[i], q, rows)
-                work_r[i, j] += dot
-                _add(work_q[i], -dot, q, rows)
-            norm = np.sqrt(_dot(q, q, rows))
+                dot = _dot(q[i], q[j], rows)
+                r[i, j] += dot
+                _add(q[i], -dot, q[j], rows)
+            norm = np.sqrt(_dot(q[j], q[j], rows))
             if norm > 0.5:
                 break
         if norm < 1e-10:
-            return False
-        work_r[j, j] = norm
+            return j
+        r[j, j] = norm
         for s in range(rows):
-            q[s] /= norm
-    inverse = np.zeros((columns, columns))
-    size = 0.0
-    for j in range(columns):
-        inverse[j, j] = 1.0 / work_r[j, j]
+            q[j, s] /= norm
+        inverse[j, j] = 1.0 / norm
+        size[j] = inverse[j, j] ** 2
         for i in range(j - 1, -1, -1):
             total = 0.0
             for k in range(i + 1, j + 1):
-                total += work_r[i, k] * inverse[k, j]
-            inverse[i, j] = -total / work_r[i, i]
-        for i in range(j + 1):
-            size += inverse[i, j] ** 2
-    # The scaled matrix has Frobenius norm √columns.
-    if np.sqrt(size * columns) > _WORST_CONDITION:
-        return False
-    for i in range(columns):
-        out[i, :rows] = 0.0
-        for k in range(i, columns):
-            _add(work_q[k], inverse[i, k] * scale[i], out[i], rows)
-        for s in range(rows):
-            out[i, s] *= weights[s]
-    return True
+                total += r[i, k] * inverse[k, j]
+            inverse[i, j] = -total / r[i, i]
+            size[j] += inverse[i, j] ** 2
+    return columns
 
 
 @njit(cache=True)
-def _fit_one(points, offsets, nodes, centre, entries, size, degree, at_points, averages, radial, a, operator):
-    """One polynomial: fills ``a`` and ``operator`` (10, size+1); returns the degree reached, -1 for none.
-
-    Column ``size`` of the operator belongs to the centre's own value, which
-    point data have and which is interpolated.
-    """
-    places = np.empty((size, 2))
+def _set_up(
+    points, offsets, nodes, centre, entries, rows, at_points, averages, radial, a, places, matrix, weights
+):
+    """Frame ``a``, matrix (10, rows) and weights (rows,) of fits about a centre; False without a frame."""
     x0, y0 = points[centre, 0], points[centre, 1]
-    for s in range(size):
+    for s in range(rows):
         e = entries[s]
         if at_points or e < 0:
             p = e if e >= 0 else -1 - e
@@ -233,11 +220,12 @@ def _fit_one(points, offsets, nodes, centre, entries, size, degree, at_points, a
         else:
             cx, cy = polygon_centroid(points, nodes[offsets[e] : offsets[e + 1]])
             places[s, 0], places[s, 1] = cx - x0, cy - y0
-    if size == 0 or not whitening(places, size, a):
-        degree = 0
+    framed = rows > 0 and whitening(places, rows, a)
+    if not framed:
         a[0, 0], a[0, 1], a[1, 0], a[1, 1] = 1.0, 0.0, 0.0, 1.0
-    matrix, weights, row = np.empty((10, size)), np.empty(size), np.empty(10)
-    for s in range(size):
+    row = np.empty(10)
+    mean_x = mean_y = 0.0
+    for s in range(rows):
         dx, dy = places[s, 0], places[s, 1]
         x, y = a[0, 0] * dx + a[0, 1] * dy, a[1, 0] * dx + a[1, 1] * dy
         e = entries[s]
@@ -247,88 +235,142 @@ def _fit_one(points, offsets, nodes, centre, entries, size, degree, at_points, a
             cell_moments(points, nodes[offsets[e] : offsets[e + 1]], x0, y0, a, radial, row)
         for j in range(10):
             matrix[j, s] = row[j]
+        mean_x += row[1] / rows
+        mean_y += row[2] / rows
         weights[s] = x * x + y * y
     # Near data count more. All around a centre, the inverse fourth power of the distance
     # leaves the least error of the powers tried in scripts/calibrate.py; where the data
     # lie on one side, it makes a fit lean on too few of them, and the square is better.
-    mean_x, mean_y = matrix[1].sum() / max(size, 1), matrix[2].sum() / max(size, 1)
     one_sided = mean_x * mean_x + mean_y * mean_y > _ONE_SIDED**2
-    for s in range(size):
+    for s in range(rows):
         weights[s] = 1.0 / (weights[s] + 0.1)
         if not one_sided:
             weights[s] *= weights[s]
-    work_q, work_r = np.empty((10, size)), np.empty((10, 10))
-    part = np.empty((10, size))
+    return framed
+
+
+@njit(cache=True)
+def _fit_one(
+    points,
+    offsets,
+    nodes,
+    centre,
+    entries,
+    sizes,
+    degrees,
+    at_points,
+    averages,
+    radial,
+    begin,
+    operator,
+    frames,
+    reached,
+):
+    """Polynomials of all degrees about a centre: fills operator (10, …) from columns begin[k] on.
+
+    frames (d, 2, 2), reached (d,): the degree reached, -1 for none. Column
+    begin[k] + sizes[k] of the operator belongs to the centre's own value, which
+    point data have and which is interpolated.
+    """
+    most = sizes.max()
+    places, matrix, weights = np.empty((most, 2)), np.empty((10, most)), np.empty(most)
+    q, inverse = np.empty((10, most)), np.empty((10, 10))
+    size, scale = np.empty(10), np.empty(10)
     skip = 1 if at_points else 0
-    for k in range(degree, -1, -1):
-        columns = TERMS[k] - skip
-        if columns > size:
-            continue
-        operator[:, :] = 0.0
-        if columns > 0:
-            if not _solve(matrix[skip:], weights, size, columns, part, work_q, work_r):
+    last, sound, framed = -1, 0, False
+    for k in range(len(degrees) - 1, -1, -1):
+        rows = sizes[k]
+        if rows == last:
+            frames[k] = frames[k + 1]
+        else:
+            framed = _set_up(
+                points,
+                offsets,
+                nodes,
+                centre,
+                entries,
+                rows,
+                at_points,
+                averages,
+                radial,
+                frames[k],
+                places,
+                matrix,
+                weights,
+            )
+            columns = min(TERMS[degrees[k]] - skip, rows)
+            sound = _factor(matrix[skip:], weights, rows, columns, q, inverse, size, scale)
+            last = rows
+        at = begin[k]
+        reached[k] = -1
+        for degree in range(degrees[k] if framed else 0, -1, -1):
+            columns = TERMS[degree] - skip
+            # The scaled matrix has Frobenius norm √columns.
+            if columns > sound or np.sqrt(size[:columns].sum() * columns) > _WORST_CONDITION:
                 continue
             for i in range(columns):
-                for s in range(size):
-                    operator[i + skip, s] = part[i, s]
+                out = operator[i + skip, at : at + rows + 1]
+                for j in range(i, columns):
+                    _add(q[j], inverse[i, j] * scale[i], out, rows)
+                for s in range(rows):
+                    out[s] *= weights[s]
                     if at_points:
-                        operator[i + skip, size] -= part[i, s]
-        if at_points:
-            operator[0, size] = 1.0
-        return k
-    return -1
+                        out[rows] -= out[s]
+            if at_points:
+                operator[0, at + rows] = 1.0
+            reached[k] = degree
+            break
 
 
 @njit(cache=True, parallel=True)
-def fit_points(
-    points, offsets, nodes, centres, first, entries, sizes, degree, at_points, averages, radial, keep
-):
-    """Operators of the fits about ``centres``.
+def fit_points(points, offsets, nodes, centres, first, entries, sizes, degrees, at_points, averages, radial):
+    """Operators of the fits about ``centres``, of several degrees.
 
-    first, entries, sizes (c,): from `stencils`, for this degree; averages: cell
-    values are averages, else values at the centroid; radial: what weighs the
-    averages, see `cell_moments`; keep: number of leading coefficients wanted.
+    first, entries, sizes (c, d): from `stencils`; degrees (d,) ascending, sizes
+    too; averages: cell values are averages, else values at the centroid; radial:
+    what weighs the averages, see `cell_moments`.
 
-    Returns (row_first (c+1,), columns, operator (keep, total), frames (c, 2, 2),
-    reached (c,)): coefficient i of centre j is Σ operator[i, s]·data[columns[s]]
-    over s in row_first[j]:row_first[j+1]. Columns follow `stencils`: points, or
-    cells, or -1-s for known values.
+    Returns (row_first (d, c+1), columns, operator (10, total), frames (d, c, 2, 2),
+    reached (d, c)): coefficient i of degree k about centre j is
+    Σ operator[i, s]·data[columns[s]] over s in row_first[k, j]:row_first[k, j+1].
+    Columns follow `stencils`: points, or cells, or -1-s for known values.
     """
-    count = len(centres)
-    row_first = np.zeros(count + 1, np.int64)
-    for j in range(count):
-        row_first[j + 1] = row_first[j] + sizes[j] + 1
-    total = row_first[count]
+    count, kinds = len(centres), len(degrees)
+    row_first = np.zeros((kinds, count + 1), np.int64)
+    total = 0
+    for k in range(kinds):
+        row_first[k, 0] = total
+        for j in range(count):
+            total += sizes[j, k] + 1
+            row_first[k, j + 1] = total
     columns = np.empty(total, np.int64)
-    operator = np.zeros((keep, total))
-    frames = np.zeros((count, 2, 2))
-    reached = np.empty(count, np.int64)
+    operator = np.zeros((10, total))
+    frames = np.zeros((count, kinds, 2, 2))
+    reached = np.empty((count, kinds), np.int64)
     for j in prange(count):
-        size = sizes[j]
-        one = np.zeros((10, size + 1))
-        mine = entries[first[j] : first[j] + size]
-        reached[j] = _fit_one(
+        mine = entries[first[j] : first[j + 1]]
+        _fit_one(
             points,
             offsets,
             nodes,
             centres[j],
             mine,
-            size,
-            degree,
+            sizes[j],
+            degrees,
             at_points,
             averages,
             radial,
+            row_first[:, j],
+            operator,
             frames[j],
-            one,
+            reached[j],
         )
-        at = row_first[j]
-        for s in range(size):
-            columns[at + s] = mine[s]
-        # Without an own value the last column is zero; any valid number will do.
-        columns[at + size] = centres[j] if at_points else mine[0]
-        for i in range(keep):
-            for s in range(size + 1):
-                operator[i, at + s] = one[i, s]
+        for k in range(kinds):
+            at, size = row_first[k, j], sizes[j, k]
+            for s in range(size):
+                columns[at + s] = mine[s]
+            # Without an own value the last column is zero; any valid number will do.
+            columns[at + size] = centres[j] if at_points else mine[0]
     return row_first, columns, operator, frames, reached
 
 

@@ -52,7 +52,9 @@ class Known(NamedTuple):
 
 
 class NodeFits(NamedTuple):
-    """Fits of one degree: see `fvcheck.kernels.fits.fit_points`."""
+    """Fits of one degree: coefficient i about centre j is Σ operator[i, s]·data[columns[s]]
+    over s in row_first[j]:row_first[j+1]. See `fvcheck.kernels.fits.fit_points`.
+    """
 
     row_first: Array
     columns: Array
@@ -201,8 +203,9 @@ def _compile(
     """The sampler from so many rings of cells; None where they do not hold enough and there are more."""
     from fvcheck.kernels import blocks, fits, neighbours, threads
 
+    threads.use_for(_HEAVY * len(centres))
     near, reached = blocks.grow_rings(mesh.points, mesh.offsets, mesh.nodes, mesh.boxes, centres, rings)
-    local_cells, local_points = np.flatnonzero(near.view(bool)), np.flatnonzero(reached > 0)
+    local_cells, local_points = np.flatnonzero(near > 0), np.flatnonzero(reached > 0)
     local_offsets, local_nodes = blocks.renumber(
         mesh.offsets, mesh.nodes, local_cells, local_points, mesh.n_points
     )
@@ -230,12 +233,9 @@ def _compile(
         short = short or unmet
         return first, entries, sizes
 
-    def fit(about: Array, stencil: tuple[Array, Array, Array], k: int) -> NodeFits:
+    def fit(about: Array, stencil: tuple[Array, Array, Array], chosen: tuple[int, ...]) -> list[NodeFits]:
         begin, entries, sizes = stencil
-        if at_points and degrees[k] == 1:
-            return _plain_values(about)
-        threads.use_for(_HEAVY * len(about))
-        degree = degrees[k]
+        threads.use_for(_HEAVY * len(chosen) * len(about))
         row_first, columns, operator, frames, reached = fits.fit_points(
             points,
             local_offsets,
@@ -243,30 +243,38 @@ def _compile(
             about,
             begin,
             entries,
-            np.ascontiguousarray(sizes[:, k]),
-            degree,
+            sizes,
+            np.array(chosen),
             at_points,
             averages,
             -1 if axis is None else 1 - axis,
-            fits.TERMS[degree],
         )
         if not at_points:
             columns = np.where(columns >= 0, columns, len(local_cells) + (-1 - columns - len(local_points)))
-        return NodeFits(row_first, columns, operator, frames, reached)
+        return [
+            NodeFits(
+                row_first[k],
+                columns,
+                operator[: fits.TERMS[degree]],
+                np.ascontiguousarray(frames[:, k]),
+                np.ascontiguousarray(reached[:, k]),
+            )
+            for k, degree in enumerate(chosen)
+        ]
 
-    targets = np.array([_wanted(degree, at_points) for degree in degrees])
+    fitted = tuple(degree for degree in degrees if not (at_points and degree == 1))
+    targets = np.array([_wanted(degree, at_points) for degree in fitted])
     stencil = gather(local_centres, np.tile(targets, (len(local_centres), 1)))
-    compiled = {}
-    for k, degree in enumerate(degrees):
-        found = fit(local_centres, stencil, k)
+    compiled = {1: _plain_values(local_centres)} if at_points else {}
+    for k, (degree, found) in enumerate(zip(fitted, fit(local_centres, stencil, fitted))):
         size = stencil[2][:, k].copy()
         for _ in range(_MORE_RINGS):
             weak = np.flatnonzero(found.reached < degree)
             if len(weak) == 0:
                 break
-            wider = gather(local_centres[weak], np.repeat(size[weak, None] + 1, len(degrees), axis=1))
-            again = fit(local_centres[weak], wider, k)
-            size[weak] = wider[2][:, k]
+            wider = gather(local_centres[weak], size[weak, None] + 1)
+            (again,) = fit(local_centres[weak], wider, (degree,))
+            size[weak] = wider[2][:, 0]
             better = again.reached > found.reached[weak]
             found = _merged(found, again, weak[better], np.flatnonzero(better))
         compiled[degree] = found
@@ -341,7 +349,7 @@ def _merged(one: NodeFits, other: NodeFits, to: Array, source: Array) -> NodeFit
     """The fits ``one`` with rows ``to`` taken from the rows ``source`` of ``other``."""
     if len(to) == 0:
         return one
-    total = one.row_first[-1]
+    total = len(one.columns)
     begin, length = one.row_first[:-1].copy(), np.diff(one.row_first)
     begin[to] = total + other.row_first[source]
     length[to] = np.diff(other.row_first)[source]
