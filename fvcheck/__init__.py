@@ -34,6 +34,7 @@ _HOME = {
     "MeshError": "fvcheck.errors",
     "Motion": "fvcheck.surfaces",
     "Reference": "fvcheck.routes",
+    "Report": "fvcheck.reporting",
     "Result": "fvcheck.ledger",
     "Row": "fvcheck.ledger",
     "Series": "fvcheck.series",
@@ -53,6 +54,7 @@ _HOME = {
     "open_flow": "fvcheck.flow",
     "open_series": "fvcheck.series",
     "register": "fvcheck.laws",
+    "report": "fvcheck.reporting",
     "study": "fvcheck.meshstudy",
 }
 

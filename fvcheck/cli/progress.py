@@ -8,8 +8,8 @@ from contextlib import contextmanager
 
 
 @contextmanager
-def progress(what: str, quiet: bool = False) -> Iterator[Callable[[int], None]]:
-    """A function to be called after each part with the number of all parts."""
+def progress(what: str, quiet: bool = False) -> Iterator[Callable[[int | None], None]]:
+    """A function to be called after each part with the number of all parts, None where it is unknown."""
     if quiet or not sys.stderr.isatty():
         yield lambda total: None
         return

@@ -1,0 +1,180 @@
+"""Plots over time, iterations, meshes and routes."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from functools import partial
+from typing import Any
+
+import numpy as np
+
+from fvcheck.ledger import Ledger
+from fvcheck.meshstudy import Quantity, Study
+from fvcheck.reporting.style import GRID, INK, MARKS, MUTED, SERIES, Drawing, plain
+from fvcheck.reporting.tables import route_name
+from fvcheck.routes import Estimate, Forces
+from fvcheck.text.numbers import exponent, percent, short, unit
+from fvcheck.timeseries import History
+
+Array = np.ndarray
+
+# More marks than this on a line run into one another; more panels fill pages.
+_MARKED, _PANELS = 25, 12
+
+
+def history_drawings(history: History) -> list[Drawing]:
+    """Imbalance with its bands and tolerance, and net flux, over the steps: one drawing per surface."""
+    out = []
+    for number, ledger in enumerate(history.entries[-1].result.ledgers, start=1):
+        kind = "time" if history.unsteady else "iteration"
+        words = f"{plain(ledger.name)} over {len(history.entries)} {kind}s. " + " ".join(
+            f"{row.label}: from {percent(_first(history, ledger, row.label))} % to "
+            f"{percent(row.imbalance_percent)} % of its scale."
+            for row in ledger.rows
+            if row.imbalance is not None
+        )
+        title = f"{plain(ledger.name)} over the {kind}s"
+        draw = partial(_history, history, ledger)
+        out.append(Drawing(f"history-{number}", title, words, draw))
+    return out
+
+
+def _first(history: History, ledger: Ledger, label: str) -> float | None:
+    return history.entries[0].result[ledger.name][label].imbalance_percent
+
+
+def _history(history: History, ledger: Ledger) -> Any:
+    from matplotlib.figure import Figure
+
+    figure = Figure(figsize=(9.6, 3.5), layout="constrained")
+    left, right = figure.subplots(1, 2)
+    steps, every = history.steps, max(1, len(history.entries) // _MARKED)
+    power = exponent([v for row in ledger.rows for v in history.values(ledger.name, row.label, "flux")])
+    for number, row in enumerate(ledger.rows):
+        style: dict[str, Any] = {
+            "marker": MARKS[number % len(MARKS)],
+            "markersize": 4.2,
+            "markevery": every,
+            "color": SERIES[number % len(SERIES)],
+            "label": row.label,
+        }
+        scale = history.values(ledger.name, row.label, "scale")
+        value = history.values(ledger.name, row.label, "imbalance_percent")
+        with np.errstate(divide="ignore", invalid="ignore"):
+            half = 100.0 * history.values(ledger.name, row.label, "sampling_band") / scale
+        if np.isfinite(value).any():
+            left.plot(steps, value, **style)
+            left.fill_between(steps, value - half, value + half, color=style["color"], alpha=0.16, lw=0)
+        flux = history.values(ledger.name, row.label, "flux") / 10.0**power
+        right.plot(steps, flux, **style)
+    tolerances = sorted({row.tolerance_percent for row in ledger.rows if row.tolerance_percent})
+    for tolerance in tolerances[:3]:
+        for sign in (-1.0, 1.0):
+            left.axhline(sign * tolerance, color=MUTED, lw=0.9, ls=(0, (2, 2)))
+    left.axhline(0.0, color=INK, lw=0.8)
+    left.set_title("imbalance, sampling band shaded, limits dotted")
+    left.set_ylabel("% of the scale")
+    right.set_title("net flux through what is drawn")
+    units = {row.unit for row in ledger.rows}
+    right.set_ylabel(unit(", ".join(sorted(units)), power, True))
+    right.legend(loc="center left", bbox_to_anchor=(1.0, 0.5))
+    for panel in (left, right):
+        panel.grid(True, lw=0.6)
+        panel.set_axisbelow(True)
+        panel.set_xlabel("time" if history.unsteady else "iteration")
+    return figure
+
+
+def study_drawing(study: Study) -> Drawing | None:
+    """Quantities against cell size with bands, and what they go to at size zero."""
+    chosen = [q for q in study.quantities if not q.name.startswith("port")][:_PANELS]
+    if not chosen:
+        return None
+    words = f"{len(chosen)} quantities on {len(study.sizes)} meshes. " + " ".join(
+        f"{plain(q.surface)}, {plain(q.name)}: {short(q.convergence.values[0])} {q.unit} on the finest mesh, "
+        f"±{short(q.convergence.band, 2)}."
+        for q in chosen
+    )
+
+    def draw() -> Any:
+        from matplotlib.figure import Figure
+
+        rows = -(-len(chosen) // 3)
+        figure = Figure(figsize=(9.6, 2.5 * rows + 0.2), layout="constrained")
+        panels = figure.subplots(rows, 3, squeeze=False)
+        for panel, quantity in zip(panels.flat, chosen):
+            _study_panel(panel, quantity)
+        for panel in panels.flat[len(chosen) :]:
+            panel.set_axis_off()
+        return figure
+
+    return Drawing("study", "Quantities over the meshes", words, draw)
+
+
+def _study_panel(panel: Any, quantity: Quantity) -> None:
+    found = quantity.convergence
+    per = 100.0 / quantity.scale if quantity.scale else None
+    power = 0 if per else exponent([*found.values, found.extrapolated])
+    factor = per or 10.0**-power
+    sizes, values = np.array(found.sizes), np.array(found.values) * factor
+    bands = np.array(quantity.sampling_bands)[: len(sizes)] * factor
+    panel.errorbar(
+        sizes[: len(bands)], values[: len(bands)], yerr=bands, color=SERIES[0], marker="o", ms=5, capsize=3,
+        label="sampling band",
+    )  # fmt: skip
+    if found.extrapolated is not None:
+        panel.plot([0.0], [found.extrapolated * factor], "D", ms=5.5, mfc="none", color=SERIES[1])
+        panel.errorbar([0.0], [values[0]], yerr=[found.band * factor], color=SERIES[1], capsize=5, lw=1.2)
+    panel.set_xlim(-0.06 * sizes.max(), 1.08 * sizes.max())
+    panel.set_title(f"{plain(quantity.surface)[:22]}\n{plain(quantity.name)[:30]}", fontsize=8.5)
+    panel.set_ylabel("% of the scale" if per else unit(quantity.unit, power, True))
+    panel.set_xlabel("cell size [m]")
+    panel.grid(True, lw=0.6)
+    panel.locator_params(nbins=5)
+
+
+def forces_drawing(found: Forces, number: int, body: str) -> Drawing | None:
+    """Drag and lift on a body by every route, with both bands."""
+    mine = [e for e in found.estimates if e.body == body and e.drag is not None]
+    if not mine:
+        return None
+    name = "N" if found.case.get("depth") is not None or found.case.get("axis") else "N/m"
+    words = f"Drag and lift on {plain(body)} by {len(mine)} routes. " + " ".join(
+        f"{plain(route_name(e))}: drag {short(e.drag)} ±{short(e.band('drag'), 2)}, "
+        f"lift {short(e.lift)} ±{short(e.band('lift'), 2)} {name}."
+        for e in mine
+    )
+
+    def draw() -> Any:
+        from matplotlib.figure import Figure
+
+        figure = Figure(figsize=(9.6, 0.9 + 0.36 * len(mine)), layout="constrained")
+        panels = figure.subplots(1, 2, sharey=True)
+        for panel, what in zip(panels, ("drag", "lift")):
+            _routes(panel, mine, what, name)
+        panels[0].set_yticks(range(len(mine)), [plain(route_name(e))[:34] for e in mine])
+        panels[0].set_ylim(len(mine) - 0.4, -0.6)
+        return figure
+
+    return Drawing(f"forces-{number}", f"Force on {plain(body)} by route", words, draw)
+
+
+def _routes(panel: Any, mine: Sequence[Estimate], what: str, name: str) -> None:
+    values = [getattr(e, what) for e in mine]
+    power = exponent(values)
+    for row, (e, value) in enumerate(zip(mine, values)):
+        if value is None:
+            continue
+        for kind, width, alpha in (("resolution", 9.0, 0.25), ("sampling", 4.0, 0.65)):
+            half = e.band(what, kind)
+            if np.isfinite(half):
+                low, high = ((value + sign * half) / 10.0**power for sign in (-1.0, 1.0))
+                panel.plot(
+                    [low, high], [row, row], lw=width, alpha=alpha, color=SERIES[0], solid_capstyle="butt"
+                )
+        panel.plot([value / 10.0**power], [row], "o", ms=4.5, color=INK)
+    panel.set_title(f"{what}: value, sampling band (heavy), resolution band (light)", fontsize=8.5)
+    panel.set_xlabel(unit(name, power, True))
+    panel.grid(True, axis="x", lw=0.6, color=GRID)
+    panel.locator_params(axis="x", nbins=5)
+    panel.set_axisbelow(True)

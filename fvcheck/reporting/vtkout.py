@@ -1,0 +1,193 @@
+"""Surfaces with flux densities as VTP, quantities of cells as VTU, for any viewer that reads VTK's XML.
+
+Arrays are written in binary (base64, 64-bit headers), names of arrays and
+files without characters that a reader may stumble over.
+"""
+
+from __future__ import annotations
+
+import base64
+import re
+from collections.abc import Mapping, Sequence
+from pathlib import Path
+from xml.sax.saxutils import quoteattr
+
+import numpy as np
+
+from fvcheck.diagnosis.cells import CellLedgers, cell_ledgers
+from fvcheck.diagnosis.diagnosing import LAWS as DIAGNOSED
+from fvcheck.laws import MissingData
+from fvcheck.overlay.pieces import DRAWN
+from fvcheck.reporting.border import Along
+from fvcheck.reporting.gathering import Gathered
+from fvcheck.reporting.output import write_whole
+
+Array = np.ndarray
+
+_POLYGON = 7
+
+_KINDS = {"f": "Float64", "i": "Int64", "u": "UInt8", "b": "UInt8"}
+
+_TYPES = {"Float64": "<f8", "Int64": "<i8", "UInt8": "u1"}
+
+
+def write_vtk(folder: Path, found: Gathered, along: Mapping[str, Sequence[Along]]) -> list[Path]:
+    """surface-NAME.vtp for each surface, and cells.vtu; their paths."""
+    out = []
+    names = _file_names(list(along))
+    for name, rows in along.items():
+        if rows and len(rows[0].border.order):
+            out.append(folder / f"surface-{names[name]}.vtp")
+            write_whole(out[-1], _surface(rows))
+    out.append(folder / "cells.vtu")
+    write_whole(out[-1], _cells(found, names))
+    return out
+
+
+def _file_names(names: Sequence[str]) -> dict[str, str]:
+    """Names that are safe in any file system, each once."""
+    out: dict[str, str] = {}
+    for name in names:
+        safe = re.sub(r"[^A-Za-z0-9]+", "-", name).strip("-")[:60] or "surface"
+        number, unique = 2, safe
+        while unique.lower() in {known.lower() for known in out.values()}:
+            unique, number = f"{safe}-{number}", number + 1
+        out[name] = unique
+    return out
+
+
+def _surface(rows: Sequence[Along]) -> bytes:
+    """Pieces as lines in walking order: per law flux and bands per metre, degree, patch, normal."""
+    border = rows[0].border
+    n, overlay = len(border.order), border.overlay
+    ends = np.stack([overlay.start[border.order], overlay.end[border.order]], axis=1).reshape(-1, 2)
+    lengths = np.maximum(np.diff(border.at), 1e-300)
+    data: dict[str, Array] = {
+        "along": 0.5 * (border.at[1:] + border.at[:-1]),
+        "length": np.diff(border.at),
+        "normal": np.column_stack([border.normal, np.zeros(n)]),
+        "patch": border.patch.astype(np.int64),
+        "drawn": (border.patch == DRAWN).astype(np.uint8),
+        "cell": overlay.cell[border.order].astype(np.int64),
+        "degree": rows[0].degree.astype(np.int64),
+    }
+    for row in rows:
+        data[f"flux_density_{row.label}"] = row.density
+        data[f"sampling_band_density_{row.label}"] = row.sampling / lengths
+        data[f"resolution_band_density_{row.label}"] = row.resolution / lengths
+    lines = [
+        *_open("PolyData"),
+        f'<Piece NumberOfPoints="{2 * n}" NumberOfVerts="0" NumberOfLines="{n}" NumberOfStrips="0" '
+        'NumberOfPolys="0">',
+        *_points(ends),
+        "<Lines>",
+        _array("connectivity", np.arange(2 * n)),
+        _array("offsets", 2 * np.arange(1, n + 1)),
+        "</Lines>",
+    ]
+    return _close(lines, "PolyData", data)
+
+
+def _cells(found: Gathered, names: Mapping[str, str]) -> bytes:
+    """The mesh with its fields, what the surfaces enclose, degrees used, imbalance per cell."""
+    flow = found.flow
+    mesh = flow.mesh
+    data: dict[str, Array] = {"area": mesh.areas}
+    points: dict[str, Array] = {}
+    for role, field in flow.fields.items():
+        values = np.asarray(field.values, float)
+        (points if field.location == "point" else data)[f"field_{role}"] = values
+    for ledger, volume in zip(found.result.ledgers, found.volumes):
+        overlay, name = volume.overlay, names[ledger.name]
+        degree = np.zeros(mesh.n_cells, np.int64)
+        degree[volume.line_cells] = volume.line.supported
+        data[f"degree_{name}"] = degree
+        if overlay.closed:
+            inside = np.zeros(mesh.n_cells)
+            inside[overlay.whole] = 1.0
+            cut = np.bincount(overlay.corner_cell, overlay.corner_areas, mesh.n_cells)
+            data[f"share_inside_{name}"] = inside + cut / mesh.areas
+    for name, values in _imbalances(found).items():
+        data[name] = values
+    lines = [
+        *_open("UnstructuredGrid"),
+        f'<Piece NumberOfPoints="{mesh.n_points}" NumberOfCells="{mesh.n_cells}">',
+        *_points(mesh.points),
+        "<Cells>",
+        _array("connectivity", mesh.nodes),
+        _array("offsets", mesh.offsets[1:]),
+        _array("types", np.full(mesh.n_cells, _POLYGON, np.uint8)),
+        "</Cells>",
+        "<PointData>",
+        *(_array(name, values) for name, values in points.items()),
+        "</PointData>",
+    ]
+    return _close(lines, "UnstructuredGrid", data)
+
+
+def _imbalances(found: Gathered) -> dict[str, Array]:
+    """Per law: net outflow less source of each cell by itself, and the maps of a diagnosis."""
+    out: dict[str, Array] = {}
+    for law in found.laws:
+        if law.name not in DIAGNOSED:
+            continue
+        try:
+            ledgers = cell_ledgers(found.flow, [law], {})
+        except MissingData:
+            continue
+        values = cell_imbalance(ledgers, law.name)
+        for c, component in enumerate(law.components):
+            name = law.name if component is None else f"{law.name}-{component}"
+            out[f"imbalance_{name}"] = values[:, c]
+    if found.diagnosis is not None:
+        for place in found.diagnosis.where:
+            name = place.law if place.component is None else f"{place.law}-{place.component}"
+            out[f"imbalance_per_area_{name}"] = place.map
+            out[f"significance_{name}"] = place.significance
+    return out
+
+
+def cell_imbalance(ledgers: CellLedgers, law: str) -> Array:
+    """(m, c) imbalance of each cell, by the degree that the data support; inner edges cancel in sums."""
+    column, edges = ledgers.columns[law], ledgers.edges
+    m = ledgers.flow.mesh.n_cells
+    flux = column.edge[-1]
+    inner = edges.other >= 0
+    out = np.column_stack(
+        [
+            np.bincount(edges.owner, f, m) - np.bincount(edges.other[inner], f[inner], m)
+            for f in flux.T
+        ]
+    )  # fmt: skip
+    return out if column.cell is None else out + column.cell[-1]
+
+
+def _open(kind: str) -> list[str]:
+    return [
+        '<?xml version="1.0"?>',
+        f'<VTKFile type="{kind}" version="1.0" byte_order="LittleEndian" header_type="UInt64">',
+        f"<{kind}>",
+    ]
+
+
+def _points(points: Array) -> list[str]:
+    whole = np.column_stack([points, np.zeros(len(points))])
+    return ["<Points>", _array("points", whole), "</Points>"]
+
+
+def _close(lines: list[str], kind: str, data: Mapping[str, Array]) -> bytes:
+    arrays = [_array(name, values) for name, values in data.items()]
+    end = ["</CellData>", "</Piece>", f"</{kind}>", "</VTKFile>"]
+    return "\n".join([*lines, "<CellData>", *arrays, *end, ""]).encode()
+
+
+def _array(name: str, values: Array) -> str:
+    values = np.asarray(values)
+    kind = _KINDS[values.dtype.kind] if values.dtype != np.int64 else "Int64"
+    raw = np.ascontiguousarray(values, _TYPES[kind]).tobytes()
+    text = base64.b64encode(np.uint64(len(raw)).astype("<u8").tobytes() + raw).decode()
+    components = f' NumberOfComponents="{values.shape[1]}"' if values.ndim == 2 else ""
+    safe = "".join(letter if letter.isprintable() else "?" for letter in name)
+    return (
+        f'<DataArray type="{kind}" Name={quoteattr(safe)}{components} format="binary">\n{text}\n</DataArray>'
+    )
