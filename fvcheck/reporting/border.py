@@ -114,7 +114,7 @@ def _followers(overlay: Overlay) -> Array:
     n = len(overlay.start)
     extent = float(np.ptp(overlay.start, axis=0).max()) or 1.0
     apart, near = cKDTree(overlay.start).query(overlay.end, k=min(4, n), distance_upper_bound=_MEET * extent)
-    near, apart = near.reshape(n, -1), apart.reshape(n, -1)
+    near, apart = np.asarray(near).reshape(n, -1), np.asarray(apart).reshape(n, -1)
     after, taken = np.full(n, -1), np.zeros(n, bool)
     for piece in range(n):
         for other, far in zip(near[piece], apart[piece]):
@@ -170,7 +170,7 @@ def along_border(volume: SampledVolume, law: Law, border: Border) -> list[Along]
     best = volume.contributions(law, BEST) if volume.falls else degrees[-1]
     closed = volume.overlay.closed
     level = best.level if closed else 0.0
-    felt = np.asarray(best.total) - level
+    felt = best.total - level
     per_piece = felt.reshape(len(volume.overlay.start), PER_PIECE, -1).sum(axis=1)
     group = volume.line_group[::PER_PIECE]
     lengths = volume.overlay.lengths

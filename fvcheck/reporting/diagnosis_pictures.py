@@ -73,7 +73,9 @@ def _draw(found: Diagnosis, place: Place) -> Any:
         (panels[1], place.significance, "imbalance in resolution bands of its block"),
     ):
         most = float(np.nanmax(np.abs(values), initial=0.0)) or 1.0
-        painted = paint(panel, mesh, values, "cell", window, cmap=two_sided(), norm=Normalize(-most, most))
+        painted = paint(
+            panel, mesh, values, "cell", window, cmap=two_sided(), norm=Normalize(-most, most), seams=False
+        )
         draw_boundary(panel, mesh, linewidths=0.9)
         for number, region in enumerate(place.regions, start=1):
             radius = 0.5 * region.size

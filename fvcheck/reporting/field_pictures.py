@@ -82,8 +82,13 @@ def height_for(window: tuple[float, float, float, float], width: float, most: fl
     return float(np.clip(width * (y1 - y0) / max(x1 - x0, 1e-300), 1.4, most))
 
 
-def paint(panel: Any, mesh: Mesh, values: Array, location: str, window: Any, **look: Any) -> Any:
-    """Colour the mesh by values at points or cells; returns what a colour bar needs."""
+def paint(
+    panel: Any, mesh: Mesh, values: Array, location: str, window: Any, seams: bool = True, **look: Any
+) -> Any:
+    """Colour the mesh by values at points or cells; returns what a colour bar needs.
+
+    seams : whether cells are drawn a little too large, to hide seams; not with transparent colours
+    """
     if mesh.n_cells > _CELLS:
         return _paint_image(panel, mesh, values, location, window, **look)
     if location == "point":
@@ -95,6 +100,7 @@ def paint(panel: Any, mesh: Mesh, values: Array, location: str, window: Any, **l
         grid = Triangulation(x, y, triangles, mask=bad if bad.any() else None)
         shown = np.where(np.isfinite(values), values, np.nanmin(values[np.isfinite(values)], initial=0.0))
         return panel.tripcolor(grid, shown, shading="gouraud", rasterized=True, **look)
+    look |= {"edgecolors": "face", "linewidths": 0.3} if seams else {"linewidths": 0.0, "antialiased": False}
     return _polygons(panel, mesh, np.arange(mesh.n_cells), values, **look)
 
 
@@ -112,10 +118,7 @@ def _polygons(panel: Any, mesh: Mesh, cells: Array, values: Array, **look: Any) 
     from matplotlib.collections import PolyCollection
 
     outlines = [mesh.points[mesh.nodes[mesh.offsets[c] : mesh.offsets[c + 1]]] for c in cells.tolist()]
-    painted = PolyCollection(
-        outlines, array=np.ma.masked_invalid(values[cells]), edgecolors="face", linewidths=0.3,
-        rasterized=True, **look,
-    )  # fmt: skip
+    painted = PolyCollection(outlines, array=np.ma.masked_invalid(values[cells]), rasterized=True, **look)
     panel.add_collection(painted)
     return painted
 
@@ -289,8 +292,10 @@ def field_drawing(flow: Flow, what: str, surfaces: Sequence[tuple[str, Overlay]]
     def draw() -> Any:
         from matplotlib.figure import Figure
 
-        height = height_for(window, 0.8 * _WIDTH)
-        figure = Figure(figsize=(_WIDTH, height + 0.75), layout="constrained")
+        height = height_for(window, 0.8 * _WIDTH, 4.6)
+        width = height * (window[2] - window[0]) / max(window[3] - window[1], 1e-300)
+        width = float(np.clip(width + 2.0, 4.5, _WIDTH)) if within_scale(window) else _WIDTH
+        figure = Figure(figsize=(width, height + 0.75), layout="constrained")
         panel = figure.subplots()
         painted = paint(panel, flow.mesh, values, location, window, cmap=colours)
         lines = draw_mesh(panel, flow.mesh, colors=PAPER, alpha=0.28)

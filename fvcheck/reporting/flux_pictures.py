@@ -29,6 +29,9 @@ _ARROWS, _BARS, _STEPS = 56, 48, 240
 # So much of the border is marked by letters, in the map and along the axis.
 _LETTERS = "ABCDEFGH"
 
+# Arrows are so far apart [in] at least.
+_APART = 0.13
+
 _MESH_CELLS = 6_000
 
 
@@ -103,8 +106,7 @@ def _draw(flow: Flow, along: Along) -> Any:
     points = np.concatenate([border.overlay.start, border.overlay.end])
     low, high = points.min(axis=0), points.max(axis=0)
     window = window_of(low, high, 0.2)
-    wide = (window[2] - window[0]) > 2.2 * (window[3] - window[1])
-    if wide:
+    if wide(window):
         map_height = height_for(window, 9.0, 4.0)
         figure = Figure(figsize=(9.6, map_height + 4.0), layout="constrained")
         left, upper, lower = figure.subplots(3, 1, height_ratios=[map_height + 0.5, 2.0, 1.3])
@@ -127,6 +129,11 @@ def _draw(flow: Flow, along: Along) -> Any:
     return figure
 
 
+def wide(window: tuple[float, float, float, float]) -> bool:
+    """Whether the map stands above the curves instead of beside them."""
+    return (window[2] - window[0]) > 2.2 * (window[3] - window[1])
+
+
 def _marks(border: Border) -> Array:
     return border.length * np.arange(8) / 8.0
 
@@ -137,7 +144,13 @@ def _map(panel: Any, flow: Flow, along: Along, window: Any, power: int) -> None:
         draw_mesh(panel, flow.mesh, window, colors=MUTED, alpha=0.3)
     draw_boundary(panel, flow.mesh, linewidths=0.9, colors=MUTED)
     draw_surface(panel, border.overlay, colors=INK, linewidths=1.6)
-    sums, begin, end = binned(border, along.flux, _ARROWS)
+    scale = (
+        min(4.0 / (window[2] - window[0]), 3.4 / (window[3] - window[1]))
+        if not wide(window)
+        else 9.0 / (window[2] - window[0])
+    )
+    count = int(np.clip(border.length * scale / _APART, 8, _ARROWS))
+    sums, begin, end = binned(border, along.flux, count)
     piece = _pieces_at(border, 0.5 * (begin + end))
     density = sums / np.maximum(end - begin, 1e-300)
     extent = max(window[2] - window[0], window[3] - window[1])
@@ -154,12 +167,11 @@ def _map(panel: Any, flow: Flow, along: Along, window: Any, power: int) -> None:
     marks = _pieces_at(border, _marks(border) + 1e-9 * border.length)
     starts = border.overlay.start[border.order[marks]]
     panel.plot(*starts.T, "o", ms=3.4, mfc=PAPER, mec=INK, mew=1.0, zorder=5)
-    centre = border.middle.mean(axis=0)
-    for letter, point in zip(_LETTERS, starts):
-        away = point - centre
-        away = away / max(float(np.hypot(*away)), 1e-300)
+    nearest = border.bins(count)[marks]
+    for letter, point, normal, flux in zip(_LETTERS, starts, border.normal[marks], density[nearest]):
+        away = -normal if flux >= 0 else normal
         panel.annotate(
-            letter, point, xytext=tuple(-9.0 * away), textcoords="offset points", ha="center", va="center",
+            letter, point, xytext=tuple(9.0 * away), textcoords="offset points", ha="center", va="center",
             fontsize=8, color=INK, zorder=6,
             bbox={"boxstyle": "circle,pad=0.1", "fc": PAPER, "ec": "none", "alpha": 0.85},
         )  # fmt: skip
@@ -190,11 +202,8 @@ def _flux(panel: Any, flow: Flow, along: Along, power: int) -> None:
     low, high = min(density.min(initial=0.0), 0.0), max(density.max(initial=0.0), 0.0)
     gap = 0.12 * ((high - low) or 1.0)
     panel.set_ylim(low - gap, high + gap)
-    for at, colour, word, side in ((0.97, OUT, "↑ out", "top"), (0.03, IN, "↓ in", "bottom")):
-        panel.text(
-            0.995, at, word, color=colour, transform=panel.transAxes, ha="right", va=side, fontsize=9,
-            bbox={"fc": PAPER, "ec": "none", "alpha": 0.75, "pad": 1.0},
-        )  # fmt: skip
+    for at, colour, word in ((0.92, OUT, "↑ out"), (1.0, IN, "↓ in")):
+        panel.text(at, 1.02, word, color=colour, transform=panel.transAxes, ha="right", va="bottom")
     panel.set_ylabel(f"flux\n[{unit(per_metre(along.unit), power, True)}]")
     panel.set_title(f"net {short(float(along.flux.sum()))} {along.unit}")
     _name_runs(panel, flow, border)

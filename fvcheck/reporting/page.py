@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable
+from collections.abc import Callable, Sequence
 from dataclasses import dataclass, field
 from importlib.resources import files
 
@@ -19,8 +19,8 @@ from fvcheck.reporting.series_tables import (
     totals,
     trends,
 )
-from fvcheck.reporting.setup_tables import setup_tables
-from fvcheck.reporting.style import DARK, VARIABLES, Drawing, plain
+from fvcheck.reporting.setup_tables import setup_tables, spelled
+from fvcheck.reporting.style import DARK, VARIABLES, Drawing, minus, plain
 from fvcheck.reporting.tables import MARK, Table, amounts, certainty, origins, overview, ports, routes
 from fvcheck.text.ledger import worst_row
 from fvcheck.text.numbers import MISSING, percent, short
@@ -59,9 +59,10 @@ class Section:
 
 @dataclass(frozen=True)
 class Explained:
-    """A hint with its page."""
+    """Hints of one code with its page."""
 
-    hint: Hint
+    code: str
+    messages: tuple[str, ...]
     page: Page | None
 
 
@@ -99,7 +100,7 @@ def page_html(
     )
     environment.filters["svg"] = svg
     environment.filters["plain"] = plain
-    environment.filters["minus"] = lambda text: text.replace("-", "−") if text != MISSING else "–"
+    environment.filters["minus"] = lambda text: "–" if text == MISSING else minus(text)
     folder = files("fvcheck.reporting") / "templates"
     template = environment.from_string((folder / "report.html").read_text(encoding="utf-8"))
     light = {name: colour for colour, name in VARIABLES.items()}
@@ -111,11 +112,18 @@ def page_html(
         head=_head(found),
         overview=overview(found.result),
         sections=_sections(found, drawings),
-        hints=[Explained(hint, PAGES.get(hint.code)) for hint in found.hints],
+        hints=_explained(found.hints),
         cautions=CAUTIONS,
         record=record,
         mark=MARK,
     )
+
+
+def _explained(hints: Sequence[Hint]) -> list[Explained]:
+    by_code: dict[str, list[str]] = {}
+    for hint in hints:
+        by_code.setdefault(hint.code, []).append(hint.message)
+    return [Explained(code, tuple(messages), PAGES.get(code)) for code, messages in by_code.items()]
 
 
 @dataclass(frozen=True)
@@ -209,7 +217,7 @@ def _one(table: Table | None) -> list[Table]:
 def _surfaces(found: Gathered, drawings: Drawings) -> Section:
     parts = []
     for number, (ledger, volume) in enumerate(zip(found.result.ledgers, found.volumes), start=1):
-        facts = f"{volume.surface.text}, border {short(ledger.length)} m"
+        facts = f"{spelled(volume.surface)}, border {short(ledger.length)} m"
         if ledger.area is not None:
             facts += f", area {short(ledger.area)} m²"
         if len(facts) > 300:

@@ -46,55 +46,86 @@ def _first(history: History, ledger: Ledger, label: str) -> float | None:
 def _history(history: History, ledger: Ledger) -> Any:
     from matplotlib.figure import Figure
 
-    figure = Figure(figsize=(9.6, 3.5), layout="constrained")
-    left, right = figure.subplots(1, 2)
-    steps, every = history.steps, max(1, len(history.entries) // _MARKED)
-    power = exponent([v for row in ledger.rows for v in history.values(ledger.name, row.label, "flux")])
+    rows = ledger.rows
+    lines = -(-len(rows) // 3)
+    judged = ledger.closed
+    heights = [2.8, *[1.9] * lines] if judged else [1.9] * lines
+    figure = Figure(figsize=(9.6, sum(heights)), layout="constrained")
+    grid = figure.add_gridspec(len(heights), 3, height_ratios=heights)
+    if judged:
+        _imbalances(figure.add_subplot(grid[0, :]), history, ledger)
+    for number, row in enumerate(rows):
+        panel = figure.add_subplot(grid[int(judged) + number // 3, number % 3])
+        flux = history.values(ledger.name, row.label, "flux")
+        power = exponent(flux.tolist())
+        panel.plot(history.steps, flux / 10.0**power, **_look(history, number))
+        panel.set_title(f"{row.label}: net flux", fontsize=8.5)
+        panel.set_ylabel(unit(row.unit, power, True))
+        panel.grid(True, lw=0.6)
+        panel.locator_params(nbins=5)
+        panel.set_xlabel(_over(history))
+    return figure
+
+
+def _over(history: History) -> str:
+    return "time" if history.unsteady else "iteration"
+
+
+def _look(history: History, number: int) -> dict[str, Any]:
+    return {
+        "marker": MARKS[number % len(MARKS)],
+        "markersize": 4.2,
+        "markevery": max(1, len(history.entries) // _MARKED),
+        "color": SERIES[number % len(SERIES)],
+    }
+
+
+def _imbalances(panel: Any, history: History, ledger: Ledger) -> None:
+    """All rows with their sampling bands; logarithmic beyond the limits where they start far out."""
+    largest = 0.0
     for number, row in enumerate(ledger.rows):
-        style: dict[str, Any] = {
-            "marker": MARKS[number % len(MARKS)],
-            "markersize": 4.2,
-            "markevery": every,
-            "color": SERIES[number % len(SERIES)],
-            "label": row.label,
-        }
-        scale = history.values(ledger.name, row.label, "scale")
         value = history.values(ledger.name, row.label, "imbalance_percent")
+        scale = history.values(ledger.name, row.label, "scale")
         with np.errstate(divide="ignore", invalid="ignore"):
             half = 100.0 * history.values(ledger.name, row.label, "sampling_band") / scale
-        if np.isfinite(value).any():
-            left.plot(steps, value, **style)
-            left.fill_between(steps, value - half, value + half, color=style["color"], alpha=0.16, lw=0)
-        flux = history.values(ledger.name, row.label, "flux") / 10.0**power
-        right.plot(steps, flux, **style)
-    tolerances = sorted({row.tolerance_percent for row in ledger.rows if row.tolerance_percent})
-    for tolerance in tolerances[:3]:
+        if not np.isfinite(value).any():
+            continue
+        largest = max(largest, float(np.nanmax(np.abs(value))))
+        look = _look(history, number)
+        panel.plot(history.steps, value, label=row.label, **look)
+        panel.fill_between(history.steps, value - half, value + half, color=look["color"], alpha=0.16, lw=0)
+    limits = sorted({row.tolerance_percent for row in ledger.rows if row.tolerance_percent})
+    for limit in limits[:3]:
         for sign in (-1.0, 1.0):
-            left.axhline(sign * tolerance, color=MUTED, lw=0.9, ls=(0, (2, 2)))
-    left.axhline(0.0, color=INK, lw=0.8)
-    left.set_title("imbalance, sampling band shaded, limits dotted")
-    left.set_ylabel("% of the scale")
-    right.set_title("net flux through what is drawn")
-    units = {row.unit for row in ledger.rows}
-    right.set_ylabel(unit(", ".join(sorted(units)), power, True))
-    right.legend(loc="center left", bbox_to_anchor=(1.0, 0.5))
-    for panel in (left, right):
-        panel.grid(True, lw=0.6)
-        panel.set_axisbelow(True)
-        panel.set_xlabel("time" if history.unsteady else "iteration")
-    return figure
+            panel.axhline(sign * limit, color=MUTED, lw=0.9, ls=(0, (2, 2)))
+    panel.axhline(0.0, color=INK, lw=0.8)
+    title = "imbalance, sampling bands shaded, limits dotted"
+    if limits and largest > 15.0 * limits[-1]:
+        panel.set_yscale("symlog", linthresh=2.0 * limits[-1])
+        ends = [2.0 * limits[-1] * 10.0**k for k in range(1 + int(np.log10(largest / limits[-1])))]
+        panel.set_yticks([*(-end for end in reversed(ends)), 0.0, *ends])
+        panel.yaxis.set_major_formatter(lambda value, place: f"{value:g}".replace("-", "−"))
+        panel.minorticks_off()
+        title += f"; beyond ±{ends[0]:g} % logarithmic"
+    panel.set_title(title)
+    panel.set_ylabel("% of the scale")
+    panel.set_xlabel(_over(history))
+    panel.grid(True, lw=0.6)
+    panel.legend(loc="center left", bbox_to_anchor=(1.0, 0.5))
 
 
 def study_drawing(study: Study) -> Drawing | None:
     """Quantities against cell size with bands, and what they go to at size zero."""
-    chosen = [q for q in study.quantities if not q.name.startswith("port")][:_PANELS]
+    # Imbalances of all surfaces first, then what passes them.
+    chosen = sorted(study.quantities, key=lambda q: "imbalance" not in q.name)[:_PANELS]
     if not chosen:
         return None
     words = f"{len(chosen)} quantities on {len(study.sizes)} meshes. " + " ".join(
         f"{plain(q.surface)}, {plain(q.name)}: {short(q.convergence.values[0])} {q.unit} on the finest mesh, "
         f"±{short(q.convergence.band, 2)}."
-        for q in chosen
+        for q in chosen[:3]
     )
+    words += " The table has all."
 
     def draw() -> Any:
         from matplotlib.figure import Figure

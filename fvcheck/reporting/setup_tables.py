@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import re
 from dataclasses import fields
 
 import numpy as np
@@ -10,6 +11,7 @@ from fvcheck.fluid import Fluid
 from fvcheck.laws import Law
 from fvcheck.reporting.gathering import Gathered
 from fvcheck.reporting.tables import Cell, Table, number, table, word
+from fvcheck.surfaces import ControlSurface
 from fvcheck.text.numbers import short
 
 _UNITS = {
@@ -37,12 +39,18 @@ def setup_tables(found: Gathered) -> list[Table]:
         for law, value in asked.scale.items()
     ]
     told += [
-        [word(f"source in {s.shape.text}"), word(s.law), _rate(s.rate), word(_unit(found.laws, s.law))]
+        [word(f"source in {spelled(s.shape)}"), word(s.law), _rate(s.rate), word(_unit(found.laws, s.law))]
         for s in asked.sources
     ]
     if told:
         out.append(table("Told beside", ("what", "law", "value", "unit"), told))
     return out
+
+
+def spelled(surface: ControlSurface) -> str:
+    """The spelling of a surface without its name, long decimals cut."""
+    text = surface.text.removeprefix(f"{surface.name}=")
+    return re.sub(r"-?\d+\.\d{8,}(?:e[-+]?\d+)?", lambda found: f"{float(found[0]):.8g}", text)
 
 
 def _rate(rate: object) -> Cell:
@@ -107,11 +115,8 @@ def _patches(found: Gathered) -> Table:
         length = float(np.hypot(*(ends[:, 1] - ends[:, 0]).T).sum()) if len(ends) else 0.0
         wall = "no"
         if name in walls:
-            wall = (
-                "at rest"
-                if not any(walls[name])
-                else f"moves, {short(walls[name][0])}, {short(walls[name][1])}"
-            )
+            moves = motion_text(walls[name])
+            wall = f"moves, {moves}" if moves else "at rest"
         kind = mesh.kinds.get(name, "") + (" body" if name in mesh.bodies else "")
         rows.append(
             [word(name), number(len(ends), str(len(ends))), number(length), word(wall), word(kind.strip())]
@@ -122,7 +127,7 @@ def _patches(found: Gathered) -> Table:
 def _surfaces(found: Gathered) -> Table:
     rows = []
     for ledger, volume in zip(found.result.ledgers, found.volumes):
-        text = volume.surface.text
+        text = spelled(volume.surface)
         rows.append(
             [
                 word(ledger.name), word(text if len(text) < 160 else text[:157] + "…"), number(ledger.length),

@@ -78,6 +78,14 @@ class Drawing:
             return _saved(self.draw(), "png", self.name, transparent=False)
 
 
+_MINUS = re.compile(r"(?<![\w)-])-(?=\.?\d)|(?<=\de)-(?=\d)")
+
+
+def minus(text: str) -> str:
+    """Numbers within words with a true minus sign."""
+    return _MINUS.sub("−", text)
+
+
 def plain(text: object) -> str:
     """Text from a file for a drawing or a page: control characters as question marks."""
     return "".join(letter if letter.isprintable() else "?" for letter in str(text))
@@ -145,20 +153,35 @@ _FAMILY = re.compile(r"font-family: [^;\"]*")
 
 
 # Colours of an image inside a figure: enough for a colour map, at a third of the size.
-_COLOURS = 128
+_COLOURS = 255
 
 _IMAGE = re.compile(r"(data:image/png;base64,)([^\"']*)")
+
+# An image with less than this share of half transparent dots has all of its colours opaque, or none.
+_BLENDED = 0.02
 
 
 def _smaller(found: re.Match[str]) -> str:
     """An embedded PNG with a palette."""
+    import numpy as np
     from PIL import Image
 
     data = base64.b64decode(found[2])
     out = io.BytesIO()
     with Image.open(io.BytesIO(data)) as image:
-        palette = image.convert("RGBA").quantize(_COLOURS, method=Image.Quantize.FASTOCTREE)
-        palette.save(out, "png", optimize=True)
+        whole = image.convert("RGBA")
+    alpha = np.asarray(whole)[:, :, 3]
+    if np.mean((alpha > 0) & (alpha < 255)) > _BLENDED:
+        whole.quantize(_COLOURS, method=Image.Quantize.FASTOCTREE).save(out, "png", optimize=True)
+    else:
+        palette = whole.convert("RGB").quantize(
+            _COLOURS, method=Image.Quantize.MEDIANCUT, dither=Image.Dither.NONE
+        )
+        dots = np.array(palette)
+        dots[alpha < 128] = _COLOURS
+        shown = Image.fromarray(dots, "P")
+        shown.putpalette((palette.getpalette() or [])[: 3 * _COLOURS])
+        shown.save(out, "png", optimize=True, transparency=_COLOURS)
     best = min(data, out.getvalue(), key=len)
     return found[1] + base64.b64encode(best).decode()
 
@@ -192,7 +215,7 @@ def _inline(text: str, drawing: Drawing) -> str:
         f'<svg class="drawing" viewBox="{box}" style="max-width: {width / 11.5:.1f}rem" role="img" '
         f'aria-labelledby="{name}-title {name}-words">\n'
         f'<title id="{name}-title">{escape(drawing.title)}</title>\n'
-        f'<desc id="{name}-words">{escape(drawing.words)}</desc>\n{inner}\n</svg>'
+        f'<desc id="{name}-words">{escape(minus(drawing.words))}</desc>\n{inner}\n</svg>'
     )
 
 
@@ -202,6 +225,6 @@ def _alone(text: str, drawing: Drawing) -> str:
     return (
         '<?xml version="1.0" encoding="utf-8"?>\n'
         f'<svg xmlns="http://www.w3.org/2000/svg" width="{width}pt" height="{height}pt" viewBox="{box}" '
-        f'role="img">\n<title>{escape(drawing.title)}</title>\n<desc>{escape(drawing.words)}</desc>\n'
+        f'role="img">\n<title>{escape(drawing.title)}</title>\n<desc>{escape(minus(drawing.words))}</desc>\n'
         f"<style>*{{stroke-linejoin: round; stroke-linecap: butt}}</style>\n{inner}\n</svg>\n"
     )

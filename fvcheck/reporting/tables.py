@@ -63,7 +63,14 @@ def verdict(value: str | None) -> Cell:
 
 
 def table(caption: str, titles: Sequence[str], rows: Iterable[Sequence[Cell]]) -> Table:
-    return Table(caption, tuple(titles), tuple(tuple(row) for row in rows))
+    """Columns that hold nothing in any row are left out."""
+    whole = [tuple(row) for row in rows]
+    keep = [k for k in range(len(titles)) if k == 0 or any(_holds(row[k]) for row in whole)]
+    return Table(caption, tuple(titles[k] for k in keep), tuple(tuple(row[k] for k in keep) for row in whole))
+
+
+def _holds(cell: Cell) -> bool:
+    return cell.value is not None or cell.gauge is not None or cell.text not in ("", "-", "–")
 
 
 def _share(value: float | None, row: Row) -> float | None:
