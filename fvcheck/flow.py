@@ -95,8 +95,13 @@ class Flow:
         return float(normal / speed) if speed > 0 else float(normal > 0)
 
     def _repr_html_(self) -> str:
-        roles = ", ".join(f"{role} = {field.name}" for role, field in self.fields.items())
-        return f"<b>{self.case.file}</b>: {self.mesh.n_cells} cells, {roles}"
+        from fvcheck.notebook import html_hints, html_line, html_table
+
+        head = html_line(self.case.file, f"{self.mesh.n_cells} cells", self.case.symmetry)
+        fields = [(role, field.name, field.location) for role, field in self.fields.items()]
+        patches = [(name, "wall" if name in self.walls else "") for name in self.mesh.boundary.names]
+        tables = html_table(("role", "array", "at"), fields) + html_table(("patch", ""), patches)
+        return head + tables + html_hints(self.hints)
 
     @classmethod
     def from_arrays(

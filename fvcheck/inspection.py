@@ -18,6 +18,7 @@ from fvcheck.hints import Hint
 from fvcheck.mesh.assemble import Assembly, assemble
 from fvcheck.mesh.mesh import Mesh
 from fvcheck.mesh.piece import Export, Piece
+from fvcheck.notebook import html_hints, html_line, html_table
 from fvcheck.plausible import field_hints
 from fvcheck.version import __version__
 
@@ -100,6 +101,23 @@ class Inspection:
         data = asdict(self)
         data["arrays"] = [asdict(facts.row) | {"not_finite": facts.not_finite} for facts in self.arrays]
         return {"schema": SCHEMA, "version": __version__} | data
+
+    def _repr_html_(self) -> str:
+        head = html_line(self.file, self.format, f"{self.cells} cells", f"{self.points} points")
+        arrays = html_table(
+            ("array", "at", "components", "role", "least", "most"),
+            [
+                (f.row.name, f.row.location, f.row.components, f.row.role or "", f.row.low, f.row.high)
+                for f in self.arrays
+            ],
+            "arrays",
+        )
+        patches = html_table(
+            ("patch", "edges", "length", "velocity through it", "", ""),
+            [(p.name, p.edges, p.length, p.through, p.kind, "body" if p.body else "") for p in self.patches],
+            "patches",
+        )
+        return head + arrays + patches + html_hints(self.hints)
 
 
 def inspect_file(path: str | Path, *, step: int | str = "last", **settings: Any) -> Inspection:

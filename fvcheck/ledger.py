@@ -8,6 +8,7 @@ from typing import Any
 from fvcheck.errors import SetupError
 from fvcheck.flow import Case, Flow
 from fvcheck.hints import Hint
+from fvcheck.notebook import html_hints, html_line, html_table
 from fvcheck.verdict import worst
 from fvcheck.version import __version__
 
@@ -57,6 +58,10 @@ class Row:
     def label(self) -> str:
         """Law and component in one word."""
         return self.law if self.component is None else f"{self.law}-{self.component}"
+
+    def percent(self, value: float | None) -> float | None:
+        """A number in the law's unit in percent of the scale; None where there is none."""
+        return None if value is None or not self.scale else 100.0 * value / self.scale
 
 
 @dataclass(frozen=True)
@@ -113,18 +118,19 @@ class Ledger:
         return worst(row.verdict for row in self.rows)
 
     def _repr_html_(self) -> str:
-        titles = ("law", "in", "out", "boundary", "source", "imbalance", "%", "verdict")
-        head = "".join(f"<th>{title}</th>" for title in titles)
-        body = "".join(
-            f"<tr><td>{r.label}</td>"
-            + "".join(
-                f"<td>{'' if v is None else format(v, '.5g')}</td>"
-                for v in (r.inflow, r.outflow, r.boundary, r.source, r.imbalance, r.imbalance_percent)
-            )
-            + f"<td>{r.verdict or ''}</td></tr>"
-            for r in self.rows
+        titles = (
+            *("law", "unit", "in", "out", "net flux", "boundary", "storage", "source", "imbalance"),
+            *("imbalance %", "±data %", "±mesh %", "limit %", "verdict"),
         )
-        return f"<b>{self.name}</b><table><tr>{head}</tr>{body}</table>"
+        rows = [
+            (
+                *(r.label, r.unit, r.inflow, r.outflow, r.flux, r.boundary, r.storage, r.source, r.imbalance),
+                *(r.imbalance_percent, r.percent(r.sampling_band), r.percent(r.resolution_band)),
+                *(r.tolerance_percent, r.verdict or ""),
+            )
+            for r in self.rows
+        ]
+        return html_table(titles, rows, f"{self.name} ({self.kind})")
 
 
 @dataclass(frozen=True)
@@ -160,7 +166,8 @@ class Result:
         }
 
     def _repr_html_(self) -> str:
-        return "".join(ledger._repr_html_() for ledger in self.ledgers)
+        head = html_line(self.case.get("file", ""), f"verdict: {self.verdict or 'none'}")
+        return head + "".join(ledger._repr_html_() for ledger in self.ledgers) + html_hints(self.hints)
 
 
 def ledger_dict(ledger: Ledger) -> dict[str, Any]:

@@ -17,6 +17,7 @@ from fvcheck.flow import Flow, flow_of_export
 from fvcheck.hints import Hint
 from fvcheck.laws import Law
 from fvcheck.ledger import SCHEMA, Ledger, Result
+from fvcheck.notebook import html_hints, html_line, html_table
 from fvcheck.series import file_list
 from fvcheck.surfaces import ControlSurface, name_all
 from fvcheck.timeseries import reaction
@@ -83,14 +84,28 @@ class Study:
         }
 
     def _repr_html_(self) -> str:
-        head = "".join(f"<th>{h}</th>" for h in ("", "finest", "order", "extrapolated", "±"))
-        body = ""
-        for q in self.quantities:
-            c = q.convergence
-            numbers = (c.values[0], c.order, c.extrapolated, 2.0 * q.standard_uncertainty)
-            body += f"<tr><td>{q.surface}: {q.name}</td>"
-            body += "".join(f"<td>{'' if v is None else format(v, '.5g')}</td>" for v in numbers) + "</tr>"
-        return f"<table><tr>{head}</tr>{body}</table>"
+        titles = (
+            "surface",
+            "quantity",
+            "unit",
+            "finest",
+            "next",
+            "kind",
+            "order",
+            "extrapolated",
+            "±95 % mesh",
+            "±data",
+        )
+        rows = [
+            (
+                *(q.surface, q.name, q.unit, *q.convergence.values[:2], q.convergence.kind),
+                *(q.convergence.order, q.convergence.extrapolated, q.convergence.band, q.sampling_bands[0]),
+            )
+            for q in self.quantities
+        ]
+        cells = ", ".join(str(result.case["cells"]) for result in self.results)
+        head = html_line(f"{len(self.results)} meshes", f"{cells} cells")
+        return head + html_table(titles, rows) + html_hints(self.hints)
 
 
 def study(

@@ -17,6 +17,7 @@ from fvcheck.hints import Hint
 from fvcheck.laws import Law
 from fvcheck.ledger import SCHEMA, Result, Row, case_dict, ledger_dict
 from fvcheck.mesh.piece import Export
+from fvcheck.notebook import html_line, html_table
 from fvcheck.series import Series, open_series, same_cells
 from fvcheck.surfaces import ControlSurface
 from fvcheck.trends import Trend, trend_of
@@ -142,8 +143,18 @@ class History:
         return out.getvalue()
 
     def _repr_html_(self) -> str:
-        last = self.entries[-1].result
-        return f"<b>{len(self.entries)} snapshots</b>, the last:<br>" + last._repr_html_()
+        kind = "times" if self.unsteady else "iterations"
+        head = html_line(f"{len(self.entries)} {kind}", "settled" if self.settled else "not settled")
+        titles = ("surface", "quantity", "unit", "level", "drift", "mean", "±95 %", "amplitude", "period", "")
+        rows = [
+            (
+                *(t.surface, t.name, t.unit, t.level, t.drift, t.mean, t.mean_band, t.amplitude, t.period),
+                "settled" if t.settled else "not settled",
+            )
+            for t in self.trends
+        ]
+        trends = html_table(titles, rows, "over the steps") if rows else ""
+        return head + trends + html_line("the last") + self.entries[-1].result._repr_html_()
 
 
 class Recorder:

@@ -22,6 +22,7 @@ from fvcheck.flow import Flow
 from fvcheck.hints import Hint
 from fvcheck.laws import Law, MissingData, find_law
 from fvcheck.ledger import SCHEMA, Result, case_dict
+from fvcheck.notebook import html_hints, html_line, html_table
 from fvcheck.overlay.overlay import lay_over
 from fvcheck.sources import Source
 from fvcheck.surfaces import ControlSurface
@@ -85,6 +86,20 @@ class Diagnosis:
         if state == "unexplained":
             return NONE_EXPLAINS
         return ", or ".join(c.told.cause for c in why.named if c.told is not None)
+
+    def _repr_html_(self) -> str:
+        says = "".join(html_line(f"{why.law}:", self.sentence(why)) for why in self.why)
+        titles = ("law", "component", "x", "y", "across", "amount", "±data", "share %", "along")
+        rows = [
+            (
+                *(place.law, place.component or "", *r.centre, r.size, r.amount, r.band),
+                *(100.0 * r.share, r.patch or ""),
+            )
+            for place in self.where
+            for r in place.regions
+        ]
+        table = html_table(titles, rows, "where it sits") if rows else ""
+        return says + table + html_hints(self.hints)
 
     def to_dict(self) -> dict[str, Any]:
         """The result file: plain types, strict JSON."""

@@ -13,6 +13,7 @@ from fvcheck.hints import Hint
 from fvcheck.laws import MissingData
 from fvcheck.ledger import SCHEMA, case_dict
 from fvcheck.mesh.boundary import clearance
+from fvcheck.notebook import html_hints, html_table
 from fvcheck.plausible import field_hints
 from fvcheck.routes.band import band
 from fvcheck.routes.circulation import circulation
@@ -68,14 +69,22 @@ class Forces:
         }
 
     def _repr_html_(self) -> str:
-        titles = ("body", "route", "drag", "±data", "lift", "±data", "moment")
-        head = "".join(f"<th>{title}</th>" for title in titles)
-        body = ""
-        for e in self.estimates:
-            numbers = (e.drag, e.band("drag"), e.lift, e.band("lift"), e.moment)
-            cells = "".join(f"<td>{'' if v is None else format(v, '.5g')}</td>" for v in numbers)
-            body += f"<tr><td>{e.body}</td><td>{e.label}</td>{cells}</tr>"
-        return f"<table><tr>{head}</tr>{body}</table>"
+        titles = ("body", "route", "drag", "±data", "±mesh", "lift", "±data", "±mesh", "moment", "±data", "")
+        rows = [
+            (
+                *(e.body, e.label),
+                *(e.drag, *_halves(e, "drag"), e.lift, *_halves(e, "lift")),
+                *(e.moment, _halves(e, "moment")[0], e.refused),
+            )
+            for e in self.estimates
+        ]
+        return html_table(titles, rows, "force of the fluid") + html_hints(self.hints)
+
+
+def _halves(e: Estimate, name: str) -> tuple[float | None, float | None]:
+    """Sampling and resolution band of a number, None where unknown."""
+    known = e.bands.get(name, {})
+    return known.get("sampling"), known.get("resolution")
 
 
 def forces(
