@@ -3,8 +3,9 @@
 from __future__ import annotations
 
 import copy
-from collections.abc import Mapping, Sequence
+from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass, replace
+from typing import Any
 
 import numpy as np
 
@@ -15,8 +16,9 @@ from fvcheck.laws import Law, MissingData, State
 from fvcheck.laws.law import convective
 from fvcheck.laws.state import Datum
 from fvcheck.overlay.pieces import DRAWN, Overlay, triangles_of
+from fvcheck.sampling.inner import InnerCells, inner_cells, sample_inner
 from fvcheck.sampling.probe import Probe, Samples, compile_probe, known_values, pin_walls
-from fvcheck.sampling.quadrature import PER_PIECE, PER_TRIANGLE, along, within
+from fvcheck.sampling.quadrature import PER_PIECE, along, within
 from fvcheck.sampling.sampled import Sampled
 from fvcheck.sampling.sampler import DEGREES
 from fvcheck.surfaces import ControlSurface
@@ -25,6 +27,10 @@ Array = np.ndarray
 
 # In place of a degree: the one that the data support, cell by cell.
 BEST = 0
+
+# Whole cells beyond which they are integrated by one pass over them (`sampling.inner`)
+# in place of the fits of the border: then an interior costs more than the border does.
+MANY_CELLS = 20_000
 
 # Samples with a shaken last digit: eight give the spread to a quarter of itself.
 _SHAKES = 8
@@ -50,7 +56,13 @@ class Contributions:
 
 
 class SampledVolume:
-    """Samples of a flow on one overlay, made when first asked for."""
+    """Samples of a flow on one overlay, made when first asked for.
+
+    passes : whether many whole cells may go by `sampling.inner`; then `area_state`
+        is of the cut cells only
+    """
+
+    passes = True
 
     def __init__(
         self,
@@ -89,8 +101,8 @@ class SampledVolume:
         centres = np.unique(overlay.triangle)
         if self.area_triangle is not None:
             centres = np.unique(np.concatenate([centres, self.area_triangle.ravel()]))
-        self._take(flow, compile_probe(flow, centres))
         self._centres = centres
+        self._take(flow, compile_probe(flow, centres))
 
     def with_flow(self, flow: Flow) -> SampledVolume:
         """The same volume and fits with the data of another flow over the same mesh."""
@@ -129,7 +141,11 @@ class SampledVolume:
         self.datum = Datum()
         if self.overlay.closed:
             self.datum = self._find_datum()
+        self.inner = (
+            None if self._inner_cells is None else sample_inner(flow.mesh, self._inner_cells, self.probe)
+        )
         self._states: dict[tuple[str, int], State] = {}
+        self._inner_sums: dict[tuple[Any, ...], dict[int, Array]] = {}
         self._shaken: list[State] | None = None
 
     def _with_averages(self, samples: Samples) -> Samples:
@@ -191,21 +207,27 @@ class SampledVolume:
 
     def _set_up_area(self, needed: bool) -> None:
         self.area_triangle: Array | None = None
+        self._inner_cells: InnerCells | None = None
         if not needed:
             return
         mesh, overlay = self.flow.mesh, self.overlay
-        triangles, first = triangles_of(mesh, overlay.whole)
+        whole = overlay.whole
+        at_points = all(field.location == "point" for field in self.flow.fields.values())
+        if self.passes and at_points and len(whole) > MANY_CELLS:
+            self._inner_cells = inner_cells(mesh, whole, np.unique(overlay.corner_cell))
+            whole = whole[:0]
+        triangles, first = triangles_of(mesh, whole)
         corners = np.concatenate([mesh.points[triangles], overlay.corners])
         u, v = corners[:, 1] - corners[:, 0], corners[:, 2] - corners[:, 0]
         sizes = 0.5 * (u[:, 0] * v[:, 1] - u[:, 1] * v[:, 0])
         sizes[len(triangles) :] *= overlay.corner_weight
-        self.area_places, weights = within(corners)
-        self.area_triangle = np.repeat(
-            np.concatenate([triangles, overlay.corner_triangle]), PER_TRIANGLE, axis=0
-        )
+        # In the few cut cells of a large volume two orders more would not show.
+        self.area_places, weights = within(corners, coarse=self._inner_cells is not None)
+        per = len(weights)
+        self.area_triangle = np.repeat(np.concatenate([triangles, overlay.corner_triangle]), per, axis=0)
         self.area_weights = (sizes[:, None] * weights).ravel() * self._extent(self.area_places)
-        cells = np.concatenate([np.repeat(overlay.whole, np.diff(first)), overlay.corner_cell])
-        self.area_cells, self.area_group = np.unique(np.repeat(cells, PER_TRIANGLE), return_inverse=True)
+        cells = np.concatenate([np.repeat(whole, np.diff(first)), overlay.corner_cell])
+        self.area_cells, self.area_group = np.unique(np.repeat(cells, per), return_inverse=True)
 
     def _find_datum(self) -> Datum:
         state = self._line_state_of(self.line.best)
@@ -292,8 +314,7 @@ class SampledVolume:
 
     def _source(self, law: Law, degree: int) -> Array | None:
         if self.needs_area(law):
-            source = law.source(self.area_state(degree))
-            return None if source is None else self._per_cell(source * self.area_weights[:, None])
+            return self._over_area(("source", law), law.source, degree)
         constant = law.source(self._bare_state())
         if constant is None:
             return None
@@ -307,19 +328,23 @@ class SampledVolume:
         """
         if not self.has_rates:
             return None
-        state, step = self.area_state(degree), 1e-30
-        moved = {
-            role: Sampled(
-                sampled.value + 1j * step * state.fields[f"rate:{role}"].value,
-                sampled.gradient + 1j * step * state.fields[f"rate:{role}"].gradient,
-            )
-            if f"rate:{role}" in state.fields
-            else sampled
-            for role, sampled in state.fields.items()
-            if not role.startswith("rate:")
-        }
-        rate = np.imag(law.density(self._state(moved, state.x))) / step
-        storage = self._per_cell(rate * self.area_weights[:, None])
+
+        def rate(state: State) -> Array:
+            step = 1e-30
+            moved = {
+                role: Sampled(
+                    sampled.value + 1j * step * state.fields[f"rate:{role}"].value,
+                    sampled.gradient + 1j * step * state.fields[f"rate:{role}"].gradient,
+                )
+                if f"rate:{role}" in state.fields
+                else sampled
+                for role, sampled in state.fields.items()
+                if not role.startswith("rate:")
+            }
+            return np.imag(law.density(self._state(moved, state.x))) / step
+
+        storage = self._over_area(("rate", law), rate, degree)
+        assert storage is not None
         if self.surface_velocity is not None:
             swept = np.einsum("qi,qi->q", self.surface_velocity, self.normals)
             border = law.density(self.line_state(degree)) * swept[:, None]
@@ -329,10 +354,43 @@ class SampledVolume:
     def content(self, law: Law, degree: int, datum: Datum) -> tuple[Array, Array]:
         """Mesh cells (k,) and what the law stores in the part of them inside, (k, c), from a given datum."""
         if self.needs_area(law):
-            state = self._state(self.area_state(degree).fields, self.area_places, datum)
-            return self.area_cells, self._per_cell(law.density(state) * self.area_weights[:, None])
+            held = self._over_area(("content", law, datum), law.density, degree, datum)
+            assert held is not None
+            return self.volume_cells, held
         area = self.overlay.area(self.flow.mesh) * self.depth
         return np.full(1, -1), law.density(self._bare_state()) * area
+
+    def _over_area(
+        self,
+        key: tuple[Any, ...],
+        made: Callable[[State], Array | None],
+        degree: int,
+        datum: Datum | None = None,
+    ) -> Array | None:
+        """(k, c) integral over the part inside of each of `volume_cells`; None where there is nothing."""
+        state = self._state(self.area_state(degree).fields, self.area_places, datum)
+        values = made(state)
+        if values is None:
+            return None
+        cut = self._per_cell(values * self.area_weights[:, None])
+        if self.inner is None:
+            return cut
+        if key not in self._inner_sums:
+            self._inner_sums[key] = self.inner.integrate(
+                lambda fields, places: made(self._state(fields, places, datum)), self._extent
+            )
+        sums = self._inner_sums[key]
+        per_cell = sums[degree or DEGREES[-1]]
+        if degree == BEST and self.inner.fell.any():
+            per_cell = np.where(self.inner.fell[:, None], sums[DEGREES[0]], per_cell)
+        return np.concatenate([cut, per_cell])
+
+    @property
+    def volume_cells(self) -> Array:
+        """(k,) mesh cells of the rows of volume integrals."""
+        if self._inner_cells is None:
+            return self.area_cells
+        return np.concatenate([self.area_cells, self._inner_cells.cells])
 
     def _per_cell(self, values: Array) -> Array:
         """(q, c) at the area places, summed per cell of ``area_cells``."""
@@ -346,7 +404,8 @@ class SampledVolume:
     def falls(self) -> bool:
         """Whether the data support less than the highest degree anywhere."""
         parts = [self.line] if self.area is None else [self.line, self.area]
-        return any(bool(np.any(part.supported < DEGREES[-1])) for part in parts)
+        inner = self.inner is not None and bool(self.inner.fell.any())
+        return inner or any(bool(np.any(part.supported < DEGREES[-1])) for part in parts)
 
     def reaching(self, law: Law) -> Array:
         """(groups,) bool: where errors have one sign and add up.

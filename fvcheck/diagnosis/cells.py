@@ -110,6 +110,8 @@ class CellLedgers:
 class _SampledCells(SampledVolume):
     """Samples on a list of edges; volume terms are taken cell by cell."""
 
+    passes = False  # states are wanted at places in all cells
+
     level_datum: Datum
 
     def __init__(self, flow: Flow, overlay: Overlay, laws: Sequence[Law], datum: Datum) -> None:

@@ -158,6 +158,16 @@ def distinct(numbers, limit):
 
 
 @njit(cache=True)
+def mark_points(offsets, nodes, cells, n_points):
+    """(n_points,) uint8, 1 at the points of the chosen cells."""
+    out = np.zeros(n_points, np.uint8)
+    for c in cells:
+        for k in range(offsets[c], offsets[c + 1]):
+            out[nodes[k]] = 1
+    return out
+
+
+@njit(cache=True, parallel=True)
 def renumber(offsets, nodes, cells, chosen, n_points):
     """The cells (k,) over new point numbers, those of ``chosen`` in their order: (offsets, nodes).
 
@@ -171,7 +181,7 @@ def renumber(offsets, nodes, cells, chosen, n_points):
     for j in range(len(cells)):
         out_offsets[j + 1] = out_offsets[j] + offsets[cells[j] + 1] - offsets[cells[j]]
     out_nodes = np.empty(out_offsets[-1], np.int64)
-    for j in range(len(cells)):
+    for j in prange(len(cells)):
         at = out_offsets[j]
         for k in range(offsets[cells[j]], offsets[cells[j] + 1]):
             out_nodes[at] = new[nodes[k]]

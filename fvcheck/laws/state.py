@@ -116,10 +116,13 @@ class State(Gas):
         """(q, 2, 2) in-plane τ = μ(∇u + ∇uᵀ − ⅔(∇·u)1) − ⅔ρk 1 [Pa]; None when inviscid."""
         if self.viscosity is None and "turbulence_energy" not in self.fields:
             return None
-        tau = np.zeros((len(self.x), 2, 2), dtype=self.velocity.dtype)
+        # Component by component along memory: whole volumes pass through here.
+        tau = np.zeros((2, 2, len(self.x)), dtype=self.velocity.dtype).transpose(2, 0, 1)
         if self.viscosity is not None:
-            g = self.velocity_gradient[:, :2]
-            tau += self.viscosity[:, None, None] * (g + np.swapaxes(g, 1, 2))
+            g = self.velocity_gradient
+            for i, j in ((0, 0), (0, 1), (1, 1)):
+                tau[:, i, j] = self.viscosity * (g[:, i, j] + g[:, j, i])
+            tau[:, 1, 0] = tau[:, 0, 1]
         tau[:, 0, 0] += self._isotropic_stress
         tau[:, 1, 1] += self._isotropic_stress
         return tau
@@ -152,12 +155,17 @@ class State(Gas):
             slope[:, 1 - self.axis] -= self.velocity[:, 2] * self.per_radius
         return self.viscosity[:, None] * slope
 
+    @cached_property
+    def _out_of_plane(self) -> bool:
+        """Whether anything moves out of the plane."""
+        return bool(np.any(self.velocity[:, 2]) or np.any(self.velocity_gradient[:, 2]))
+
     def traction_power(self, n: Array) -> Array | None:
         """(q,) u·τ·n, the part of an out-of-plane velocity included; None when inviscid."""
         if self.stress is None:
             return None
         power = np.einsum("qi,qij,qj->q", self.velocity[:, :2], self.stress, n)
-        if self.cross_shear is not None:
+        if self._out_of_plane and self.cross_shear is not None:
             power = power + self.velocity[:, 2] * np.einsum("qj,qj->q", self.cross_shear, n)
         return power
 
@@ -167,7 +175,7 @@ class State(Gas):
         if self.stress is None:
             return None
         work = np.einsum("qij,qij->q", self.stress, self.velocity_gradient[:, :2])
-        if self.viscosity is not None and self.cross_shear is not None:
+        if self.viscosity is not None and self._out_of_plane and self.cross_shear is not None:
             safe = np.where(self.viscosity == 0.0, 1.0, self.viscosity)
             work = work + np.sum(self.cross_shear**2, axis=1) / safe
         if self.axis is not None and self.hoop_stress is not None:

@@ -6,6 +6,8 @@ each lying in one mesh triangle; it never asks again where the surface runs.
 
 from __future__ import annotations
 
+from typing import TYPE_CHECKING
+
 import numpy as np
 
 from fvcheck.errors import SurfaceError
@@ -22,6 +24,9 @@ from fvcheck.overlay.pieces import (
     triangles_of,
 )
 from fvcheck.surfaces import ControlSurface
+
+if TYPE_CHECKING:
+    from fvcheck.kernels.overlay import Cuts
 
 Array = np.ndarray
 
@@ -90,6 +95,9 @@ def _cut(mesh: Mesh, start: Array, end: Array, closed: bool, shift: int) -> Over
         mesh.points, triangles, first, boxes, sides, winding, start, end, grid, shift, closed
     )
     cell_of = np.repeat(near, np.diff(first))
+    if closed:
+        cuts, uncut = _without_uncut(cuts, mesh.points[triangles].reshape(-1, 6), first)
+        whole = np.sort(np.concatenate([whole, near[uncut]]))
 
     drawn = np.full(len(cuts.drawn), DRAWN)
     edge_patch = mesh.boundary.patch[cuts.edge[:, 1]]
@@ -113,6 +121,23 @@ def _cut(mesh: Mesh, start: Array, end: Array, closed: bool, shift: int) -> Over
         return parts
     enclosed = _boundary_only(mesh, status[mesh.boundary.cells] == INSIDE, whole, True)
     return join(parts, enclosed)
+
+
+def _without_uncut(cuts: Cuts, corners: Array, first: Array) -> tuple[Cuts, Array]:
+    """The cuts without those cells that lie wholly inside after all, and the numbers of these.
+
+    corners : (t, 6) of the triangles, group c in rows first[c]:first[c+1]
+    """
+    count = len(first) - 1
+    group = np.repeat(np.arange(count), np.diff(first))
+    of_area = group[cuts.area[:, 0]]
+    full = (cuts.area[:, 1] == 1) & (cuts.area_corners == corners[cuts.area[:, 0]]).all(axis=1)
+    whole = np.bincount(group[cuts.drawn[:, 0]], minlength=count) == 0
+    # Each of its triangles once, and nothing else.
+    for pieces in (of_area, of_area[full]):
+        whole &= np.bincount(pieces, minlength=count) == np.diff(first)
+    keep = ~whole[of_area]
+    return cuts._replace(area_corners=cuts.area_corners[keep], area=cuts.area[keep]), np.flatnonzero(whole)
 
 
 def _boundary_only(mesh: Mesh, chosen: Array, whole: Array, closed: bool) -> Overlay:

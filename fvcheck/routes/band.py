@@ -86,6 +86,8 @@ class _BandVolume(SampledVolume):
     step_there : (q,) ψ at the line quadrature points
     """
 
+    passes = False  # states are wanted at places in all cells
+
     def __init__(self, flow: Flow, view: View, inner: float, outer: float) -> None:
         mesh = flow.mesh
         self._step = lambda x: smooth_step(distances(mesh, view.body, x, outer), inner, outer)

@@ -18,17 +18,17 @@ Array = np.ndarray
 Raw = tuple[tuple[Array, Array, Array], ...]
 
 # A jump shows where the three polynomials of a triangle disagree by more than
-# _DISAGREE of the range of the data two rings around, and the value leaves that
-# range by more than _EXCESS of it. Smooth fields down to eight cells a wave
+# DISAGREE of the range of the data two rings around, and the value leaves that
+# range by more than EXCESS of it. Smooth fields down to eight cells a wave
 # hardly ever do both, fits across a captured shock do so in each passage. Beside
 # the domain boundary a straight profile through cell centres leaves the range.
-_DISAGREE, _EXCESS, _EXCESS_RIM = 0.15, 0.01, 0.25
+DISAGREE, EXCESS, EXCESS_RIM = 0.15, 0.01, 0.25
 
 # Around a jump even this excess is an overshoot.
 _OVERSHOOT = 0.005
 
 # Share of the whole surface's range below which a local range is noise.
-_LEAST_EXTENT = 1e-3
+LEAST_EXTENT = 1e-3
 
 # Rings of cells about a jump in which fits may feel it.
 _REACH = 2
@@ -146,11 +146,11 @@ class Probe:
         seeds, overshoots = np.zeros(len(cell), bool), np.zeros(len(cell), bool)
         for group, (values, _, apart), (low, high) in zip(self.groups, raw, self._limits(triangle)):
             extent = high - low
-            matters = extent > _LEAST_EXTENT * (high.max(axis=0, initial=0.0) - low.min(axis=0, initial=0.0))
+            matters = extent > LEAST_EXTENT * (high.max(axis=0, initial=0.0) - low.min(axis=0, initial=0.0))
             excess = np.maximum(values - high, low - values)
             rim = group.sampler.rim[group.sampler.centres][group.sampler.centre_of[triangle]].any(axis=1)
-            allowed = np.where(rim, _EXCESS_RIM, _EXCESS)[:, None] * extent
-            seeds |= (matters & (excess > allowed) & (apart > _DISAGREE * extent)).any(axis=1)
+            allowed = np.where(rim, EXCESS_RIM, EXCESS)[:, None] * extent
+            seeds |= (matters & (excess > allowed) & (apart > DISAGREE * extent)).any(axis=1)
             overshoots |= (matters & (excess > _OVERSHOOT * extent)).any(axis=1)
         supported = np.full(int(cell.max(initial=-1)) + 1, DEGREES[-1])
         near_jump = np.zeros(len(supported), bool)

@@ -28,6 +28,8 @@ _TRIANGLE_POINTS = np.array(
 )
 _TRIANGLE_WEIGHTS = np.repeat([0.223381589678011, 0.109951743655322], 3)
 
+_COARSE_POINTS = np.full((3, 3), 1 / 6) + np.eye(3) / 2
+
 PER_TRIANGLE = len(_TRIANGLE_WEIGHTS)
 
 
@@ -38,7 +40,12 @@ def along(start: Array, end: Array) -> tuple[Array, Array]:
     return places.reshape(-1, 2), _LINE_WEIGHTS
 
 
-def within(corners: Array) -> tuple[Array, Array]:
-    """Places (6n, 2) in n triangles (n, 3, 2), and weights (6,) that sum to 1."""
-    places = np.einsum("pk,nkd->npd", _TRIANGLE_POINTS, corners)
-    return places.reshape(-1, 2), _TRIANGLE_WEIGHTS / _TRIANGLE_WEIGHTS.sum()
+def within(corners: Array, coarse: bool = False) -> tuple[Array, Array]:
+    """Places (6n, 2) in n triangles (n, 3, 2), and weights (6,) that sum to 1.
+
+    coarse : three places, exact to degree 2
+    """
+    points = _COARSE_POINTS if coarse else _TRIANGLE_POINTS
+    weights = np.ones(3) if coarse else _TRIANGLE_WEIGHTS
+    places = np.einsum("pk,nkd->npd", points, corners)
+    return places.reshape(-1, 2), weights / weights.sum()

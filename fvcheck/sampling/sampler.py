@@ -206,6 +206,7 @@ def _compile(
     threads.use_for(_HEAVY * len(centres))
     near, reached = blocks.grow_rings(mesh.points, mesh.offsets, mesh.nodes, mesh.boxes, centres, rings)
     local_cells, local_points = np.flatnonzero(near > 0), np.flatnonzero(reached > 0)
+    threads.use_for(len(local_cells))
     local_offsets, local_nodes = blocks.renumber(
         mesh.offsets, mesh.nodes, local_cells, local_points, mesh.n_points
     )
