@@ -97,6 +97,20 @@ TERMS: dict[str, Page] = {
         "fvcheck diagnose run.vtu -c check.toml; --try balances again with the first proposal, --vtu FILE "
         "writes the imbalance per cell. Exit status 1 where something is beyond what the mesh explains.",
     ),
+    "report": Page(
+        "One HTML page that holds all it needs, for the file and for others: verdict first, the ledgers, the "
+        "field with mesh and surfaces, the flux through each surface drawn along it, forces of the bodies in "
+        "the check file, history or study of several files, a diagnosis where a row is open, the set-up as "
+        "it was understood, hints with their pages, versions and SHA-256 of the files.\n"
+        "Arrows point the way a quantity is carried. Below the flux: the share of both bands that each "
+        "stretch of border adds, so it says where to move the surface or to refine.\n"
+        "Several files: snapshots where their meshes are alike, else meshes of one case; --kind settles it. "
+        "A file with several states is a series; --step INDEX takes one.",
+        "A number in a mail loses its band, its surface and its settings; a page keeps them together.",
+        "fvcheck report check.toml -o report.html, or a FILE with the options of fvcheck balance. --figures "
+        "DIR: every figure as PNG and SVG. --vtk DIR: surfaces with flux and band densities (VTP), cells "
+        "with their imbalance, degrees and shares inside (VTU). Exit status: that of the verdict.",
+    ),
     "exit": Page(
         "0: closed, or nothing to judge. 1: open. 2: the command, check file or data cannot be used. "
         "3: undecided or mesh-limited.",

@@ -16,7 +16,7 @@ import numpy as np
 
 from fvcheck.diagnosis.cells import CellLedgers, cell_ledgers
 from fvcheck.diagnosis.diagnosing import LAWS as DIAGNOSED
-from fvcheck.laws import MissingData
+from fvcheck.laws import Law, MissingData
 from fvcheck.overlay.pieces import DRAWN
 from fvcheck.reporting.border import Along
 from fvcheck.reporting.gathering import Gathered
@@ -128,23 +128,31 @@ def _cells(found: Gathered, names: Mapping[str, str]) -> bytes:
 def _imbalances(found: Gathered) -> dict[str, Array]:
     """Per law: net outflow less source of each cell by itself, and the maps of a diagnosis."""
     out: dict[str, Array] = {}
-    for law in found.laws:
-        if law.name not in DIAGNOSED:
-            continue
-        try:
-            ledgers = cell_ledgers(found.flow, [law], {})
-        except MissingData:
-            continue
-        values = cell_imbalance(ledgers, law.name)
-        for c, component in enumerate(law.components):
-            name = law.name if component is None else f"{law.name}-{component}"
-            out[f"imbalance_{name}"] = values[:, c]
+    laws = [law for law in found.laws if law.name in DIAGNOSED]
+    try:
+        groups = [(laws, cell_ledgers(found.flow, laws, {}))] if laws else []
+    except MissingData:
+        groups = [([law], ledgers) for law in laws if (ledgers := _one(found, law)) is not None]
+    for held, ledgers in groups:
+        for law in held:
+            values = cell_imbalance(ledgers, law.name)
+            for c, component in enumerate(law.components):
+                name = law.name if component is None else f"{law.name}-{component}"
+                out[f"imbalance_{name}"] = values[:, c]
     if found.diagnosis is not None:
         for place in found.diagnosis.where:
             name = place.law if place.component is None else f"{place.law}-{place.component}"
             out[f"imbalance_per_area_{name}"] = place.map
             out[f"significance_{name}"] = place.significance
     return out
+
+
+def _one(found: Gathered, law: Law) -> CellLedgers | None:
+    """Ledgers of one law; None where its data are missing."""
+    try:
+        return cell_ledgers(found.flow, [law], {})
+    except MissingData:
+        return None
 
 
 def cell_imbalance(ledgers: CellLedgers, law: str) -> Array:
