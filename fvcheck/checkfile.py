@@ -124,13 +124,16 @@ def _locate(loc: Sequence[str | int]) -> tuple[type[BaseModel], list[Any], str]:
             break
         expected = info.description or expected
         inner = _table_in(info.annotation)
-        if inner is not None:
+        if rest and _is_mapping(info.annotation):
+            keys.append(rest.pop(0))
+            if inner is None or rest[:1] != [inner.__name__]:
+                break
+            model = inner
+            rest.pop(0)
+        elif inner is not None:
             model = inner
             if rest and isinstance(rest[0], int):
                 keys.append(rest.pop(0))
-        elif rest and _is_mapping(info.annotation):
-            keys.append(rest[0])
-            break
         else:
             break
     return model, keys, expected

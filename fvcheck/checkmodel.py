@@ -83,12 +83,21 @@ class FluidTable(Table):
     frame_centre: Pair = Field(default=(0.0, 0.0), description="a list of two numbers")
 
 
+class SpinEntry(Table):
+    """A wall that turns: at ``omega`` [rad/s], counter-clockwise, about ``centre``."""
+
+    omega: float = Field(description=NUMBER)
+    centre: Pair = Field(default=(0.0, 0.0), description="a list of two numbers")
+
+
 class Patches(Table):
     """[patches]: no-slip walls, at rest and moving."""
 
     wall: Names = Field(default=(), description="a list of patch names")
-    moving_wall: dict[str, Pair] = Field(
-        default={}, description="patch names with their velocity, { NAME = [VX, VY] }"
+    moving_wall: dict[str, Pair | SpinEntry] = Field(
+        default={},
+        description="patch names with their motion, { NAME = [VX, VY] } or "
+        "{ NAME = { omega = …, centre = [X, Y] } }",
     )
 
 
@@ -132,6 +141,7 @@ class BodyEntry(Table):
 
     name: str = Field(description="the name of a patch")
     reference: Reference | None = Field(default=None, description="{ velocity = …, length = …, density = … }")
+    about: Pair | None = Field(default=None, description="the point of its moment, a list of two numbers")
 
 
 class Limit(Table):

@@ -10,7 +10,7 @@ from typing import Any, Literal
 
 import numpy as np
 
-from fvcheck.errors import FieldError, SetupError, nearest
+from fvcheck.errors import FieldError, SetupError
 from fvcheck.fieldnames import VECTORS
 from fvcheck.fields import Field, choose_fields
 from fvcheck.fluid import Fluid
@@ -20,6 +20,7 @@ from fvcheck.mesh.mesh import Mesh
 from fvcheck.mesh.piece import Export, Piece
 from fvcheck.revolution import axis_of
 from fvcheck.rim import line_cells, with_rim
+from fvcheck.walls import Wall, Walls, settled
 
 Array = np.ndarray
 CellValues = Literal["average", "centroid"]
@@ -62,7 +63,7 @@ class Flow:
         ``mesh``, in the precision of the file
     fluid : properties
     case : where it comes from
-    walls : patch -> velocity of a no-slip wall
+    walls : patch -> velocity or spin of a no-slip wall
     hints : what was noticed on the way
     """
 
@@ -70,7 +71,7 @@ class Flow:
     fields: Mapping[str, Field]
     fluid: Fluid
     case: Case
-    walls: Mapping[str, tuple[float, float]]
+    walls: Mapping[str, Wall]
     hints: tuple[Hint, ...]
     assembly: Assembly
 
@@ -179,7 +180,7 @@ def flow_of_export(
     plane: str = "auto",
     step: int | str = "last",
     cell_values: CellValues = "average",
-    walls: Mapping[str, tuple[float, float]] | Sequence[str] | None = None,
+    walls: Walls | None = None,
     symmetry: str = "planar",
     axis: str = "auto",
     depth: float | None = None,
@@ -193,7 +194,8 @@ def flow_of_export(
     plane : "auto", "xy", "xz" or "yz"
     step : "last", or the number of a stored state (negative from the end)
     cell_values : a cell value is the "average" over the cell or its value at the "centroid"
-    walls : no-slip patches, with a velocity in the plane where they move
+    walls : no-slip patches; where they move with a velocity (vx, vy) in the plane, or
+        {"omega": …, "centre": (x, y)} (see `fvcheck.walls.settled`)
     symmetry : "planar" or "axisymmetric"; a wedge is recognised as the latter
     axis : of an axisymmetric run, the coordinate along it: "x", "y" or "auto"
         (see `fvcheck.revolution.axis_of`)
@@ -231,7 +233,7 @@ def flow_of_export(
         fields=chosen,
         fluid=fluid,
         case=case,
-        walls=_walls(assembly.mesh, walls),
+        walls=settled(walls, assembly.mesh.boundary.names),
         hints=(*export.hints, *assembly.hints, *axis_hints, *field_hints, *hints),
         assembly=assembly,
     )
@@ -393,17 +395,3 @@ def _joined(pieces: Sequence[Piece], kind: str, source: Array) -> dict[str, Arra
         piece_of = np.searchsorted(first, source, side="right") - 1
         out[name] = np.concatenate(parts)[source - skipped[piece_of]]
     return out
-
-
-def _walls(
-    mesh: Mesh, walls: Mapping[str, tuple[float, float]] | Sequence[str] | None
-) -> dict[str, tuple[float, float]]:
-    told = walls if isinstance(walls, Mapping) else dict.fromkeys(walls or (), (0.0, 0.0))
-    names = mesh.boundary.names
-    for name in told:
-        if name not in names:
-            raise SetupError(
-                f"there is no patch {name!r} to be a wall",
-                mend=nearest(name, names) or f"Patches: {', '.join(names)}.",
-            )
-    return {name: (float(v[0]), float(v[1])) for name, v in told.items()}

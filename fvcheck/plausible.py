@@ -16,6 +16,7 @@ from fvcheck.mesh.assemble import Assembly, assemble
 from fvcheck.mesh.piece import Export, Piece
 from fvcheck.sampling.sampled import Sampled
 from fvcheck.volume import BEST, SampledVolume
+from fvcheck.walls import wall_velocity
 
 Array = np.ndarray
 
@@ -139,7 +140,9 @@ def _wall_hints(flow: Flow) -> list[Hint]:
         step = mesh.points[edges[:, 1]] - mesh.points[edges[:, 0]]
         normal = np.column_stack([step[:, 1], -step[:, 0]])
         beside = u[boundary.cells[here]] if field.location == "cell" else u[edges].mean(axis=1)
-        through = float(np.nansum((beside - flow.walls.get(name, (0.0, 0.0))) * normal))
+        middles = mesh.points[edges].mean(axis=1)
+        moving = wall_velocity(flow.walls.get(name, (0.0, 0.0)), middles, flow.case.axis)[:, :2]
+        through = float(np.nansum((beside - moving) * normal))
         share = abs(through) / (typical * float(np.hypot(*step.T).sum())) if typical > 0 else 0.0
         if share > _THROUGH[field.location]:
             out.append(

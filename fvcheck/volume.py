@@ -22,6 +22,7 @@ from fvcheck.sampling.quadrature import PER_PIECE, along, within
 from fvcheck.sampling.sampled import Sampled
 from fvcheck.sampling.sampler import DEGREES
 from fvcheck.surfaces import ControlSurface
+from fvcheck.walls import wall_velocity
 
 Array = np.ndarray
 
@@ -268,11 +269,11 @@ class SampledVolume:
     def _line_state_of(self, sampled: Mapping[str, Sampled]) -> State:
         names = self.flow.mesh.boundary.names
         on_wall = np.zeros(len(self.places), bool)
-        velocity = np.zeros((len(self.places), 2))
+        velocity = np.zeros((len(self.places), 3))
         for name, wall in self.flow.walls.items():
             here = self.patch == names.index(name)
             on_wall |= here
-            velocity[here] = wall
+            velocity[here] = wall_velocity(wall, self.places[here], self.axis)
         return self._state(pin_walls(sampled, on_wall, velocity), self.places)
 
     def shaken_line_states(self) -> list[State]:

@@ -178,6 +178,11 @@ def test_every_key_of_the_fluid_table_is_one_of_the_fluid():
         ("[fields]\nvelocity = 3\n", ["[fields] velocity", "name of an array"]),
         ("[patches]\nwall = 'pier'\n", ["[patches] wall", "a list of patch names", "'pier'"]),
         ("[patches]\nmoving_wall = { belt = 0.4 }\n", ["[patches] moving_wall.belt", "[VX, VY]"]),
+        (
+            "[patches]\nmoving_wall = { rotor = { omega = 1, center = [0, 0] } }\n",
+            ["[patches] moving_wall.rotor.center", "centre"],
+        ),
+        ("[[body]]\nname = 'a'\nabout = 1\n", ["[[body]] 1 about", "point of its moment"]),
         ("[surface]\nshape='domain()'\n", ["surface", "[[surface]] tables"]),
         ("[[surface]]\nname='a'\n", ["'shape' is missing", "[[surface]] 1"]),
         ("[[source]]\nlaw='heat'\nshape='domain()'\nrate='x'\n", ["[[source]] 1 rate", "a number"]),

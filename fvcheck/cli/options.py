@@ -65,7 +65,10 @@ class Reading:
     ] = None
     wall: Annotated[
         list[str] | None,
-        _read(metavar="NAME[=VX,VY]", text="No-slip patch, at rest or moving. Repeatable."),
+        _read(
+            metavar="NAME[=VX,VY]",
+            text='No-slip patch, at rest or moving; "NAME=spin(OMEGA,X,Y)". Repeatable.',
+        ),
     ] = None
     cell_values: Annotated[
         str | None, _read(metavar="average|centroid", text="What a cell value is; default average.")

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import re
 from dataclasses import dataclass, fields
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
@@ -18,6 +19,7 @@ from fvcheck.cli.options import (
     words,
 )
 from fvcheck.errors import SetupError
+from fvcheck.walls import Spin
 
 if TYPE_CHECKING:
     from fvcheck.checkmodel import CheckFile
@@ -162,15 +164,26 @@ def _fluid_told(options: FluidOptions) -> dict[str, Any]:
     return told
 
 
-def _walls(check: CheckFile, options: list[str] | None) -> dict[str, tuple[float, float]]:
-    walls = dict.fromkeys(check.patches.wall, (0.0, 0.0)) | dict(check.patches.moving_wall)
+def _walls(check: CheckFile, options: list[str] | None) -> dict[str, Any]:
+    walls: dict[str, Any] = dict.fromkeys(check.patches.wall, (0.0, 0.0))
+    for name, told in check.patches.moving_wall.items():
+        walls[name] = told if isinstance(told, tuple) else told.model_dump()
     for text in options or ():
-        name, equals, motion = text.rpartition("=")
-        if equals:
-            walls[name.strip()] = vector(motion, f"--wall {name.strip()}", "--wall NAME=VX,VY")
-        else:
-            walls[text.strip()] = (0.0, 0.0)
+        name, equals, motion = (part.strip() for part in text.rpartition("="))
+        walls[name if equals else motion] = _motion(name, motion) if equals else (0.0, 0.0)
     return walls
+
+
+def _motion(name: str, text: str) -> Any:
+    """``VX,VY`` or ``spin(OMEGA, X, Y)``."""
+    option, form = f"--wall {name}", "--wall NAME=VX,VY or --wall 'NAME=spin(OMEGA, X, Y)'"
+    spin = re.fullmatch(r"spin\s*\((.*)\)", text)
+    if spin is None:
+        return vector(text, option, form)
+    parts = spin[1].split(",")
+    if len(parts) not in (1, 3):
+        raise SetupError(f"{option}: {text!r} cannot be read", mend=f"Write {form}.")
+    return Spin(*(number(part, option, form) for part in parts))
 
 
 def _sources(check: CheckFile) -> tuple[Source, ...]:

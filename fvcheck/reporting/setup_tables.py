@@ -13,6 +13,7 @@ from fvcheck.reporting.gathering import Gathered
 from fvcheck.reporting.tables import Cell, Table, number, table, word
 from fvcheck.surfaces import ControlSurface
 from fvcheck.text.numbers import short
+from fvcheck.walls import motion_text
 
 _UNITS = {
     "density": "kg/m³",

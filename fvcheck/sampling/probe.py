@@ -13,6 +13,7 @@ from fvcheck.flow import Flow
 from fvcheck.sampling.conserved import with_conserved_averages
 from fvcheck.sampling.sampled import Sampled
 from fvcheck.sampling.sampler import DEGREES, Known, Sampler, compile_sampler
+from fvcheck.walls import wall_velocity
 
 Array = np.ndarray
 Raw = tuple[tuple[Array, Array, Array], ...]
@@ -274,7 +275,9 @@ def known_values(flow: Flow, role: str) -> tuple[Known, Array] | None:
         for name, wall in flow.walls.items():
             if role == "momentum" and any(wall):
                 continue  # the density there is not known
-            values[boundary.patch == boundary.names.index(name)] = (*wall, 0.0)
+            here = boundary.patch == boundary.names.index(name)
+            middles = flow.mesh.points[boundary.edges[here]].mean(axis=1)
+            values[here] = wall_velocity(wall, middles, flow.case.axis)
     own = np.isfinite(values.reshape(len(values), -1)).all(axis=1)
     if not own.any():
         return None
@@ -321,7 +324,7 @@ def stored_precision(values: Array) -> float:
 def pin_walls(sampled: Mapping[str, Sampled], on_wall: Array, velocity: Array) -> dict[str, Sampled]:
     """The samples with the velocity at no-slip walls set to the wall's own.
 
-    on_wall (q,) bool, velocity (q, 2). Gradients stay those of the fits.
+    on_wall (q,) bool, velocity (q, 3). Gradients stay those of the fits.
     """
     out = dict(sampled)
     factors = {"velocity": np.ones(len(on_wall))}
@@ -330,7 +333,6 @@ def pin_walls(sampled: Mapping[str, Sampled], on_wall: Array, velocity: Array) -
     for role, factor in factors.items():
         if on_wall.any() and role in out:
             value = out[role].value.copy()
-            value[on_wall, :2] = velocity[on_wall] * factor[on_wall, None]
-            value[on_wall, 2] = 0.0
+            value[on_wall] = velocity[on_wall] * factor[on_wall, None]
             out[role] = Sampled(value, out[role].gradient)
     return out
