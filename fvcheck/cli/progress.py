@@ -7,6 +7,20 @@ from collections.abc import Callable, Iterator
 from contextlib import contextmanager
 
 
+def say_first_use() -> None:
+    """Say why a first run takes long, on a terminal; anywhere, that every run will."""
+    from fvcheck.kernels import cache
+
+    if not cache.kept():
+        print(
+            "note: the loops of fvcheck are compiled anew in each run, for about half a minute, as no folder "
+            "for them can be written. Set NUMBA_CACHE_DIR to one.",
+            file=sys.stderr,
+        )
+    elif sys.stderr.isatty() and cache.cold():
+        print("fvcheck compiles its loops on first use; once, about half a minute …", file=sys.stderr)
+
+
 @contextmanager
 def progress(what: str, quiet: bool = False) -> Iterator[Callable[[int | None], None]]:
     """A function to be called after each part with the number of all parts, None where it is unknown."""

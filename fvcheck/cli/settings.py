@@ -58,6 +58,7 @@ def settle(
     limits: Limits | None = None,
 ) -> Settings:
     """Options over check file over defaults; SetupError or SurfaceError where they cannot be used."""
+    from fvcheck.cli.progress import say_first_use
     from fvcheck.surfaces import parse_all
 
     limits = limits or Limits()
@@ -69,6 +70,7 @@ def settle(
     scale = numbers(limits.scale, "--scale", "LAW=VALUE")
     _check_laws(laws, tolerance, scale)
     drawn = parse_all(surfaces) if surfaces else check.control_surfaces()
+    say_first_use()
     return Settings(
         file=_file(file, check, reading.check),
         reading=_reading(check, reading, fluid),

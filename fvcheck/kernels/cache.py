@@ -1,0 +1,55 @@
+"""Where compiled loops are kept from run to run.
+
+numba keeps them beside the sources, or where it may not write there in the
+user's cache folder, or in NUMBA_CACHE_DIR. With none of these it refuses to
+import a loop that asks for a cache; then they are kept for this process alone.
+"""
+
+from __future__ import annotations
+
+import atexit
+import os
+import shutil
+import tempfile
+
+import numba
+from numba import njit
+
+
+def settle() -> None:
+    """Give numba a folder it can use, before the first loop is imported."""
+    if _usable():
+        return
+    # One's own, since what lies in it is run: a shared place could hold anything.
+    folder = tempfile.mkdtemp(prefix="fvcheck-")
+    atexit.register(shutil.rmtree, folder, ignore_errors=True)
+    os.environ["NUMBA_CACHE_DIR"] = numba.config.CACHE_DIR = folder
+
+
+def kept() -> bool:
+    """Whether the loops of this process will be there for the next."""
+    return not os.path.basename(numba.config.CACHE_DIR or "").startswith("fvcheck-")
+
+
+def cold() -> bool:
+    """Whether the loops that every ledger needs are yet to be compiled."""
+    from fvcheck.kernels import fits
+
+    folder = fits.fit_points.stats.cache_path
+    stem = f"{fits.__name__.rpartition('.')[2]}.{fits.fit_points.__name__}-"
+    return not any(name.startswith(stem) for name in _names(folder))
+
+
+def _names(folder: str | None) -> list[str]:
+    try:
+        return os.listdir(folder or "")
+    except OSError:
+        return []
+
+
+def _usable() -> bool:
+    try:
+        njit(cache=True)(_usable)
+    except (RuntimeError, OSError):
+        return False
+    return True
