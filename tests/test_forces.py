@@ -78,18 +78,24 @@ def demo(walls=("patch-3", "patch-4"), strip=False):
     return replace(flow, fields=bare)
 
 
-def test_surfaces_and_band_meet_the_solvers_own_sum_over_the_wall():
-    own = json.loads((MESHES / "demo-solver.json").read_text())["states"]["demo-coarse.vtu"]["patches"]["bar"]
-    found = fvcheck.forces(demo(), "patch-4")
-    drag, lift = own["momentum_flux"]
+@pytest.mark.parametrize("mesh", ["demo-coarse", "demo-fine"])
+def test_surfaces_and_band_meet_the_solvers_own_sum_over_the_wall(mesh):
+    # what the run itself sums over the faces of the bar, exact for its own discretisation
+    sums = json.loads((MESHES / "demo-solver.json").read_text())["states"][f"{mesh}.vtu"]["patches"]
+    drag, lift = sums["bar"]["momentum_flux"]
+    flow = fvcheck.open_flow(MESHES / f"{mesh}.vtu", fluid=AIR, walls=["patch-3", "patch-4"])
+    found = fvcheck.forces(flow, "patch-4")
     for e in (*found.of("control-surface"), found["band"]):
-        assert e.drag == pytest.approx(drag, rel=1e-2)  # issue
-        assert e.lift == pytest.approx(lift, rel=2e-2)  # a third of the drag: 1 % of the force is 3 %
+        assert e.drag == pytest.approx(drag, rel=1e-2), e.label  # issue; 0.73 % at most when written
+        assert e.lift == pytest.approx(lift, rel=1e-2), e.label  # 0.73 %, which is 0.2 % of the force
         assert abs(e.drag - drag) <= e.band("drag", "resolution")
+        assert abs(e.lift - lift) <= e.band("lift", "resolution")
     wall = found["body-surface"]
     assert abs(wall.drag - drag) <= wall.band("drag")
     assert abs(wall.lift - lift) <= wall.band("lift")
     assert wall.band("drag") > 4 * found["band"].band("drag")
+    # routes within a percent of the force are no cause for a remark
+    assert not {"routes-differ", "routes-disagree"} & {hint.code for hint in found.hints}
 
 
 def test_without_walls_told_the_body_surface_says_so_and_widens_its_band():
@@ -189,6 +195,28 @@ def test_unknown_bodies_routes_and_references_are_errors_that_name_the_nearest(b
         fvcheck.forces(benchmark, direction=(0.0, 0.0))
 
 
+def test_routes_that_differ_by_more_than_a_percent_within_the_mesh_are_remarked_on():
+    from fvcheck.routes.estimate import Estimate
+    from fvcheck.routes.remarks import disagreements
+
+    def by(method, drag, sampling, resolution):
+        bands = {"drag": {"sampling": sampling, "resolution": resolution}}
+        return Estimate("pier", method, drag=drag, lift=0.0, bands=bands)
+
+    def codes(apart, sampling=0.001, resolution=0.05):
+        found = [
+            by("band", 1.0, sampling, resolution),
+            by("control-surface", 1.0 + apart, sampling, resolution),
+        ]
+        return [hint.code for hint in disagreements(found, 1.0)]
+
+    assert codes(0.005) == []  # beyond the sampling bands, but not worth a word
+    assert codes(0.02) == ["routes-differ"]
+    assert codes(0.02, sampling=0.02) == []
+    assert codes(0.2) == ["routes-disagree"]
+    assert codes(0.005, 0.001, 0.001) == ["routes-disagree"]  # beyond all bands: always
+
+
 # --- sweeps ------------------------------------------------------------------------------------
 
 
@@ -268,6 +296,17 @@ def test_the_command_gives_the_numbers_of_the_function(capsys, on_cylinder):
         assert entry["moment"] == mine.moment
         assert (entry["drag"], entry["lift"]) == (mine.drag, mine.lift)
     assert data["schema"] == "fvcheck-result/1"
+
+
+def test_each_body_may_have_the_point_of_its_moment_in_the_check_file(capsys, tmp_path):
+    check = tmp_path / "check.toml"
+    text = f"[case]\nfile = {CYLINDER!r}\nabout = [1.0, 0.0]\n[fluid]\ndensity = 1.0\nviscosity = 1e-3\n"
+    check.write_text(text + "[[body]]\nname = 'body-1'\nabout = [0.2, 0.2]\n[[body]]\nname = 'bottom'\n")
+    words = ["forces", "-c", str(check), "--method", "body-surface"]
+    found = {e["body"]: e["moment_about"] for e in result(capsys, *words)["forces"]}
+    assert found == {"body-1": [0.2, 0.2], "bottom": [1.0, 0.0]}
+    found = {e["body"]: e["moment_about"] for e in result(capsys, *words, "--about", "0,0")["forces"]}
+    assert found == {"body-1": [0.0, 0.0], "bottom": [0.0, 0.0]}
 
 
 def test_bodies_and_references_come_from_the_check_file(capsys):

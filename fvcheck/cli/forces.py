@@ -89,6 +89,7 @@ def command(
     settings = settle(file, reading, fluid, surface)
     if settings.step == "all":
         raise SetupError("forces are of one step", mend="Give --step a number, or leave it out.")
+    names = body or list(settings.bodies) or None
     options: dict[str, Any] = {
         "methods": words(method),
         "distances": [number(word, "--distance", "--distance D,D,…") for word in words(distance) or ()],
@@ -97,7 +98,7 @@ def command(
         "wake_line": None if wake is None else ControlSurface.parse(wake),
         "wake_formula": wake_formula,
         "sweep": None if sweep is None else parse_family(sweep),
-        "about": settings.about if about is None else vector(about, "--about", "--about X,Y"),
+        "about": settings.moment_about(names) if about is None else vector(about, "--about", "--about X,Y"),
         "direction": None if direction is None else vector(direction, "--direction", "--direction X,Y"),
         "reference": settings.bodies if reference is None else _reference(reference),
     }
@@ -105,7 +106,7 @@ def command(
     step = step_number(export, settings.step)
     flow = flow_of_export(export, step=step, **settings.reading)
     flow = replace(flow, hints=(*flow.hints, *change_hints(export, step, flow, settings.reading)))
-    found = forces(flow, body or list(settings.bodies) or None, **options)
+    found = forces(flow, names, **options)
     show(output, found.to_dict, lambda: forces_text(found, output.quiet))
     # A body whose every route was refused is left undecided.
     numbered = {e.body for e in found.estimates if not e.refused}

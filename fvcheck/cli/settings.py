@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import re
+from collections.abc import Sequence
 from dataclasses import dataclass, fields
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
@@ -36,6 +37,7 @@ class Settings:
     step : "last", "all" or the number of a step; it is not in ``reading``
     surfaces, laws : None for the default ones
     bodies : name -> reference of those in the check file
+    moment_points : name -> point of the moment of those that have one of their own
     """
 
     file: Path
@@ -48,6 +50,13 @@ class Settings:
     sources: tuple[Source, ...]
     about: tuple[float, float]
     bodies: dict[str, dict[str, float] | None]
+    moment_points: dict[str, tuple[float, float]]
+
+    def moment_about(self, bodies: Sequence[str] | None) -> Any:
+        """What `fvcheck.forces` takes as ``about`` for these bodies: each one's own point, or one for all."""
+        if not self.moment_points or bodies is None:
+            return self.about
+        return {name: self.moment_points.get(name, self.about) for name in bodies}
 
 
 def settle(
@@ -82,7 +91,13 @@ def settle(
         sources=_sources(check),
         about=check.case.about if limits.about is None else vector(limits.about, "--about", "--about X,Y"),
         bodies={b.name: None if b.reference is None else b.reference.model_dump() for b in check.body},
+        moment_points=_moment_points(check, limits),
     )
+
+
+def _moment_points(check: CheckFile, limits: Limits) -> dict[str, tuple[float, float]]:
+    """Told for all by an option, they are nobody's own."""
+    return {} if limits.about else {b.name: b.about for b in check.body if b.about is not None}
 
 
 def _load(path: Path | None) -> CheckFile:

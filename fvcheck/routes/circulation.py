@@ -8,10 +8,10 @@ import numpy as np
 
 from fvcheck.errors import SetupError, SurfaceError
 from fvcheck.flow import Flow
+from fvcheck.laws import State
 from fvcheck.routes.contour import sampled
 from fvcheck.routes.estimate import Estimate, Reference
 from fvcheck.routes.terms import View, tally
-from fvcheck.sampling.sampler import DEGREES
 from fvcheck.surfaces import ControlSurface
 from fvcheck.volume import BEST, SampledVolume
 
@@ -71,13 +71,10 @@ def _lift(volume: SampledVolume, view: View, reference: Reference, distance: flo
     tangent = np.column_stack([-volume.normals[:, 1], volume.normals[:, 0]]) * volume.drawn[:, None]
     factor = -reference.density * reference.velocity
 
-    def rows(degree: int) -> Array:
-        along = np.einsum("qi,qi->q", volume.line_state(degree).velocity[:, :2], tangent)
-        return factor * volume.per_line_cell(along[:, None])[:, 0]
+    def lift(state: State) -> Array:
+        return factor * np.einsum("qi,qi->q", state.velocity[:, :2], tangent)
 
-    value, band = tally(
-        [rows(degree) for degree in DEGREES], rows(BEST) if volume.falls else None, volume.line.near_jump
-    )
+    value, band = tally(volume, lift)
     aligned = view.direction[0] == 1.0
     return Estimate(
         view.body,

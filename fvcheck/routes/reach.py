@@ -14,6 +14,11 @@ Array = np.ndarray
 # the mesh coarsens. Of the gap to the next boundary a fifth is left to its layer.
 _NEAR, _FAR, _OF_GAP = 0.15, 1.0, 0.8
 
+# A single surface has no neighbours to average with, and pressures are steepest near the body.
+# On seven second-order runs past a bar (3,000 cells, several angles) the force across the stream
+# was off by 0.2 to 0.3 % of the force (rms) nearer than this, by 0.05 to 0.15 % beyond.
+_NEAR_ALONE = 0.25
+
 # A band narrower than this ratio of distances holds too few surfaces to average over.
 _WIDEST = 0.5
 
@@ -38,8 +43,12 @@ def is_closed(mesh: Mesh, body: str) -> bool:
     return all(closed for _, closed in patch_chains(mesh, body))
 
 
-def default_range(flow: Flow, body: str) -> tuple[float, float]:
-    """(nearest, farthest) distance from a body at which its force is best measured."""
+def surface_range(flow: Flow, body: str) -> tuple[float, float]:
+    """(nearest, farthest) distance from a body at which single surfaces measure its force best."""
+    return _range(flow, body, _NEAR_ALONE)
+
+
+def _range(flow: Flow, body: str, nearest: float) -> tuple[float, float]:
     mesh = flow.mesh
     size, gap = body_size(mesh, body), clearance(mesh, body)
     patch = mesh.boundary.names.index(body)
@@ -48,7 +57,7 @@ def default_range(flow: Flow, body: str) -> tuple[float, float]:
     x0, y0, x1, y1 = mesh.bounds
     # A body that touches a wall has no gap: its own size has to do.
     far = min(_FAR * size, _OF_GAP * gap if gap > 0.0 else np.inf, 0.25 * max(x1 - x0, y1 - y0))
-    near = min(max(_NEAR * size, _CELLS * cell), _WIDEST * far)
+    near = min(max(nearest * size, _CELLS * cell), _WIDEST * far)
     return near, far
 
 
@@ -57,10 +66,10 @@ def default_distances(near: float, far: float) -> tuple[float, float, float]:
     return near, float(np.sqrt(near * far)), far
 
 
-def default_band(flow: Flow, body: str) -> tuple[float, float]:
-    """The range of distances, cut short where it holds more cells than averaging needs."""
+def band_range(flow: Flow, body: str) -> tuple[float, float]:
+    """(nearest, farthest) distance of the band average; the farthest where more cells change nothing."""
     mesh = flow.mesh
-    near, far = default_range(flow, body)
+    near, far = _range(flow, body, _NEAR)
     away = distances(mesh, body, mesh.points[mesh.nodes[mesh.offsets[:-1]]], far)
     between = np.sort(away[(away > near) & (away < far)])
     return near, float(between[_MOST_CELLS]) if len(between) > _MOST_CELLS else far

@@ -7,16 +7,17 @@ numbers; the bands of any of them, or of drag and lift, follow from the rows.
 
 from __future__ import annotations
 
-from collections.abc import Mapping, Sequence
+from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass
 from typing import Any
 
 import numpy as np
 
 from fvcheck.bands import Bands, bands
-from fvcheck.laws import find_law
+from fvcheck.laws import State, find_law
 from fvcheck.routes.estimate import Estimate
-from fvcheck.volume import SampledVolume
+from fvcheck.sampling.sampler import DEGREES
+from fvcheck.volume import BEST, SampledVolume
 
 Array = np.ndarray
 
@@ -125,8 +126,7 @@ def estimate(terms: Terms, view: View, method: str, **more: Any) -> Estimate:
     value = best.sum(axis=0)
     half: list[tuple[float, float]] = []
     for c in range(best.shape[1]):
-        rounding = _SHAKE_COVERAGE * float(np.std(shaken[:, c])) if len(shaken) else 0.0
-        rounding += _ROUNDINGS * np.finfo(float).eps * float(np.abs(best[:, c]).sum())
+        rounding = rounding_of(shaken[:, c], best[:, c])
         chosen = None if terms.best is None else best[:, c]
         band = bands(first[:, c], second[:, c], third[:, c], rounding, chosen, terms.reaching)
         half.append((band.sampling, band.resolution))
@@ -165,9 +165,21 @@ def estimate(terms: Terms, view: View, method: str, **more: Any) -> Estimate:
     )
 
 
-def tally(by_degree: Sequence[Array], best: Array | None, reaching: Array) -> tuple[float, Bands]:
-    """One number from its rows (k,) by degree 1, 2, 3 and of what the data support, with its bands."""
-    first, second, third = by_degree
+def rounding_of(shaken: Array, terms: Array) -> float:
+    """Half-width from the digits of the data: sums (s,) when the last ones are shaken; our own (k,) terms."""
+    digits = _SHAKE_COVERAGE * float(np.std(shaken)) if len(shaken) else 0.0
+    return digits + _ROUNDINGS * np.finfo(float).eps * float(np.abs(terms).sum())
+
+
+def tally(volume: SampledVolume, number: Callable[[State], Array]) -> tuple[float, Bands]:
+    """The sum of ``number`` (q,) over the line quadrature points, with its bands."""
+
+    def rows(state: State) -> Array:
+        return volume.per_line_cell(number(state)[:, None])[:, 0]
+
+    first, second, third = (rows(volume.line_state(degree)) for degree in DEGREES)
+    best = rows(volume.line_state(BEST)) if volume.falls else None
     chosen = third if best is None else best
-    rounding = _ROUNDINGS * np.finfo(float).eps * float(np.abs(chosen).sum())
-    return float(chosen.sum()), bands(first, second, third, rounding, best, reaching)
+    shaken = np.array([number(state).sum() for state in volume.shaken_line_states()])
+    rounding = rounding_of(shaken, chosen)
+    return float(chosen.sum()), bands(first, second, third, rounding, best, volume.line.near_jump)

@@ -10,7 +10,6 @@ from fvcheck.laws import State
 from fvcheck.routes.contour import sampled
 from fvcheck.routes.estimate import Estimate, Reference
 from fvcheck.routes.terms import View, tally
-from fvcheck.sampling.sampler import DEGREES
 from fvcheck.surfaces import ControlSurface
 from fvcheck.volume import BEST
 
@@ -101,12 +100,7 @@ def wake(
         cp = (state.pressure - still) / q
         return 2.0 * q * np.sqrt(np.maximum(g - cp, 0.0)) * (1.0 - np.sqrt(g)) * across
 
-    def rows(degree: int) -> Array:
-        return volume.per_line_cell(deficit(volume.line_state(degree))[:, None])[:, 0]
-
-    value, band = tally(
-        [rows(degree) for degree in DEGREES], rows(BEST) if volume.falls else None, volume.line.near_jump
-    )
+    value, band = tally(volume, deficit)
     aligned = view.direction[0] == 1.0
     return Estimate(
         view.body,
