@@ -25,8 +25,13 @@ Raw = tuple[tuple[Array, Array, Array], ...]
 # the domain boundary a straight profile through cell centres leaves the range.
 DISAGREE, EXCESS, EXCESS_RIM = 0.15, 0.01, 0.25
 
-# Around a jump even this excess is an overshoot.
-_OVERSHOOT = 0.005
+# Around a jump even this excess is an overshoot, and a value on which the polynomials
+# disagree by more than APART of the range is none.
+_OVERSHOOT, _APART = 0.005, 0.5
+
+# Fits reach farther than the rings that ranges are taken from. Beside a jump data may
+# be uniform there; then a value off by this share of the whole range has felt the jump.
+_FELT = 0.05
 
 # Share of the whole surface's range below which a local range is noise.
 LEAST_EXTENT = 1e-3
@@ -147,12 +152,15 @@ class Probe:
         seeds, overshoots = np.zeros(len(cell), bool), np.zeros(len(cell), bool)
         for group, (values, _, apart), (low, high) in zip(self.groups, raw, self._limits(triangle)):
             extent = high - low
-            matters = extent > LEAST_EXTENT * (high.max(axis=0, initial=0.0) - low.min(axis=0, initial=0.0))
+            whole = high.max(axis=0, initial=0.0) - low.min(axis=0, initial=0.0)
+            matters = extent > LEAST_EXTENT * whole
             excess = np.maximum(values - high, low - values)
             rim = group.sampler.rim[group.sampler.centres][group.sampler.centre_of[triangle]].any(axis=1)
             allowed = np.where(rim, EXCESS_RIM, EXCESS)[:, None] * extent
             seeds |= (matters & (excess > allowed) & (apart > DISAGREE * extent)).any(axis=1)
-            overshoots |= (matters & (excess > _OVERSHOOT * extent)).any(axis=1)
+            seeds |= (~matters & (excess > _FELT * whole) & (apart > _FELT * whole)).any(axis=1)
+            astray = (excess > _OVERSHOOT * extent) | (apart > _APART * extent)
+            overshoots |= (matters & astray).any(axis=1)
         supported = np.full(int(cell.max(initial=-1)) + 1, DEGREES[-1])
         near_jump = np.zeros(len(supported), bool)
         if seeds.any():
