@@ -134,6 +134,27 @@ def test_set_up_hints_cautions_and_record_are_told(made):
     assert "2024-02-29 12:30:00+00:00" in text
 
 
+def test_files_that_a_series_names_are_in_the_record():
+    from fvcheck.reporting.record import record_of
+
+    samples = ROOT / "tests" / "samples"
+    names = [Path(f.name).name for f in record_of([samples / "mixed_cell_series.pvd"]).files]
+    inside = sorted(path.name for path in (samples / "mixed_cell_series").iterdir())
+    assert names[0] == "mixed_cell_series.pvd" and sorted(names[1:]) == inside
+    names = [Path(f.name).name for f in record_of([samples / "mixed_point.xdmf"]).files]
+    assert names == ["mixed_point.xdmf", "mixed_point.h5"]
+
+
+def test_a_file_outside_the_folder_of_the_list_that_names_it_is_left_alone(tmp_path):
+    from fvcheck.reporting.record import record_of
+
+    (tmp_path / "run").mkdir()
+    (tmp_path / "secret.vtu").write_text("x")
+    (tmp_path / "run" / "a.pvd").write_text('<DataSet file="../secret.vtu"/><DataSet file="a.pvd"/>')
+    names = [Path(f.name).name for f in record_of([tmp_path / "run" / "a.pvd"]).files]
+    assert names == ["a.pvd"]
+
+
 def test_the_same_question_gives_the_same_page(made):
     again = fvcheck.report(DEMO, laws=["mass"], date=DATE, **settings())
     assert again.html == fvcheck.report(DEMO, laws=["mass"], date=DATE, **settings()).html

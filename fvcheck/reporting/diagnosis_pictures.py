@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from typing import Any
 
 import numpy as np
@@ -9,15 +10,24 @@ import numpy as np
 from fvcheck.diagnosis import Diagnosis
 from fvcheck.diagnosis.where import Place
 from fvcheck.laws import find_law
-from fvcheck.reporting.field_pictures import colour_bar, draw_boundary, frame, height_for, paint, window_of
+from fvcheck.overlay.pieces import Overlay
+from fvcheck.reporting.field_pictures import (
+    colour_bar,
+    draw_boundary,
+    draw_surface,
+    frame,
+    height_for,
+    paint,
+    window_of,
+)
 from fvcheck.reporting.style import IN, INK, OUT, PAPER, Drawing
 from fvcheck.text.numbers import exponent, percent, short, unit
 
 
-def map_drawings(found: Diagnosis) -> list[Drawing]:
+def map_drawings(found: Diagnosis, surfaces: Sequence[tuple[str, Overlay]]) -> list[Drawing]:
     """Imbalance per area and its significance, for each row in which something stands out."""
     return [
-        _map(found, place, number)
+        _map(found, place, number, surfaces)
         for number, place in enumerate((p for p in found.where if p.kind != "nowhere"), start=1)
     ]
 
@@ -27,15 +37,19 @@ def label_of(place: Place) -> str:
     return place.law if place.component is None else f"{place.law}-{place.component}"
 
 
-def _map(found: Diagnosis, place: Place, number: int) -> Drawing:
+def _map(found: Diagnosis, place: Place, number: int, surfaces: Sequence[tuple[str, Overlay]]) -> Drawing:
     label = label_of(place)
     regions = "; ".join(
         f"{k}: near ({short(r.centre[0])}, {short(r.centre[1])}), {short(r.size, 3)} across, "
         f"{short(r.amount)} of band {short(r.band, 2)}, {percent(100 * r.share)} % of all that stands out"
         for k, r in enumerate(place.regions, start=1)
     )
-    words = f"Two maps of the {label} imbalance, {place.kind}. " + (regions and f"Regions: {regions}.")
-    return Drawing(f"map-{number}", f"Where the {label} imbalance sits", words, lambda: _draw(found, place))
+    words = f"Two maps of the {label} imbalance, {place.kind}; control surfaces are dashed. " + (
+        regions and f"Regions: {regions}."
+    )
+    return Drawing(
+        f"map-{number}", f"Where the {label} imbalance sits", words, lambda: _draw(found, place, surfaces)
+    )
 
 
 def two_sided() -> Any:
@@ -51,7 +65,7 @@ def two_sided() -> Any:
     return LinearSegmentedColormap.from_list("two-sided", list(zip((0.0, 0.5, 0.5, 1.0), ends)))
 
 
-def _draw(found: Diagnosis, place: Place) -> Any:
+def _draw(found: Diagnosis, place: Place, surfaces: Sequence[tuple[str, Overlay]]) -> Any:
     from matplotlib.colors import Normalize
     from matplotlib.figure import Figure
     from matplotlib.patches import Circle
@@ -77,6 +91,8 @@ def _draw(found: Diagnosis, place: Place) -> Any:
             panel, mesh, values, "cell", window, cmap=two_sided(), norm=Normalize(-most, most), seams=False
         )
         draw_boundary(panel, mesh, linewidths=0.9)
+        for _, overlay in surfaces:
+            draw_surface(panel, overlay, colors=INK, linewidths=1.0, linestyles=[(0, (4, 2))])
         for number, region in enumerate(place.regions, start=1):
             radius = 0.5 * region.size
             panel.add_patch(Circle(region.centre, radius, fill=False, ec=PAPER, lw=2.6))

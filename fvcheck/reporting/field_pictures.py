@@ -11,7 +11,8 @@ from fvcheck.flow import Flow
 from fvcheck.mesh.boundary import chains
 from fvcheck.mesh.mesh import Mesh
 from fvcheck.overlay.pieces import DRAWN, Overlay
-from fvcheck.reporting.style import GRID, INK, MUTED, PAPER, Drawing, plain
+from fvcheck.reporting.border import Along, border_of
+from fvcheck.reporting.style import GRID, INK, MUTED, OUT, PAPER, Drawing, plain
 from fvcheck.text.numbers import short
 
 Array = np.ndarray
@@ -262,13 +263,32 @@ def draw_surface(panel: Any, overlay: Overlay, **look: Any) -> None:
     """The drawn pieces of a control surface; enclosed boundary where nothing is drawn."""
     from matplotlib.collections import LineCollection
 
-    keep = overlay.patch == DRAWN
+    lines = outlines(overlay)
+    if sum(map(len, lines)) > _EDGES:
+        look = {"rasterized": True} | look
+    panel.add_collection(LineCollection(lines, capstyle="round", **look), autolim=False)
+
+
+def outlines(overlay: Overlay) -> list[Array]:
+    """Drawn pieces joined to lines, corners only."""
+    border = border_of(overlay)
+    keep = border.patch == DRAWN
     if not keep.any():
         keep = np.ones(len(keep), bool)
-    lines = np.stack([overlay.start[keep], overlay.end[keep]], axis=1)
-    if len(lines) > _EDGES:
-        look = {"rasterized": True} | look
-    panel.add_collection(LineCollection(list(lines), **look), autolim=False)
+    start, end = overlay.start[border.order], overlay.end[border.order]
+    goes_on = keep[1:] & keep[:-1] & (border.chain[1:] == border.chain[:-1])
+    first = np.flatnonzero(keep & ~np.concatenate([[False], goes_on]))
+    last = np.flatnonzero(keep & ~np.concatenate([goes_on, [False]]))
+    return [_corners(np.vstack([start[a : b + 1], end[b : b + 1]])) for a, b in zip(first, last)]
+
+
+def _corners(line: Array) -> Array:
+    """A line without points between which it does not turn."""
+    step = np.diff(line, axis=0)
+    turn = np.abs(step[1:, 0] * step[:-1, 1] - step[1:, 1] * step[:-1, 0])
+    size = np.hypot(*step.T)
+    corner = turn > 1e-6 * size[1:] * size[:-1]
+    return line[np.concatenate([[True], corner, [True]])]
 
 
 def field_drawing(flow: Flow, what: str, surfaces: Sequence[tuple[str, Overlay]]) -> Drawing | None:
@@ -310,6 +330,35 @@ def field_drawing(flow: Flow, what: str, surfaces: Sequence[tuple[str, Overlay]]
         return figure
 
     return Drawing(f"field-{what}", f"{title.capitalize()}, mesh and control surfaces", words, draw)
+
+
+def window_drawing(flow: Flow, surface: str, along: Along, name: str) -> Drawing | None:
+    """Of a mesh too large to be drawn: its lines where most of the resolution band comes from."""
+    border, mesh = along.border, flow.mesh
+    if mesh.n_cells <= _LINES or len(border.order) == 0:
+        return None
+    worst = int(np.argmax(along.resolution))
+    centre = border.middle[worst]
+    half = 14.0 * float(np.sqrt(mesh.areas[border.overlay.cell[border.order[worst]]]))
+    window = (*(centre - half).tolist(), *(centre + half).tolist())
+    words = (
+        f"Mesh lines within {short(half, 3)} m of ({short(centre[0])}, {short(centre[1])}), where most of "
+        f"the resolution band of {along.label} through “{plain(surface)}” comes from."
+    )
+
+    def draw() -> Any:
+        from matplotlib.figure import Figure
+
+        figure = Figure(figsize=(5.0, 4.4), layout="constrained")
+        panel = figure.subplots()
+        draw_mesh(panel, mesh, window, alpha=0.9, linewidths=0.6)
+        draw_boundary(panel, mesh)
+        draw_surface(panel, border.overlay, colors=INK, linewidths=2.0)
+        panel.plot(*centre, "o", ms=9, mfc="none", mec=OUT, mew=1.6)
+        frame(panel, window)
+        return figure
+
+    return Drawing(name, f"The mesh at “{plain(surface)}”", words, draw)
 
 
 def colour_bar(figure: Any, panel: Any, painted: Any, label: str) -> None:

@@ -12,7 +12,7 @@ from fvcheck.flow import Flow
 from fvcheck.laws import Law
 from fvcheck.reporting.border import Along, along_border, border_of
 from fvcheck.reporting.diagnosis_pictures import map_drawings
-from fvcheck.reporting.field_pictures import field_drawing
+from fvcheck.reporting.field_pictures import field_drawing, window_drawing
 from fvcheck.reporting.flux_pictures import flux_drawing
 from fvcheck.reporting.gathering import Gathered, Question, gather
 from fvcheck.reporting.output import check_page_path, folder_for, write_whole
@@ -171,14 +171,16 @@ def _drawings(found: Gathered, along: Mapping[str, tuple[Along, ...]]) -> Drawin
     overlays = [(ledger.name, v.overlay) for ledger, v in zip(found.result.ledgers, found.volumes)]
     outlined = [(name, overlay) for name, overlay in overlays if name != "domain"][:DRAWN_SURFACES]
     fields = (field_drawing(found.flow, what, outlined) for what in FIELDS)
-    fluxes = {
-        name: tuple(
+    fluxes: dict[str, tuple[Drawing, ...]] = {}
+    for number, (name, rows) in enumerate(list(along.items())[:DRAWN_SURFACES], start=1):
+        drawn = [
             flux_drawing(found.flow, name, one, f"flux-{number}-{row}")
             for row, one in enumerate(rows, start=1)
             if len(one.border.order)
-        )
-        for number, (name, rows) in enumerate(list(along.items())[:DRAWN_SURFACES], start=1)
-    }
+        ]
+        if rows and (mesh := window_drawing(found.flow, name, rows[0], f"mesh-{number}")) is not None:
+            drawn.append(mesh)
+        fluxes[name] = tuple(drawn)
     forced = {}
     if found.forces is not None:
         for number, body in enumerate(dict.fromkeys(e.body for e in found.forces.estimates), start=1):
@@ -191,5 +193,5 @@ def _drawings(found: Gathered, along: Mapping[str, tuple[Along, ...]]) -> Drawin
         forces=forced,
         history=() if found.history is None else tuple(history_drawings(found.history)),
         study=() if studied is None else (studied,),
-        maps=() if found.diagnosis is None else tuple(map_drawings(found.diagnosis)),
+        maps=() if found.diagnosis is None else tuple(map_drawings(found.diagnosis, outlined)),
     )

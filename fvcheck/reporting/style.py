@@ -51,7 +51,7 @@ DARK = {
 MARKS = "osD^vPX*"
 
 # Dots per inch of what is drawn as an image inside a figure, and of a PNG.
-DPI = 170
+DPI = 150
 
 
 @dataclass(frozen=True, eq=False)
@@ -172,7 +172,7 @@ def _smaller(found: re.Match[str]) -> str:
         whole = image.convert("RGBA")
     alpha = np.asarray(whole)[:, :, 3]
     if np.mean((alpha > 0) & (alpha < 255)) > _BLENDED:
-        whole.quantize(_COLOURS, method=Image.Quantize.FASTOCTREE).save(out, "png", optimize=True)
+        whole.quantize(_COLOURS, method=Image.Quantize.FASTOCTREE).save(out, "png")
     else:
         palette = whole.convert("RGB").quantize(
             _COLOURS, method=Image.Quantize.MEDIANCUT, dither=Image.Dither.NONE
@@ -181,7 +181,7 @@ def _smaller(found: re.Match[str]) -> str:
         dots[alpha < 128] = _COLOURS
         shown = Image.fromarray(dots, "P")
         shown.putpalette((palette.getpalette() or [])[: 3 * _COLOURS])
-        shown.save(out, "png", optimize=True, transparency=_COLOURS)
+        shown.save(out, "png", transparency=_COLOURS)
     best = min(data, out.getvalue(), key=len)
     return found[1] + base64.b64encode(best).decode()
 
