@@ -4,9 +4,10 @@ from __future__ import annotations
 
 import numba
 
-# Below so many items waking a second thread costs more than it saves, and on a
-# machine whose cores are busy far more: a loop of 0.1 ms then waits for 50 ms.
-_WORTH_IT = 30_000
+# Below so many items one thread does it in a few milliseconds. A second one would save half
+# of them on an idle machine; on one whose cores are busy it must wait for a turn, which has
+# been seen to make a ledger of 60 ms take 170.
+_WORTH_IT = 2_000_000
 
 _ALL = numba.get_num_threads()
 
