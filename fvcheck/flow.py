@@ -253,7 +253,7 @@ def _check_turn(axis: int | None, depth: float | None, fluid: Fluid) -> None:
         return
     for wrong, what in (
         (depth is not None, "a depth"),
-        (fluid.frame_rate != 0.0, "a rotating frame"),
+        (fluid.frame_rate != 0.0 and fluid.frame_centre[1 - axis] != 0.0, "a frame that turns off the axis"),
         (fluid.gravity[1 - axis] != 0.0, "gravity across the axis"),
     ):
         if wrong:

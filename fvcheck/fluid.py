@@ -35,7 +35,8 @@ class Fluid:
     turbulent_prandtl : Prandtl and Schmidt number of turbulence, by which an eddy
         viscosity μ_t mixes heat (c_p μ_t/Pr_t) and scalars (μ_t/Pr_t)
     frame_rate Ω [rad/s], frame_centre : the velocities are those seen in a frame
-        that turns counter-clockwise about that point
+        that turns counter-clockwise about that point; in an axisymmetric run about the
+        axis, right-handed
     viscous_heating : count the dissipation as a heat source in the heat law
         (solvers leave it out unless asked, and in most flows it is negligible)
     model : "constant-density" or "ideal-gas"; by default the latter when a gas

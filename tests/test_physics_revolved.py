@@ -122,6 +122,34 @@ def test_the_angular_momentum_of_the_burgers_vortex_is_met(turned):
         assert abs(row.imbalance) <= row.sampling_band, other.get(row.label, row.label)
 
 
+@pytest.mark.parametrize("turned", [False, True], ids=["x axis", "y axis"])
+@pytest.mark.parametrize("rate", [1.5, -4.0])
+def test_a_swirl_seen_from_a_turning_frame_has_the_ledger_of_one_at_rest(turned, rate):
+    # The Burgers vortex less Ωr of swirl, with Coriolis and centrifugal force (Batchelor, section 3.2).
+    vortex = exchanged(exact.burgers_vortex()) if turned else exact.burgers_vortex()
+    axis = 1 if turned else 0
+    cells = tm.mixed(vortex.domain, 0.06, seed=3)
+    fields = {"axis": "xy"[axis], "symmetry": "axisymmetric"}
+    still = flow_on(vortex, cells, **fields)
+    velocity = still.fields["velocity"]
+    values = velocity.values.copy()
+    values[:, 2] -= (-1 if turned else 1) * rate * still.mesh.points[:, 1 - axis]
+    seen = {**still.fields, "velocity": replace(velocity, values=values)}
+    flow = replace(still, fields=seen, fluid=Fluid(**vortex.fluid, frame_rate=rate))
+    box = ControlSurface.box(0.1, 0.1, 1.0, 1.0)
+    here, there = (fvcheck.balance(f, box) for f in (still, flow))
+    # friction does not see a solid rotation
+    parts = [ledger["angular-momentum"].parts["viscous"] for ledger in (here, there)]
+    assert parts[0] == pytest.approx(parts[1], rel=1e-9)
+    for row in there.rows:
+        assert row.verdict == "closed", row.label
+        assert abs(row.imbalance) <= row.resolution_band, row.label
+    # without its forces the turning frame is found out
+    bare = fvcheck.balance(replace(flow, fluid=Fluid(**vortex.fluid)), box)
+    assert bare["angular-momentum"].verdict == "open"
+    assert bare["momentum-y" if axis == 0 else "momentum-x"].verdict == "open"
+
+
 def test_the_torque_between_cylinders_is_met_at_every_radius():
     # 4πμΩ R₁²R₂²/(R₂² − R₁²) = 16.755161 for radii 1, 2 and Ω = μ = 1 (check values, "verified").
     couette = exact.cylindrical_couette()
@@ -315,7 +343,7 @@ def test_the_axis_is_found_by_where_the_mesh_lies():
         ({"axis": "w"}, {}, "unknown axis"),
         ({"depth": 2.0}, {}, "depth"),
         ({}, {"gravity": (0.0, -9.81)}, "gravity"),
-        ({}, {"frame_rate": 1.0}, "rotating frame"),
+        ({}, {"frame_rate": 1.0, "frame_centre": (0.0, 0.5)}, "off the axis"),
     ],
 )
 def test_what_an_axisymmetric_run_cannot_have_is_refused(settings, fluid, match):

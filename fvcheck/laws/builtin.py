@@ -85,9 +85,7 @@ def _viscous_moment(s: State, n: Array) -> Array | None:
 def _moment_of_forces(s: State) -> Array | None:
     if s.axis is None:
         return None if s.body_force is None else _moment(s, s.body_force)
-    if "body_force" not in s.fields:
-        return None
-    return column(s.radius * s.turn * s.fields["body_force"].value[:, 2])
+    return None if s.force_across is None else column(s.radius * s.turn * s.force_across)
 
 
 angular_momentum = register(

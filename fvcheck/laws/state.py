@@ -202,11 +202,8 @@ class State(Gas):
                 rise = self.temperature - self.fluid.reference_temperature
                 weight = weight * (1.0 - self.fluid.expansion * rise)
             force = weight[:, None] * g
-        if self.fluid.frame_rate:
-            rate, u = self.fluid.frame_rate, self.velocity
-            coriolis = 2.0 * rate * np.column_stack([u[:, 1], -u[:, 0]])
-            centrifugal = rate**2 * (self.x - np.asarray(self.fluid.frame_centre))
-            inertia = self.density[:, None] * (coriolis + centrifugal)
+        if self._frame_force is not None:
+            inertia = self._frame_force[:, :2]
             force = inertia if force is None else force + inertia
         if "body_force" in self.fields:
             told = self.fields["body_force"].value[:, :2]
@@ -214,13 +211,42 @@ class State(Gas):
         return force
 
     @cached_property
+    def _frame_force(self) -> Array | None:
+        """(q, 3) Coriolis and centrifugal force of a turning frame [N/m³]; None in one at rest.
+
+        In an axisymmetric run the frame turns about the axis, right-handed.
+        """
+        rate = self.fluid.frame_rate
+        if not rate:
+            return None
+        u = self.velocity
+        out = np.zeros(u.shape, u.dtype)
+        if self.axis is None:
+            out[:, :2] = 2.0 * rate * np.column_stack([u[:, 1], -u[:, 0]])
+            out[:, :2] += rate**2 * (self.x - np.asarray(self.fluid.frame_centre))
+        else:
+            across = 1 - self.axis
+            out[:, across] = 2.0 * rate * self.turn * u[:, 2] + rate**2 * self.radius
+            out[:, 2] = -2.0 * rate * self.turn * u[:, across]
+        return self.density[:, None] * out
+
+    @cached_property
+    def force_across(self) -> Array | None:
+        """(q,) body force out of the plane [N/m³]; None for none."""
+        told = self.fields["body_force"].value[:, 2] if "body_force" in self.fields else None
+        turning = self._frame_force[:, 2] if self._frame_force is not None and self.axis is not None else None
+        if told is None or turning is None:
+            return turning if told is None else told
+        return told + turning
+
+    @cached_property
     def force_power(self) -> Array | None:
         """(q,) work of the body force [W/m³]; None for none."""
         if self.body_force is None:
             return None
         power = np.einsum("qi,qi->q", self.body_force, self.velocity[:, :2])
-        if "body_force" in self.fields:
-            power = power + self.fields["body_force"].value[:, 2] * self.velocity[:, 2]
+        if self.force_across is not None:
+            power = power + self.force_across * self.velocity[:, 2]
         return power
 
     @cached_property
