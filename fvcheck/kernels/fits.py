@@ -144,21 +144,13 @@ _FAST = {"reassoc", "contract"}
 
 
 @njit(cache=True, fastmath=_FAST)
-def _dot(a, b, n):
-    total = 0.0
-    for s in range(n):
-        total += a[s] * b[s]
-    return total
-
-
-@njit(cache=True, fastmath=_FAST)
 def _add(a, factor, b, n):
     """b += factor·a."""
     for s in range(n):
         b[s] += factor * a[s]
 
 
-@njit(cache=True)
+@njit(cache=True, fastmath=_FAST)
 def _factor(matrix, weights, rows, columns, q, inverse, size, scale):
     """diag(weights)·matrixᵀ·diag(scale) = Q R, column by column; returns how many are independent.
 
@@ -172,9 +164,11 @@ def _factor(matrix, weights, rows, columns, q, inverse, size, scale):
     """
     r = np.empty((columns, columns))
     for j in range(columns):
+        total = 0.0
         for s in range(rows):
             q[j, s] = weights[s] * matrix[j, s]
-        norm = np.sqrt(_dot(q[j], q[j], rows))
+            total += q[j, s] * q[j, s]
+        norm = np.sqrt(total)
         if norm == 0.0:
             return j
         scale[j] = 1.0 / norm
@@ -184,10 +178,16 @@ def _factor(matrix, weights, rows, columns, q, inverse, size, scale):
             r[i, j] = 0.0
         for _ in range(2):
             for i in range(j):
-                dot = _dot(q[i], q[j], rows)
+                dot = 0.0
+                for s in range(rows):
+                    dot += q[i, s] * q[j, s]
                 r[i, j] += dot
-                _add(q[i], -dot, q[j], rows)
-            norm = np.sqrt(_dot(q[j], q[j], rows))
+                for s in range(rows):
+                    q[j, s] -= dot * q[i, s]
+            total = 0.0
+            for s in range(rows):
+                total += q[j, s] * q[j, s]
+            norm = np.sqrt(total)
             if norm > 0.5:
                 break
         if norm < 1e-10:

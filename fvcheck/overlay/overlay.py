@@ -82,7 +82,7 @@ def _cut(mesh: Mesh, start: Array, end: Array, closed: bool, shift: int) -> Over
     use_for(mesh.n_cells)
     status = classify_cells(mesh.points, mesh.offsets, mesh.nodes, mesh.boxes, grid)
     near = np.flatnonzero(status == NEAR)
-    whole = np.flatnonzero(status == INSIDE) if closed else np.empty(0, np.int64)
+    enclosed_edges = status[mesh.boundary.cells] == INSIDE
     triangles, first = triangles_of(mesh, near)
     sides = boundary_sides(mesh, near, triangles, first)
 
@@ -95,9 +95,11 @@ def _cut(mesh: Mesh, start: Array, end: Array, closed: bool, shift: int) -> Over
         mesh.points, triangles, first, boxes, sides, winding, start, end, grid, shift, closed
     )
     cell_of = np.repeat(near, np.diff(first))
+    whole = np.empty(0, np.int64)
     if closed:
         cuts, uncut = _without_uncut(cuts, mesh.points[triangles].reshape(-1, 6), first)
-        whole = np.sort(np.concatenate([whole, near[uncut]]))
+        status[near[uncut]] = INSIDE  # their boundary edges are among the cuts already
+        whole = np.flatnonzero(status == INSIDE)
 
     drawn = np.full(len(cuts.drawn), DRAWN)
     edge_patch = mesh.boundary.patch[cuts.edge[:, 1]]
@@ -119,7 +121,7 @@ def _cut(mesh: Mesh, start: Array, end: Array, closed: bool, shift: int) -> Over
     )
     if not closed:
         return parts
-    enclosed = _boundary_only(mesh, status[mesh.boundary.cells] == INSIDE, whole, True)
+    enclosed = _boundary_only(mesh, enclosed_edges, whole, True)
     return join(parts, enclosed)
 
 
