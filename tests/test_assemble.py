@@ -776,6 +776,27 @@ def test_matching_agrees_with_a_dictionary_on_any_edges(seed, n_points, n_edges)
             assert (twin[group] == CROWDED).all()
 
 
+@given(st.integers(0, 2**32 - 1), st.integers(4, 60), st.integers(1, 60))
+@settings(max_examples=60, deadline=None)
+def test_open_half_edges_agree_with_the_matching_on_any_polygons(seed, n_points, n_cells):
+    from fvcheck.kernels.edges import ALONE, CROWDED, open_half_edges, twins
+
+    rng = np.random.default_rng(seed)
+    cells = [rng.permutation(n_points)[: rng.integers(3, 5)] for _ in range(n_cells)]
+    if seed % 2:
+        cells = [np.append(cell[cell != 0], 0) for cell in cells]  # a hub
+        cells = [cell for cell in cells if len(cell) > 2]
+    if not cells:
+        return
+    offsets = np.cumsum([0, *map(len, cells)])
+    start, end = np.concatenate(cells), np.concatenate([np.roll(cell, -1) for cell in cells])
+    twin = twins(start, end, n_points)
+    open_, crowded = open_half_edges(offsets, start, n_points)
+    assert open_.tolist() == np.flatnonzero(twin == ALONE).tolist()
+    expected = np.flatnonzero(twin == CROWDED)
+    assert crowded == (expected[0] if len(expected) else -1)
+
+
 @given(st.integers(0, 2**32 - 1))
 @settings(max_examples=30, deadline=None)
 def test_equal_points_agree_with_a_dictionary(seed):
@@ -801,7 +822,7 @@ def test_walking_back_finds_the_hanging_nodes_that_a_search_finds(seed):
     p = piece(points, cells)
     polygons = Polygons(p.offsets, p.nodes, np.arange(len(cells)))
     edges = edges_of(polygons, len(points))
-    start, end = p.nodes[edges.open], edges.end[edges.open]
+    start, end = edges.start, edges.end
     tolerance = np.full(len(start), 1e-9)
     edge, node, share, done = paths_back(start, end, points[:, 0].copy(), points[:, 1].copy(), tolerance)
     found = _on_edges(points, start, end, np.unique(start), tolerance)

@@ -34,21 +34,22 @@ MOST_COMPONENTS = 1000
 # file may expand to is this many times its size, or the fixed number of bytes if that is more.
 MOST_RATIO = 100
 FREE_BYTES = 1 << 28
+Buffer = bytes | memoryview
 
 
-def _inflate(block: bytes, size: int) -> bytes:
+def _inflate(block: Buffer, size: int) -> bytes:
     machine = zlib.decompressobj()
     data = machine.decompress(block, size + 1)
     return data if machine.eof else b""
 
 
-def _unxz(block: bytes, size: int) -> bytes:
+def _unxz(block: Buffer, size: int) -> bytes:
     machine = lzma.LZMADecompressor(format=lzma.FORMAT_XZ, memlimit=1 << 28)
     data = machine.decompress(block, max_length=size + 1)
     return data if machine.eof else b""
 
 
-def _unlz4(block: bytes, size: int) -> bytes:
+def _unlz4(block: Buffer, size: int) -> bytes:
     from vtkmodules.util.numpy_support import vtk_to_numpy
     from vtkmodules.vtkCommonCore import vtkCommand
     from vtkmodules.vtkIOCore import vtkLZ4DataCompressor
@@ -60,7 +61,7 @@ def _unlz4(block: bytes, size: int) -> bytes:
     return b"" if data is None else vtk_to_numpy(data).tobytes()
 
 
-COMPRESSORS: dict[str, Callable[[bytes, int], bytes]] = {
+COMPRESSORS: dict[str, Callable[[Buffer, int], bytes]] = {
     "vtkZLibDataCompressor": _inflate,
     "vtkLZMADataCompressor": _unxz,
     "vtkLZ4DataCompressor": _unlz4,
@@ -118,7 +119,7 @@ class ArrayReader:
         if form == "ascii":
             flat = parse("".join(element.text), dtype, where)
         elif form == "binary":
-            flat = self._binary(self._base64("".join(element.text), where), dtype, want, where)
+            flat = self._binary(self._base64(_taken(element.text), where), dtype, want, where)
         elif form == "appended":
             flat = self._binary(self._region(element, where), dtype, want, where)
         else:
@@ -157,13 +158,21 @@ class ArrayReader:
             region = stream.read(stop - appended.start - offset)
         if appended.raw:
             return region
-        return self._base64(region.decode("latin-1"), where)
+        return self._base64(region, where)
 
-    def _base64(self, text: str, where: str) -> bytes:
+    def _base64(self, text: bytes, where: str) -> bytes:
         """Header and data may be encoded apart, each with its own padding."""
-        parts = re.findall(r"[^=]+={0,2}|=+", "".join(text.split()))
+        text = text.translate(None, b" \t\r\n\v\f")
+        spans = [match.span() for match in re.finditer(rb"=+", text)]
+        view, begin, parts = memoryview(text), 0, []
         try:
-            return b"".join(binascii.a2b_base64(part, strict_mode=True) for part in parts)
+            for first, last in spans:
+                end = min(last, first + 2)
+                parts.append(binascii.a2b_base64(view[begin:end], strict_mode=True))
+                begin = end
+            if begin < len(text):
+                parts.append(binascii.a2b_base64(view[begin:], strict_mode=True))
+            return parts[0] if len(parts) == 1 else b"".join(parts)
         except (binascii.Error, ValueError) as error:
             raise FormatError(f"the data are no base64: {error}", where=where, mend=DAMAGED) from None
 
@@ -172,31 +181,33 @@ class ArrayReader:
             return np.empty(0, dtype=dtype)
         decode = self._plain if self.expand is None else self._blocks
         data, used = decode(blob, dtype, want, where)
-        if blob[used:].strip(b" \t\r\n\0"):
+        if used < len(blob) and blob[used:].strip(b" \t\r\n\0"):
             raise FormatError("there are more bytes than the array declares", where=where, mend=DAMAGED)
-        return np.frombuffer(data, dtype=np.dtype(self.order + dtype.str[1:])).astype(dtype)
+        stored = dtype.newbyteorder(self.order)
+        return data.view(stored).astype(dtype, copy=False)
 
     def _words(self, blob: bytes, count: int, where: str) -> list[int]:
         if len(blob) < count * self.word.itemsize:
             raise FormatError("the data end within their header", where=where, mend=DAMAGED)
         return np.frombuffer(blob, dtype=self.word, count=count).tolist()
 
-    def _plain(self, blob: bytes, dtype: np.dtype, want: int | None, where: str) -> tuple[bytes, int]:
-        """The values of an array that is not compressed, and the bytes it takes with its header."""
+    def _plain(self, blob: bytes, dtype: np.dtype, want: int | None, where: str) -> tuple[Array, int]:
+        """The bytes of an array that is not compressed, and how many it takes with its header."""
         (size,) = self._words(blob, 1, where)
         _demand_size(size, dtype, want, where)
         used = self.word.itemsize + size
-        data = blob[self.word.itemsize : used]
-        if len(data) != size:
-            raise FormatError(f"{size} bytes are declared, {len(data)} are there", where=where, mend=DAMAGED)
-        return data, used
+        if used > len(blob):
+            left = len(blob) - self.word.itemsize
+            raise FormatError(f"{size} bytes are declared, {left} are there", where=where, mend=DAMAGED)
+        # A copy, since behind a header of 4 bytes nothing is aligned.
+        return np.frombuffer(blob, np.uint8, size, self.word.itemsize).copy(), used
 
-    def _blocks(self, blob: bytes, dtype: np.dtype, want: int | None, where: str) -> tuple[bytes, int]:
-        """The same of an array in compressed blocks."""
+    def _blocks(self, blob: bytes, dtype: np.dtype, want: int | None, where: str) -> tuple[Array, int]:
+        """The same of an array in compressed blocks, each put where it belongs."""
         (count,) = self._words(blob, 1, where)
         if count == 0:
             _demand_size(0, dtype, want, where)
-            return b"", 3 * self.word.itemsize
+            return np.empty(0, np.uint8), 3 * self.word.itemsize
         if count > len(blob):
             raise FormatError(
                 f"{count} blocks are declared, more than there are bytes", where=where, mend=DAMAGED
@@ -210,13 +221,15 @@ class ArrayReader:
         self.left -= sum(sizes)
         if self.left < 0:
             raise FormatError(f"the file expands to {MOST_RATIO} times its size", where=where, mend=DAMAGED)
-        parts = []
+        out = np.empty(sum(sizes), np.uint8)
+        target, stored, filled = memoryview(out), memoryview(blob), 0
         for size, length in zip(sizes, packed):
-            parts.append(self._block(blob[at : at + length], size, where))
+            target[filled : filled + size] = self._block(stored[at : at + length], size, where)
+            filled += size
             at += length
-        return b"".join(parts), at
+        return out, at
 
-    def _block(self, block: bytes, size: int, where: str) -> bytes:
+    def _block(self, block: memoryview, size: int, where: str) -> bytes:
         assert self.expand is not None
         try:
             data = self.expand(block, size)
@@ -225,6 +238,13 @@ class ArrayReader:
         if len(data) != size:
             raise FormatError("a compressed block is damaged or of another size", where=where, mend=DAMAGED)
         return data
+
+
+def _taken(text: list[str]) -> bytes:
+    """The text of an element, then dropped: it is as large as the array. What is no ASCII stays wrong."""
+    out = b"".join(part.encode("ascii", "replace") for part in text)
+    text.clear()
+    return out
 
 
 def attribute_int(element: Element, name: str, where: str, default: int | None = None) -> int:

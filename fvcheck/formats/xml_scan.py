@@ -94,6 +94,7 @@ class _Scanner:
         self.appended_raw = False
         self.parser = expat.ParserCreate()
         self.parser.buffer_text = True
+        self.parser.buffer_size = CHUNK  # long texts in few parts
         self.parser.StartElementHandler = self.start
         self.parser.EndElementHandler = self.end
         self.parser.CharacterDataHandler = self.characters

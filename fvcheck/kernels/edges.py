@@ -15,16 +15,81 @@ _SORT_ABOVE = 24
 
 
 @njit(cache=True)
-def half_edges(offsets, nodes):
-    """Cell and end point of each half-edge: offsets (m+1,), nodes (k,) -> (k,), (k,)."""
-    cell = np.empty(len(nodes), np.int64)
-    end = np.empty(len(nodes), np.int64)
-    for i in range(len(offsets) - 1):
-        first, last = offsets[i], offsets[i + 1]
-        for h in range(first, last):
-            cell[h] = i
-            end[h] = nodes[h + 1] if h + 1 < last else nodes[first]
-    return cell, end
+def open_half_edges(offsets, nodes, n_points):
+    """Half-edges without a partner (o,), ascending, and the first crowded one (see `twins`), -1 for none.
+
+    offsets (m+1,), nodes (k,) of polygons. The matching of `twins` without its
+    tables, which on a large mesh take more memory than the mesh: numbers are
+    kept in 32 bits where they fit, and partners are only counted.
+    """
+    k = len(nodes)
+    if k < 1 << 31:
+        return _open_half_edges(offsets, nodes, np.zeros(n_points + 1, np.int32), np.empty(k, np.int32))
+    return _open_half_edges(offsets, nodes, np.zeros(n_points + 1, np.int64), np.empty(k, np.int64))
+
+
+@njit(cache=True)
+def _open_half_edges(offsets, nodes, first, order):
+    k, n_points = len(nodes), len(first) - 1
+    m = len(offsets) - 1
+    high = np.empty_like(order)
+    for i in range(m):
+        a, b = offsets[i], offsets[i + 1]
+        before = nodes[b - 1] if b > a else 0
+        for h in range(a, b):
+            first[min(before, nodes[h])] += 1
+            before = nodes[h]
+    # Ends of the buckets; filling them from behind leaves their starts.
+    for p in range(1, n_points + 1):
+        first[p] += first[p - 1]
+    for i in range(m - 1, -1, -1):
+        a, b = offsets[i], offsets[i + 1]
+        after = nodes[a] if b > a else 0
+        for h in range(b - 1, a - 1, -1):
+            here = nodes[h]
+            low = min(here, after)
+            first[low] -= 1
+            order[first[low]] = h
+            high[first[low]] = max(here, after)
+            after = here
+    open_ = np.zeros(k, np.bool_)
+    count, crowded = 0, -1
+    for p in range(n_points):
+        a, b = first[p], first[p + 1]
+        if b - a > _SORT_ABOVE:
+            rank = np.argsort(high[a:b], kind="mergesort")
+            order[a:b] = order[a:b][rank]
+            high[a:b] = high[a:b][rank]
+        for i in range(a, b):
+            others, same, seen = 0, False, False
+            for j in range(i - 1, a - 1, -1):
+                if high[j] == high[i]:
+                    seen = True
+                    break
+                if b - a > _SORT_ABOVE:
+                    break
+            if seen:
+                continue  # counted with the first of its points
+            least = order[i]
+            for j in range(i + 1, b):
+                if high[j] == high[i]:
+                    others += 1
+                    least = min(least, order[j])
+                    same = same or (nodes[order[i]] == p) == (nodes[order[j]] == p)
+                elif b - a > _SORT_ABOVE:
+                    break
+            if others == 0:
+                open_[order[i]] = True
+                count += 1
+            elif others > 1 or same:
+                crowded = least if crowded < 0 else min(crowded, least)
+    out = np.empty(count, np.int64)
+    at = 0
+    for h in range(k):
+        if open_[h]:
+            out[at] = h
+            at += 1
+    return out, np.int64(crowded)
 
 
 @njit(cache=True)

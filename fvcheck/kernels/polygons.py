@@ -216,6 +216,8 @@ def renumber(nodes, n_points):
         if number[p] == 0:
             number[p] = count
             count += 1
+    if count == n_points:
+        return number, number, nodes  # all are used: every number stays
     old = np.empty(count, np.int64)
     for p in range(n_points):
         if number[p] >= 0:

@@ -91,7 +91,7 @@ def assemble(pieces: Sequence[Piece], *, plane: str = "auto", keep_centres: bool
         cells = expand_cells(raw, flat, lambda kind, size: polygons_of(kind, size, keep_centres))
         used = np.zeros(len(raw.points), bool)
         used[cells.nodes] = True
-        where = plane_of(raw.points[used], plane, raw.precision)
+        where = plane_of(raw.points if used.all() else raw.points[used], plane, raw.precision)
     points = where.coordinates(raw.points)
     cells = tidy(points, cells, raw.precision, hints, flat_file=not solid)
     claims = collect(pieces, raw, front)
@@ -109,7 +109,7 @@ def assemble(pieces: Sequence[Piece], *, plane: str = "auto", keep_centres: bool
     edges = edges_of(cells, len(points))
     seams = stitch(points, cells, edges, raw, pieces, claims, hints)
     number, finder = seams.number, seams.finder
-    if (number != np.arange(len(number))).any():
+    if seams.merged:
         merged = Polygons(cells.offsets, number[cells.nodes], cells.source)
         cells = tidy(points, merged, raw.precision, hints, flat_file=False)
         edges = edges_of(cells, len(points))
@@ -136,19 +136,17 @@ def _mesh(
     points: Array, cells: Polygons, edges: Edges, finder: Finder, number: Array, hints: list[Hint]
 ) -> tuple[Mesh, Array]:
     """Number the points, find the boundary and its patches."""
-    from fvcheck.kernels.edges import CROWDED
     from fvcheck.kernels.polygons import renumber
 
-    cell, end, open_ = edges.cell, edges.end, edges.open
-    if (edges.twin == CROWDED).any():
-        h = int(np.argmax(edges.twin == CROWDED))
-        x, y = 0.5 * (points[cells.nodes[h]] + points[end[h]])
+    if edges.crowded is not None:
+        a, b, cell = edges.crowded
+        x, y = 0.5 * (points[a] + points[b])
         raise MeshError(
-            f"cells overlap: an edge of cell {cells.source[cell[h]]} has more than one cell on a side",
+            f"cells overlap: an edge of cell {cells.source[cell]} has more than one cell on a side",
             where=f"near x = {x:.6g}, y = {y:.6g}",
             mend="Leave out blocks that lie on one another, or repair the mesh.",
         )
-    start, end, owner = cells.nodes[open_], end[open_], cell[open_]
+    start, end, owner = edges.start, edges.end, edges.cell
     patch, met = finder.find(start, end, number)
     _hint_unmet(finder, met, hints)
     new_number, source, nodes = renumber(cells.nodes, len(points))

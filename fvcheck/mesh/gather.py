@@ -79,13 +79,19 @@ def gather(pieces: Sequence[Piece]) -> Raw:
     if ghost.any():
         dimension = np.where(ghost, np.int8(-1), dimension)
     node_start = np.cumsum([0, *(len(piece.nodes) for piece in pieces)])
-    offsets = [np.asarray(p.offsets, np.int64)[1:] + s for p, s in zip(pieces, node_start)]
-    nodes = [np.asarray(p.nodes, np.int64) + s for p, s in zip(pieces, point_start)]
+    offsets, nodes = (
+        [np.asarray(p.offsets, np.int64) for p in pieces],
+        [np.asarray(p.nodes, np.int64) for p in pieces],
+    )
+    if len(pieces) > 1:  # a single piece is taken as it is, without copies
+        first = np.zeros(1, np.int64)
+        offsets = [first, *(part[1:] + start for part, start in zip(offsets, node_start))]
+        nodes = [part + start for part, start in zip(nodes, point_start)]
     single = any(np.asarray(piece.points).dtype == np.float32 for piece in pieces)
     return Raw(
         points=_joined([np.asarray(piece.points, np.float64) for piece in pieces]),
         types=types,
-        offsets=np.concatenate([np.zeros(1, np.int64), *offsets]),
+        offsets=_joined(offsets),
         nodes=_joined(nodes),
         dimension=dimension,
         point_start=point_start,
@@ -141,6 +147,10 @@ def expand_cells(raw: Raw, cells: Array, template_of: Callable[[int, int], list[
     else:
         distinct = np.unique(keys)
         template = np.searchsorted(distinct, keys)
+    if len(distinct) == 1 and len(cells) == len(raw.types):
+        (whole, *more) = template_of(int(distinct[0]) // factor, int(distinct[0]) % factor)
+        if not more and list(whole) == list(range(int(sizes[0]))):
+            return Polygons(raw.offsets, raw.nodes, cells)  # a mesh of one kind is its own expansion
     part_start, part_sizes, part_nodes = [0], [0], []
     for key in distinct.tolist():
         parts = template_of(key // factor, key % factor)

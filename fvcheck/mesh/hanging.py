@@ -33,11 +33,10 @@ def insert_hanging(
     from fvcheck.kernels.edges import paths_back
     from fvcheck.kernels.polygons import insert_nodes
 
-    cell, end, alone = edges.cell, edges.end, edges.open
-    patch, _ = finder.find(cells.nodes[alone], end[alone], number)
+    patch, _ = finder.find(edges.start, edges.end, number)
     wall = finder.claims.is_wall(patch)
-    walls, alone = cells.nodes[alone[wall]], alone[~wall]
-    start, stop = cells.nodes[alone], end[alone]
+    walls, alone = edges.start[wall], edges.open[~wall]
+    start, stop, cell = edges.start[~wall], edges.end[~wall], edges.cell[~wall]
     tolerance = _tolerances(points, start, stop, precision)
     # Where others run back along an edge from end to end the mesh itself leads to the points ...
     x, y = np.ascontiguousarray(points.T)
@@ -46,10 +45,10 @@ def insert_hanging(
     left = np.flatnonzero(~done)
     rim = points_of(np.concatenate([start[left], stop[left], walls]), len(points))
     more = _on_edges(points, start[left], stop[left], rim, tolerance[left])
-    edge = alone[np.concatenate([edge, left[more[0]]])]
+    row = np.concatenate([edge, left[more[0]]])
     node, along = np.concatenate([node, more[1]]), np.concatenate([along, more[2]])
-    own = _cell_has(cells, cell[edge], node)
-    edge, node, along = edge[~own], node[~own], along[~own]
+    own = _cell_has(cells, cell[row], node)
+    edge, node, along = alone[row[~own]], node[~own], along[~own]
     if len(edge) == 0:
         return cells
     order = np.lexsort((along, edge))

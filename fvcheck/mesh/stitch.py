@@ -34,6 +34,7 @@ class Seams:
 
     number: Array
     finder: Finder
+    merged: int = 0
 
 
 def stitch(
@@ -56,7 +57,7 @@ def stitch(
     from fvcheck.kernels.merging import groups
 
     n = len(points)
-    start, end = cells.nodes[edges.open], edges.end[edges.open]
+    start, end = edges.start, edges.end
     rim = points_of(start, n)
     tolerance, shortest = _tolerances(points, start, end, rim, raw.precision)
     group, far = _coincident(points, start, end, rim, tolerance)
@@ -109,7 +110,7 @@ def stitch(
                 f"{kept} points lie on another and are kept apart: two sides of a wall, or differing data",
             )
         )
-    return Seams(number, finder)
+    return Seams(number, finder, merged)
 
 
 def _tolerances(points: Array, start: Array, end: Array, rim: Array, precision: float) -> tuple[Array, Array]:

@@ -19,7 +19,9 @@ def tidy(points: Array, cells: Polygons, precision: float, hints: list[Hint], *,
     """
     from fvcheck.kernels.polygons import outline_faults, select, shape_measures, without_repeats
 
-    offsets, nodes = without_repeats(cells.offsets, cells.nodes)
+    offsets, nodes = cells.offsets, cells.nodes
+    if _repeats(offsets, nodes):
+        offsets, nodes = without_repeats(offsets, nodes)
     area, perimeter, size = shape_measures(points, offsets, nodes)
     # A stored coordinate is off by up to half a spacing; what that does to the area is no area.
     rounding = precision * size
@@ -36,8 +38,10 @@ def tidy(points: Array, cells: Polygons, precision: float, hints: list[Hint], *,
         hints.append(Hint("clockwise-cells", f"{few} of {len(solid)} cells run the other way round; turned"))
     if turned or not solid.all():
         offsets, nodes = select(offsets, nodes, solid, clockwise)
+    source = cells.source if solid.all() else cells.source[solid]
+    if np.diff(offsets).max(initial=0) <= 3:  # triangles with an area are sound
+        return Polygons(offsets, nodes, source)
     faults = outline_faults(points, offsets, nodes, 2 * rounding[solid])
-    source = cells.source[solid]
     for cell in np.flatnonzero(faults).tolist():
         ring = points[nodes[offsets[cell] : offsets[cell + 1]]]
         if faults[cell] == 2 and _valid(ring):
@@ -48,6 +52,16 @@ def tidy(points: Array, cells: Polygons, precision: float, hints: list[Hint], *,
             mend="Its nodes are in a wrong order, or the mesh is folded: repair the export.",
         )
     return Polygons(offsets, nodes, source)
+
+
+def _repeats(offsets: Array, nodes: Array) -> bool:
+    """Whether `without_repeats` would change anything."""
+    sizes = np.diff(offsets)
+    if len(sizes) == 0 or sizes.min() < 3 or (nodes[offsets[1:] - 1] == nodes[offsets[:-1]]).any():
+        return True
+    same = nodes[1:] == nodes[:-1]
+    same[offsets[1:-1] - 1] = False  # the last node of a cell and the first of the next
+    return bool(same.any())
 
 
 def _valid(ring: Array) -> bool:
