@@ -14,7 +14,7 @@ from fvcheck.hints import Hint
 from fvcheck.laws import Law, MissingData, find_law, law_names
 from fvcheck.ledger import Ledger, Result, Row, case_dict
 from fvcheck.overlay.overlay import lay_over
-from fvcheck.plausible import field_hints, force_hints
+from fvcheck.plausible import field_hints, force_hints, still_hints
 from fvcheck.sources import Source
 from fvcheck.surfaces import ControlSurface
 from fvcheck.volume import BEST, SampledVolume
@@ -76,7 +76,7 @@ def ledger_of(
             "no law can be evaluated with these data",
             where="; ".join(hint.message for hint in hints if hint.code == "law-left-out"),
         )
-    hints += [*volume.hints(laws), *force_hints(volume, rows)]
+    hints += [*volume.hints(laws), *still_hints(volume), *force_hints(volume, rows)]
     return Ledger(
         name=placed.name or placed.kind,
         kind=placed.kind,

@@ -19,16 +19,12 @@ from fvcheck.mesh.assemble import Assembly, assemble
 from fvcheck.mesh.mesh import Mesh
 from fvcheck.mesh.piece import Export, Piece
 from fvcheck.notebook import html_hints, html_line, html_table
-from fvcheck.plausible import field_hints
+from fvcheck.plausible import STILL, field_hints
 from fvcheck.version import __version__
 
 Array = np.ndarray
 
 SCHEMA = "fvcheck-inspection/1"
-
-# Speed on a patch against that of the field, below which the patch may be a no-slip wall. Cell
-# values are carried to the boundary by a fit, which leaves a few percent on coarse meshes.
-_STILL = {"point": 0.02, "cell": 0.1}
 
 _KINDS = {
     4: "line", 5: "triangle", 6: "strip", 7: "polygon", 8: "quadrangle", 9: "quadrangle", 12: "hexahedron",
@@ -299,7 +295,7 @@ def _suspicions(patches: Sequence[PatchFacts], location: str | None) -> list[Hin
         for patch in patches
         if location is not None
         and patch.stillness is not None
-        and patch.stillness < _STILL[location]
+        and patch.stillness < STILL[location]
         and not patch.wall
     ]
     if not still:

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import shlex
 from collections.abc import Callable, Sequence
 from typing import Any
 
@@ -32,6 +33,10 @@ _SPREAD = 1e-2
 # Net throughflow of a wall over that of the typical speed. Cell values beside a
 # wall are not those at it: a stream that meets a body moves in its first cells.
 _THROUGH = {"point": 0.01, "cell": 0.1}
+
+# Speed on a patch against that of the field, below which the patch may be a no-slip wall. Cell
+# values are carried to the boundary by a fit, which leaves a few percent on coarse meshes.
+STILL = {"point": 0.02, "cell": 0.1}
 
 # Imbalances beyond so many resolution bands call for an explanation.
 _OPEN = 3.0
@@ -151,6 +156,29 @@ def _wall_hints(flow: Flow) -> list[Hint]:
                     f"{name!r} is called a wall, but {100 * share:.3g} % of the typical speed passes it",
                 )
             )
+    return out
+
+
+def still_hints(volume: SampledVolume) -> list[Hint]:
+    """Enclosed patches that cell data bring to rest, but that are not told to be walls."""
+    flow = volume.flow
+    field = flow.fields.get("velocity")
+    state = volume.line_state(BEST)
+    if field is None or field.location != "cell" or field.rim is not None or state.viscosity is None:
+        return []
+    speed = np.hypot(*state.velocity[:, :2].T)
+    u = np.asarray(field.values[:, :2], float)
+    typical = float(np.sqrt(np.nanmean(np.sum(u**2, axis=1)))) if len(u) else 0.0
+    weight = np.hypot(*volume.normals.T)
+    names = flow.mesh.boundary.names
+    out = []
+    for k in np.unique(volume.patch[~volume.drawn]).tolist():
+        here = (volume.patch == k) & ~volume.drawn
+        size = float(np.sqrt(np.average(speed[here] ** 2, weights=weight[here])))
+        if names[k] not in flow.walls and size < STILL["cell"] * typical:
+            share = 100 * size / typical
+            message = f"on {names[k]} the speed is {share:.2g} % of the field's; if a no-slip wall: --wall "
+            out.append(Hint("looks-like-wall", message + shlex.quote(names[k])))
     return out
 
 

@@ -142,6 +142,22 @@ def test_a_wall_that_lets_flow_through_is_told(where):
     assert (len(names[False]), len(names[True])) == (0, 1)
 
 
+@pytest.mark.parametrize("where", ["average", "point"])
+def test_cells_that_come_to_rest_at_a_patch_ask_whether_it_is_a_wall(where):
+    channel = exact.poiseuille()
+    cells = tm.mixed(channel.domain, 0.06, 1)
+
+    def asked(walls=()):
+        flow = flow_on(channel, cells, where=where, walls=walls)
+        result = fvcheck.balance_all(flow, [ControlSurface.domain()], ["mass"])
+        return {h.message.split()[1] for h in result.hints if h.code == "looks-like-wall"}
+
+    # point data hold the values on walls already: nothing to ask
+    walls = asked()
+    assert len(walls) == (2 if where == "average" else 0)
+    assert asked(sorted(walls)) == set()
+
+
 def test_a_state_that_differs_from_the_one_before_is_told_as_not_steady(tmp_path):
     import meshio
 
