@@ -110,7 +110,7 @@ class Sampler:
 
     def apply_local(self, degree: int, column: Array, known: Array | None = None) -> Array:
         """`apply` on what `gather` gives."""
-        from fvcheck.kernels.fits import apply_fits
+        from fvcheck.kernels.evaluation import apply_fits
         from fvcheck.kernels.threads import use_for
 
         fit = self.fits[degree]
@@ -157,7 +157,7 @@ class Sampler:
 
         places (q, 2) in triangles (q, 3) of fitted mesh points.
         """
-        from fvcheck.kernels.fits import evaluate
+        from fvcheck.kernels.evaluation import evaluate
         from fvcheck.kernels.threads import use_for
 
         frames = self.fits[degree].frames
