@@ -15,7 +15,7 @@ from pages import Page
 import fvcheck
 from fvcheck.checkfile import load
 from fvcheck.laws import law_names
-from fvcheck.reporting.field_pictures import _inside
+from fvcheck.reporting.painting import _inside
 
 ROOT = Path(__file__).parent.parent
 DEMO = ROOT / "meshes" / "demo-coarse.vtu"
@@ -417,6 +417,7 @@ def test_the_command_writes_page_figures_files_and_json(tmp_path):
     run = command(
         "report", str(CHECK), "-o", str(tmp_path / "x.html"), "--figures", str(tmp_path / "f"),
         "--vtk", str(tmp_path / "v"), "--json", str(tmp_path / "x.json"), "--law", "mass",
+        "-s", "bar=box(0.0115, 0.003, 0.0215, 0.012)",
     )  # fmt: skip
     assert run.status == 0 and run.err == ""
     assert "written" in run.out
@@ -433,8 +434,8 @@ def test_the_command_writes_page_figures_files_and_json(tmp_path):
 
 def test_the_command_ends_with_the_status_of_the_verdict_and_tells_nothing_in_a_pipe(tmp_path):
     run = command(
-        "report", str(ROOT / "meshes" / "demo-coarse-0020.vtu"), "-c", str(CHECK), "--law", "mass,momentum",
-        "-o", str(tmp_path / "x.html"), "--json", "-",
+        "report", str(ROOT / "meshes" / "demo-coarse-0020.vtu"), "-c", str(CHECK), "--law", "momentum",
+        "-s", "bar=box(0.0115, 0.003, 0.0215, 0.012)", "-o", str(tmp_path / "x.html"), "--json", "-",
     )  # fmt: skip
     assert run.status == 1 and run.err == ""
     assert json.loads(run.out)["verdict"] == "open"

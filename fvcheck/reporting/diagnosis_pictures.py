@@ -11,16 +11,9 @@ from fvcheck.diagnosis import Diagnosis
 from fvcheck.diagnosis.where import Place
 from fvcheck.laws import find_law
 from fvcheck.overlay.pieces import Overlay
-from fvcheck.reporting.field_pictures import (
-    colour_bar,
-    draw_boundary,
-    draw_surface,
-    frame,
-    height_for,
-    paint,
-    window_of,
-)
-from fvcheck.reporting.style import IN, INK, OUT, PAPER, Drawing
+from fvcheck.reporting.field_pictures import colour_bar
+from fvcheck.reporting.painting import draw_boundary, draw_surface, frame, height_for, paint, window_of
+from fvcheck.reporting.style import INK, PAPER, Drawing
 from fvcheck.text.numbers import exponent, percent, short, unit
 
 
@@ -56,12 +49,9 @@ def two_sided() -> Any:
     """A colour map from in through nothing (transparent, whatever the page) to out."""
     from matplotlib.colors import LinearSegmentedColormap, to_rgba
 
-    ends = [
-        (*to_rgba(IN)[:3], 1.0),
-        (*to_rgba(IN)[:3], 0.0),
-        (*to_rgba(OUT)[:3], 0.0),
-        (*to_rgba(OUT)[:3], 1.0),
-    ]
+    # Between the colours of light and of dark pages.
+    into, out = to_rgba("#2784b3")[:3], to_rgba("#cb6420")[:3]
+    ends = [(*into, 1.0), (*into, 0.0), (*out, 0.0), (*out, 1.0)]
     return LinearSegmentedColormap.from_list("two-sided", list(zip((0.0, 0.5, 0.5, 1.0), ends)))
 
 
@@ -88,7 +78,7 @@ def _draw(found: Diagnosis, place: Place, surfaces: Sequence[tuple[str, Overlay]
     ):
         most = float(np.nanmax(np.abs(values), initial=0.0)) or 1.0
         painted = paint(
-            panel, mesh, values, "cell", window, cmap=two_sided(), norm=Normalize(-most, most), seams=False
+            panel, mesh, values, "cell", window, cmap=two_sided(), norm=Normalize(-most, most), blended=True
         )
         draw_boundary(panel, mesh, linewidths=0.9)
         for _, overlay in surfaces:

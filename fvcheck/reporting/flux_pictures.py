@@ -9,7 +9,7 @@ import numpy as np
 from fvcheck.flow import Flow
 from fvcheck.overlay.pieces import DRAWN
 from fvcheck.reporting.border import Along, Border
-from fvcheck.reporting.field_pictures import (
+from fvcheck.reporting.painting import (
     cells_in,
     draw_boundary,
     draw_mesh,
