@@ -173,7 +173,9 @@ def still_hints(volume: SampledVolume) -> list[Hint]:
     names = flow.mesh.boundary.names
     out = []
     for k in np.unique(volume.patch[~volume.drawn]).tolist():
-        here = (volume.patch == k) & ~volume.drawn
+        here = (volume.patch == k) & ~volume.drawn & (weight > 0.0)
+        if not here.any():
+            continue  # on the axis
         size = float(np.sqrt(np.average(speed[here] ** 2, weights=weight[here])))
         if names[k] not in flow.walls and size < STILL["cell"] * typical:
             share = 100 * size / typical
