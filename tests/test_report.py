@@ -68,6 +68,17 @@ def check_page(text: str) -> Page:
     return page
 
 
+def test_moments_are_about_the_point_that_is_told_for_a_body():
+    flow = fvcheck.open_flow(
+        DEMO, **{k: v for k, v in settings().items() if k in ("fluid", "fields", "walls")}
+    )
+    box = settings()["surfaces"][0]
+    points = {"patch-4": (0.016, 0.0075)}
+    report = fvcheck.report(flow, box, ["mass"], bodies=["patch-4"], moment_about=points)
+    assert report.found.forces == fvcheck.forces(flow, "patch-4", about=points)
+    assert all(e.moment_about == points["patch-4"] for e in report.found.forces.estimates)
+
+
 def test_the_page_is_valid_and_needs_nothing_from_elsewhere(made):
     page = check_page(made.html)
     assert made.html.startswith("<!DOCTYPE html>")

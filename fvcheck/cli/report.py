@@ -82,7 +82,7 @@ def command(
     named, check = _files(files, reading.check)
     settings = settle(named[0], replace(reading, check=check), fluid, surface, limits)
     step = reading.step if reading.step is not None or check is None else _step_of(check)
-    references = settings.bodies
+    names = body or list(settings.bodies)
     silent = output.quiet or output.json == "-"
     with progress("report", silent) as advance:
         made = report(
@@ -90,7 +90,8 @@ def command(
             settings.surfaces,
             settings.laws,
             title=title,
-            bodies={name: references.get(name) for name in body} if body else references,
+            bodies={name: settings.bodies.get(name) for name in names},
+            moment_about=settings.moment_about(names),
             tolerance=settings.tolerance,
             scale=settings.scale,
             sources=settings.sources,

@@ -47,6 +47,7 @@ class Question:
     sources: tuple[Source, ...] = ()
     about: tuple[float, float] = (0.0, 0.0)
     bodies: Mapping[str, Any] | None = None
+    moment_about: Any = (0.0, 0.0)
     step: int | str | None = None
     kind: str = "auto"
     steady: bool = False
@@ -229,7 +230,8 @@ def _finish(found: Gathered, tell: Callable[[str], None]) -> Gathered:
         try:
             told = {name: reference for name, reference in asked.bodies.items() if reference is not None}
             found = replace(
-                found, forces=forces(flow, list(asked.bodies), about=asked.about, reference=told or None)
+                found,
+                forces=forces(flow, list(asked.bodies), about=asked.moment_about, reference=told or None),
             )
         except (FieldError, MeshError) as error:
             left_out.append(f"Forces: {error}")

@@ -97,6 +97,7 @@ def report(
     scale: Mapping[str, float] | None = None,
     sources: Sequence[Source] = (),
     about: tuple[float, float] = (0.0, 0.0),
+    moment_about: tuple[float, float] | Mapping[str, tuple[float, float]] | None = None,
     step: int | str | None = None,
     kind: str = "auto",
     steady: bool = False,
@@ -111,6 +112,7 @@ def report(
         about : as in `balance_all`
     path : where the page is written; without it nothing is
     bodies : patches whose forces are wanted, or patch -> reference as in `forces` (None for none)
+    moment_about : point of their moments, or patch -> point; by default ``about``
     step : one state of a file; by default all where it holds several
     kind : "state", "history" or "study" of ``files``; "auto" tells by steps and numbers of cells
     steady : snapshots are iterations, whatever times they carry
@@ -133,6 +135,7 @@ def report(
         sources=tuple(sources),
         about=about,
         bodies=_bodies(bodies),
+        moment_about=about if moment_about is None else moment_about,
         step=step,
         kind=kind,
         steady=steady,
