@@ -47,6 +47,7 @@ def rows_of(
         if source.law == law.name and closed
     ]
     shaken = [volume.fluxes(law, state) for state in volume.shaken_line_states()]
+    cross = volume.crosswise(law)
     rows = []
     for c, component in enumerate(law.components):
         pieces = [_pieces(volume, terms, c) for terms in degrees]
@@ -54,7 +55,7 @@ def rows_of(
         rounding = _SHAKE_COVERAGE * float(np.std(spread)) if spread else 0.0
         rounding += _ROUNDINGS * np.finfo(float).eps * float(raw)
         chosen = _pieces(volume, best, c) if volume.falls else None
-        band = bands(pieces[0], pieces[1], pieces[2], rounding, chosen, volume.reaching(law))
+        band = bands(pieces[0], pieces[1], pieces[2], rounding, chosen, volume.reaching(law), cross[:, c])
         told_here = sum(share * source.along(component) for share, source in told)
         row = _row(law, component, volume, best, c, told_here)
         if closed:

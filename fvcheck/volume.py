@@ -20,7 +20,7 @@ from fvcheck.sampling.inner import InnerCells, inner_cells, sample_inner
 from fvcheck.sampling.probe import Probe, Samples, compile_probe, known_values, pin_walls
 from fvcheck.sampling.quadrature import PER_PIECE, along, within
 from fvcheck.sampling.sampled import Sampled
-from fvcheck.sampling.sampler import DEGREES
+from fvcheck.sampling.sampler import CROSS, DEGREES
 from fvcheck.surfaces import ControlSurface
 from fvcheck.walls import wall_velocity
 
@@ -131,7 +131,7 @@ class SampledVolume:
     def _take(self, flow: Flow, probe: Probe) -> None:
         """Sample a flow."""
         self.flow, self.probe = flow, probe
-        self.line = self.probe.samples(self.triangle, self.places, self.line_group)
+        self.line = self.probe.samples(self.triangle, self.places, self.line_group, cross=True)
         self.area = (
             None
             if self.area_triangle is None
@@ -157,8 +157,9 @@ class SampledVolume:
         """
         if self.flow.case.cell_values != "average":
             return samples
-        cut = np.isin(self.area_cells, self.overlay.corner_cell)
-        weight = _sum_groups(self.area_group, len(self.area_cells), self.area_weights[:, None])
+        # A cut cell may have a part of no area; only whole ones are shifted.
+        whole = ~np.isin(self.area_cells, self.overlay.corner_cell)
+        weight = _sum_groups(self.area_group, len(self.area_cells), self.area_weights[:, None])[whole]
         known = {
             role: values[self.area_cells].astype(float)
             for group in self.probe.groups
@@ -170,9 +171,10 @@ class SampledVolume:
             out = dict(sampled)
             for role, average in known.items():
                 value = sampled[role].value.reshape(len(self.area_group), -1)
-                mean = self._per_cell(value * self.area_weights[:, None]) / weight
-                shift = np.zeros_like(mean)
-                shift[~cut, : average.shape[1]] = (average - mean[:, : average.shape[1]])[~cut]
+                total = self._per_cell(value * self.area_weights[:, None])
+                shift = np.zeros_like(total)
+                columns = average.shape[1]
+                shift[whole, :columns] = average[whole] - total[whole, :columns] / weight
                 moved = (value + shift[self.area_group]).reshape(sampled[role].value.shape)
                 out[role] = Sampled(moved, sampled[role].gradient)
             return out
@@ -304,6 +306,10 @@ class SampledVolume:
             if value is not None:
                 parts[name] = value
         return parts
+
+    def crosswise(self, law: Law) -> Array:
+        """(groups, c) fluxes summed per cell as `per_line_cell` does, by `CROSS`."""
+        return self.per_line_cell(sum(self.fluxes(law, self.line_state(CROSS)).values()))  # type: ignore[arg-type]
 
     def contributions(self, law: Law, degree: int) -> Contributions:
         state = self.line_state(degree)

@@ -64,10 +64,12 @@ def test_a_converged_run_is_never_called_open_however_tight_the_tolerance(name):
 def test_a_run_that_converges_goes_from_open_to_closed_in_order():
     surfaces = [ControlSurface.box(0.025, 0.002, 0.045, 0.014, name="wake")]
     order = ["closed", "undecided", "mesh-limited", "open"]
+    # As in meshes/demo.toml: on this mesh half a percent of the heat is sampling.
+    heat = {"heat": 3.0}
     seen = []
     for name in ("0005", "0020", "0050", "0100", "0200", "0400"):
-        seen.append(fvcheck.balance_all(demo(f"demo-coarse-{name}"), surfaces, LAWS).verdict)
-    seen.append(fvcheck.balance_all(demo(), surfaces, LAWS).verdict)
+        seen.append(fvcheck.balance_all(demo(f"demo-coarse-{name}"), surfaces, LAWS, tolerance=heat).verdict)
+    seen.append(fvcheck.balance_all(demo(), surfaces, LAWS, tolerance=heat).verdict)
     ranks = [order.index(verdict) for verdict in seen]
     assert seen[:4] == ["open"] * 4
     assert seen[-2:] == ["closed"] * 2

@@ -355,3 +355,57 @@ def test_fits_do_not_depend_on_the_unit_of_length_nor_on_the_numbering(reading):
 
 def _cross(u, v):
     return u[:, 0] * v[:, 1] - u[:, 1] * v[:, 0]
+
+
+@pytest.mark.parametrize("reading", READINGS)
+def test_crosswise_is_the_blend_with_the_weights_of_the_others(reading):
+    # The readable twin: each corner's cubic by itself, then Σ ½(1 − L_i) p_i; gradients by differences.
+    m = mesh("triangles")
+    sampler = compiled(m, reading)
+    data = data_on(m, lambda x, y: np.sin(3 * x) * np.cos(2 * y), reading)
+    triangle, places = places_in(m, count=1)
+    fit, frames = sampler.apply(3, data), sampler.fits[3].frames
+    middles = m.points[triangle].mean(axis=1)
+    places = 0.5 * (places + middles)  # well inside, for the differences
+
+    def weights(x):
+        a, b, c = (m.points[triangle[:, k]] for k in range(3))
+        second = np.linalg.solve(np.stack([b - a, c - a], axis=2), (x - a)[:, :, None])[:, :, 0]
+        return np.column_stack([1 - second.sum(axis=1), second])
+
+    def twin(x):
+        total = np.zeros(len(x))
+        for k, share in enumerate(weights(x).T):
+            row = sampler.centre_of[triangle[:, k]]
+            u, v = np.einsum("qij,qj->iq", frames[row], x - m.points[triangle[:, k]])
+            terms = [1 + 0 * u, u, v, u * u / 2, u * v, v * v / 2]
+            terms += [u**3 / 6, u * u * v / 2, u * v * v / 2, v**3 / 6]
+            total += 0.5 * (1 - share) * np.einsum("tq,qt->q", np.array(terms), fit[row, :, 0])
+        return total
+
+    values, gradients, _ = sampler.evaluate(3, fit, triangle, places)
+    value, gradient = sampler.crosswise(fit, (values, gradients), triangle, places)
+    assert np.allclose(value[:, 0], twin(places), atol=1e-12)
+    step = 1e-6
+    for axis, shift in enumerate(step * np.eye(2)):
+        slope = (twin(places + shift) - twin(places - shift)) / (2 * step)
+        # central differences keep half the digits
+        assert np.allclose(gradient[:, 0, axis], slope, atol=1e-6)
+
+
+@pytest.mark.parametrize("reading", ("point", "average"))
+def test_crosswise_tells_the_error_of_cubics_by_its_size(reading):
+    m = mesh("triangles")
+    sampler = compiled(m, reading)
+
+    def function(x, y):
+        return np.sin(3 * x) * np.cos(2 * y)
+
+    triangle, places = places_in(m, count=2)
+    fit = sampler.apply(3, data_on(m, function, reading))
+    values, gradients, _ = sampler.evaluate(3, fit, triangle, places)
+    value, _ = sampler.crosswise(fit, (values, gradients), triangle, places)
+    error = np.abs(values[:, 0] - function(*places.T))
+    # both of fourth order; the others' cubics reach out by a cell and are off by more
+    ratio = np.median(np.abs(value - values)) / np.median(error)
+    assert 0.5 < ratio < 20

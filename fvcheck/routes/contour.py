@@ -13,7 +13,7 @@ from fvcheck.overlay.overlay import lay_over
 from fvcheck.routes.estimate import Estimate
 from fvcheck.routes.terms import WIDTH, Terms, View, estimate, fluxes, laws, rows, volume_rows
 from fvcheck.sampling.probe import known_values
-from fvcheck.sampling.sampler import DEGREES
+from fvcheck.sampling.sampler import CROSS, DEGREES
 from fvcheck.surfaces import ControlSurface
 from fvcheck.volume import BEST, SampledVolume
 
@@ -90,6 +90,7 @@ def line_terms(volume: SampledVolume, sign: float, counted: Array, carried: bool
         shaken=shaken_sums(volume, lambda state: rows(border(state), sign)),
         reaching=reaching(volume),
         parts=_parts(volume, border(volume.line_state(BEST)), sign),
+        cross=volume.per_line_cell(rows(border(volume.line_state(CROSS)), sign)),
     )
 
 

@@ -16,7 +16,7 @@ import numpy as np
 from fvcheck.bands import Bands, bands
 from fvcheck.laws import State, find_law
 from fvcheck.routes.estimate import Estimate
-from fvcheck.sampling.sampler import DEGREES
+from fvcheck.sampling.sampler import CROSS, DEGREES
 from fvcheck.volume import BEST, SampledVolume
 
 Array = np.ndarray
@@ -48,6 +48,7 @@ class Terms:
     shaken : (s, 7) sums from data with a shaken last digit
     reaching : (m,) bool, leading rows where values are extrapolated
     parts : name -> (x, y), the terms summed
+    cross : (n, 7) leading rows by `CROSS`
     """
 
     by_degree: tuple[Array, Array, Array]
@@ -55,6 +56,7 @@ class Terms:
     shaken: Array
     reaching: Array | None
     parts: Mapping[str, Any]
+    cross: Array | None = None
 
 
 def laws() -> list[Any]:
@@ -123,12 +125,14 @@ def estimate(terms: Terms, view: View, method: str, **more: Any) -> Estimate:
     first, second, third = (directed(r, view) for r in terms.by_degree)
     best = third if terms.best is None else directed(terms.best, view)
     shaken = directed(terms.shaken, view)
+    cross = None if terms.cross is None else directed(terms.cross, view)
     value = best.sum(axis=0)
     half: list[tuple[float, float]] = []
     for c in range(best.shape[1]):
         rounding = rounding_of(shaken[:, c], best[:, c])
         chosen = None if terms.best is None else best[:, c]
-        band = bands(first[:, c], second[:, c], third[:, c], rounding, chosen, terms.reaching)
+        other = None if cross is None else cross[:, c]
+        band = bands(first[:, c], second[:, c], third[:, c], rounding, chosen, terms.reaching, other)
         half.append((band.sampling, band.resolution))
 
     def pair(at: int) -> tuple[float, float]:
@@ -182,4 +186,5 @@ def tally(volume: SampledVolume, number: Callable[[State], Array]) -> tuple[floa
     chosen = third if best is None else best
     shaken = np.array([number(state).sum() for state in volume.shaken_line_states()])
     rounding = rounding_of(shaken, chosen)
-    return float(chosen.sum()), bands(first, second, third, rounding, best, volume.line.near_jump)
+    near, cross = volume.line.near_jump, rows(volume.line_state(CROSS))
+    return float(chosen.sum()), bands(first, second, third, rounding, best, near, cross)

@@ -12,7 +12,7 @@ from fvcheck.fields import Location
 from fvcheck.flow import Flow
 from fvcheck.sampling.conserved import with_conserved_averages
 from fvcheck.sampling.sampled import Sampled
-from fvcheck.sampling.sampler import DEGREES, Known, Sampler, compile_sampler
+from fvcheck.sampling.sampler import CROSS, DEGREES, Known, Sampler, compile_sampler
 from fvcheck.walls import wall_velocity
 
 Array = np.ndarray
@@ -91,6 +91,14 @@ class Probe:
             out.append(group.sampler.evaluate(degree, self._coefficients[key], triangle, places))
         return tuple(out)
 
+    def crosswise(self, third: Raw, triangle: Array, places: Array) -> Raw:
+        """`raw` of `CROSS`, from that of degree 3."""
+        out = []
+        for number, (group, (value, gradient, apart)) in enumerate(zip(self.groups, third)):
+            fit = self._coefficients[number, DEGREES[-1]]
+            out.append((*group.sampler.crosswise(fit, (value, gradient), triangle, places), apart))
+        return tuple(out)
+
     def by_role(self, raw: Raw) -> dict[str, Sampled]:
         """Role -> values and gradients, from what `raw` gives."""
         out: dict[str, Sampled] = {}
@@ -109,12 +117,15 @@ class Probe:
                     )
         return out
 
-    def samples(self, triangle: Array, places: Array, cell: Array) -> Samples:
+    def samples(self, triangle: Array, places: Array, cell: Array, *, cross: bool = False) -> Samples:
         """All degrees at places (q, 2) in mesh triangles (q, 3), and the degree the data support.
 
         cell : (q,) which cell each place lies in, numbered from 0; a cell has one degree
+        cross : `CROSS` too
         """
         raw = {degree: self.raw(degree, triangle, places) for degree in DEGREES}
+        if cross:
+            raw[CROSS] = self.crosswise(raw[DEGREES[-1]], triangle, places)
         supported, near_jump = self._supported(raw[DEGREES[-1]], triangle, cell)
         by_degree = {degree: self.by_role(part) for degree, part in raw.items()}
         best = by_degree[DEGREES[-1]]

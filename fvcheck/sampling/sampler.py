@@ -26,6 +26,10 @@ Array = np.ndarray
 
 DEGREES = (1, 2, 3)
 
+# In place of a degree: the cubics of a triangle, each taken where the others count
+# (`Sampler.crosswise`). A second opinion of the same order.
+CROSS = 4
+
 # Rings of cells a fit may reach for. Thin strips of cells need more than the
 # three of an open mesh; beyond the last the data are too far to matter.
 _RINGS = (3, 5)
@@ -163,6 +167,24 @@ class Sampler:
         frames = self.fits[degree].frames
         use_for(_LIGHT * len(places))
         return evaluate(self.mesh_points, triangle, self.centre_of, frames, coefficients, places)
+
+    def crosswise(
+        self, coefficients: Array, blend: tuple[Array, Array], triangle: Array, places: Array
+    ) -> tuple[Array, Array]:
+        """The cubics blended with the weights ½(1 − L_i) in place of L_i: values (q, f), gradients (q, f, 2).
+
+        At a corner these are the polynomials of the two others, which did not have
+        to meet its datum: how far they miss it tells how good they are, as in
+        cross-validation. blend : values and gradients of `evaluate`
+        """
+        from fvcheck.kernels.crosswise import corner_means
+        from fvcheck.kernels.threads import use_for
+
+        frames = self.fits[DEGREES[-1]].frames
+        use_for(_LIGHT * len(places))
+        means = corner_means(self.mesh_points, triangle, self.centre_of, frames, coefficients, places)
+        value, gradient = (1.5 * mean - 0.5 * plain for mean, plain in zip(means, blend))
+        return value, gradient
 
 
 def compile_sampler(
