@@ -17,6 +17,7 @@ from fvcheck.fluid import Fluid
 from fvcheck.hints import Hint
 from fvcheck.mesh.assemble import Assembly, assemble
 from fvcheck.mesh.mesh import Mesh
+from fvcheck.mesh.near import Drawn, are_drawn, near_pieces
 from fvcheck.mesh.piece import Export, Piece
 from fvcheck.revolution import axis_of
 from fvcheck.rim import line_cells, with_rim
@@ -185,6 +186,7 @@ def flow_of_export(
     axis: str = "auto",
     depth: float | None = None,
     assembler: Callable[..., Assembly] = assemble,
+    near: Sequence[Drawn] | None = None,
 ) -> Flow:
     """One step of an opened export as a flow.
 
@@ -201,6 +203,8 @@ def flow_of_export(
         (see `fvcheck.revolution.axis_of`)
     depth : out-of-plane extent of a plane run that results are multiplied by [m]
     assembler : how pieces become a mesh; a series gives one that keeps the last mesh
+    near : the drawn surfaces that the flow is for. Of an export in several pieces only the
+        cells that these need are then kept, piece by piece; the boundary is whole
     """
     fluid = fluid or Fluid()
     number = step_number(export, step)
@@ -208,7 +212,7 @@ def flow_of_export(
         raise SetupError(f"unknown cell values {cell_values!r}", mend="Use average or centroid.")
     if depth is not None and not depth > 0:
         raise SetupError(f"depth is {depth}", mend="Give a positive depth.")
-    pieces = export.load(number)
+    pieces, names = _pieces(export, number, near, plane)
     points_only = not any(piece.cell_data for piece in pieces)
     assembly = assembler(pieces, plane=plane, keep_centres=points_only)
     along, axis_hints = axis_of(symmetry, axis, assembly)
@@ -229,7 +233,7 @@ def flow_of_export(
         axis=along,
     )
     flow = Flow(
-        mesh=assembly.mesh,
+        mesh=replace(assembly.mesh, near=names) if assembly.mesh.left_out else assembly.mesh,
         fields=chosen,
         fluid=fluid,
         case=case,
@@ -245,6 +249,15 @@ def flow_of_export(
         )
         flow = replace(flow, hints=(*flow.hints, note))
     return flow
+
+
+def _pieces(
+    export: Export, step: int, near: Sequence[Drawn] | None, plane: str
+) -> tuple[Sequence[Piece], tuple[str, ...]]:
+    """The pieces of a step, or what surfaces need of them, and the spellings of these surfaces."""
+    if export.stream is None or not near or not are_drawn(near):
+        return export.load(step), ()
+    return list(near_pieces(export.stream(step), near, plane)), tuple(surface.text for surface in near)
 
 
 def _check_turn(axis: int | None, depth: float | None, fluid: Fluid) -> None:

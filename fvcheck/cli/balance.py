@@ -42,7 +42,9 @@ def command(
     numbers = range(export.steps) if settings.step == "all" else [step_number(export, settings.step)]
 
     def flow_at(number: int) -> Flow:
-        flow = flow_of_export(export, step=number, **settings.reading)
+        # Of several states each is held against another as a whole.
+        near = settings.surfaces if export.steps == 1 else None
+        flow = flow_of_export(export, step=number, near=near, **settings.reading)
         if settings.step == "all":
             return flow
         return replace(flow, hints=(*flow.hints, *change_hints(export, number, flow, settings.reading)))

@@ -9,7 +9,7 @@ when a file is asked about, not before, and exposes
 
 from __future__ import annotations
 
-from collections.abc import Callable, Sequence
+from collections.abc import Callable, Iterator, Sequence
 from dataclasses import dataclass, replace
 from importlib import import_module
 from pathlib import Path
@@ -81,18 +81,30 @@ def head_of(path: Path) -> bytes:
     return head
 
 
-def _within_memory(export: Export) -> Callable[[int], Sequence[Piece]]:
+def _within_memory(export: Export) -> Export:
+    """The export, its reading with a message for what the memory cannot hold."""
+
+    def short() -> FormatError:
+        return FormatError(
+            "there is not enough memory for what the file declares",
+            where=export.path,
+            mend="Check its size; export less of the domain.",
+        )
+
     def load(step: int) -> Sequence[Piece]:
         try:
             return export.load(step)
         except MemoryError:
-            raise FormatError(
-                "there is not enough memory for what the file declares",
-                where=export.path,
-                mend="Check its size; export less of the domain.",
-            ) from None
+            raise short() from None
 
-    return load
+    def stream(step: int) -> Iterator[Piece]:
+        assert export.stream is not None
+        try:
+            yield from export.stream(step)
+        except MemoryError:
+            raise short() from None
+
+    return replace(export, load=load, stream=None if export.stream is None else stream)
 
 
 def open_export(path: str | Path) -> Export:
@@ -104,8 +116,7 @@ def open_export(path: str | Path) -> Export:
     head = head_of(path)
     for form in FORMATS:
         if form.sniff(head, path):
-            export = form.open(path)
-            return replace(export, load=_within_memory(export))
+            return _within_memory(form.open(path))
     claimed = [form.name for form in FORMATS if path.suffix.lower() in form.suffixes]
     what = f"the content is not that of {claimed[0]}" if claimed else "no reader knows this kind of file"
     raise FormatError(what, where=path, mend=f"Export the case as one of: {readable()}.")

@@ -62,27 +62,40 @@ def open_export(path: Path) -> Export:
             mend=f"Readable types: {', '.join([*READERS, BLOCKS[0]])}.",
         )
     time = _time(document)
-    return Export(path, f"VTK XML {kind}", lambda _step: load(path), () if time is None else (time,))
+    listed = kind in BLOCKS or _pieces_type(kind) is not None
+    return Export(
+        path,
+        f"VTK XML {kind}",
+        lambda _step: load(path),
+        () if time is None else (time,),
+        stream=(lambda _step: stream(path)) if listed else None,
+    )
 
 
 def load(path: Path) -> list[Piece]:
     """All pieces of one VTK XML file with at least one cell, checked."""
-    pieces = _load(path, blocks=True)
-    if not pieces:
+    return list(stream(path))
+
+
+def stream(path: Path) -> Iterator[Piece]:
+    """The same one by one, each read when it is its turn."""
+    empty = True
+    for piece in _load(path, blocks=True):
+        empty = False
+        yield piece
+    if empty:
         raise FormatError("the file holds no cells", where=path, mend="Export the mesh with its cells.")
-    return pieces
 
 
-def _load(path: Path, *, blocks: bool) -> list[Piece]:
+def _load(path: Path, *, blocks: bool) -> Iterator[Piece]:
     document = scan(path)
     if document.type in BLOCKS:
         if not blocks:
             raise FormatError("blocks within blocks of another file cannot be read", where=path, mend=DAMAGED)
-        return _blocks(document)
+        yield from _blocks(document)
+        return
     kind = _pieces_type(document.type)
-    if kind is not None:
-        return _parallel(document, kind)
-    return pieces_of(document)
+    yield from pieces_of(document) if kind is None else _parallel(document, kind)
 
 
 def _time(document: Document) -> float | None:
@@ -120,8 +133,7 @@ def _pieces_type(kind: str) -> str | None:
     return rest if rest != kind and rest in READERS else None
 
 
-def _parallel(document: Document, kind: str) -> list[Piece]:
-    pieces = []
+def _parallel(document: Document, kind: str) -> Iterator[Piece]:
     sources = document.primary.all("Piece")
     if not sources:
         raise FormatError("no pieces are listed", where=document.path, mend=DAMAGED)
@@ -132,8 +144,8 @@ def _parallel(document: Document, kind: str) -> list[Piece]:
             raise FormatError(
                 f"a piece of type '{part.type}' stands in a list of '{kind}'", where=source, mend=DAMAGED
             )
-        pieces += [_listed(document, piece, source) for piece in pieces_of(part)]
-    return pieces
+        for piece in pieces_of(part):
+            yield _listed(document, piece, source)
 
 
 def _listed(document: Document, piece: Piece, source: Path) -> Piece:
@@ -159,16 +171,15 @@ def _listed(document: Document, piece: Piece, source: Path) -> Piece:
     return replace(piece, point_data=kept["PPointData"], cell_data=kept["PCellData"])
 
 
-def _blocks(document: Document) -> list[Piece]:
+def _blocks(document: Document) -> Iterator[Piece]:
     leaves = list(_leaves(document.primary, ()))
     last = Counter(names[-1] for names, _file in leaves if names)
-    pieces: list[Piece] = []
     for names, file in leaves:
         # The last name says what a block is; the whole path only where that is ambiguous.
         name = "" if not names else names[-1] if last[names[-1]] == 1 else "/".join(names)
         source = beside(document.path, file, "block file")
-        pieces += [replace(piece, name=name) for piece in _load(source, blocks=False)]
-    return pieces
+        for piece in _load(source, blocks=False):
+            yield replace(piece, name=name)
 
 
 def _leaves(element: Element, names: tuple[str, ...]) -> Iterator[tuple[tuple[str, ...], str]]:

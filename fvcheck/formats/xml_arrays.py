@@ -222,7 +222,7 @@ class ArrayReader:
         if self.left < 0:
             raise FormatError(f"the file expands to {MOST_RATIO} times its size", where=where, mend=DAMAGED)
         out = np.empty(sum(sizes), np.uint8)
-        target, stored, filled = memoryview(out), memoryview(blob), 0
+        target, stored, filled = out.data, memoryview(blob), 0
         for size, length in zip(sizes, packed):
             target[filled : filled + size] = self._block(stored[at : at + length], size, where)
             filled += size

@@ -106,18 +106,21 @@ def assemble(pieces: Sequence[Piece], *, plane: str = "auto", keep_centres: bool
             face=claims.face[off],
             origin=claims.origin[off],
         )
-    edges = edges_of(cells, len(points))
+    cut = _cut_points(pieces)
+    edges = _real_edges(cells, cut)
     seams = stitch(points, cells, edges, raw, pieces, claims, hints)
     number, finder = seams.number, seams.finder
     if seams.merged:
         merged = Polygons(cells.offsets, number[cells.nodes], cells.source)
         cells = tidy(points, merged, raw.precision, hints, flat_file=False)
-        edges = edges_of(cells, len(points))
+        edges = _real_edges(cells, cut)
     check_joined(len(cells.source), len(edges.open), len(cells.nodes))
     filled = insert_hanging(points, cells, edges, finder, number, raw.precision, hints)
     if filled is not cells:
-        cells, edges = filled, edges_of(filled, len(points))
+        cells, edges = filled, _real_edges(filled, cut)
     mesh, point_source = _mesh(points, cells, edges, finder, number, hints)
+    left_out = [sum(counts) for counts in zip(*((p.left_out, p.points_left_out) for p in pieces))]
+    mesh = replace(mesh, left_out=left_out[0], points_left_out=left_out[1])
     return Assembly(
         mesh,
         point_source,
@@ -130,6 +133,19 @@ def assemble(pieces: Sequence[Piece], *, plane: str = "auto", keep_centres: bool
         point_axes=None if wedge is None else wedge.front_axes,
         wedge=None if wedge is None else wedge.axis,
     )
+
+
+def _cut_points(pieces: Sequence[Piece]) -> Array:
+    """(n,) raw points at which cells were left out."""
+    return np.concatenate(
+        [np.zeros(len(piece.points), bool) if piece.cut is None else piece.cut for piece in pieces]
+    )
+
+
+def _real_edges(cells: Polygons, cut: Array) -> Edges:
+    """Open edges but those to cells left out."""
+    edges = edges_of(cells, len(cut))
+    return edges.without(cut) if cut.any() else edges
 
 
 def _mesh(

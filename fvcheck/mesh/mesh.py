@@ -49,6 +49,10 @@ class Mesh:
     bodies: tuple[str, ...] = ()
     kinds: dict[str, str] = field(default_factory=dict)
     """patch name -> type stated by the file (``BCWall`` …), where it states one."""
+    left_out: int = 0
+    points_left_out: int = 0
+    """Cells and points not held, since no surface of ``near`` (spellings) needs them."""
+    near: tuple[str, ...] = ()
 
     @property
     def n_points(self) -> int:

@@ -7,7 +7,7 @@ everything behind the readers knows one kind of mesh only.
 
 from __future__ import annotations
 
-from collections.abc import Callable, Sequence
+from collections.abc import Callable, Iterable, Sequence
 from dataclasses import dataclass, field
 from pathlib import Path
 
@@ -78,6 +78,11 @@ class Piece:
     faces: Faces | None = None
     patches: dict[str, NamedFaces] = field(default_factory=dict)
     tag_names: dict[str, dict[int, str]] = field(default_factory=dict)
+    cut: Array | None = None
+    """(n,) bool or None: points from which the edges to cells start that were left out (`mesh.near`)."""
+    left_out: int = 0
+    points_left_out: int = 0
+    """Plane cells left out, and points that only these use."""
 
 
 @dataclass(frozen=True)
@@ -86,6 +91,7 @@ class Export:
 
     ``load(step)`` returns the pieces of step ``step`` (0 … steps-1).
     ``times`` is empty when the file holds a single state without a time.
+    ``stream(step)``, of an export in several pieces, reads each when it is its turn.
     """
 
     path: Path
@@ -93,6 +99,7 @@ class Export:
     load: Callable[[int], Sequence[Piece]]
     times: tuple[float, ...] = ()
     hints: tuple[Hint, ...] = ()
+    stream: Callable[[int], Iterable[Piece]] | None = None
 
     @property
     def steps(self) -> int:

@@ -40,6 +40,12 @@ def lay_over(mesh: Mesh, surface: ControlSurface) -> Overlay:
 
     Raises SurfaceError when no part of the surface lies in the domain.
     """
+    if mesh.left_out and surface.text not in mesh.near:
+        raise SurfaceError(
+            f"the cells that control surface {surface.name or surface.kind!r} needs were not kept",
+            where=f"the flow was opened near {', '.join(mesh.near)}",
+            mend="Open it near all surfaces, or without near.",
+        )
     if surface.kind == "domain":
         return _boundary_only(mesh, np.ones(len(mesh.boundary.edges), bool), np.arange(mesh.n_cells), True)
     if surface.kind == "patch":

@@ -1,0 +1,155 @@
+"""What a control surface needs of a piece: the rest of it need not be held.
+
+A ledger looks at the cells that its surface cuts, at those inside, at some rings
+of cells around both, and at the boundary of the domain, whose patches and bodies
+are named by all of it. So of each piece of a partitioned export are kept the
+cells near a surface or inside, and those along the open edges of the piece, which
+are boundary or seam: that is known only when all pieces are there. The edges at
+which other cells are left out start at points marked in `Piece.cut`; they lie
+rings away from any open edge of the whole piece, so that neither seams nor
+boundary ever meet them.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Iterable, Iterator, Sequence
+from dataclasses import replace
+from typing import Protocol
+
+import numpy as np
+
+from fvcheck.hints import Hint
+from fvcheck.mesh.celltypes import polygons_of
+from fvcheck.mesh.edges import edges_of
+from fvcheck.mesh.gather import Polygons, Raw, expand_cells, gather
+from fvcheck.mesh.piece import NamedFaces, Piece
+from fvcheck.mesh.plane import check_name, plane_of
+from fvcheck.mesh.tidy import tidy
+
+Array = np.ndarray
+Segments = tuple[Array, Array, bool]
+"""Starts (s, 2) and ends (s, 2) of a surface's straight parts, and whether it bounds a volume."""
+
+
+class Drawn(Protocol):
+    """What is asked of a control surface, see `fvcheck.surfaces.ControlSurface`."""
+
+    @property
+    def kind(self) -> str: ...
+    @property
+    def rings(self) -> tuple[Array, ...]: ...
+    @property
+    def closed(self) -> bool: ...
+    @property
+    def text(self) -> str: ...
+
+
+RINGS = 9
+"""Rings of cells kept around: fits take five, two more where data are one-sided, one for a jump's range."""
+_GRID = 256
+
+
+def are_drawn(surfaces: Sequence[Drawn] | None) -> bool:
+    """Whether there are surfaces, and all of them known without the mesh."""
+    return bool(surfaces) and all(s.rings and s.kind not in ("domain", "patch", "around") for s in surfaces)
+
+
+def near_pieces(pieces: Iterable[Piece], surfaces: Sequence[Drawn], plane: str) -> Iterator[Piece]:
+    """The pieces, each cut down to what ``surfaces`` need before the next one is read."""
+    check_name(plane)
+    segments = [_segments(surface) for surface in surfaces]
+    for piece in pieces:
+        yield _near(piece, segments, plane)
+
+
+def _segments(surface: Drawn) -> Segments:
+    rings = [np.asarray(ring, float) for ring in surface.rings]
+    if surface.closed:
+        return np.concatenate(rings), np.concatenate([np.roll(ring, -1, axis=0) for ring in rings]), True
+    return np.concatenate([ring[:-1] for ring in rings]), np.concatenate([ring[1:] for ring in rings]), False
+
+
+def _near(piece: Piece, surfaces: Sequence[Segments], plane: str) -> Piece:
+    """What is needed of a piece; one that is not sound and plane is left whole, for `assemble` to judge."""
+    raw = gather([piece])
+    flat = raw.cells_of(2)
+    if len(flat) == 0 or (raw.dimension == 3).any():
+        return piece
+    cells = expand_cells(raw, flat, lambda kind, size: polygons_of(kind, size, False))
+    used = np.zeros(len(raw.points), bool)
+    used[cells.nodes] = True
+    where = plane_of(raw.points if used.all() else raw.points[used], plane, raw.precision)
+    points = where.coordinates(raw.points)
+    hints: list[Hint] = []
+    cells = tidy(points, cells, raw.precision, hints, flat_file=True)
+    edges = edges_of(cells, len(points))
+    if hints or edges.crowded is not None or 2 * len(edges.open) > len(cells.nodes):
+        return piece
+    kept = np.zeros(len(raw.types), bool)
+    kept[cells.source[_wanted(points, cells, edges.start, surfaces)]] = True
+    here = kept[cells.source]
+    if here.all():
+        return piece
+    return _cut_down(piece, raw, kept, _points(cells, here, len(points)) & _points(cells, ~here, len(points)))
+
+
+def _wanted(points: Array, cells: Polygons, rim: Array, surfaces: Sequence[Segments]) -> Array:
+    """(m,) cells inside of a surface, or within `RINGS` of one or of the ``rim`` points."""
+    from fvcheck.kernels.blocks import block_boxes, grow_rings
+    from fvcheck.kernels.grid import INSIDE, NEAR, build_grid, classify_cells
+    from fvcheck.kernels.threads import use_for
+
+    use_for(len(cells.source))
+    boxes = block_boxes(points, cells.offsets, cells.nodes)
+    inside, seeds = np.zeros(len(cells.source), bool), np.zeros(len(points), bool)
+    seeds[rim] = True
+    for start, end, closed in surfaces:
+        status = classify_cells(points, cells.offsets, cells.nodes, boxes, build_grid(start, end, _GRID))
+        seeds |= _points(cells, status == NEAR, len(points))
+        if closed:
+            inside |= status == INSIDE
+    near, _ = grow_rings(points, cells.offsets, cells.nodes, boxes, np.flatnonzero(seeds), RINGS)
+    return inside | (near > 0)
+
+
+def _points(cells: Polygons, which: Array, n_points: int) -> Array:
+    """(n,) points of the cells ``which`` (m,) bool."""
+    out = np.zeros(n_points, bool)
+    out[cells.nodes[np.repeat(which, np.diff(cells.offsets))]] = True
+    return out
+
+
+def _cut_down(piece: Piece, raw: Raw, kept: Array, cut: Array) -> Piece:
+    """The piece with the 2D cells ``kept``, all lines and patches, and the points that these use."""
+    flat = raw.dimension == 2
+    left_out = int(np.count_nonzero(flat & ~kept))
+    sizes = np.diff(raw.offsets)
+    lost = np.zeros(len(raw.points), bool)
+    lost[raw.nodes[np.repeat(flat & ~kept, sizes)]] = True
+    lost[raw.nodes[np.repeat(flat & kept, sizes)]] = False
+    kept = kept | (raw.dimension == 0) | (raw.dimension == 1)
+    nodes = raw.nodes[np.repeat(kept, sizes)]
+    used = np.zeros(len(raw.points), bool)
+    used[nodes] = True
+    for patch in piece.patches.values():
+        used[patch.nodes] = True
+    number = np.cumsum(used) - 1
+
+    def renumbered(patch: NamedFaces) -> NamedFaces:
+        return replace(patch, nodes=number[patch.nodes])
+
+    return replace(
+        piece,
+        points=piece.points[used],
+        types=raw.types[kept],
+        offsets=np.concatenate([[0], np.cumsum(sizes[kept])]),
+        nodes=number[nodes],
+        point_data={name: values[used] for name, values in piece.point_data.items()},
+        cell_data={name: values[kept] for name, values in piece.cell_data.items()},
+        ghost=None,
+        faces=None,
+        patches={name: renumbered(patch) for name, patch in piece.patches.items()},
+        cut=cut[used],
+        left_out=left_out,
+        points_left_out=int(np.count_nonzero(lost)),
+    )
