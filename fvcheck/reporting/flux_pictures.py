@@ -18,7 +18,7 @@ from fvcheck.reporting.painting import (
     window_of,
     within_scale,
 )
-from fvcheck.reporting.style import GRID, IN, INK, MUTED, OUT, PAPER, SERIES, Drawing, plain
+from fvcheck.reporting.style import GRID, IN, INK, MUTED, OUT, PAPER, SERIES, Drawing, minus, plain
 from fvcheck.text.numbers import exponent, percent, short, unit
 
 Array = np.ndarray
@@ -205,7 +205,7 @@ def _flux(panel: Any, flow: Flow, along: Along, power: int) -> None:
     for at, colour, word in ((0.92, OUT, "↑ out"), (1.0, IN, "↓ in")):
         panel.text(at, 1.02, word, color=colour, transform=panel.transAxes, ha="right", va="bottom")
     panel.set_ylabel(f"flux\n[{unit(per_metre(along.unit), power, True)}]")
-    panel.set_title(f"net {short(float(along.flux.sum()))} {along.unit}")
+    panel.set_title(minus(f"net {short(float(along.flux.sum()))} {along.unit}"))
     _name_runs(panel, flow, border)
 
 

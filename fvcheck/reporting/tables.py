@@ -170,7 +170,7 @@ def origins(ledger: Ledger) -> Table:
         ]
         for row in ledger.rows
     ]
-    titles = ("law", "unit", *parts, *(f"patch {plain(name)}" for name in patches))
+    titles = ("law", "unit", *parts, *(f"at {plain(name)}" for name in patches))
     return table("What is drawn by mechanism, the boundary by patch", titles, rows)
 
 
