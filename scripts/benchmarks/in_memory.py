@@ -22,6 +22,7 @@ def measure(case: Case) -> dict[str, float]:
     flow, surface = flow_of(grid), circle()
     mesh = flow.mesh
     use_for(0)  # one thread for the pass, as VTK has and as ledgers of this size take
+    fvcheck.balance(flow, surface, [*LINE, "kinetic-energy"])  # what is compiled now is no one's memory
     after_reading = peak()
     quick = alternating(
         {
