@@ -43,8 +43,8 @@ TERMS: dict[str, Page] = {
     "bands": Page(
         "Each flux is integrated with polynomials of degree 1, 2 and 3 through the same data.\n"
         "Where the data do not support a degree (a shock, a layer thinner than the mesh), it falls there.\n"
-        "Sampling band (+-data): what degree 3 still changes against 2, the error of integrating from "
-        "discrete data; a share for the digits that the file stores (rounding band) is in it.\n"
+        "Sampling band (+-data): what the cubics about neighbouring points still differ by, and what they "
+        "change against degree 2: the error of integrating from discrete data; a share for the digits that the file stores (rounding band) is in it.\n"
         "Resolution band (+-mesh): three times what degree 2 changes against 1, an imbalance that a "
         "second-order scheme may leave on this mesh however long it iterates; never below the sampling "
         "band.",

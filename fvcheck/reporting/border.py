@@ -7,7 +7,7 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
-from fvcheck.bands import bands
+from fvcheck.bands import bands, outer_pieces, outer_widths
 from fvcheck.laws import Law
 from fvcheck.overlay.pieces import Overlay
 from fvcheck.sampling.quadrature import PER_PIECE
@@ -178,11 +178,13 @@ def along_border(volume: SampledVolume, law: Law, border: Border) -> list[Along]
     share = np.divide(lengths, whole[group], out=np.zeros_like(lengths), where=whole[group] > 0)
     degree = volume.line.supported[group]
     out = []
+    cross = volume.crosswise(law)
     for c, component in enumerate(law.components):
         pieces = [_terms(volume, found, c) for found in (*degrees, best)]
         reaching = volume.reaching(law)
         first, second, third, chosen = pieces
-        sampling, resolution = shares(first, second, third, chosen if volume.falls else None, reaching)
+        fallen = chosen if volume.falls else None
+        sampling, resolution = shares(first, second, third, fallen, reaching, cross[:, c])
         lines = len(whole)
         out.append(
             Along(
@@ -210,23 +212,23 @@ def _terms(volume: SampledVolume, found: Contributions, c: int) -> Array:
 
 
 def shares(
-    first: Array, second: Array, third: Array, chosen: Array | None, reaching: Array
+    first: Array, second: Array, third: Array, chosen: Array | None, reaching: Array, cross: Array
 ) -> tuple[Array, Array]:
     """What each term adds to the sampling and to the resolution band; sums are `bands` without rounding.
 
     Where a band is a root of squares its terms share it by their squares, where it is a sum, by size.
     """
     d23, d12 = third - second, second - first
-    outside = np.zeros(len(d23), bool)
-    outside[: len(reaching)] = reaching
-    if chosen is not None:
-        outside |= chosen != third
-    whole = bands(first, second, third, 0.0, chosen, reaching)
-    sampling = np.zeros(len(d23))
-    sampling[outside] = np.maximum(np.abs(d23), np.abs(d12))[outside]
+    apart, known = np.zeros(len(d23)), np.zeros(len(d23), bool)
+    apart[: len(cross)], known[: len(cross)] = cross - third[: len(cross)], True
+    outside, fell = outer_pieces(third, chosen, reaching)
+    whole = bands(first, second, third, 0.0, chosen, reaching, cross)
+    sampling = np.where(outside, outer_widths(d23, d12, apart, known, fell), 0.0)
     rest = max(whole.sampling - float(sampling.sum()), 0.0)
-    unsettled = np.abs(d23[~outside]).sum() > 0.5 * np.abs(d12[~outside]).sum()
-    sampling[~outside] = _split(rest, np.abs(d23[~outside]) if unsettled else d23[~outside] ** 2)
+    within = ~outside
+    unsettled = np.abs(d23[within]).sum() > 0.5 * np.abs(d12[within]).sum()
+    weights = np.abs(d23[within]) if unsettled else d23[within] ** 2 + apart[within] ** 2
+    sampling[within] = _split(rest, weights)
     return sampling, _split(whole.resolution, d12**2 if np.any(d12) else sampling)
 
 
