@@ -172,6 +172,20 @@ def test_wake_and_circulation_are_refused_in_a_duct(benchmark):
     assert "duct" in found["wake"].refused and "total pressure" in found["circulation"].refused
 
 
+def test_a_reference_too_large_for_the_flow_does_not_let_wake_or_circulation_pass(benchmark):
+    # against ½ρU² of a hundred times the speed, layers and wakes would look like an even stream
+    line = ControlSurface.line([(0.5, 0.0), (0.5, 0.41)])
+    reference = REFERENCE | {"velocity": 20.0}
+    found = fvcheck.forces(benchmark, methods=["wake", "circulation"], wake_line=line, reference=reference)
+    assert found["wake"].refused and found["circulation"].refused
+
+
+def test_the_last_line_is_of_a_route_that_has_a_number(capsys):
+    # a band that is none: the control surfaces speak
+    assert run(["forces", CYLINDER, "--density", "1", "--viscosity", "1e-3", "--band", "0.1,0.01", "-q"]) == 0
+    assert "by control-surface" in capsys.readouterr().out
+
+
 def test_an_unconverged_run_shows_in_the_disagreement_of_the_routes():
     flow = fvcheck.open_flow(MESHES / "demo-coarse-0020.vtu", fluid=AIR, walls=["patch-3", "patch-4"])
     found = fvcheck.forces(flow, "patch-4")
@@ -338,6 +352,7 @@ def test_a_body_without_any_number_leaves_the_command_undecided(capsys):
         ["--body", "nobody"],
         ["--reference", "1,2"],
         ["--reference", "1,2,x"],
+        ["--reference", "1e-300,1e-300,1e-300"],
         ["--method", "guess"],
         ["--distance", "0"],
         ["--distance", "a"],

@@ -59,12 +59,18 @@ def circulation(flow: Flow, view: View, distances: Sequence[float], reference: R
 
 
 def _variation_of_head(volume: SampledVolume, reference: Reference) -> float:
-    """Standard deviation of the total pressure along the drawn contour, in dynamic pressures."""
+    """Standard deviation of the total pressure along the drawn contour, in dynamic pressures.
+
+    These are the reference's or, where it is told too large for this flow, those found there.
+    """
     state = volume.line_state(BEST)
-    head = state.pressure + 0.5 * state.density * np.sum(state.velocity[:, :2] ** 2, axis=1)
+    dynamic = 0.5 * state.density * np.sum(state.velocity[:, :2] ** 2, axis=1)
+    head = state.pressure + dynamic
     weight = np.hypot(*volume.normals.T) * volume.drawn
     mean = float(np.average(head, weights=weight))
-    return float(np.sqrt(np.average((head - mean) ** 2, weights=weight))) / reference.pressure
+    scale = min(reference.pressure, float(np.average(dynamic, weights=weight)))
+    spread = float(np.sqrt(np.average((head - mean) ** 2, weights=weight)))
+    return spread / scale if scale > 0 else np.inf
 
 
 def _lift(volume: SampledVolume, view: View, reference: Reference, distance: float) -> Estimate:

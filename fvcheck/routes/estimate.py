@@ -27,6 +27,8 @@ class Reference:
             value = getattr(self, name)
             if not (math.isfinite(value) and value > 0):
                 raise SetupError(f"the reference {name} is {value:g}", mend="Give a positive number.")
+        if not 0.0 < self.pressure * self.length**2 < math.inf:
+            raise SetupError("the reference values are no sizes of a flow", mend="Give them in SI units.")
 
     @property
     def pressure(self) -> float:

@@ -60,10 +60,13 @@ def wake(
     if across.sum() < 0:
         across = -across
     best = volume.line_state(BEST)
-    total = best.pressure + 0.5 * best.density * np.sum(best.velocity[:, :2] ** 2, axis=1)
+    dynamic = 0.5 * best.density * np.sum(best.velocity[:, :2] ** 2, axis=1)
+    total = best.pressure + dynamic
+    # A reference that is told too large for this flow must not make all differences small.
+    scale = min(reference.pressure, max(float(dynamic.max()), np.finfo(float).tiny))
     start, end = line.rings[0][0], line.rings[-1][-1]
     ends = [int(np.argmin(np.hypot(*(volume.places - place).T))) for place in (start, end)]
-    apart = abs(float(total[ends[0]] - total[ends[1]])) / reference.pressure
+    apart = abs(float(total[ends[0]] - total[ends[1]])) / scale
     if apart > _ENDS:
         raise SurfaceError(
             f"the total pressures at the ends of the line differ by {100 * apart:.3g} % of the dynamic "
@@ -72,7 +75,7 @@ def wake(
             mend="Make the line longer; in a duct use control-surface or band.",
         )
     head = 0.5 * float(total[ends[0]] + total[ends[1]])
-    above = (float(total.max()) - head) / reference.pressure
+    above = (float(total.max()) - head) / scale
     if above > _ENDS:
         raise SurfaceError(
             f"between its ends the total pressure is higher by {100 * above:.3g} % of the dynamic pressure: "

@@ -44,7 +44,8 @@ def _unit(found: Forces) -> str:
 
 
 def _summary(mine: Sequence[Estimate]) -> Text:
-    best = next((e for name in ("band", "control-surface") for e in mine if e.method == name), mine[0])
+    known = [e for e in mine if not e.refused] or mine
+    best = next((e for name in ("band", "control-surface") for e in known if e.method == name), known[0])
     return Text(f"{best.body}: drag {short(best.drag)}, lift {short(best.lift)} by {best.label}")
 
 
