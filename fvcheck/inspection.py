@@ -13,7 +13,8 @@ import numpy as np
 
 from fvcheck.errors import FieldError
 from fvcheck.fields import ArrayRow, describe
-from fvcheck.flow import Flow, flow_of_export, mesh_arrays, step_number
+from fvcheck.flow import Flow, flow_of_export, step_number
+from fvcheck.flowfields import mesh_arrays
 from fvcheck.hints import Hint
 from fvcheck.mesh.assemble import Assembly, assemble
 from fvcheck.mesh.mesh import Mesh

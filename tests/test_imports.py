@@ -19,7 +19,7 @@ ROWS = [
     ["kernels"],
     ["mesh"],
     ["formats"],
-    ["flow", "revolution", "rim", "walls", "fields", "fieldnames", "arrays", "fluid"],
+    ["flow", "flowfields", "revolution", "rim", "walls", "fields", "fieldnames", "arrays", "fluid"],
     ["surfaces", "overlay"],
     ["sampling"],
     ["laws"],

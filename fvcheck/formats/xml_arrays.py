@@ -183,7 +183,7 @@ class ArrayReader:
         data, used = decode(blob, dtype, want, where)
         if used < len(blob) and blob[used:].strip(b" \t\r\n\0"):
             raise FormatError("there are more bytes than the array declares", where=where, mend=DAMAGED)
-        stored = dtype.newbyteorder(self.order)
+        stored = np.dtype(self.order + dtype.str[1:])
         return data.view(stored).astype(dtype, copy=False)
 
     def _words(self, blob: bytes, count: int, where: str) -> list[int]:

@@ -51,7 +51,8 @@ _GRID = 256
 
 def are_drawn(surfaces: Sequence[Drawn] | None) -> bool:
     """Whether there are surfaces, and all of them known without the mesh."""
-    return bool(surfaces) and all(s.rings and s.kind not in ("domain", "patch", "around") for s in surfaces)
+    meshed = ("domain", "patch", "around")
+    return all(s.rings and s.kind not in meshed for s in surfaces or ()) and bool(surfaces)
 
 
 def near_pieces(pieces: Iterable[Piece], surfaces: Sequence[Drawn], plane: str) -> Iterator[Piece]:
