@@ -130,7 +130,8 @@ PAGES: dict[str, Page] = {
         "A cell-centred export holds no values at walls. Told of them, the fits near a wall take "
         "its velocity "
         "as known: friction and heat there come out far better, and the bands are narrower.",
-        "If it is a wall: --wall NAME, for a moving one --wall NAME=VX,VY. Leave it if it is not.",
+        "If it is a wall: --wall NAME; where it moves --wall NAME=VX,VY or NAME=spin(OMEGA,X,Y). Leave it "
+        "if it is not.",
     ),
     "unclear-fields": Page(
         "The roles of the arrays could not all be settled.",
@@ -304,7 +305,8 @@ PAGES: dict[str, Page] = {
         "fvcheck balance with a surface around the body shows which law is open; trust no route before.",
     ),
     "routes-differ": Page(
-        "Two routes differ by more than their sampling bands, but within the resolution bands.",
+        "Two routes differ by more than their sampling bands and by more than 1 % of the force, but "
+        "within the resolution bands.",
         "The gap is what this mesh is worth: the run conserves only to the order of its scheme.",
         "Take the band, which averages over many surfaces; refine around the body to narrow the gap.",
     ),

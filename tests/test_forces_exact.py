@@ -221,6 +221,41 @@ def test_a_wake_of_stream_pressure_has_its_momentum_deficit_as_drag(formula, pre
     assert e.lift is None and e.assumptions
 
 
+@pytest.mark.parametrize("formula", ["momentum", "betz", "jones"])
+def test_a_wake_under_a_pressure_of_its_own_has_the_value_of_each_formula(formula):
+    # Betz 1925, Jones 1936 as in the module's text, here by an adaptive quadrature of the profile itself
+    from scipy.integrate import quad
+
+    def u(y):
+        return 1.0 - 0.4 * np.exp(-((y / 0.3) ** 2))
+
+    def p(y):
+        return -0.1 * np.exp(-((y / 0.5) ** 2))
+
+    def total(y):
+        return p(y) + 0.5 * u(y) ** 2
+
+    def density(y):
+        if formula == "momentum":
+            return u(y) * (1.0 - u(y)) - p(y)
+        if formula == "betz":
+            lost = 0.5 - total(y)
+            outer = np.sqrt(u(y) ** 2 + 2 * lost)
+            return lost + 0.5 * (outer - u(y)) * (outer + u(y) - 2.0)
+        g = 2 * total(y)
+        return np.sqrt(g - 2 * p(y)) * (1.0 - np.sqrt(g))
+
+    cells = tm.quads((0.0, -3.0, 1.0, 3.0), 0.05, 1, jitter=0.1)
+    y = cells.points[:, 1]
+    data = {"U": np.column_stack([u(y), 0 * y]), "p": p(y)}
+    fluid = Fluid(density=1.0, viscosity=0.0)
+    flow = Flow.from_arrays(cells.points, (cells.offsets, cells.nodes), point_data=data, fluid=fluid)
+    line = ControlSurface.line([(0.5, 2.5), (0.5, -2.5)])
+    found = fvcheck.forces(flow, "left", methods="wake", wake_line=line, wake_formula=formula, reference=UNIT)
+    # six cells to the half-width of the wake
+    assert found["wake"].drag == pytest.approx(quad(density, -2.5, 2.5, limit=200)[0], rel=1e-3)
+
+
 @pytest.mark.parametrize("method", ["wake", "circulation"])
 def test_few_digits_widen_the_bands_of_wake_and_circulation(method):
     # pressures about 1e3 in single precision are known to 6e-5: then digits, not the field, make the band

@@ -25,7 +25,7 @@ TERMS: dict[str, Page] = {
     ),
     "rotating-frame": Page(
         "--frame-rate OMEGA (rad/s, counter-clockwise) and --frame-centre X,Y: the exported velocities are "
-        "those seen from a frame that turns.",
+        "those seen from a frame that turns; in an axisymmetric run about the axis, right-handed.",
         "Coriolis and centrifugal forces then count as sources of momentum and angular momentum; the "
         "centrifugal one does work.",
         "For a pressure that holds the centrifugal part already, export the static one. A surface that moves "
@@ -44,7 +44,8 @@ TERMS: dict[str, Page] = {
         "Each flux is integrated with polynomials of degree 1, 2 and 3 through the same data.\n"
         "Where the data do not support a degree (a shock, a layer thinner than the mesh), it falls there.\n"
         "Sampling band (+-data): what the cubics about neighbouring points still differ by, and what they "
-        "change against degree 2: the error of integrating from discrete data; a share for the digits that the file stores (rounding band) is in it.\n"
+        "change against degree 2: the error of integrating from discrete data; a share for the digits "
+        "that the file stores (rounding band) is in it.\n"
         "Resolution band (+-mesh): three times what degree 2 changes against 1, an imbalance that a "
         "second-order scheme may leave on this mesh however long it iterates; never below the sampling "
         "band.",
@@ -152,9 +153,9 @@ TERMS: dict[str, Page] = {
         "of a surface around it leaves. band: the mean of that ledger over all surfaces between two "
         "distances. wake: the deficit behind it (momentum; betz, jones). circulation: lift = -rho U Gamma.\n"
         "Drag is along --direction, lift 90 degrees counter-clockwise from it; moments count "
-        "counter-clockwise about --about. Coefficients: force/(rho U2 L/2), moment/(rho U2 L2/2), with "
-        "--reference U,L,RHO; around an axis the area is that of a disc of diameter L. A frequency times "
-        "L/U (strouhal_scale) is a Strouhal number.\n"
+        "counter-clockwise about --about (or about in [[body]]). Coefficients: force/(rho U2 L/2), "
+        "moment/(rho U2 L2/2), with --reference U,L,RHO; around an axis the area is that of a "
+        "disc of diameter L. A frequency times L/U (strouhal_scale) is a Strouhal number.\n"
         "pressure and viscous are those at the surface where the route measures.",
         "On a coarse mesh the integral over the body is the worst estimate there is, the band the best; "
         "where routes disagree beyond their bands, none is to be trusted. wake and circulation take a "
