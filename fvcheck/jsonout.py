@@ -4,13 +4,11 @@ from __future__ import annotations
 
 import json
 import math
-import os
-import tempfile
 from collections.abc import Mapping, Sequence
 from pathlib import Path
 from typing import Any
 
-from fvcheck.errors import SetupError
+from fvcheck.wholefile import write_whole
 
 
 def dumps(data: Mapping[str, Any]) -> str:
@@ -29,31 +27,8 @@ def dumps(data: Mapping[str, Any]) -> str:
 
 
 def write(path: str | Path, data: Mapping[str, Any]) -> None:
-    """Write ``data`` to ``path``; a reader never meets half a file.
-
-    A link stays one, its target is replaced. A device or pipe is written to.
-    SetupError where it cannot be written.
-    """
-    text, path = dumps(data), Path(path)
-    try:
-        if path.exists() and not path.is_file():
-            path.write_text(text, encoding="utf-8")
-            return
-        path = path.resolve()
-        handle, draft = tempfile.mkstemp(prefix=f".{path.name}.", dir=path.parent)
-        try:
-            with os.fdopen(handle, "w", encoding="utf-8") as stream:
-                stream.write(text)
-            # mkstemp makes files for their owner only; a result is like any other file.
-            mask = os.umask(0)
-            os.umask(mask)
-            os.chmod(draft, 0o666 & ~mask)
-            os.replace(draft, path)
-        except BaseException:
-            os.unlink(draft)
-            raise
-    except OSError as error:
-        raise SetupError(f"the JSON file cannot be written: {error.strerror}", where=path) from None
+    """Write ``data`` to ``path`` (`fvcheck.wholefile`); SetupError where it cannot be written."""
+    write_whole(path, dumps(data).encode("utf-8"), "JSON file")
 
 
 def _plain(value: Any) -> Any:

@@ -15,13 +15,14 @@ from fvcheck.reporting.diagnosis_pictures import map_drawings
 from fvcheck.reporting.field_pictures import field_drawing, window_drawing
 from fvcheck.reporting.flux_pictures import flux_drawing
 from fvcheck.reporting.gathering import Gathered, Question, gather
-from fvcheck.reporting.output import check_page_path, folder_for, write_whole
+from fvcheck.reporting.output import check_page_path, folder_for
 from fvcheck.reporting.page import DRAWN_SURFACES, Drawings, page_html
 from fvcheck.reporting.record import Record, record_of
 from fvcheck.reporting.series_pictures import forces_drawing, history_drawings, study_drawing
 from fvcheck.reporting.style import Drawing
 from fvcheck.sources import Source
 from fvcheck.surfaces import ControlSurface
+from fvcheck.wholefile import write_whole
 
 FIELDS = ("speed", "pressure", "temperature")
 """Fields that are drawn, where the flow has them."""
@@ -61,7 +62,7 @@ class Report:
     def write(self, path: str | Path) -> None:
         """Write the page, whole or not at all; SetupError where that cannot be."""
         check_page_path(path)
-        write_whole(path, self.html.encode("utf-8"))
+        write_whole(path, self.html.encode("utf-8"), "page")
 
     def write_figures(self, folder: str | Path) -> list[Path]:
         """Every figure as NAME.svg and NAME.png; the folder is made if need be."""

@@ -20,7 +20,7 @@ from fvcheck.laws import Law, MissingData
 from fvcheck.overlay.pieces import DRAWN
 from fvcheck.reporting.border import Along
 from fvcheck.reporting.gathering import Gathered
-from fvcheck.reporting.output import write_whole
+from fvcheck.wholefile import write_whole
 
 Array = np.ndarray
 
