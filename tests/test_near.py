@@ -146,3 +146,25 @@ def test_surfaces_that_need_the_mesh_to_be_drawn_hold_it_whole():
     flow = flow_of_export(export(points, cells, 2, "point"), fluid=FLUID, near=[around])
     assert flow.mesh.left_out == 0
     assert fvcheck.balance(flow, around).rows
+
+
+@pytest.mark.parametrize("kind", ["pvtu", "vtm", "vtkhdf", "cgns"])
+def test_formats_in_several_pieces_stream_the_pieces_that_they_load(kind):
+    from fvcheck.formats.registry import open_export
+
+    files = sorted((Path(__file__).parent / "samples").rglob(f"*.{kind}"))
+    files = [path for path in files if "bad" not in path.parts]
+    assert files
+    for path in files:
+        export = open_export(path)
+        assert export.stream is not None
+        for step in {0, export.steps - 1}:
+            loaded, streamed = export.load(step), list(export.stream(step))
+            assert len(loaded) == len(streamed)
+            for one, other in zip(loaded, streamed):
+                assert one.name == other.name
+                assert np.array_equal(one.points, other.points)
+                assert np.array_equal(one.nodes, other.nodes)
+                for mine, theirs in ((one.point_data, other.point_data), (one.cell_data, other.cell_data)):
+                    assert list(mine) == list(theirs)
+                    assert all(np.array_equal(mine[k], theirs[k], equal_nan=True) for k in mine)

@@ -6,7 +6,7 @@ https://cgns.github.io.
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Iterator, Sequence
 from dataclasses import dataclass, replace
 from pathlib import Path
 from typing import Any
@@ -52,8 +52,8 @@ def open_export(path: Path) -> Export:
         raise FormatError("the bases have different times", where=path, mend="Export one base only.")
     cache: _Cache = {}
 
-    def load(step: int) -> Sequence[Piece]:
-        pieces = []
+    def each(step: int, cache: _Cache | None) -> Iterator[Piece]:
+        empty = True
         with safe.open_hdf5(path) as file:
             stored = _bases(file, path)
             for (base, zones), one in zip(stored, series):
@@ -61,12 +61,16 @@ def open_export(path: Path) -> Export:
                     if one.zones and zone.name not in one.zones[step]:
                         continue
                     name = f"{base.name}/{zone.name}" if len(stored) > 1 else zone.name
-                    pieces.append(_piece(base, zone, name, step, one, names, cache, path))
-        if not pieces:
+                    kept = {} if cache is None else cache
+                    yield _piece(base, zone, name, step, one, names, kept, path)
+                    empty = False
+        if empty:
             raise FormatError(f"there are no zones at step {step}", where=path, mend=safe.DAMAGED)
-        return pieces
 
-    return Export(path, "CGNS", load, times)
+    def load(step: int) -> Sequence[Piece]:
+        return list(each(step, cache))
+
+    return Export(path, "CGNS", load, times, stream=lambda step: each(step, None))
 
 
 def _refuse_adf(path: Path) -> None:

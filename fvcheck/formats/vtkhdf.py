@@ -7,7 +7,7 @@ step asked for are read.
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Iterator, Sequence
 from dataclasses import dataclass, replace
 from pathlib import Path
 from typing import Any
@@ -65,7 +65,12 @@ def open_export(path: Path) -> Export:
             raise FormatError("there are no cells", where=path, mend="Export the mesh with its cells.")
         return pieces
 
-    return Export(path, "VTKHDF", load, times)
+    def stream(step: int) -> Iterator[Piece]:
+        with safe.open_hdf5(path) as file:
+            for block in blocks:
+                yield from _load(file, block, step, path, None)
+
+    return Export(path, "VTKHDF", load, times, stream=stream)
 
 
 def _check_version(root: Any, path: Path) -> None:
@@ -151,23 +156,24 @@ def _steps(group: Any, path: Path) -> Steps:
 
 
 def _load(
-    file: Any, block: _Block, step: int, path: Path, cache: dict[str, tuple[object, Piece]]
-) -> list[Piece]:
+    file: Any, block: _Block, step: int, path: Path, cache: dict[str, tuple[object, Piece]] | None
+) -> Iterator[Piece]:
+    """The pieces of a block, each read when it is its turn; ``cache`` keeps meshes for the next step."""
     group = safe.group(file, block.path, path)
     steps = _steps(group, path)
     step = min(step, max(0, len(steps.times) - 1))
-    pieces = []
     parts = _PARTS[block.kind](group, steps, step)
     for number, part in enumerate(parts):
         if part.cells == 0:
             continue
         name = block.name if len(parts) == 1 else f"{block.name}#{number}" if block.name else f"part {number}"
-        known = cache.get(name)
+        known = None if cache is None else cache.get(name)
         if known is not None and known[0] == part.key:
             mesh = known[1]
         else:
             mesh = check_piece(replace(part.mesh(), name=name), path)
-            cache[name] = (part.key, mesh)
+            if cache is not None:
+                cache[name] = (part.key, mesh)
         points = _data(group, "PointData", steps, step, part, f"{path}, {block.path}")
         cells = _data(group, "CellData", steps, step, part, f"{path}, {block.path}")
         points.pop("vtkGhostType", None)
@@ -177,8 +183,7 @@ def _load(
             if marks.dtype.kind not in "iu" or marks.ndim != 1:
                 raise FormatError("vtkGhostType holds no marks", where=path, mend=safe.DAMAGED)
             ghost = (marks & _GHOST_BITS) != 0
-        pieces.append(check_piece(replace(mesh, point_data=points, cell_data=cells, ghost=ghost), path))
-    return pieces
+        yield check_piece(replace(mesh, point_data=points, cell_data=cells, ghost=ghost), path)
 
 
 def _data(group: Any, kind: str, steps: Steps, step: int, part: Part, where: str) -> dict[str, Array]:

@@ -162,16 +162,16 @@ class ArrayReader:
 
     def _base64(self, text: bytes, where: str) -> bytes:
         """Header and data may be encoded apart, each with its own padding."""
-        text = text.translate(None, b" \t\r\n\v\f")
-        spans = [match.span() for match in re.finditer(rb"=+", text)]
+        text = text.strip()
+        if any(space in text for space in (b" ", b"\t", b"\r", b"\n", b"\v", b"\f")):
+            text = text.translate(None, b" \t\r\n\v\f")
         view, begin, parts = memoryview(text), 0, []
         try:
-            for first, last in spans:
-                end = min(last, first + 2)
+            while begin < len(text):
+                end = text.find(b"=", begin)
+                end = len(text) if end < 0 else end + 1 + (text[end + 1 : end + 2] == b"=")
                 parts.append(binascii.a2b_base64(view[begin:end], strict_mode=True))
                 begin = end
-            if begin < len(text):
-                parts.append(binascii.a2b_base64(view[begin:], strict_mode=True))
             return parts[0] if len(parts) == 1 else b"".join(parts)
         except (binascii.Error, ValueError) as error:
             raise FormatError(f"the data are no base64: {error}", where=where, mend=DAMAGED) from None

@@ -58,8 +58,14 @@ def rotated_axes(normal: Array) -> Array:
 
 def slack(points: Array, precision: float) -> float:
     """Distance within which points are coplanar: `FLAT` of the extent, and rounding far from the origin."""
-    extent = float(np.ptp(points, axis=0).max())
-    return FLAT * extent + 8 * precision * float(np.abs(points).max())
+    low, high = limits(points)
+    return FLAT * float((high - low).max()) + 8 * precision * float(max(-low.min(), high.max()))
+
+
+def limits(points: Array) -> tuple[Array, Array]:
+    """Least and largest coordinates, column by column: several times faster than along the first axis."""
+    columns = points.T
+    return np.array([c.min() for c in columns]), np.array([c.max() for c in columns])
 
 
 def main_directions(points: Array) -> Array:
@@ -76,11 +82,12 @@ def plane_of(points: Array, wanted: str, precision: float) -> Plane:
     """
     check_name(wanted)
     tolerance = slack(points, precision)
-    spread = np.ptp(points, axis=0)
+    low, high = limits(points)
+    spread = high - low
     for name in ("xy", "xz", "yz") if wanted == "auto" else (wanted,):
         column = NORMAL_COLUMN[name]
         if spread[column] <= tolerance:
-            middle = 0.5 * float(points[:, column].min() + points[:, column].max())
+            middle = 0.5 * float(low[column] + high[column])
             return at_level(name, AXES[name], middle * AXES[name][2, column])
     if wanted != "auto":
         raise MeshError(
