@@ -31,6 +31,9 @@ ASSUMES = {
 # Differing total pressures at both ends, in dynamic pressures, that put a line into question.
 _ENDS = 0.02
 
+# Dynamic over total pressure, below which a deficit would be rounding.
+_STILL = 1e-12
+
 
 def wake(
     flow: Flow, view: View, line: ControlSurface | None, reference: Reference | None, formula: str
@@ -63,7 +66,9 @@ def wake(
     dynamic = 0.5 * best.density * np.sum(best.velocity[:, :2] ** 2, axis=1)
     total = best.pressure + dynamic
     # A reference that is told too large for this flow must not make all differences small.
-    scale = min(reference.pressure, max(float(dynamic.max()), np.finfo(float).tiny))
+    scale = min(reference.pressure, float(dynamic.max()))
+    if scale <= _STILL * float(np.abs(total).max()):
+        raise SurfaceError("the fluid hardly moves there", where=line.text)
     start, end = line.rings[0][0], line.rings[-1][-1]
     ends = [int(np.argmin(np.hypot(*(volume.places - place).T))) for place in (start, end)]
     apart = abs(float(total[ends[0]] - total[ends[1]])) / scale
