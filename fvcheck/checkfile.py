@@ -65,7 +65,8 @@ def _read(path: Path) -> dict[str, Any]:
 def _check_laws(check: CheckFile, laws: Collection[str]) -> None:
     if not laws:
         return
-    named = [("[tolerance]", law) for law in check.tolerance]
+    named = [("[case] laws", law) for law in check.case.laws or ()]
+    named += [("[tolerance]", law) for law in check.tolerance]
     named += [(f"[[source]] {number}", source.law) for number, source in enumerate(check.source, start=1)]
     named += [(f"[[expect]] {n}", expect.law) for n, expect in enumerate(check.expect, start=1) if expect.law]
     for place, law in named:

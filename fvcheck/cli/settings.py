@@ -73,6 +73,8 @@ def settle(
     limits = limits or Limits()
     check = _load(reading.check)
     laws = words(limits.law)
+    if laws is None and check.case.laws is not None:
+        laws = list(check.case.laws)
     tolerance = (
         check.law_tolerances() | check.tolerance | numbers(limits.tolerance, "--tolerance", "LAW=PERCENT")
     )
