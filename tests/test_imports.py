@@ -51,7 +51,7 @@ ROWS = [
         "routes",
         "diagnosis",
     ],
-    ["cli", "text", "charts", "reporting", "jsonout", "__main__"],
+    ["cli", "text", "charts", "reporting", "gating", "jsonout", "__main__"],
 ]
 ROW = {room: number for number, rooms in enumerate(ROWS) for room in rooms}
 
@@ -146,6 +146,7 @@ def test_the_public_names_are_these():
         "Forces",
         "FormatError",
         "FvcheckError",
+        "GateResult",
         "History",
         "Inspection",
         "Law",
@@ -167,6 +168,7 @@ def test_the_public_names_are_these():
         "diagnose",
         "follow",
         "forces",
+        "gate",
         "grid_convergence",
         "history",
         "inspect_file",

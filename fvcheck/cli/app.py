@@ -11,7 +11,7 @@ from typing import Annotated, Any
 
 import typer
 
-from fvcheck.cli import balance, demo, diagnose, explain, forces, history, inspect, report, study
+from fvcheck.cli import balance, demo, diagnose, explain, forces, gate, history, inspect, report, study
 from fvcheck.errors import FvcheckError, nearest
 from fvcheck.version import __version__
 
@@ -33,7 +33,7 @@ app = typer.Typer(
     rich_markup_mode="rich",
     context_settings={"help_option_names": ["-h", "--help"]},
 )
-for _module in (inspect, balance, forces, history, study, diagnose, report, demo, explain):
+for _module in (inspect, balance, forces, history, study, diagnose, gate, report, demo, explain):
     app.command(_module.__name__.rpartition(".")[2])(_module.command)
 
 

@@ -1,0 +1,236 @@
+"""One check file, from its export to its outcome; runs in a process of its own."""
+
+from __future__ import annotations
+
+import time
+from collections.abc import Iterator
+from dataclasses import replace
+from pathlib import Path
+from typing import TYPE_CHECKING, Any
+
+import numpy as np
+
+from fvcheck.errors import FvcheckError, SetupError
+from fvcheck.gating.baselines import drifts, read_baseline
+from fvcheck.gating.expecting import expectations, verdicts
+from fvcheck.gating.outcome import PASSED, UNUSABLE, Finding, Outcome
+from fvcheck.verdict import OPEN, worst
+
+if TYPE_CHECKING:
+    from fvcheck.checkmodel import CheckFile
+    from fvcheck.cli.settings import Settings
+    from fvcheck.flow import Flow
+    from fvcheck.ledger import Result
+    from fvcheck.mesh.mesh import Mesh
+
+# A diagnosis of more cells takes minutes; it is left to fvcheck diagnose.
+_DIAGNOSED_CELLS = 200_000
+
+
+def run_case(path: str, diagnose_open: bool = True, compare: bool = True) -> Outcome:
+    """The outcome of one check file; whatever goes wrong is in it as a finding of status 2.
+
+    compare : with the baseline, where the check file names one
+    """
+    start = time.perf_counter()
+    baseline = ""
+    try:
+        check = _load(path)
+        if check.baseline is not None:
+            baseline = str(check.folder / check.baseline.file)
+        result, flows = _found(check, path)
+        findings = [Finding("case", "case", PASSED, f"{result['case']['file']} could be balanced")]
+        findings += list(_judged(check, result))
+        if check.baseline is not None and compare:
+            findings += _against(Path(baseline), result, check.baseline.tolerance_percent)
+        result["expectations"] = [f.to_dict() for f in findings if f.kind == "expectation"]
+        words = _diagnosis(check, path, result, flows[-1]) if diagnose_open else ""
+        return Outcome(path, tuple(findings), result, time.perf_counter() - start, words, baseline)
+    except FvcheckError as error:
+        return failed(path, str(error), time.perf_counter() - start, baseline)
+    except MemoryError:
+        return failed(path, "the memory does not suffice", time.perf_counter() - start, baseline)
+    except OSError as error:
+        text = f"{error.strerror or error}{f' ({error.filename})' if error.filename else ''}"
+        return failed(path, text, time.perf_counter() - start, baseline)
+    except Exception as error:  # a fault of ours in one case must not hide the outcome of the others
+        text = f"fvcheck met a fault of its own: {type(error).__name__}: {error}"
+        return failed(path, text, time.perf_counter() - start, baseline)
+
+
+def failed(path: str, message: str, seconds: float = 0.0, baseline: str = "") -> Outcome:
+    """The outcome of a check file that could not be run."""
+    return Outcome(path, (Finding("case", "case", UNUSABLE, message),), None, seconds, "", baseline)
+
+
+def _load(path: str) -> CheckFile:
+    from fvcheck.checkfile import load
+    from fvcheck.laws import law_names
+
+    return load(path, laws=law_names())
+
+
+def _settings(check: CheckFile, path: str) -> tuple[list[Path], Settings]:
+    """As every command takes them from a check file, so that numbers are the same."""
+    from fvcheck.cli.options import FluidOptions, Reading
+    from fvcheck.cli.settings import settle
+
+    files = list(check.case_files())
+    return files, settle(files[0], Reading(check=Path(path)), FluidOptions())
+
+
+def _found(check: CheckFile, path: str) -> tuple[dict[str, Any], list[Flow]]:
+    """The result file: of several states the last one, with all of them under ``history``."""
+    files, settings = _settings(check, path)
+    states = list(_states(check, files, settings))
+    entries = []
+    for result, flow in states:
+        data = result.to_dict()
+        data["case"]["mesh_digest"] = mesh_digest(flow.mesh)
+        if len(states) == 1:  # of several, storage would be missing
+            _add_laws(check, settings, flow, data)
+        data["forces"], hints = _forces(check, settings, flow)
+        data["hints"] += [hint for hint in hints if hint not in data["hints"]]
+        entries.append(data)
+    last = dict(entries[-1])
+    if len(entries) > 1:
+        last["history"] = [
+            {key: entry["case"][key] for key in ("file", "step", "time")}
+            | {key: entry[key] for key in ("verdict", "surfaces", "forces")}
+            for entry in entries
+        ]
+    last["verdict"] = worst(entry["verdict"] for entry in entries)
+    return last, [flow for _, flow in states]
+
+
+def _states(check: CheckFile, files: list[Path], settings: Settings) -> Iterator[tuple[Result, Flow]]:
+    from fvcheck.balancing import balance_all
+    from fvcheck.flow import flow_of_export, step_number
+    from fvcheck.formats.registry import open_export
+    from fvcheck.plausible import change_hints
+    from fvcheck.series import open_series
+    from fvcheck.timeseries import history
+
+    judged: dict[str, Any] = {
+        "tolerance": settings.tolerance,
+        "scale": settings.scale,
+        "sources": settings.sources,
+        "about": settings.about,
+    }
+    if len(files) == 1 and settings.step != "all":
+        export = open_export(files[0])
+        number = step_number(export, settings.step)
+        flow = flow_of_export(export, step=number, **settings.reading)
+        flow = replace(flow, hints=(*flow.hints, *change_hints(export, number, flow, settings.reading)))
+        yield balance_all(flow, settings.surfaces, settings.laws, **judged), flow
+        return
+    if settings.step not in ("last", "all"):
+        raise SetupError(
+            "a step is told for several files", where=check.path, mend='Leave it out, or write "all".'
+        )
+    series = open_series(files, **settings.reading)
+    found = history(series, settings.surfaces, settings.laws, **judged)
+    for entry in found.entries:
+        yield entry.result, series.flow(entry.number)
+
+
+def mesh_digest(mesh: Mesh) -> str:
+    """Of points and cells: equal for runs that are sampled alike."""
+    from hashlib import sha256
+
+    mix = sha256()
+    for array in (mesh.points, mesh.offsets, mesh.nodes):
+        mix.update(repr((array.shape, array.dtype.str)).encode())
+        mix.update(np.ascontiguousarray(array).tobytes())
+    return mix.hexdigest()
+
+
+def _add_laws(check: CheckFile, settings: Settings, flow: Flow, data: dict[str, Any]) -> None:
+    """Rows of laws that are expected and not among the default ones; left out where they cannot be had."""
+    from fvcheck.balancing import balance
+    from fvcheck.ledger import ledger_dict
+
+    surfaces = {one.name: one for one in settings.surfaces or ()}
+    for ledger in data["surfaces"]:
+        have = {row["law"] for row in ledger["laws"]}
+        wanted = [e.law for e in check.expect if e.surface == ledger["name"] and e.law not in have]
+        for law in dict.fromkeys(wanted):
+            if ledger["name"] not in surfaces:
+                continue
+            try:
+                more = balance(
+                    flow,
+                    surfaces[ledger["name"]],
+                    [str(law)],
+                    tolerance=settings.tolerance,
+                    sources=settings.sources,
+                    about=settings.about,
+                )
+            except FvcheckError as error:
+                data["hints"].append({"code": "law-left-out", "message": f"{law}: {error}"})
+                continue
+            ledger["laws"] += ledger_dict(more)["laws"]
+            data["verdict"] = worst([data["verdict"], more.verdict])
+
+
+def _forces(
+    check: CheckFile, settings: Settings, flow: Flow
+) -> tuple[list[dict[str, Any]], list[dict[str, str]]]:
+    """Forces on the bodies of the check file, by the usual routes and those that are expected."""
+    from fvcheck.routes import forces
+
+    names = list(dict.fromkeys([*settings.bodies, *(e.body for e in check.expect if e.body is not None)]))
+    out: list[dict[str, Any]] = []
+    hints: list[dict[str, str]] = []
+    told = {name: reference for name, reference in settings.bodies.items() if reference is not None}
+    for name in names:
+        expected = [e.method for e in check.expect if e.body == name and e.method is not None]
+        given: dict[str, Any] = {"about": settings.moment_about([name]), "reference": told or None}
+        found = forces(flow, [name], **given)
+        have = {estimate.method for estimate in found.estimates}
+        out += found.to_dict()["forces"]
+        hints += [{"code": hint.code, "message": hint.message} for hint in found.hints]
+        for method in dict.fromkeys(expected):
+            if method in have:
+                continue
+            try:
+                out += forces(flow, [name], methods=[method], **given).to_dict()["forces"]
+            except FvcheckError as error:
+                hints.append({"code": "route-left-out", "message": f"{name} {method}: {error}"})
+    return out, hints
+
+
+def _judged(check: CheckFile, result: dict[str, Any]) -> Iterator[Finding]:
+    """Verdicts and expectations of the state, or of every state of several."""
+    states = result.get("history") or [result]
+    for number, state in enumerate(states):
+        name = f"state {number}, " if len(states) > 1 else ""
+        yield from verdicts(check, state, name)
+        yield from expectations(check, state, name)
+
+
+def _against(path: Path, result: dict[str, Any], tolerance_percent: float) -> list[Finding]:
+    try:
+        return drifts(result, read_baseline(path), tolerance_percent)
+    except SetupError as error:
+        return [Finding("baseline", "baseline", UNUSABLE, str(error))]
+
+
+def _diagnosis(check: CheckFile, path: str, result: dict[str, Any], flow: Flow) -> str:
+    """What a diagnosis says of the laws of open rows; "" where none is open."""
+    from fvcheck.diagnosis import diagnose
+    from fvcheck.diagnosis.diagnosing import LAWS
+    from fvcheck.text.diagnosis import diagnosis_text
+
+    rows = [row for ledger in result["surfaces"] for row in ledger["laws"]]
+    laws = [law for law in dict.fromkeys(r["law"] for r in rows if r["verdict"] == OPEN) if law in LAWS]
+    if not laws:
+        return ""
+    if flow.mesh.n_cells > _DIAGNOSED_CELLS:
+        return f"{flow.mesh.n_cells} cells take minutes to diagnose; see fvcheck diagnose."
+    try:
+        found = diagnose(flow, laws, sources=_settings(check, path)[1].sources)
+    except FvcheckError as error:
+        return f"no diagnosis: {error}"
+    result["diagnosis"] = found.to_dict()["diagnosis"]
+    return diagnosis_text(replace(found, hints=()), quiet=True).strip()
