@@ -2,11 +2,11 @@
 
 from __future__ import annotations
 
-from fvcheck.cli.options import File, FluidOptions, Output, Reading, spread
+from fvcheck.cli.options import FluidOptions, OptionalFile, Output, Reading, spread
 
 
 @spread
-def command(reading: Reading, fluid: FluidOptions, output: Output, file: File) -> int:
+def command(reading: Reading, fluid: FluidOptions, output: Output, file: OptionalFile = None) -> int:
     """Show what is in an export: mesh, fields and roles, patches, bodies, steps, suspicions."""
     from fvcheck.cli.output import check_target, show
     from fvcheck.cli.settings import settle
