@@ -1,8 +1,8 @@
 """A result against an earlier one: what has drifted beyond the tolerance and beyond the bands.
 
 A change counts as drift only if it is larger than ``tolerance_percent`` (of the
-row's scale, of the size of the force) and larger than what the bands of both
-runs explain. On one mesh (same digest) both runs are sampled alike, so sampling
+row's scale, of the size of the force, of that force at its arm) and larger than
+what the bands of both runs explain. On one mesh (same digest) both runs are sampled alike, so sampling
 errors are common to both and drop out of the difference: what is left are the
 rounding bands. On another mesh they do not, and the sampling bands of both runs
 are added.
@@ -29,7 +29,7 @@ ROW_NUMBERS = ("imbalance", "flux", "inflow", "outflow", "boundary", "storage", 
 FORCE_NUMBERS = ("drag", "lift", "moment")
 
 _SAME, _SAME_ON_OTHER_MESH = 1e-6, 1e-2
-"""Relative difference in length and area of a surface: on other meshes curved walls differ by their chords."""
+"""Relative difference in lengths and areas of surfaces: on other meshes curved walls have other chords."""
 
 _FRAME = ("plane", "symmetry", "axis", "depth")
 
@@ -130,13 +130,15 @@ def _forces(result: Result, baseline: Result, share: float, same_mesh: bool) -> 
     for label in (label for label in now if label in then):
         new, old = now[label], then[label]
         size = math.hypot(_number(old["drag"]), _number(old["lift"]))
+        # A moment may be a small difference of large parts; the force at its arm is what it is made of.
+        moment = max(abs(_number(old["moment"])), size * _number(old.get("arm")))
 
         def band(number: str, new: Mapping[str, Any] = new, old: Mapping[str, Any] = old) -> float:
             if same_mesh:
                 return 0.0  # sampled alike; the digits of the files are far below any tolerance
             return sum(_number(one.get("bands", {}).get(number, {}).get("sampling")) for one in (new, old))
 
-        for numbers, scale in ((("drag", "lift"), size), (("moment",), abs(_number(old["moment"])))):
+        for numbers, scale in ((("drag", "lift"), size), (("moment",), moment)):
             tail = "" if numbers[0] == "drag" else " moment"
             yield _compared(
                 f"{estimate_label(new)}{tail}",

@@ -130,8 +130,8 @@ def _states(check: CheckFile, files: list[Path], settings: Settings) -> Iterator
         )
     series = open_series(files, **settings.reading)
     found = history(series, settings.surfaces, settings.laws, **judged)
-    for entry in found.entries:
-        yield entry.result, series.flow(entry.number)
+    for place, entry in enumerate(found.entries):
+        yield entry.result, series.flow(place)
 
 
 def mesh_digest(mesh: Mesh) -> str:
@@ -197,7 +197,16 @@ def _forces(
                 out += forces(flow, [name], methods=[method], **given).to_dict()["forces"]
             except FvcheckError as error:
                 hints.append({"code": "route-left-out", "message": f"{name} {method}: {error}"})
+    for estimate in out:
+        estimate["arm"] = _arm(flow, estimate)
     return out, hints
+
+
+def _arm(flow: Flow, estimate: dict[str, Any]) -> float:
+    """Mean distance [m] of a body's wall from the point that its moment counts from."""
+    edges = flow.mesh.patch_edges(estimate["body"])
+    places = flow.mesh.points[edges].reshape(-1, 2) - np.asarray(estimate["moment_about"])
+    return float(np.hypot(*places.T).mean()) if len(places) else 0.0
 
 
 def _judged(check: CheckFile, result: dict[str, Any]) -> Iterator[Finding]:
