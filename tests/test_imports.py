@@ -51,7 +51,7 @@ ROWS = [
         "routes",
         "diagnosis",
     ],
-    ["cli", "text", "charts", "reporting", "gating", "jsonout", "__main__"],
+    ["cli", "text", "charts", "reporting", "gating", "testing", "jsonout", "__main__"],
 ]
 ROW = {room: number for number, rooms in enumerate(ROWS) for room in rooms}
 
