@@ -71,7 +71,9 @@ def with_rim(
         given = all(name in line_data for name in field.name.split(","))
         if field.location != "cell" or not given or not (role in _CONDITIONS or role.startswith("scalar:")):
             continue
-        lines = choose_fields({}, line_data, {role: field.name})[0][role]
+        # Alone, since other arrays of the file may claim other roles together.
+        alone = {name: line_data[name] for name in field.name.split(",")}
+        lines = choose_fields({}, alone, {role: field.name})[0][role]
         values = in_plane(role, lines)
         rim = np.full((len(mesh.boundary.edges), *field.values.shape[1:]), np.nan)
         believed = []

@@ -38,6 +38,7 @@ ROWS = [
     [
         "checkfile",
         "inspection",
+        "starting",
         "demo",
         "series",
         "timeweights",
