@@ -112,6 +112,24 @@ TERMS: dict[str, Page] = {
         "DIR: every figure as PNG and SVG. --vtk DIR: surfaces with flux and band densities (VTP), cells "
         "with their imbalance, degrees and shares inside (VTU). Exit status: that of the verdict.",
     ),
+    "gate": Page(
+        "Everything that check files ask for, each in a process of its own: every row's verdict, every "
+        "[[expect]], the [baseline]. Without a component or a method, an [[expect]] is about each component, "
+        "each route (every control surface of one). Limits are taken as written; a row whose imbalance, "
+        "imbalance_percent or verdict an [[expect]] names is judged by that instead of its verdict.\n"
+        "A number has drifted from the baseline if it changed by more than tolerance_percent (of the row's "
+        "scale; of the size of the force; of that at its arm for a moment) and by more than the bands: on "
+        "the same mesh (equal digest) errors of sampling are common to both runs, so only rounding counts; "
+        "on another mesh the sampling bands of both are added.\n"
+        "Several files or steps are snapshots, and every one is judged.",
+        "A pipeline needs a yes or no. What is missing is never a yes: a file, a field, a surface, a row, a "
+        "number, a baseline of another surface, mesh frame or unit, a process that died.",
+        "fvcheck gate check.toml, or several, or a pattern; --update-baseline writes all baselines or none; "
+        "--junit, --markdown, --json PATH; --workers N; --no-diagnosis leaves out why a row is open. "
+        "To begin: fvcheck inspect FILE --start-check CHECK.toml. In pytest: fvcheck.testing.\n"
+        "Exit status: the worst, 2 (could not be checked) before 1 (missed, open, drift) before 3 before 0. "
+        "In JUnit: error, failure, skipped, none.",
+    ),
     "exit": Page(
         "0: closed, or nothing to judge. 1: open. 2: the command, check file or data cannot be used. "
         "3: undecided or mesh-limited.",
