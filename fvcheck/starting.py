@@ -239,7 +239,7 @@ def _limits() -> list[str]:
         "# [[expect]]                 # for fvcheck gate; on a surface's law, or on a body",
         '# surface = "domain"',
         '# law = "mass"',
-        "# imbalance_percent = { min = -0.5, max = 0.5 }",
+        "# imbalance_percent = { max = 0.5 }   # in size",
         "",
         "# [baseline]                 # fvcheck gate --update-baseline writes it",
         '# file = "baseline.json"',

@@ -105,6 +105,29 @@ def test_a_planted_mass_source_of_half_a_percent_is_found(tmp_path):
     assert row["law"] == "mass" and row["imbalance_percent"] == pytest.approx(0.0244 + 0.5, abs=0.02)
 
 
+def test_a_planted_mass_sink_is_no_better_than_a_source(tmp_path):
+    # A maximum alone limits the size of an imbalance, whatever its sign.
+    text = DEMO.replace("imbalance_percent = { max = 0.5 }", "imbalance_percent = { max = 0.3 }")
+    path = check_file(tmp_path, text)
+    assert judged(path).status == 0
+
+    def edit(name, centres, values):
+        ramp = np.clip((centres[:, 0] - 0.021) / 0.003, 0, 1)
+        return values * (1 - 0.005 * ramp)[:, None] if name == "U" else values
+
+    change(tmp_path / "demo-coarse.vtu", edit)
+    found = judged(path)
+    assert found.status == 1
+    finding = said(found)["[[expect]] 2: channel section, mass: imbalance_percent"]
+    assert "at most 0.3 in size" in finding.message and finding.value < -0.4
+
+
+def test_a_minimum_alone_does_not_excuse_an_open_row(tmp_path):
+    text = DEMO + '[[expect]]\nsurface = "around the bar"\nlaw = "heat"\nimbalance_percent = { min = -90.0 }'
+    found = judged(check_file(tmp_path, text, export="demo-coarse-0020.vtu"))
+    assert "around the bar, heat" in said(found)
+
+
 def test_a_re_meshed_equal_run_does_not_fail(tmp_path):
     # The meshes differ by a factor of two in cell size; the demo's own file says that the coarse run
     # is 0.3 % low in drag and 2.4 % low in lift, so tolerances of some percent are sensible.

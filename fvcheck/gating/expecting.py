@@ -14,7 +14,8 @@ if TYPE_CHECKING:
 
 Result = Mapping[str, Any]
 
-_JUDGED_BY_HAND = ("imbalance", "imbalance_percent")
+_SIGNED = {"imbalance", "imbalance_percent"}
+"""Numbers of either sign of which a ``max`` alone limits the size: a deficit is no better than a surplus."""
 
 
 def row_label(row: Mapping[str, Any]) -> str:
@@ -38,11 +39,15 @@ def estimate_label(estimate: Mapping[str, Any]) -> str:
 
 
 def verdicts(check: CheckFile, result: Result, state: str = "") -> list[Finding]:
-    """Every row's verdict, but of those rows whose imbalance or verdict an [[expect]] speaks of."""
+    """Every row's verdict, unless an [[expect]] names that verdict or bounds the imbalance."""
     spoken_of = {
         (e.surface, e.law, e.component)
         for e in check.expect
-        if e.verdict is not None or any(key in e.limits for key in _JUDGED_BY_HAND)
+        if e.verdict is not None
+        or any(
+            e.limits[key].max is not None or e.limits[key].value is not None
+            for key in _SIGNED & e.limits.keys()
+        )
     }
     out = []
     for ledger in result["surfaces"]:
@@ -129,9 +134,10 @@ def _limits(
             message = f"there is no {quantity}, expected is {told(limit)}"
             yield f"{name}: {quantity}", MISSED, message + (f": {why}" if why else ""), None
             continue
-        kept = limit.holds(value)
+        size_only = quantity in _SIGNED and limit.min is None and limit.value is None
+        kept = limit.holds(abs(value) if size_only else value)
         message = f"{quantity} is {value:.6g} {unit_of_it}".rstrip()
-        message += f", {'as' if kept else 'not as'} expected: {told(limit)}"
+        message += f", {'as' if kept else 'not as'} expected: {told(limit)}{' in size' if size_only else ''}"
         yield f"{name}: {quantity}", PASSED if kept else MISSED, message, value
 
 

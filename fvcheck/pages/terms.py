@@ -115,8 +115,9 @@ TERMS: dict[str, Page] = {
     "gate": Page(
         "Everything that check files ask for, each in a process of its own: every row's verdict, every "
         "[[expect]], the [baseline]. Without a component or a method, an [[expect]] is about each component, "
-        "each route (every control surface of one). Limits are taken as written; a row whose imbalance, "
-        "imbalance_percent or verdict an [[expect]] names is judged by that instead of its verdict.\n"
+        "each route (every control surface of one). Limits are taken as written, but a max alone "
+        "limits the size of an imbalance. A row whose verdict an [[expect]] names, or whose imbalance it "
+        "bounds, is judged by that instead of its verdict.\n"
         "A number has drifted from the baseline if it changed by more than tolerance_percent (of the row's "
         "scale; of the size of the force; of that at its arm for a moment) and by more than the bands: on "
         "the same mesh (equal digest) errors of sampling are common to both runs, so only rounding counts; "
