@@ -1,7 +1,10 @@
 """The gate: planted errors are found, equal runs pass, and nothing that is missing ever passes."""
 
 import json
+import os
 import shutil
+import subprocess
+import sys
 from pathlib import Path
 from xml.etree import ElementTree as Tree
 
@@ -175,6 +178,15 @@ def test_what_is_missing_is_a_failure(what, tmp_path):
     assert any(words in finding.message for _, finding in found.failures), found.failures
 
 
+def test_a_law_on_request_is_balanced_where_it_is_expected(tmp_path):
+    # Default surfaces, and a law that is not among the default ones.
+    text = DEMO.split("[[surface]]")[0] + '[[expect]]\nsurface = "domain"\nlaw = "angular-momentum"\n'
+    found = judged(check_file(tmp_path, text + "inflow = { min = 0.0 }"))
+    names = [finding.name for finding in found.outcomes[0].findings if finding.kind == "expectation"]
+    assert names == ["[[expect]] 1: domain, angular-momentum: inflow"]
+    assert found.outcomes[0].findings[-1].passed
+
+
 def test_a_check_file_that_is_missing_is_a_failure(tmp_path):
     found = judged(tmp_path / "gone.toml")
     assert found.status == 2 and "no such check file" in found.failures[0][1].message
@@ -230,7 +242,9 @@ def test_a_baseline_of_something_else_is_a_failure(what, tmp_path):
     assert judged(path).status == status
 
 
-@pytest.mark.parametrize("text", ["", "{", "[]", '{"schema": NaN}', "\x00", "[" * 100_000])
+@pytest.mark.parametrize(
+    "text", ["", "{", "[]", '{"schema": NaN}', '{"schema": 1e999}', "\x00", "[" * 100_000]
+)
 def test_a_baseline_that_cannot_be_read_is_a_failure(text, tmp_path):
     path = check_file(tmp_path, DEMO + BASELINE)
     (tmp_path / "baseline.json").write_text(text, encoding="utf-8")
@@ -267,6 +281,21 @@ def test_a_crash_fails_its_own_case_and_no_other(work, tmp_path):
     found = fvcheck.gate(names, workers=2, diagnosis=False, work=work)
     assert [outcome.status for outcome in found.outcomes] == [2, 0, 0]
     assert "died" in found.failures[0][1].message or "KeyError" in found.failures[0][1].message
+
+
+def test_a_plain_script_may_call_the_gate(tmp_path):
+    # No guard around the call, and once from standard input: nothing of the script runs twice.
+    code = f"import fvcheck; print('once'); print(fvcheck.gate({str(check_file(tmp_path))!r}).status)"
+    (tmp_path / "script.py").write_text(code, encoding="utf-8")
+    for arguments, fed in (([str(tmp_path / "script.py")], ""), (["-"], code)):
+        done = subprocess.run(
+            [sys.executable, *arguments],
+            input=fed,
+            capture_output=True,
+            text=True,
+            env=os.environ | {"PYTHONPATH": str(ROOT)},
+        )
+        assert done.stdout.split() == ["once", "0"], done.stderr
 
 
 def test_the_worst_of_all_cases_is_the_exit_status(tmp_path, capsys):

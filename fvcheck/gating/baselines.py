@@ -41,7 +41,7 @@ def read_baseline(path: Path) -> dict[str, Any]:
             raise SetupError("there is no baseline", where=path, mend="Write it with --update-baseline.")
         if path.stat().st_size > MAX_BYTES:
             raise SetupError("the file is too large for a result file", where=path)
-        data = json.loads(path.read_text(encoding="utf-8"), parse_constant=_refuse)
+        data = json.loads(path.read_text(encoding="utf-8"), parse_constant=_refuse, parse_float=_finite)
     except (OSError, ValueError, RecursionError) as error:
         raise SetupError(f"the baseline cannot be read: {error}", where=path) from None
     if not isinstance(data, dict) or data.get("schema") != SCHEMA:
@@ -52,7 +52,13 @@ def read_baseline(path: Path) -> dict[str, Any]:
 
 
 def _refuse(word: str) -> float:
-    raise ValueError(f"{word} is no JSON")
+    raise ValueError(f"{word} is no number of a result file")
+
+
+def _finite(word: str) -> float:
+    # 1e999 is JSON, but no number of ours; an infinite scale would allow any drift.
+    value = float(word)
+    return value if math.isfinite(value) else _refuse(word)
 
 
 def drifts(result: Result, baseline: Result, tolerance_percent: float) -> list[Finding]:

@@ -147,10 +147,10 @@ def mesh_digest(mesh: Mesh) -> str:
 
 def _add_laws(check: CheckFile, settings: Settings, flow: Flow, data: dict[str, Any]) -> None:
     """Rows of laws that are expected and not among the default ones; left out where they cannot be had."""
-    from fvcheck.balancing import balance
+    from fvcheck.balancing import balance, default_surfaces
     from fvcheck.ledger import ledger_dict
 
-    surfaces = {one.name: one for one in settings.surfaces or ()}
+    surfaces = {one.name: one for one in settings.surfaces or default_surfaces(flow)}
     for ledger in data["surfaces"]:
         have = {row["law"] for row in ledger["laws"]}
         wanted = [e.law for e in check.expect if e.surface == ledger["name"] and e.law not in have]

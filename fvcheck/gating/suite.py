@@ -2,14 +2,18 @@
 
 from __future__ import annotations
 
+import json
 import os
+import pickle
+import subprocess
+import sys
+import time
 from collections.abc import Callable, Iterable, Iterator, Sequence
-from concurrent.futures import ProcessPoolExecutor, as_completed
-from concurrent.futures.process import BrokenProcessPool
+from concurrent.futures import ThreadPoolExecutor, as_completed
 from dataclasses import dataclass
 from glob import glob
-from multiprocessing import get_context
 from pathlib import Path
+from tempfile import TemporaryDirectory
 from typing import Any
 
 from fvcheck.errors import FvcheckError, SetupError
@@ -23,6 +27,17 @@ from fvcheck.version import __version__
 from fvcheck.wholefile import write_whole
 
 Work = Callable[..., Outcome]
+
+# Not multiprocessing: its processes run the caller's script once more, and one that dies breaks the pool.
+_CHILD = """
+import json, pickle, sys
+told = json.loads(sys.argv[1])
+sys.path[:] = told["path"]
+from importlib import import_module
+outcome = getattr(import_module(told["module"]), told["name"])(*told["arguments"])
+with open(told["out"], "wb") as stream:
+    pickle.dump(outcome, stream)
+"""
 
 
 @dataclass(frozen=True)
@@ -119,10 +134,9 @@ def gate(
         them; all or, where any case could not be run, none
     diagnosis : with what `fvcheck.diagnose` says of open rows
     on_case : called with each outcome and the number of all, for a progress bar
-    work : what is run for each check file
+    work : what is run for each check file, a function of a module
 
-    Several processes start fresh interpreters: a script that calls this keeps
-    the call under ``if __name__ == "__main__":``. Raises SetupError for a
+    Raises SetupError for a
     pattern that meets nothing, and for baselines that cannot be written; what
     fails within a case is a finding of its outcome.
     """
@@ -163,47 +177,44 @@ def check_files(paths: str | Path | Iterable[str | Path]) -> list[str]:
 def _run(
     named: Sequence[str], options: tuple[bool, bool], workers: int, work: Work
 ) -> Iterator[tuple[str, Outcome]]:
+    """Outcomes as they come."""
     if workers == 0:
         yield from ((path, work(path, *options)) for path in named)
         return
-    left = []
-    for path, outcome in _pool(named, options, workers, work):
-        if outcome is None:
-            left.append(path)
-        else:
-            yield path, outcome
-    # A dead process takes its pool with it: those left run one by one, so that only the culprit fails.
-    for path in left:
-        for _, outcome in _pool([path], options, 1, work):
-            yield path, outcome or failed(path, "the process that ran this case died (crash or memory)")
-
-
-def _pool(
-    named: Sequence[str], options: tuple[bool, bool], workers: int, work: Work
-) -> Iterator[tuple[str, Outcome | None]]:
-    """Outcomes as they come; None where the pool broke before there was one."""
-    with ProcessPoolExecutor(workers, mp_context=get_context("spawn")) as pool:
-        jobs = {}
-        unsent = []
-        for path in named:
-            try:
-                jobs[pool.submit(work, path, *options)] = path
-            except BrokenProcessPool:
-                unsent.append(path)
+    with ThreadPoolExecutor(workers) as threads:
+        jobs = {threads.submit(_in_process, path, options, work): path for path in named}
         try:
             for job in as_completed(jobs):
-                try:
-                    outcome = job.result()
-                except BrokenProcessPool:
-                    yield jobs[job], None
-                except Exception as error:  # whatever a case raises is the outcome of that case
-                    yield jobs[job], failed(jobs[job], f"{type(error).__name__}: {error}")
-                else:
-                    yield jobs[job], outcome
+                yield jobs[job], job.result()
         finally:
-            pool.shutdown(wait=True, cancel_futures=True)
-        for path in unsent:
-            yield path, None
+            threads.shutdown(wait=True, cancel_futures=True)
+
+
+def _in_process(path: str, options: tuple[bool, bool], work: Work) -> Outcome:
+    """What ``work`` says in a fresh interpreter; a failure where that ends without a word."""
+    start = time.perf_counter()
+    with TemporaryDirectory(prefix="fvcheck-") as folder:
+        out = Path(folder) / "outcome"
+        told = {
+            "path": sys.path,
+            "module": work.__module__,
+            "name": work.__name__,
+            "arguments": [path, *options],
+            "out": str(out),
+        }
+        done = subprocess.run(
+            [sys.executable, "-c", _CHILD, json.dumps(told)],
+            stdin=subprocess.DEVNULL,
+            stdout=subprocess.DEVNULL,
+            stderr=subprocess.PIPE,
+            check=False,
+        )
+        if done.returncode == 0 and out.is_file():
+            return pickle.loads(out.read_bytes())  # our own, from a folder of our own
+    said = done.stderr.decode("utf-8", "replace").strip().splitlines()
+    ended = f"signal {-done.returncode}" if done.returncode < 0 else f"exit status {done.returncode}"
+    text = f"the process that ran this case died ({ended})" + (f": {said[-1]}" if said else "")
+    return failed(path, text, time.perf_counter() - start)
 
 
 def _write_baselines(outcomes: Sequence[Outcome]) -> tuple[str, ...]:
