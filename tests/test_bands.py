@@ -74,14 +74,14 @@ def test_where_the_degree_fell_the_larger_step_counts():
 
 def test_what_cubics_differ_from_one_another_takes_the_place_of_two_of_three_parts():
     first, second, third = arrays((3, 0.5), (-3, -0.5), (3, 0.5))
-    band = bands(first, second, third, 0.0, cross=third[:2] + [0.1, -0.1])
+    band = bands(first, second, third, 0.0, cross=third[:2] + np.array([0.1, -0.1]))
     # once 0.5 at the first two, three times at the last, which has no second opinion; 3 √(2 · 0.01)
     assert band.sampling == pytest.approx(np.sqrt(2 * 0.25 + 9 * 0.25) + 3 * np.sqrt(0.02))
 
 
 def test_where_values_are_extrapolated_both_differences_count_twice():
     first, second, third = arrays((4, 0.5), (-4, -0.25))
-    band = bands(first, second, third, 0.0, None, np.array([True, True]), third + [0.125, -0.25])
+    band = bands(first, second, third, 0.0, None, np.array([True, True]), third + np.array([0.125, -0.25]))
     assert band.sampling == pytest.approx(2 * (0.5 + 0.25 + 0.125 + 0.25))
 
 

@@ -11,9 +11,15 @@ import atexit
 import os
 import shutil
 import tempfile
+from typing import Any
 
 import numba
 from numba import njit
+
+
+def _config() -> Any:
+    """numba's settings, whose names its types do not list."""
+    return numba.config
 
 
 def settle() -> None:
@@ -23,12 +29,13 @@ def settle() -> None:
     # One's own, since what lies in it is run: a shared place could hold anything.
     folder = tempfile.mkdtemp(prefix="fvcheck-")
     atexit.register(shutil.rmtree, folder, ignore_errors=True)
-    os.environ["NUMBA_CACHE_DIR"] = numba.config.CACHE_DIR = folder
+    os.environ["NUMBA_CACHE_DIR"] = folder
+    _config().CACHE_DIR = folder
 
 
 def kept() -> bool:
     """Whether the loops of this process will be there for the next."""
-    return not os.path.basename(numba.config.CACHE_DIR or "").startswith("fvcheck-")
+    return not os.path.basename(_config().CACHE_DIR or "").startswith("fvcheck-")
 
 
 def cold() -> bool:
@@ -36,7 +43,7 @@ def cold() -> bool:
     from fvcheck.kernels import fits
 
     folder = fits.fit_points.stats.cache_path
-    stem = f"{fits.__name__.rpartition('.')[2]}.{fits.fit_points.__name__}-"
+    stem = f"{fits.__name__.rpartition('.')[2]}.fit_points-"
     return not any(name.startswith(stem) for name in _names(folder))
 
 
