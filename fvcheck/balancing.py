@@ -13,6 +13,7 @@ from fvcheck.flow import Flow
 from fvcheck.hints import Hint
 from fvcheck.laws import Law, MissingData, find_law, law_names
 from fvcheck.ledger import Ledger, Result, Row, case_dict
+from fvcheck.many import sampled_volumes
 from fvcheck.overlay.overlay import lay_over
 from fvcheck.plausible import field_hints, force_hints, still_hints
 from fvcheck.sources import Source
@@ -102,10 +103,10 @@ def balance_all(
 ) -> Result:
     """Ledgers of several control surfaces; by default the whole domain and one around each body."""
     chosen = list(surfaces) if surfaces else default_surfaces(flow)
-    names = list(laws) if laws is not None else None
+    wanted = choose_laws(flow, laws)
     ledgers = [
-        balance(flow, surface, names, tolerance=tolerance, scale=scale, sources=sources, about=about)
-        for surface in chosen
+        ledger_of(volume, wanted, tolerance, scale, sources, strict=laws is not None)
+        for volume in sampled_volumes(flow, chosen, wanted, about)
     ]
     found = (hint for ledger in ledgers for hint in ledger.hints)
     hints = dict.fromkeys([*flow.hints, *field_hints(flow), *found])

@@ -342,12 +342,20 @@ class CheckFile(Table):
         yield from found
 
     def control_surfaces(self) -> tuple[ControlSurface, ...]:
-        """The [[surface]] entries drawn, each with a name of its own; SurfaceError names the entry."""
+        """The [[surface]] entries drawn, each with a name of its own; SurfaceError names the entry.
+
+        A family (`fvcheck.surfaces.family`) gives all its members.
+        """
         from fvcheck.surfaces import ControlSurface, name_all
+        from fvcheck.surfaces.family import is_family, parse_family
 
         drawn = []
         for number, entry in enumerate(self.surface, start=1):
             try:
+                if is_family(entry.shape):
+                    shape = f"{entry.name}={entry.shape}" if entry.name else entry.shape
+                    drawn += parse_family(shape, base=self.folder).surfaces
+                    continue
                 surface = ControlSurface.parse(entry.shape, base=self.folder)
                 drawn.append(replace(surface, name=entry.name) if entry.name else surface)
             except FvcheckError as error:

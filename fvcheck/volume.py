@@ -75,11 +75,13 @@ class SampledVolume:
         unsteady: bool = False,
         point_velocity: Array | None = None,
         about: tuple[float, float] = (0.0, 0.0),
+        sampled: bool = True,
     ) -> None:
         """``unsteady``: contents are wanted, and what is not drawn moves with the mesh.
 
         point_velocity : (n, 2) of the mesh's points, None for a mesh at rest
         about : the point that angular momentum counts from
+        sampled : else `sample` is to be called with fits about all of ``centres``
         """
         self.flow, self.surface, self.overlay, self.about = flow, surface, overlay, about
         self.axis = flow.case.axis
@@ -102,15 +104,16 @@ class SampledVolume:
         centres = np.unique(overlay.triangle)
         if self.area_triangle is not None:
             centres = np.unique(np.concatenate([centres, self.area_triangle.ravel()]))
-        self._centres = centres
-        self._take(flow, compile_probe(flow, centres))
+        self.centres = centres
+        if sampled:
+            self.sample(flow, compile_probe(flow, centres))
 
     def with_flow(self, flow: Flow) -> SampledVolume:
         """The same volume and fits with the data of another flow over the same mesh."""
         if flow.mesh is not self.flow.mesh:
             raise ValueError("the flow is on another mesh")
         other = copy.copy(self)
-        other._take(flow, self.probe.refilled(flow) or compile_probe(flow, self._centres))
+        other.sample(flow, self.probe.refilled(flow) or compile_probe(flow, self.centres))
         return other
 
     def _border_velocity(self, unsteady: bool, point_velocity: Array | None) -> Array | None:
@@ -128,8 +131,8 @@ class SampledVolume:
             out[~self.drawn] = np.einsum("qk,qki->qi", share, point_velocity[corners])
         return out
 
-    def _take(self, flow: Flow, probe: Probe) -> None:
-        """Sample a flow."""
+    def sample(self, flow: Flow, probe: Probe) -> None:
+        """Sample a flow by fits about ``centres`` and others."""
         self.flow, self.probe = flow, probe
         self.line = self.probe.samples(self.triangle, self.places, self.line_group, cross=True)
         self.area = (

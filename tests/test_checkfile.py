@@ -312,3 +312,20 @@ def test_any_value_in_any_place_gives_a_check_file_or_a_one_line_error(tmp_path_
 def test_importing_the_reader_does_not_import_the_validator():
     code = "import sys, fvcheck.checkfile; sys.exit('pydantic' in sys.modules)"
     assert subprocess.run([sys.executable, "-c", code], check=False).returncode == 0
+
+
+def test_a_family_in_a_check_file_gives_its_members(tmp_path):
+    path = tmp_path / "check.toml"
+    path.write_text(
+        '[[surface]]\nname = "station"\nshape = "line(1 .. 2 0, 1 .. 2 1, 3)"\n'
+        '[[surface]]\nshape = "circle(0, 0, 1 .. 3, 2)"\n'
+    )
+    names = [surface.name for surface in load(path).control_surfaces()]
+    assert names == ["station@1", "station@1.5", "station@2", "circle@1", "circle@3"]
+
+
+def test_a_family_that_cannot_be_drawn_is_named_with_its_entry(tmp_path):
+    path = tmp_path / "check.toml"
+    path.write_text('[[surface]]\nshape = "circle(0, 0, 1 .. 3)"\n')
+    with pytest.raises(SurfaceError, match=r"how many members.*check.toml, \[\[surface\]\] 1: "):
+        load(path).control_surfaces()

@@ -29,6 +29,7 @@ ROWS = [
         "verdict",
         "entries",
         "volume",
+        "many",
         "balancing",
         "ports",
         "plausible",

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Mapping
 from dataclasses import dataclass, field, replace
+from functools import cached_property
 
 import numpy as np
 
@@ -80,6 +81,7 @@ class Probe:
     groups: tuple[_Group, ...]
     vectors: frozenset[str]
     _coefficients: dict[tuple[int, int], Array] = field(default_factory=dict)
+    _ranges: dict[int, tuple[Array, Array]] = field(default_factory=dict)
 
     def raw(self, degree: int, triangle: Array, places: Array) -> Raw:
         """Values (q, f), gradients (q, f, 2), disagreement (q, f) of each group of fields by one degree."""
@@ -149,9 +151,10 @@ class Probe:
         from fvcheck.kernels.neighbours import corner_range
 
         out = []
-        for group in self.groups:
-            low, high = group.sampler.ranges(group.data, group.known)
-            out.append(corner_range(low, high, group.sampler.centre_of, triangle))
+        for number, group in enumerate(self.groups):
+            if number not in self._ranges:
+                self._ranges[number] = group.sampler.ranges(group.data, group.known)
+            out.append(corner_range(*self._ranges[number], group.sampler.centre_of, triangle))
         return out
 
     def _supported(self, raw: Raw, triangle: Array, cell: Array) -> tuple[Array, Array]:
@@ -186,12 +189,10 @@ class Probe:
 
         Each value moves by up to the precision it is stored with (`stored_precision`).
         """
-        rng = np.random.default_rng(seed)
         groups = []
-        for group in self.groups:
-            precision = np.array([stored_precision(column) for column in group.data.T])
-            change = 1.0 + rng.uniform(-1.0, 1.0, group.data.shape) * precision
-            groups.append(replace(group, data=group.data * change))
+        for number, group in enumerate(self.groups):
+            by = np.array(self._precisions[number]) * _at_random(seed, number, group)
+            groups.append(replace(group, data=group.data * (1.0 + by)))
         return Probe(tuple(groups), self.vectors)
 
     def refilled(self, flow: Flow) -> Probe | None:
@@ -212,7 +213,12 @@ class Probe:
     @property
     def precision(self) -> float:
         """The coarsest relative precision among the fields."""
-        return max(stored_precision(c) for group in self.groups for c in group.data.T)
+        return max(precision for group in self._precisions for precision in group)
+
+    @cached_property
+    def _precisions(self) -> list[list[float]]:
+        """Of each column of each group."""
+        return [[stored_precision(column) for column in group.data.T] for group in self.groups]
 
 
 def compile_probe(flow: Flow, centres: Array, roles: tuple[str, ...] | None = None) -> Probe:
@@ -320,6 +326,21 @@ def _check_finite(flow: Flow, role: str, local: Array, sampler: Sampler) -> None
         where=f"the first at x {place[0]:.6g}, y {place[1]:.6g}",
         mend="Keep the surface away from them, or export the field again.",
     )
+
+
+def _at_random(seed: int, number: int, group: _Group) -> Array:
+    """Numbers from -1 to 1 in the shape of a group's data (SplitMix64, Steele, Lea & Flood 2014).
+
+    They depend on the datum, not on which others are with it: a surface taken
+    together with others has the rounding band that it has alone.
+    """
+    column = np.arange(group.data.shape[1], dtype=np.uint64)
+    stream = np.uint64((seed * 0x9E3779B97F4A7C15 + (number << 56)) % 2**64)
+    x = (group.sampler.sources.astype(np.uint64)[:, None] << np.uint64(6)) + column + stream
+    x = x * np.uint64(0x9E3779B97F4A7C15)
+    x = (x ^ (x >> np.uint64(30))) * np.uint64(0xBF58476D1CE4E5B9)
+    x = (x ^ (x >> np.uint64(27))) * np.uint64(0x94D049BB133111EB)
+    return (x ^ (x >> np.uint64(31))) / 2.0**63 - 1.0
 
 
 def stored_precision(values: Array) -> float:

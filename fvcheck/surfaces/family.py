@@ -16,8 +16,8 @@ from fvcheck.errors import SurfaceError
 from fvcheck.surfaces.spelling import parse
 from fvcheck.surfaces.surface import ControlSurface
 
-MOST = 200
-"""Members of a family; more than a plot can show."""
+MOST = 2000
+"""Members of a family; far more than a plot can show."""
 
 FORM = "KIND(…, a .. b, …, COUNT), such as around(pier, 0.2 .. 1.0, 9) or line(1 .. 3 0, 1 .. 3 1, 5)"
 
