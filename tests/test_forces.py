@@ -242,7 +242,7 @@ def test_a_family_runs_its_ranges_together_in_equal_steps():
 
 
 @pytest.mark.parametrize(
-    "text", ["around(b, 1)", "around(b, 1 .. 2)", "around(b, 1 .. 2, 1)", "around(b, 1 .. 2, 201)"]
+    "text", ["around(b, 1)", "around(b, 1 .. 2)", "around(b, 1 .. 2, 1)", "around(b, 1 .. 2, 2001)"]
 )
 def test_a_family_written_otherwise_is_an_error_that_shows_the_form(text):
     with pytest.raises(SurfaceError, match=r"\.\."):
