@@ -31,6 +31,7 @@ class Field:
     slots : which of the three parts the file gives; the others are zero
     rim : of a cell field, values (e,) or (e, 3) that the file gives on the edges
         of the domain boundary, NaN where it gives none of its own
+    rows : (k,), increasing, which points or cells ``values`` are of; None for all
     """
 
     name: str
@@ -38,6 +39,16 @@ class Field:
     values: Array
     slots: tuple[int, ...] = ()
     rim: Array | None = None
+    rows: Array | None = None
+
+    def at(self, numbers: Array) -> Array:
+        """Values at points or cells of the mesh; IndexError for one that the field was not read at."""
+        if self.rows is None:
+            return self.values[numbers]
+        place = np.minimum(np.searchsorted(self.rows, numbers), len(self.rows) - 1)
+        if not np.array_equal(self.rows[place], numbers):
+            raise IndexError(f"{self.name} was read at {len(self.rows)} {self.location}s only")
+        return self.values[place]
 
 
 @dataclass(frozen=True)

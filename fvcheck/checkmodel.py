@@ -349,7 +349,7 @@ class CheckFile(Table):
         from fvcheck.surfaces import ControlSurface, name_all
         from fvcheck.surfaces.family import is_family, parse_family
 
-        drawn = []
+        drawn: list[ControlSurface] = []
         for number, entry in enumerate(self.surface, start=1):
             try:
                 if is_family(entry.shape):

@@ -76,6 +76,7 @@ class Evolution:
         self._settings = (tolerance, scale, sources)
         self._told_scale = set(scale)
         self._volume: SampledVolume | None = None
+        self._moved = False  # whether the mesh moved when it was compiled
         self._laws: list[Law] = []
         self._start: tuple[ControlSurface, float] | None = None
         self.times: list[float] = []
@@ -108,6 +109,13 @@ class Evolution:
                 del self._contents[old]
         return ledger
 
+    def needed(self) -> dict[str, Array | None] | None:
+        """`SampledVolume.needed` of the volume compiled last; None before, and for one that moves."""
+        moves = self._moved or (self.unsteady and self.surface.motion is not None)
+        if self._volume is None or moves:
+            return None
+        return self._volume.needed()
+
     def shorten(self, count: int) -> None:
         """Forget all but the first ``count`` snapshots: the next one failed on another surface."""
         del self.times[count:], self.bare[count:], self._levels[count:]
@@ -116,7 +124,9 @@ class Evolution:
     def _sample(self, flow: Flow, point_velocity: Array | None) -> SampledVolume:
         old, surface = self._volume, self._placed(flow)
         unmoved = surface.motion is None or not self.unsteady
-        if old is not None and flow.mesh is old.flow.mesh and unmoved and point_velocity is None:
+        at_rest = unmoved and point_velocity is None and not self._moved
+        self._moved = point_velocity is not None
+        if old is not None and flow.mesh is old.flow.mesh and at_rest:
             self._volume = old.with_flow(flow)
         else:
             self.recompiled += 1

@@ -45,7 +45,7 @@ def read_fields(
             mend="Name them with --field velocity=NAME …",
         )
     for role, field in chosen.items():
-        chosen[role] = replace(field, values=_in_plane(role, field, assembly))
+        chosen[role] = replace(field, values=in_plane(role, field, assembly))
     if not any(field.location == "cell" for field in chosen.values()):
         return chosen, hints
     edges, lines = line_cells(pieces, assembly)
@@ -54,12 +54,12 @@ def read_fields(
         mesh,
         edges,
         _joined(pieces, "cell_data", lines),
-        lambda role, field: _in_plane(role, field, assembly),
+        lambda role, field: in_plane(role, field, assembly),
     )
     return chosen, hints + more
 
 
-def _in_plane(role: str, field: Field, assembly: Assembly) -> Array:
+def in_plane(role: str, field: Field, assembly: Assembly) -> Array:
     """Values of a field; of a vector the components (n, 3) along the axes of the plane."""
     if role.removeprefix("rate:") not in VECTORS:
         return field.values

@@ -166,6 +166,8 @@ def still_hints(volume: SampledVolume) -> list[Hint]:
     state = volume.line_state(BEST)
     if field is None or field.location != "cell" or field.rim is not None or state.viscosity is None:
         return []
+    if field.rows is not None:
+        return []  # the first snapshot has said it
     speed = np.hypot(*state.velocity[:, :2].T)
     u = np.asarray(field.values[:, :2], float)
     typical = float(np.sqrt(np.nanmean(np.sum(u**2, axis=1)))) if len(u) else 0.0

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import itertools
 import re
-from collections.abc import Iterable, Sequence
+from collections.abc import Iterable, Mapping, Sequence
 from dataclasses import dataclass, replace
 from pathlib import Path
 from typing import Any
@@ -14,10 +14,14 @@ import numpy as np
 from fvcheck.errors import FormatError, SetupError
 from fvcheck.flow import Flow, flow_of_export
 from fvcheck.hints import Hint
+from fvcheck.laterflow import later_flow
 from fvcheck.mesh.assemble import Assembly, assemble
+from fvcheck.mesh.mesh import Mesh
 from fvcheck.mesh.piece import Export, Piece
 
 Array = np.ndarray
+
+_LINE = 3  # VTK_LINE
 
 
 @dataclass(frozen=True)
@@ -39,8 +43,11 @@ class MeshKeeper:
     def __init__(self) -> None:
         self._digest = b""
         self._last: Assembly | None = None
+        self.lines = False
+        """Whether the last one has line cells, whose data count on the boundary."""
 
     def __call__(self, pieces: Sequence[Piece], **settings: Any) -> Assembly:
+        self.lines = any(bool((piece.types == _LINE).any()) for piece in pieces)
         digest = _digest(pieces, settings)
         if self._last is None or digest != self._digest:
             self._last, self._digest = assemble(pieces, **settings), digest
@@ -80,6 +87,7 @@ class Series:
         self.hints = tuple(hints)
         self._keeper = MeshKeeper()
         self._recent: dict[int, Flow] = {}
+        self._whole: tuple[Export, object, Flow] | None = None
 
     def __len__(self) -> int:
         return len(self.snapshots)
@@ -101,18 +109,44 @@ class Series:
         time = snapshot.time
         return int(time) if time is not None and float(time).is_integer() else snapshot.number
 
-    def flow(self, number: int) -> Flow:
+    def flow(self, number: int, needed: Mapping[str, Array | None] | None = None) -> Flow:
         """The flow of a snapshot; the mesh object is that of the one before where it has not changed.
+
+        needed : where only some rows are of use, which (`SampledVolume.needed`); the
+            flow may then hold these only, see `fvcheck.laterflow`
 
         Raises what `open_flow` does.
         """
-        if number not in self._recent:
-            snapshot = self.snapshots[number]
-            flow = flow_of_export(snapshot.export, step=snapshot.step, assembler=self._keeper, **self.reading)
-            flow = replace(flow, case=replace(flow.case, time=snapshot.time))
-            # Four neighbours are what the velocity of a moving mesh may look at.
-            self._recent = dict([*self._recent.items(), (number, flow)][-4:])
-        return self._recent[number]
+        if number in self._recent:
+            return self._recent[number]
+        snapshot = self.snapshots[number]
+        if needed is not None and self._known_mesh(number) is not None:
+            assert self._whole is not None
+            flow = later_flow(self._whole[2], snapshot.export, snapshot.step, needed)
+            if flow is not None:
+                return replace(flow, case=replace(flow.case, time=snapshot.time))
+        flow = flow_of_export(snapshot.export, step=snapshot.step, assembler=self._keeper, **self.reading)
+        flow = replace(flow, case=replace(flow.case, time=snapshot.time))
+        # Four neighbours are what the velocity of a moving mesh may look at.
+        self._recent = dict([*self._recent.items(), (number, flow)][-4:])
+        # Values that line cells give on the boundary are believed or not by the whole field.
+        judged = self._keeper.lines and any(field.location == "cell" for field in flow.fields.values())
+        layout = None if judged else _layout(snapshot)
+        self._whole = None if layout is None else (snapshot.export, layout, flow)
+        return flow
+
+    def mesh(self, number: int) -> Mesh:
+        """The mesh of a snapshot, without reading it where the file tells that it is the known one."""
+        if number in self._recent:
+            return self._recent[number].mesh
+        return self._known_mesh(number) or self.flow(number).mesh
+
+    def _known_mesh(self, number: int) -> Mesh | None:
+        """The mesh of the snapshot read whole last, if the file tells that this one has the same layout."""
+        snapshot = self.snapshots[number]
+        if self._whole is None or snapshot.export is not self._whole[0]:
+            return None
+        return self._whole[2].mesh if _layout(snapshot) == self._whole[1] else None
 
     def extended(self, snapshots: Sequence[Snapshot]) -> None:
         """Take more snapshots in, behind those that are there."""
@@ -122,6 +156,7 @@ class Series:
         """Take a snapshot out again."""
         self.snapshots = self.snapshots[:number] + self.snapshots[number + 1 :]
         self._recent.clear()
+        self._whole = None
 
     def point_velocity(self, number: int) -> Array | None:
         """(n, 2) velocity of the mesh's points, by three snapshots; None at rest, or for other cells."""
@@ -131,7 +166,7 @@ class Series:
         if times is None or len(self) < 2:
             return None
         near = range(len(self))[window(len(self), number, 3)]
-        meshes = [self.flow(k).mesh for k in near]
+        meshes = [self.mesh(k) for k in near]
         here = meshes[list(near).index(number)]
         same = [(k, mesh) for k, mesh in zip(near, meshes) if mesh is here or same_cells(mesh, here)]
         if len(same) < 2 or all(mesh is here for _, mesh in same):
@@ -139,6 +174,11 @@ class Series:
         steps = [k for k, _ in same]
         weights = rate_weights(times[steps], steps.index(number))
         return np.sum([w * mesh.points for w, (_, mesh) in zip(weights, same)], axis=0)
+
+
+def _layout(snapshot: Snapshot) -> object:
+    reader = snapshot.export.rows
+    return None if reader is None else reader.layout(snapshot.step)
 
 
 def same_cells(one: Any, other: Any) -> bool:

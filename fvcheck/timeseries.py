@@ -189,12 +189,12 @@ class Recorder:
     def take(self, look_ahead: bool = True) -> Entry:
         """The next snapshot. ``look_ahead``: those behind it may be read for the motion of the mesh."""
         number = self.taken
-        flow = self.series.flow(number)
-        if not self._evolutions:
-            self._start(flow)
         velocity = None
         if self.unsteady and len(self.series) > 1 and (look_ahead or number > 0):
-            velocity = self._velocity(number, flow)
+            velocity = self._velocity(number)
+        flow = self.series.flow(number, self._needed() if velocity is None else None)
+        if not self._evolutions:
+            self._start(flow)
         if self.unsteady and any(role.startswith("rate:") for role in flow.fields):
             self._note(
                 Hint("rates-over-series", "rates of change are in the export: storage is taken from them")
@@ -220,7 +220,22 @@ class Recorder:
             Evolution(surface, self._laws, unsteady=self.unsteady, **self._settings) for surface in surfaces
         ]
 
-    def _velocity(self, number: int, flow: Flow) -> Array | None:
+    def _needed(self) -> dict[str, Array | None] | None:
+        """What all volumes together take from a flow; None where one must see all of it."""
+        out: dict[str, Array | None] = {}
+        for evolution in self._evolutions:
+            needed = evolution.needed()
+            if needed is None:
+                return None
+            for location, rows in needed.items():
+                known = out.get(location, rows)
+                if known is rows or known is None or rows is None:
+                    out[location] = rows if known is rows else None
+                else:
+                    out[location] = np.union1d(known, rows)
+        return out or None
+
+    def _velocity(self, number: int) -> Array | None:
         velocity = self.series.point_velocity(number)
         if velocity is not None:
             self._note_motion()
@@ -231,10 +246,10 @@ class Recorder:
 
     def _note_mesh(self, number: int, flow: Flow) -> None:
         moved = any(evolution.surface.motion is not None for evolution in self._evolutions)
-        mesh_changed = number > 0 and not same_cells(flow.mesh, self.series.flow(number - 1).mesh)
+        mesh_changed = number > 0 and not same_cells(flow.mesh, self.series.mesh(number - 1))
         if mesh_changed:
             self._note(Hint("mesh-changes", f"the mesh of snapshot {number} is another one than that before"))
-        elif not moved and flow.mesh is not self.series.flow(number - 1).mesh:
+        elif not moved and flow.mesh is not self.series.mesh(number - 1):
             self._note_motion()
 
     def add_hint(self, hint: Hint) -> None:

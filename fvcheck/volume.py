@@ -105,6 +105,7 @@ class SampledVolume:
         if self.area_triangle is not None:
             centres = np.unique(np.concatenate([centres, self.area_triangle.ravel()]))
         self.centres = centres
+        self._needed: dict[str, Array | None] | None = None
         if sampled:
             self.sample(flow, compile_probe(flow, centres))
 
@@ -115,6 +116,22 @@ class SampledVolume:
         other = copy.copy(self)
         other.sample(flow, self.probe.refilled(flow) or compile_probe(flow, self.centres))
         return other
+
+    def needed(self) -> dict[str, Array | None]:
+        """Location -> the points or cells whose data the volume takes from a flow; None for all."""
+        if self._needed is not None:
+            return self._needed
+        out: dict[str, Array | None] = {}
+        for group in self.probe.groups:
+            rows: Array | None = group.sampler.sources
+            if self._inner_cells is not None:
+                rows = None
+            elif group.sampler.location == "cell" and self.area is not None:
+                rows = np.union1d(group.sampler.sources, self.area_cells)
+            known = out.get(group.sampler.location, np.empty(0, np.int64))
+            out[group.sampler.location] = None if rows is None or known is None else np.union1d(known, rows)
+        self._needed = out
+        return out
 
     def _border_velocity(self, unsteady: bool, point_velocity: Array | None) -> Array | None:
         """(q, 2) of the border at the line places; None where all of it is at rest."""
@@ -164,10 +181,10 @@ class SampledVolume:
         whole = ~np.isin(self.area_cells, self.overlay.corner_cell)
         weight = _sum_groups(self.area_group, len(self.area_cells), self.area_weights[:, None])[whole]
         known = {
-            role: values[self.area_cells].astype(float)
+            role: field.at(self.area_cells).astype(float)
             for group in self.probe.groups
             if group.sampler.location == "cell"
-            for role, values in zip(group.roles, group.values)
+            for role, field in zip(group.roles, group.fields)
         }
 
         def shifted(sampled: Mapping[str, Sampled]) -> dict[str, Sampled]:

@@ -24,11 +24,13 @@ import numpy as np
 HERE = Path(__file__).resolve().parent
 sys.path[:0] = [str(HERE), str(HERE.parent)]  # this checkout, installed or not
 
-from benchmarks import command, in_memory, parts  # noqa: E402
+from benchmarks import command, in_memory, parts, series  # noqa: E402
 from benchmarks.section import Case, Section  # noqa: E402
 from benchmarks.timing import peak  # noqa: E402
 
-SECTIONS: dict[str, Section] = {module.SECTION.name: module.SECTION for module in (in_memory, command, parts)}
+SECTIONS: dict[str, Section] = {
+    module.SECTION.name: module.SECTION for module in (in_memory, command, parts, series)
+}
 
 
 def measured(section: Section, kind: str, cells: int) -> dict[str, float]:

@@ -246,14 +246,25 @@ def read(data: Any, where: object, rows: tuple[int, int] | slice | tuple[slice, 
     with _guard(spot):
         _trust(data, total, window, spot)
         values = np.asarray(data[window] if window else data[()])
-        return _plain(values)
+        return plain(values)
+
+
+def trust(data: Any, where: object, rows: tuple[int, int]) -> None:
+    """What `read` checks before it reads a range of rows within the dataset, and the same errors."""
+    spot = f"{where}, {_name(data)}"
+    total = shape(data, spot)
+    if not is_numeric(data, spot):
+        raise FormatError("numbers are expected here", where=spot)
+    with _guard(spot):
+        _trust(data, total, (slice(*rows),), spot)
 
 
 def _name(data: Any) -> str:
     return str(data.name or "a dataset").replace("/ data", "")
 
 
-def _plain(values: Array) -> Array:
+def plain(values: Array) -> Array:
+    """In native byte order, C order and a width that numpy computes in."""
     kind = values.dtype.newbyteorder("=")
     if kind.kind == "f" and kind.itemsize not in (4, 8):
         kind = np.dtype(np.float32 if kind.itemsize < 4 else np.float64)

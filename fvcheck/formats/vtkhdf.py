@@ -17,13 +17,11 @@ import numpy as np
 from fvcheck.errors import FormatError
 from fvcheck.formats import hdf5_safe as safe
 from fvcheck.formats.check import check_piece
-from fvcheck.formats.vtkhdf_mesh import unstructured_parts
-from fvcheck.formats.vtkhdf_steps import Part, Steps
-from fvcheck.formats.vtkhdf_surfaces import image_parts, poly_parts
-from fvcheck.mesh.piece import Array, Export, Piece
+from fvcheck.formats.vtkhdf_data import PARTS, data_of, row_reader
+from fvcheck.formats.vtkhdf_steps import steps_of
+from fvcheck.mesh.piece import Export, Piece
 
 _COMPOSITE = ("PartitionedDataSetCollection", "MultiBlockDataSet")
-_PARTS = {"UnstructuredGrid": unstructured_parts, "PolyData": poly_parts, "ImageData": image_parts}
 # Marks of vtkGhostType that take a cell out: owned by another partition, refined, hidden.
 _GHOST_BITS = 1 | 8 | 32
 
@@ -50,7 +48,7 @@ def open_export(path: Path) -> Export:
         root = safe.group(file, "VTKHDF", path)
         _check_version(root, path)
         blocks = _blocks(root, path)
-        all_times = [_steps(safe.group(file, block.path, path), path).times for block in blocks]
+        all_times = [steps_of(safe.group(file, block.path, path), path).times for block in blocks]
     times = max(all_times, key=len)
     if any(other not in ((), times) for other in all_times):
         raise FormatError(
@@ -70,7 +68,9 @@ def open_export(path: Path) -> Export:
             for block in blocks:
                 yield from _load(file, block, step, path, None)
 
-    return Export(path, "VTKHDF", load, times, stream=stream)
+    single = blocks[0] if len(blocks) == 1 else None
+    rows = None if single is None else row_reader(path, single.path, single.kind)
+    return Export(path, "VTKHDF", load, times, stream=stream, rows=rows)
 
 
 def _check_version(root: Any, path: Path) -> None:
@@ -127,7 +127,7 @@ def _collect(assembly: Any, path: Path, titles: dict[str, str], seen: set[Any]) 
 
 def _kind(group: Any, path: Path) -> str:
     kind = safe.text_attribute(group, "Type", path)
-    if kind in _PARTS or (kind in _COMPOSITE and group.name == "/VTKHDF"):
+    if kind in PARTS or (kind in _COMPOSITE and group.name == "/VTKHDF"):
         return kind
     raise FormatError(
         f"the data set type '{kind}' cannot be read",
@@ -136,33 +136,14 @@ def _kind(group: Any, path: Path) -> str:
     )
 
 
-def _steps(group: Any, path: Path) -> Steps:
-    node = safe.member(group, "Steps", path)
-    where = f"{path}, {group.name}/Steps"
-    if node is None:
-        return Steps(None, (), where)
-    if not safe.is_group(node):
-        raise FormatError("Steps is no group", where=where, mend=safe.DAMAGED)
-    values = safe.read(safe.dataset(node, "Values", where), where).reshape(-1)
-    count = safe.attribute(node, "NSteps", where)
-    known = isinstance(count, np.ndarray) and count.size == 1 and count.dtype.kind in "iu"
-    if not known or int(count.reshape(-1)[0]) != len(values):
-        raise FormatError(
-            f"NSteps is {count}, but there are {len(values)} times", where=where, mend=safe.DAMAGED
-        )
-    if len(values) == 0 or not np.isfinite(values).all():
-        raise FormatError("the times are no finite numbers", where=where, mend=safe.DAMAGED)
-    return Steps(node, tuple(float(value) for value in values), where)
-
-
 def _load(
     file: Any, block: _Block, step: int, path: Path, cache: dict[str, tuple[object, Piece]] | None
 ) -> Iterator[Piece]:
     """The pieces of a block, each read when it is its turn; ``cache`` keeps meshes for the next step."""
     group = safe.group(file, block.path, path)
-    steps = _steps(group, path)
+    steps = steps_of(group, path)
     step = min(step, max(0, len(steps.times) - 1))
-    parts = _PARTS[block.kind](group, steps, step)
+    parts = PARTS[block.kind](group, steps, step)
     for number, part in enumerate(parts):
         if part.cells == 0:
             continue
@@ -174,8 +155,8 @@ def _load(
             mesh = check_piece(replace(part.mesh(), name=name), path)
             if cache is not None:
                 cache[name] = (part.key, mesh)
-        points = _data(group, "PointData", steps, step, part, f"{path}, {block.path}")
-        cells = _data(group, "CellData", steps, step, part, f"{path}, {block.path}")
+        points = data_of(group, "PointData", steps, step, part, f"{path}, {block.path}")
+        cells = data_of(group, "CellData", steps, step, part, f"{path}, {block.path}")
         points.pop("vtkGhostType", None)
         marks = cells.pop("vtkGhostType", None)
         ghost = None
@@ -184,65 +165,3 @@ def _load(
                 raise FormatError("vtkGhostType holds no marks", where=path, mend=safe.DAMAGED)
             ghost = (marks & _GHOST_BITS) != 0
         yield check_piece(replace(mesh, point_data=points, cell_data=cells, ghost=ghost), path)
-
-
-def _data(group: Any, kind: str, steps: Steps, step: int, part: Part, where: str) -> dict[str, Array]:
-    """The point or cell arrays of one part at one step."""
-    node = safe.member(group, kind, where)
-    if node is None:
-        return {}
-    if not safe.is_group(node):
-        raise FormatError(f"{kind} is no group", where=where, mend=safe.DAMAGED)
-    count = part.points if kind == "PointData" else part.cells
-    start, total = (
-        (part.first_point, part.all_points) if kind == "PointData" else (part.first_cell, part.all_cells)
-    )
-    arrays = {}
-    for name in safe.names(node, where):
-        data = safe.member(node, name, where)
-        if not safe.is_dataset(data):
-            raise FormatError(f"the array '{name}' is no dataset", where=where, mend=safe.DAMAGED)
-        if not safe.is_numeric(data, where):
-            continue
-        if part.shape is not None:
-            arrays[name] = _image_array(data, part, kind, steps, step, where)
-            continue
-        shape = safe.shape(data, where)
-        if len(shape) not in (1, 2):
-            raise FormatError(f"the array '{name}' has {len(shape)} axes", where=where, mend=safe.DAMAGED)
-        first = start
-        if steps.group is None:
-            if shape[0] != total:
-                raise FormatError(
-                    f"the array '{name}' has {shape[0]} values for {total} {kind[:-4].lower()}s",
-                    where=where,
-                    mend="Export the array again for the whole mesh.",
-                )
-        else:
-            own = steps.data_start(kind, name, step, total)
-            first = start if own is None else own + part.before(kind)
-        arrays[name] = safe.read(data, where, (first, first + count))
-    return arrays
-
-
-def _image_array(data: Any, part: Part, kind: str, steps: Steps, step: int, where: str) -> Array:
-    """An array of an image: axes (time,) z, y, x(, component), flat axes present or not."""
-    count = part.points if kind == "PointData" else part.cells
-    found = safe.shape(data, where)
-    rows = None
-    if steps.group is not None:
-        first = steps.data_start(kind, data.name.rsplit("/", 1)[-1], step, 1)
-        first = step if first is None else first
-        rows = (first, first + 1)
-        found = found[1:]
-    assert part.shape is not None
-    sizes = part.shape if kind == "PointData" else tuple(max(1, n - 1) for n in part.shape)
-    flat = [n for n in sizes[::-1] if n > 1]
-    for components in (False, True):
-        axes = found[:-1] if components else found
-        if [n for n in axes if n > 1] == flat and (not components or found[-1] <= 9):
-            values = safe.read(data, where, rows)
-            return values.reshape((count, found[-1]) if components else (count,))
-    raise FormatError(
-        f"the array '{data.name}' has the shape {found} for {sizes} values", where=where, mend=safe.DAMAGED
-    )

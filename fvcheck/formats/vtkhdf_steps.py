@@ -3,7 +3,8 @@
 from __future__ import annotations
 
 from collections.abc import Callable
-from dataclasses import dataclass
+from dataclasses import dataclass, field
+from pathlib import Path
 from typing import Any
 
 import numpy as np
@@ -15,14 +16,23 @@ from fvcheck.mesh.piece import Array, Piece
 
 @dataclass(frozen=True)
 class Steps:
-    """The group ``Steps`` of a transient data set; ``group`` is None for a single state."""
+    """The group ``Steps`` of a transient data set; ``group`` is None for a single state.
+
+    known : tables read so far, by name
+    """
 
     group: Any
     times: tuple[float, ...]
     where: str
+    known: dict[str, Array | None] = field(default_factory=dict)
 
     def table(self, name: str, columns: int = 1) -> Array | None:
         """The offsets ``name`` as (steps, columns), or None if the file has none."""
+        if name not in self.known:
+            self.known[name] = self._read(name, columns)
+        return self.known[name]
+
+    def _read(self, name: str, columns: int) -> Array | None:
         if self.group is None or (data := safe.member(self.group, name, self.where)) is None:
             return None
         values = safe.read(data, self.where)
@@ -75,6 +85,26 @@ class Steps:
         if ((gaps > 0) & (gaps < count) & later).any():
             raise FormatError(f"time steps overlap in '{kind}/{name}'", where=self.where, mend=safe.DAMAGED)
         return mine
+
+
+def steps_of(group: Any, path: Path) -> Steps:
+    """The time steps of a data set. Raises `FormatError` where they do not make sense."""
+    node = safe.member(group, "Steps", path)
+    where = f"{path}, {group.name}/Steps"
+    if node is None:
+        return Steps(None, (), where)
+    if not safe.is_group(node):
+        raise FormatError("Steps is no group", where=where, mend=safe.DAMAGED)
+    values = safe.read(safe.dataset(node, "Values", where), where).reshape(-1)
+    count = safe.attribute(node, "NSteps", where)
+    known = isinstance(count, np.ndarray) and count.size == 1 and count.dtype.kind in "iu"
+    if not known or int(count.reshape(-1)[0]) != len(values):
+        raise FormatError(
+            f"NSteps is {count}, but there are {len(values)} times", where=where, mend=safe.DAMAGED
+        )
+    if len(values) == 0 or not np.isfinite(values).all():
+        raise FormatError("the times are no finite numbers", where=where, mend=safe.DAMAGED)
+    return Steps(node, tuple(float(value) for value in values), where)
 
 
 @dataclass(frozen=True)

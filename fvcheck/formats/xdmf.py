@@ -6,7 +6,7 @@ the folder of the file.
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Iterator, Mapping, Sequence
 from dataclasses import dataclass, replace
 from math import prod
 from pathlib import Path
@@ -19,7 +19,7 @@ from fvcheck.formats.xdmf_items import Items
 from fvcheck.formats.xdmf_mesh import read_mesh, shape_of
 from fvcheck.formats.xdmf_tree import Element, parse
 from fvcheck.hints import Hint
-from fvcheck.mesh.piece import Array, Export, Piece
+from fvcheck.mesh.piece import Array, Export, Piece, RowReader, Wanted
 
 _COMPONENTS = {"scalar": (1,), "globalid": (1,), "vector": (3, 2), "tensor": (9, 4), "tensor6": (6, 3)}
 
@@ -61,7 +61,12 @@ def open_export(path: Path) -> Export:
             pieces = [_grid(grid, str(n), items, cache) for n, grid in enumerate(grids)]
         return _merge(pieces)
 
-    return Export(path, "XDMF", load, times, _hints(states))
+    def read(step: int, wanted: Mapping[str, Wanted]) -> dict[str, dict[str, Array]]:
+        with Items(path) as items:
+            return _rows(states[step].grids, wanted, items, cache)
+
+    rows = RowReader(lambda step: _layout(states[step].grids), read)
+    return Export(path, "XDMF", load, times, _hints(states), rows=rows)
 
 
 def _hints(states: list[_State]) -> tuple[Hint, ...]:
@@ -165,6 +170,29 @@ def _time_list(grid: Element, count: int, items: Items) -> list[float] | None:
 
 def _grid(grid: Element, place: str, items: Items, cache: dict[str, tuple[object, Piece]]) -> Piece:
     """One uniform grid with its attributes; its mesh from the cache if it is that of the step before."""
+    mesh, shape = _mesh(grid, place, items, cache)
+    data: dict[str, dict[str, Array]] = {"node": {}, "cell": {}}
+    for attribute, name, centre in _attributes(grid):
+        if name in data[centre]:
+            raise FormatError(f"two attributes are called '{name}'", where=items.where(attribute))
+        count = len(mesh.points) if centre == "node" else len(mesh.types)
+        data[centre][name] = _values(attribute, count, centre, shape, items)
+    piece = replace(mesh, point_data=data["node"], cell_data=data["cell"], name=grid.get("Name"))
+    return check_piece(piece, items.where(grid))
+
+
+def _attributes(grid: Element) -> Iterator[tuple[Element, str, str]]:
+    """Attributes at nodes and cells, with their names and centres."""
+    for attribute in grid.all("Attribute"):
+        centre = attribute.get("Center", default="Node").lower()
+        if centre in ("node", "cell") and not attribute.get("ItemType"):
+            yield attribute, attribute.get("Name") or "unnamed", centre
+
+
+def _mesh(
+    grid: Element, place: str, items: Items, cache: dict[str, tuple[object, Piece]]
+) -> tuple[Piece, tuple[int, ...] | None]:
+    """The mesh of a grid, and its points per axis if it is structured."""
     where = items.where(grid)
     topologies, geometries = grid.all("Topology"), grid.all("Geometry")
     if len(topologies) != 1 or len(geometries) != 1:
@@ -177,22 +205,40 @@ def _grid(grid: Element, place: str, items: Items, cache: dict[str, tuple[object
     if place not in cache or cache[place][0] != key:
         mesh = check_piece(read_mesh(topologies[0], geometries[0], items), where)
         cache[place] = (key, mesh)
-    mesh = cache[place][1]
-    shape = shape_of(topologies[0], items)
-    point_data: dict[str, Array] = {}
-    cell_data: dict[str, Array] = {}
-    for attribute in grid.all("Attribute"):
-        centre = attribute.get("Center", default="Node").lower()
-        if centre not in ("node", "cell") or attribute.get("ItemType"):
-            continue
-        name = attribute.get("Name") or "unnamed"
-        into = point_data if centre == "node" else cell_data
-        if name in into:
-            raise FormatError(f"two attributes are called '{name}'", where=items.where(attribute))
-        count = len(mesh.points) if centre == "node" else len(mesh.types)
-        into[name] = _values(attribute, count, centre, shape, items)
-    piece = replace(mesh, point_data=point_data, cell_data=cell_data, name=grid.get("Name"))
-    return check_piece(piece, where)
+    return cache[place][1], shape_of(topologies[0], items)
+
+
+def _layout(grids: Sequence[Element]) -> object:
+    """See `RowReader.layout`; None for grids on several meshes."""
+    parts = [[*grid.all("Topology"), *grid.all("Geometry")] for grid in grids]
+    keys = {tuple(_key(part) for part in mesh) for mesh in parts}
+    arrays = [
+        (centre, name, attribute.get("AttributeType", "Type"))
+        for grid in grids
+        for attribute, name, centre in _attributes(grid)
+    ]
+    if len(keys) != 1 or len(parts[0]) != 2 or len({array[:2] for array in arrays}) < len(arrays):
+        return None
+    return keys.pop(), tuple(arrays)
+
+
+def _rows(
+    grids: Sequence[Element],
+    wanted: Mapping[str, Wanted],
+    items: Items,
+    cache: dict[str, tuple[object, Piece]],
+) -> dict[str, dict[str, Array]]:
+    """See `RowReader.read`."""
+    mesh, shape = _mesh(grids[0], "0", items, cache)
+    out: dict[str, dict[str, Array]] = {location: {} for location in wanted}
+    for grid in grids:
+        for attribute, name, centre in _attributes(grid):
+            location = "point" if centre == "node" else "cell"
+            if location in wanted and name in wanted[location].names:
+                count = len(mesh.points) if centre == "node" else len(mesh.types)
+                rows = wanted[location].rows
+                out[location][name] = _values(attribute, count, centre, shape, items, rows)
+    return out
 
 
 def _key(element: Element) -> object:
@@ -207,12 +253,23 @@ def _key(element: Element) -> object:
 
 
 def _values(
-    attribute: Element, count: int, centre: str, shape: tuple[int, ...] | None, items: Items
+    attribute: Element,
+    count: int,
+    centre: str,
+    shape: tuple[int, ...] | None,
+    items: Items,
+    rows: Array | None = None,
 ) -> Array:
+    """The values (count,) or (count, components) of an attribute, or some rows (k,) of them."""
     where = items.where(attribute)
     name = attribute.get("Name")
-    values = items.read(items.only(attribute)[0])
-    kind = attribute.get("AttributeType", "Type", default="Scalar").lower()
+    item = items.only(attribute)[0]
+    if rows is not None and shape is None:
+        some = items.read_rows(item, count, rows)
+        if some is not None and some[0].size in _COMPONENTS.get(_kind(attribute), (some[0].size,)):
+            return some
+    values = items.read(item)
+    kind = _kind(attribute)
     size, rest = divmod(values.size, count)
     if rest or size < 1 or (kind != "matrix" and size not in _COMPONENTS.get(kind, ())):
         raise FormatError(
@@ -228,7 +285,12 @@ def _values(
             f"the attribute '{name}' has the dimensions {values.shape} for {sizes} {centre}s",
             where=where,
         )
-    return values.reshape((count, size) if size > 1 else (count,))
+    values = values.reshape((count, size) if size > 1 else (count,))
+    return values if rows is None else values[rows]
+
+
+def _kind(attribute: Element) -> str:
+    return attribute.get("AttributeType", "Type", default="Scalar").lower()
 
 
 def _merge(pieces: list[Piece]) -> list[Piece]:

@@ -10,6 +10,7 @@ from typing import Any, Literal
 import numpy as np
 
 from fvcheck.errors import FormatError
+from fvcheck.formats import hdf5_rows
 from fvcheck.formats import hdf5_safe as safe
 from fvcheck.formats.xdmf_tree import Element
 from fvcheck.mesh.piece import Array
@@ -142,6 +143,24 @@ class Items:
                 mend="The file is damaged or incomplete; export it again.",
             )
         return safe.read(data, where).reshape(shape or found)
+
+    def read_rows(self, item: Element, count: int, rows: Array) -> Array | None:
+        """Rows (k,) or (k, c), increasing, of plain values in HDF5; None for what must be read whole.
+
+        count : how many rows there are
+        """
+        kind = item.get("ItemType", "Type", default="Uniform").lower()
+        form = item.get("Format", default="XML").upper()
+        if kind != "uniform" or form not in ("HDF", "HDF5", "H5") or item.children or len(rows) == 0:
+            return None
+        where = self.where(item)
+        data = self._dataset(item, where)
+        found = safe.shape(data, where)
+        declared = dimensions(item, "Dimensions", where)
+        if found[:1] != (count,) or len(found) > 2 or not fits(declared, found):
+            return None
+        values = hdf5_rows.read_rows(data, where, rows)
+        return values[:, 0] if values.ndim == 2 and values.shape[1] == 1 else values
 
     def _binary(self, item: Element, shape: tuple[int, ...], where: str) -> Array:
         path = self.beside(item.text.strip(), where)

@@ -7,7 +7,7 @@ everything behind the readers knows one kind of mesh only.
 
 from __future__ import annotations
 
-from collections.abc import Callable, Iterable, Sequence
+from collections.abc import Callable, Iterable, Mapping, Sequence
 from dataclasses import dataclass, field
 from pathlib import Path
 
@@ -86,12 +86,37 @@ class Piece:
 
 
 @dataclass(frozen=True)
+class Wanted:
+    """Arrays at one location, and the raw points or cells (k,), increasing, that values are wanted of.
+
+    Raw numbers run over all pieces of a step, one behind another; rows None stands for all.
+    """
+
+    names: tuple[str, ...]
+    rows: Array | None
+
+
+@dataclass(frozen=True)
+class RowReader:
+    """How a format reads single rows of a step.
+
+    layout : step -> something that is equal for steps that have the same mesh and arrays of
+        the same names and kinds; None where this cannot be told without reading them
+    read : (step, {"point": …, "cell": …}) -> at each location, array name -> values of the rows
+    """
+
+    layout: Callable[[int], object]
+    read: Callable[[int, Mapping[str, Wanted]], dict[str, dict[str, Array]]]
+
+
+@dataclass(frozen=True)
 class Export:
     """A file, opened: what it is, its times, and how to load one step.
 
     ``load(step)`` returns the pieces of step ``step`` (0 … steps-1).
     ``times`` is empty when the file holds a single state without a time.
     ``stream(step)``, of an export in several pieces, reads each when it is its turn.
+    ``rows``, of a format that can, reads single rows of a step.
     """
 
     path: Path
@@ -100,6 +125,7 @@ class Export:
     times: tuple[float, ...] = ()
     hints: tuple[Hint, ...] = ()
     stream: Callable[[int], Iterable[Piece]] | None = None
+    rows: RowReader | None = None
 
     @property
     def steps(self) -> int:

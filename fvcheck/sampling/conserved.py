@@ -44,7 +44,8 @@ def with_conserved_averages(flow: Flow) -> Flow:
         made |= {f"rate:{role}": value.imag / _STEP for role, value in turned.items()}
     for role, value in made.items():
         if role not in fields:
-            fields[role] = Field(name=f"conserved {role}", location="cell", values=value)
+            rows = given["velocity"].rows
+            fields[role] = Field(name=f"conserved {role}", location="cell", values=value, rows=rows)
     del fields["velocity"], fields["pressure"]
     if fluid.gas_constant:
         fields.pop("temperature", None)

@@ -164,7 +164,7 @@ def sample_inner(mesh: Mesh, geometry: InnerCells, probe: Probe) -> Inner:
     from fvcheck.sampling.sampler import compile_sampler
 
     (group,) = probe.groups
-    data = np.column_stack([values[geometry.local_points] for values in group.values]).astype(float)
+    data = np.column_stack([field.at(geometry.local_points) for field in group.fields]).astype(float)
     use_for(10 * len(data))
     jets, low, high, weak = nodal_quadratics(
         geometry.points, geometry.offsets, geometry.nodes, geometry.point_first, geometry.point_cells, data
@@ -175,8 +175,9 @@ def sample_inner(mesh: Mesh, geometry: InnerCells, probe: Probe) -> Inner:
     if len(again):
         # Too few neighbours in one ring, as on the domain boundary: the fits of the surface's kind.
         sampler = compile_sampler(mesh, geometry.local_points[again], "point", degrees=(2,))
-        columns = np.hstack([values if values.ndim == 2 else values[:, None] for values in group.values])
-        c = sampler.apply(2, columns)
+        c = sampler.apply_local(
+            2, np.hstack([field.at(sampler.sources) for field in group.fields]).astype(float)
+        )
         a = sampler.fits[2].frames
         jets[again, :2] = np.einsum("cki,ckf->cif", a, c[:, 1:3])
         bend = np.stack([c[:, [3, 4]], c[:, [4, 5]]], axis=1)
@@ -189,7 +190,7 @@ def sample_inner(mesh: Mesh, geometry: InnerCells, probe: Probe) -> Inner:
         touched = np.zeros(len(data), bool)
         touched[geometry.triangles[at_jump]] = True
         fell = np.logical_or.reduceat(touched[geometry.triangles].any(axis=1), geometry.first[:-1])
-    roles, slots, at = _slots(group.roles, group.values, probe.vectors)
+    roles, slots, at = _slots(group.roles, [field.values for field in group.fields], probe.vectors)
     return Inner(geometry, data, jets, roles, slots, at, fell)
 
 

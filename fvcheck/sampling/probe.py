@@ -9,7 +9,7 @@ from functools import cached_property
 import numpy as np
 
 from fvcheck.errors import FieldError
-from fvcheck.fields import Location
+from fvcheck.fields import Field, Location
 from fvcheck.flow import Flow
 from fvcheck.sampling.conserved import with_conserved_averages
 from fvcheck.sampling.sampled import Sampled
@@ -46,13 +46,13 @@ class _Group:
     """Fields that share one sampler.
 
     columns : of each role in ``data`` (n, f), the rows that the sampler uses
-    values : of each role over the whole mesh
+    fields : of each role, with the columns that are sampled
     """
 
     sampler: Sampler
     roles: tuple[str, ...]
     columns: tuple[slice, ...]
-    values: tuple[Array, ...]
+    fields: tuple[Field, ...]
     data: Array
     known: Array | None
     places: Known | None
@@ -225,8 +225,11 @@ def compile_probe(flow: Flow, centres: Array, roles: tuple[str, ...] | None = No
     """Sampling of ``roles`` (default: all fields) of a flow about mesh points ``centres``.
 
     Cell-centred fields lean on what is known on the boundary (`known_values`).
-    FieldError where a field is not finite around the surface.
+    FieldError where a field is not finite around the surface; ValueError where
+    it was read for other fits (`fvcheck.laterflow`).
     """
+    if any(field.rows is not None for field in flow.fields.values()):
+        raise ValueError("new fits need whole fields")
     flow = with_conserved_averages(flow)
     wanted = tuple(flow.fields) if roles is None else roles
     groups = []
@@ -261,12 +264,13 @@ def _fill(flow: Flow, sampler: Sampler, names: list[str], known: tuple[Known, Ar
     """A group of fields with the data of a flow; FieldError where they are not finite."""
     parts, whole, columns, at = [], [], [], 0
     for role in names:
-        values = _columns(flow, flow.fields[role].values)
-        parts.append(sampler.gather(values))
+        field = flow.fields[role]
+        field = replace(field, values=_columns(flow, field.values))
+        parts.append(np.ascontiguousarray(field.at(sampler.sources), float))
         _check_finite(flow, role, parts[-1], sampler)
-        whole.append(values)
-        columns.append(slice(at, at + values.shape[1]))
-        at += values.shape[1]
+        whole.append(field)
+        columns.append(slice(at, at + field.values.shape[1]))
+        at += field.values.shape[1]
     places, value = (known[0], _columns(flow, known[1])) if known else (None, None)
     return _Group(sampler, tuple(names), tuple(columns), tuple(whole), np.hstack(parts), value, places)
 
