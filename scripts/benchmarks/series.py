@@ -7,6 +7,7 @@ from pathlib import Path
 from typing import Any
 
 import numpy as np
+from write_series import write_vtkhdf, write_xdmf
 
 import fvcheck
 from benchmarks.cases import FLUID, circle, make_grid
@@ -14,7 +15,6 @@ from benchmarks.section import Case, Ratio, Section
 from benchmarks.timing import alternating
 from fvcheck.series import Series, open_series
 from fvcheck.timeseries import Recorder
-from write_series import write_vtkhdf, write_xdmf
 
 LAWS = ("mass", "momentum")
 TIMES = tuple(0.1 * k for k in range(8))
