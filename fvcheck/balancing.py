@@ -14,7 +14,6 @@ from fvcheck.hints import Hint
 from fvcheck.laws import Law, MissingData, find_law, law_names
 from fvcheck.ledger import Ledger, Result, Row, case_dict
 from fvcheck.many import sampled_volumes
-from fvcheck.overlay.overlay import lay_over
 from fvcheck.plausible import field_hints, force_hints, still_hints
 from fvcheck.sources import Source
 from fvcheck.surfaces import ControlSurface
@@ -45,8 +44,7 @@ def balance(
     SetupError for a law that was asked for and cannot be evaluated.
     """
     chosen = choose_laws(flow, laws)
-    placed = surface.resolve(flow.mesh)
-    volume = SampledVolume(flow, placed, lay_over(flow.mesh, placed), chosen, about=about)
+    (volume,) = sampled_volumes(flow, [surface], chosen, about)
     return ledger_of(volume, chosen, tolerance, scale, sources, strict=laws is not None)
 
 
@@ -104,10 +102,17 @@ def balance_all(
     """Ledgers of several control surfaces; by default the whole domain and one around each body."""
     chosen = list(surfaces) if surfaces else default_surfaces(flow)
     wanted = choose_laws(flow, laws)
-    ledgers = [
-        ledger_of(volume, wanted, tolerance, scale, sources, strict=laws is not None)
-        for volume in sampled_volumes(flow, chosen, wanted, about)
-    ]
+    return result_of(
+        flow,
+        [
+            ledger_of(volume, wanted, tolerance, scale, sources, strict=laws is not None)
+            for volume in sampled_volumes(flow, chosen, wanted, about)
+        ],
+    )
+
+
+def result_of(flow: Flow, ledgers: Sequence[Ledger]) -> Result:
+    """Ledgers of a flow with all remarks on them and on it, each once."""
     found = (hint for ledger in ledgers for hint in ledger.hints)
     hints = dict.fromkeys([*flow.hints, *field_hints(flow), *found])
     return Result(case_dict(flow), tuple(ledgers), tuple(hints))

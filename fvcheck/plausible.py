@@ -3,17 +3,19 @@
 from __future__ import annotations
 
 import shlex
-from collections.abc import Callable, Sequence
+from collections.abc import Callable, Mapping, Sequence
+from dataclasses import replace
 from typing import Any
 
 import numpy as np
 
 from fvcheck.errors import FvcheckError
-from fvcheck.flow import Flow, flow_of_export
+from fvcheck.flow import Flow, flow_of_export, step_number
 from fvcheck.hints import Hint
 from fvcheck.laws import MissingData, State, find_law
 from fvcheck.ledger import Row
 from fvcheck.mesh.assemble import Assembly, assemble
+from fvcheck.mesh.near import Drawn
 from fvcheck.mesh.piece import Export, Piece
 from fvcheck.sampling.sampled import Sampled
 from fvcheck.volume import BEST, SampledVolume
@@ -237,7 +239,16 @@ def force_hints(volume: SampledVolume, rows: Sequence[Row]) -> list[Hint]:
     return [Hint(code, f"{where}: {share:.3g} % of the imbalance of momentum would vanish if {text}")]
 
 
-def change_hints(export: Export, step: int, flow: Flow, reading: dict[str, Any]) -> list[Hint]:
+def open_state(
+    export: Export, *, step: int | str = "last", near: Sequence[Drawn] | None = None, **reading: Any
+) -> Flow:
+    """A flow by `fvcheck.flow.flow_of_export`, held against the state stored beside it (`change_hints`)."""
+    number = step_number(export, step)
+    flow = flow_of_export(export, step=number, near=near, **reading)
+    return replace(flow, hints=(*flow.hints, *change_hints(export, number, flow, reading)))
+
+
+def change_hints(export: Export, step: int, flow: Flow, reading: Mapping[str, Any]) -> list[Hint]:
     """Whether the stored state next to this one differs, so that a steady balance misses what is stored."""
     role = "velocity" if "velocity" in flow.fields else "momentum"
     rates = any(name.startswith("rate:") for name in flow.fields)

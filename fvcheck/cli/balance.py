@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-from dataclasses import replace
 from typing import Annotated
 
 from typer import Option
@@ -32,7 +31,7 @@ def command(
     from fvcheck.cli.settings import settle
     from fvcheck.flow import Flow, flow_of_export, step_number
     from fvcheck.formats.registry import open_export
-    from fvcheck.plausible import change_hints
+    from fvcheck.plausible import open_state
     from fvcheck.text.ledger import result_text, steps_text
     from fvcheck.verdict import EXIT_STATUS, worst
 
@@ -44,10 +43,8 @@ def command(
     def flow_at(number: int) -> Flow:
         # Of several states each is held against another as a whole.
         near = settings.surfaces if export.steps == 1 else None
-        flow = flow_of_export(export, step=number, near=near, **settings.reading)
-        if settings.step == "all":
-            return flow
-        return replace(flow, hints=(*flow.hints, *change_hints(export, number, flow, settings.reading)))
+        read = flow_of_export if settings.step == "all" else open_state
+        return read(export, step=number, near=near, **settings.reading)
 
     results = [
         balance_all(

@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-from dataclasses import replace
 from typing import Annotated, Any
 
 from typer import Option
@@ -76,9 +75,8 @@ def command(
     """
     from fvcheck.cli.output import check_target, show
     from fvcheck.cli.settings import settle
-    from fvcheck.flow import flow_of_export, step_number
     from fvcheck.formats.registry import open_export
-    from fvcheck.plausible import change_hints
+    from fvcheck.plausible import open_state
     from fvcheck.routes import forces
     from fvcheck.surfaces import ControlSurface
     from fvcheck.surfaces.family import parse_family
@@ -102,10 +100,7 @@ def command(
         "direction": None if direction is None else vector(direction, "--direction", "--direction X,Y"),
         "reference": settings.bodies if reference is None else _reference(reference),
     }
-    export = open_export(settings.file)
-    step = step_number(export, settings.step)
-    flow = flow_of_export(export, step=step, **settings.reading)
-    flow = replace(flow, hints=(*flow.hints, *change_hints(export, step, flow, settings.reading)))
+    flow = open_state(open_export(settings.file), step=settings.step, **settings.reading)
     found = forces(flow, names, **options)
     show(output, found.to_dict, lambda: forces_text(found, output.quiet))
     # A body whose every route was refused is left undecided.

@@ -5,7 +5,7 @@ from __future__ import annotations
 from pathlib import Path
 
 from fvcheck.cli.options import FluidOptions, Limits, Reading
-from fvcheck.cli.settings import Settings, settle
+from fvcheck.cli.settings import Settings, load_check, settle
 from fvcheck.errors import SetupError
 
 
@@ -19,13 +19,8 @@ def files_and_settings(
     """The files of the command line, else those of the check file; and the settings."""
     if reading.step is not None:
         raise SetupError("--step has no meaning here", mend="Leave it out: all steps are taken.")
-    if files:
-        named = [Path(name) for name in files]
-    elif reading.check is None:
+    if not files and reading.check is None:
         raise SetupError("no export is given", mend="Name FILES, or a check file with -c.")
-    else:
-        from fvcheck.checkfile import load
-        from fvcheck.laws import law_names
-
-        named = list(load(reading.check, laws=law_names()).case_files())
-    return named, settle(named[0], reading, fluid, surfaces, limits)
+    check = load_check(reading.check)
+    named = [Path(name) for name in files] if files else list(check.case_files())
+    return named, settle(named[0], reading, fluid, surfaces, limits, check)

@@ -67,7 +67,7 @@ def command(
     """
     from fvcheck.cli.output import check_target, show
     from fvcheck.cli.progress import progress
-    from fvcheck.cli.settings import settle
+    from fvcheck.cli.settings import load_check, settle
     from fvcheck.reporting import report
     from fvcheck.reporting.output import check_page_path, folder_for
     from fvcheck.text.console import render
@@ -79,9 +79,12 @@ def command(
     for folder, what in ((figures, "figures"), (vtk, "VTK files")):
         if folder is not None:
             folder_for(folder, what)
-    named, check = _files(files, reading.check)
-    settings = settle(named[0], replace(reading, check=check), fluid, surface, limits)
-    step = reading.step if reading.step is not None or check is None else _step_of(check)
+    named, path = _told(files, reading.check)
+    check = load_check(path)
+    named = named or list(check.case_files())
+    settings = settle(named[0], replace(reading, check=path), fluid, surface, limits, check)
+    # Left open, the step is for the report to choose.
+    told = reading.step is not None or "step" in check.case.model_fields_set
     names = body or list(settings.bodies)
     silent = output.quiet or output.json == "-"
     with progress("report", silent) as advance:
@@ -96,10 +99,10 @@ def command(
             scale=settings.scale,
             sources=settings.sources,
             about=settings.about,
-            step=step,
+            step=str(settings.step) if told else None,
             kind=kind,
             steady=steady,
-            beside=[] if check is None else [check],
+            beside=[] if path is None else [path],
             on_part=lambda part: advance(None),
             **settings.reading,
         )
@@ -116,28 +119,14 @@ def command(
     return 0 if made.verdict is None else EXIT_STATUS[made.verdict]
 
 
-def _files(files: list[str] | None, check: Path | None) -> tuple[list[Path], Path | None]:
-    """The exports that are meant, and the check file: one that is given as a FILE counts as such."""
-    from fvcheck.checkfile import load
-    from fvcheck.laws import law_names
-
+def _told(files: list[str] | None, check: Path | None) -> tuple[list[Path], Path | None]:
+    """The exports that are named, and the check file: one that is given as a FILE counts as such."""
     named = [Path(name) for name in files or ()]
     checks = [path for path in named if path.suffix.lower() == ".toml"]
     if len(checks) + (check is not None) > 1:
         raise SetupError("a report is of one check file", mend="Name one; fvcheck gate takes several.")
     named = [path for path in named if path not in checks]
     check = checks[0] if checks else check
-    if not named:
-        if check is None:
-            raise SetupError("no export is given", mend="Name a check file or FILES.")
-        named = list(load(check, laws=law_names()).case_files())
+    if not named and check is None:
+        raise SetupError("no export is given", mend="Name a check file or FILES.")
     return named, check
-
-
-def _step_of(check: Path) -> str | None:
-    """The step that a check file names; None where it leaves that open."""
-    from fvcheck.checkfile import load
-    from fvcheck.laws import law_names
-
-    case = load(check, laws=law_names()).case
-    return str(case.step) if "step" in case.model_fields_set else None

@@ -65,13 +65,17 @@ def settle(
     fluid: FluidOptions,
     surfaces: list[str] | None = None,
     limits: Limits | None = None,
+    check: CheckFile | None = None,
 ) -> Settings:
-    """Options over check file over defaults; SetupError or SurfaceError where they cannot be used."""
+    """Options over check file over defaults; SetupError or SurfaceError where they cannot be used.
+
+    check : the check file of ``reading`` where it has been loaded already
+    """
     from fvcheck.cli.progress import say_first_use
     from fvcheck.surfaces import parse_all
 
     limits = limits or Limits()
-    check = _load(reading.check)
+    check = load_check(reading.check) if check is None else check
     laws = words(limits.law)
     if laws is None and check.case.laws is not None:
         laws = list(check.case.laws)
@@ -102,7 +106,8 @@ def _moment_points(check: CheckFile, limits: Limits) -> dict[str, tuple[float, f
     return {} if limits.about else {b.name: b.about for b in check.body if b.about is not None}
 
 
-def _load(path: Path | None) -> CheckFile:
+def load_check(path: Path | None) -> CheckFile:
+    """A check file whose laws are known; the empty one for None."""
     from fvcheck.checkfile import load
     from fvcheck.checkmodel import CheckFile
 

@@ -16,7 +16,7 @@ from fvcheck.diagnosis.fitting import Ledgers
 from fvcheck.diagnosis.naming import Candidate, Why, explain
 from fvcheck.diagnosis.volumes import random_blocks
 from fvcheck.diagnosis.where import Place, Tiling, where
-from fvcheck.errors import FieldError, SetupError, SurfaceError
+from fvcheck.errors import FieldError, FvcheckError, SetupError, SurfaceError
 from fvcheck.fields import Field
 from fvcheck.flow import Flow
 from fvcheck.hints import Hint
@@ -32,6 +32,9 @@ Array = np.ndarray
 
 LAWS = ("mass", "momentum", "heat", "total-energy")
 """Laws that are diagnosed."""
+
+# More cells take minutes: what comes with another answer leaves them to `diagnose`.
+_MANY_CELLS = 200_000
 
 # Blocks that causes are fitted to; more say little more, since they overlap.
 _VOLUMES, _SEED = 60, 1
@@ -159,6 +162,21 @@ def _cause_dict(why: Why, candidate: Candidate, told: Told) -> dict[str, Any]:
         "next_left": why.next_left,
         "setting": told.setting,
     }
+
+
+def diagnose_open(
+    flow: Flow, laws: Iterable[str], sources: Sequence[Source] = ()
+) -> tuple[Diagnosis | None, str]:
+    """What `diagnose` says of laws whose rows are open, or None and why; "" where it knows none of them."""
+    chosen = [law for law in dict.fromkeys(laws) if law in LAWS]
+    if not chosen:
+        return None, ""
+    if flow.mesh.n_cells > _MANY_CELLS:
+        return None, f"{flow.mesh.n_cells} cells would take minutes; fvcheck diagnose makes it."
+    try:
+        return diagnose(flow, chosen, sources=sources), ""
+    except FvcheckError as error:
+        return None, str(error)
 
 
 def diagnose(

@@ -1,9 +1,9 @@
-"""One check file, from its export to its outcome; runs in a process of its own."""
+"""One check file, from its export to its outcome; runs in another process."""
 
 from __future__ import annotations
 
 import time
-from collections.abc import Iterator
+from collections.abc import Iterator, Sequence
 from dataclasses import replace
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
@@ -22,9 +22,7 @@ if TYPE_CHECKING:
     from fvcheck.flow import Flow
     from fvcheck.ledger import Result
     from fvcheck.mesh.mesh import Mesh
-
-# A diagnosis of more cells takes minutes; it is left to fvcheck diagnose.
-_DIAGNOSED_CELLS = 200_000
+    from fvcheck.sources import Source
 
 
 def run_case(path: str, diagnose_open: bool = True, compare: bool = True) -> Outcome:
@@ -32,19 +30,23 @@ def run_case(path: str, diagnose_open: bool = True, compare: bool = True) -> Out
 
     compare : with the baseline, where the check file names one
     """
+    from fvcheck.cli.settings import load_check
+
     start = time.perf_counter()
     baseline = ""
     try:
-        check = _load(path)
+        check = load_check(Path(path))
         if check.baseline is not None:
             baseline = str(check.folder / check.baseline.file)
-        result, flows = _found(check, path)
+        files = list(check.case_files())
+        settings = _settings(check, files[0])
+        result, flows = _found(check, files, settings)
         findings = [Finding("case", "case", PASSED, f"{result['case']['file']} could be balanced")]
         findings += list(_judged(check, result))
         if check.baseline is not None and compare:
             findings += _against(Path(baseline), result, check.baseline.tolerance_percent)
         result["expectations"] = [f.to_dict() for f in findings if f.kind == "expectation"]
-        words = _diagnosis(check, path, result, flows[-1]) if diagnose_open else ""
+        words = _diagnosis(result, flows[-1], settings.sources) if diagnose_open else ""
         return Outcome(path, tuple(findings), result, time.perf_counter() - start, words, baseline)
     except FvcheckError as error:
         return failed(path, str(error), time.perf_counter() - start, baseline)
@@ -63,25 +65,16 @@ def failed(path: str, message: str, seconds: float = 0.0, baseline: str = "") ->
     return Outcome(path, (Finding("case", "case", UNUSABLE, message),), None, seconds, "", baseline)
 
 
-def _load(path: str) -> CheckFile:
-    from fvcheck.checkfile import load
-    from fvcheck.laws import law_names
-
-    return load(path, laws=law_names())
-
-
-def _settings(check: CheckFile, path: str) -> tuple[list[Path], Settings]:
+def _settings(check: CheckFile, file: Path) -> Settings:
     """As every command takes them from a check file, so that numbers are the same."""
     from fvcheck.cli.options import FluidOptions, Reading
     from fvcheck.cli.settings import settle
 
-    files = list(check.case_files())
-    return files, settle(files[0], Reading(check=Path(path)), FluidOptions())
+    return settle(file, Reading(), FluidOptions(), check=check)
 
 
-def _found(check: CheckFile, path: str) -> tuple[dict[str, Any], list[Flow]]:
+def _found(check: CheckFile, files: list[Path], settings: Settings) -> tuple[dict[str, Any], list[Flow]]:
     """The result file: of several states the last one, with all of them under ``history``."""
-    files, settings = _settings(check, path)
     states = list(_states(check, files, settings))
     entries = []
     for result, flow in states:
@@ -105,9 +98,8 @@ def _found(check: CheckFile, path: str) -> tuple[dict[str, Any], list[Flow]]:
 
 def _states(check: CheckFile, files: list[Path], settings: Settings) -> Iterator[tuple[Result, Flow]]:
     from fvcheck.balancing import balance_all
-    from fvcheck.flow import flow_of_export, step_number
     from fvcheck.formats.registry import open_export
-    from fvcheck.plausible import change_hints
+    from fvcheck.plausible import open_state
     from fvcheck.series import open_series
     from fvcheck.timeseries import history
 
@@ -118,10 +110,7 @@ def _states(check: CheckFile, files: list[Path], settings: Settings) -> Iterator
         "about": settings.about,
     }
     if len(files) == 1 and settings.step != "all":
-        export = open_export(files[0])
-        number = step_number(export, settings.step)
-        flow = flow_of_export(export, step=number, **settings.reading)
-        flow = replace(flow, hints=(*flow.hints, *change_hints(export, number, flow, settings.reading)))
+        flow = open_state(open_export(files[0]), step=settings.step, **settings.reading)
         yield balance_all(flow, settings.surfaces, settings.laws, **judged), flow
         return
     if settings.step not in ("last", "all"):
@@ -225,21 +214,17 @@ def _against(path: Path, result: dict[str, Any], tolerance_percent: float) -> li
         return [Finding("baseline", "baseline", UNUSABLE, str(error))]
 
 
-def _diagnosis(check: CheckFile, path: str, result: dict[str, Any], flow: Flow) -> str:
+def _diagnosis(result: dict[str, Any], flow: Flow, sources: Sequence[Source]) -> str:
     """What a diagnosis says of the laws of open rows; "" where none is open."""
-    from fvcheck.diagnosis import diagnose
-    from fvcheck.diagnosis.diagnosing import LAWS
+    from fvcheck.diagnosis.diagnosing import diagnose_open
     from fvcheck.text.diagnosis import diagnosis_text
 
     rows = [row for ledger in result["surfaces"] for row in ledger["laws"]]
-    laws = [law for law in dict.fromkeys(r["law"] for r in rows if r["verdict"] == OPEN) if law in LAWS]
+    laws = [row["law"] for row in rows if row["verdict"] == OPEN]
     if not laws:
         return ""
-    if flow.mesh.n_cells > _DIAGNOSED_CELLS:
-        return f"{flow.mesh.n_cells} cells take minutes to diagnose; see fvcheck diagnose."
-    try:
-        found = diagnose(flow, laws, sources=_settings(check, path)[1].sources)
-    except FvcheckError as error:
-        return f"no diagnosis: {error}"
+    found, why_not = diagnose_open(flow, laws, sources)
+    if found is None:
+        return f"no diagnosis: {why_not}" if why_not else ""
     result["diagnosis"] = found.to_dict()["diagnosis"]
     return diagnosis_text(replace(found, hints=()), quiet=True).strip()

@@ -2,23 +2,23 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Iterable, Mapping, Sequence
+from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass, field, replace
 from pathlib import Path
 from typing import Any
 
-from fvcheck.balancing import choose_laws, default_surfaces, ledger_of
-from fvcheck.diagnosis import Diagnosis, diagnose
-from fvcheck.diagnosis.diagnosing import LAWS as DIAGNOSED
-from fvcheck.errors import FieldError, FvcheckError, MeshError, SetupError
+from fvcheck.balancing import choose_laws, default_surfaces, ledger_of, result_of
+from fvcheck.diagnosis import Diagnosis
+from fvcheck.diagnosis.diagnosing import diagnose_open
+from fvcheck.errors import FieldError, MeshError, SetupError
 from fvcheck.evolution import moved
-from fvcheck.flow import Flow, flow_of_export, step_number
+from fvcheck.flow import Flow, flow_of_export
 from fvcheck.hints import Hint
 from fvcheck.laws import Law
-from fvcheck.ledger import Result, case_dict
+from fvcheck.ledger import Result
+from fvcheck.many import sampled_volumes
 from fvcheck.meshstudy import Study, study
-from fvcheck.overlay.overlay import lay_over
-from fvcheck.plausible import change_hints, field_hints
+from fvcheck.plausible import open_state
 from fvcheck.routes import Forces, forces
 from fvcheck.series import Series, file_list, open_series
 from fvcheck.sources import Source
@@ -28,9 +28,6 @@ from fvcheck.verdict import OPEN
 from fvcheck.volume import SampledVolume
 
 KINDS = ("auto", "state", "history", "study")
-
-# A diagnosis of more cells takes minutes; it is left to fvcheck diagnose.
-_DIAGNOSED_CELLS = 200_000
 
 # Files are taken as meshes of one case where numbers of cells differ by this factor.
 _OTHER_MESH = 1.2
@@ -136,36 +133,32 @@ def _kind(named: Sequence[Path], asked: Question) -> str:
 def _state(path: Path, asked: Question) -> Flow:
     from fvcheck.formats.registry import open_export
 
-    export = open_export(path)
-    number = step_number(export, "last" if asked.step in (None, "all") else asked.step)
-    flow = flow_of_export(export, step=number, **asked.reading)
-    hints = change_hints(export, number, flow, dict(asked.reading))
-    return replace(flow, hints=(*flow.hints, *hints))
+    step = "last" if asked.step in (None, "all") else asked.step
+    return open_state(open_export(path), step=step, **asked.reading)
 
 
 def _of_flow(flow: Flow, asked: Question, tell: Callable[[str], None]) -> Gathered:
     """The numbers of `balance_all`, with the samples kept."""
     chosen = list(asked.surfaces) if asked.surfaces else default_surfaces(flow)
     laws, volumes = _sampled(flow, chosen, asked, tell)
-    ledgers = tuple(
-        ledger_of(v, laws, asked.tolerance, asked.scale, asked.sources, strict=asked.laws is not None)
-        for v in volumes
+    result = result_of(
+        flow,
+        [
+            ledger_of(v, laws, asked.tolerance, asked.scale, asked.sources, strict=asked.laws is not None)
+            for v in volumes
+        ],
     )
-    found = (hint for ledger in ledgers for hint in ledger.hints)
-    hints = tuple(dict.fromkeys([*flow.hints, *field_hints(flow), *found]))
-    result = Result(case_dict(flow), ledgers, hints)
     return Gathered(asked, flow, result, volumes, laws, (flow.case.file,))
 
 
 def _sampled(
-    flow: Flow, surfaces: Iterable[ControlSurface], asked: Question, tell: Callable[[str], None]
+    flow: Flow, surfaces: Sequence[ControlSurface], asked: Question, tell: Callable[[str], None]
 ) -> tuple[tuple[Law, ...], tuple[SampledVolume, ...]]:
     laws = choose_laws(flow, asked.laws)
-    volumes = []
+    volumes, coming = [], sampled_volumes(flow, surfaces, laws, asked.about)
     for surface in surfaces:
         tell(f"surface {surface.name or surface.kind}")
-        placed = surface.resolve(flow.mesh)
-        volumes.append(SampledVolume(flow, placed, lay_over(flow.mesh, placed), laws, about=asked.about))
+        volumes.append(next(coming))
     return tuple(laws), tuple(volumes)
 
 
@@ -235,21 +228,11 @@ def _finish(found: Gathered, tell: Callable[[str], None]) -> Gathered:
             )
         except (FieldError, MeshError) as error:
             left_out.append(f"Forces: {error}")
-    open_laws = [
-        name
-        for name in dict.fromkeys(
-            row.law for ledger in found.result.ledgers for row in ledger.rows if row.verdict == OPEN
-        )
-        if name in DIAGNOSED
-    ]
-    if open_laws and flow.mesh.n_cells > _DIAGNOSED_CELLS:
-        left_out.append(
-            f"Diagnosis: {flow.mesh.n_cells} cells would take minutes; fvcheck diagnose makes it."
-        )
-    elif open_laws:
+    open_laws = [row.law for ledger in found.result.ledgers for row in ledger.rows if row.verdict == OPEN]
+    if open_laws:
         tell("diagnosis")
-        try:
-            found = replace(found, diagnosis=diagnose(flow, open_laws, sources=asked.sources))
-        except FvcheckError as error:
-            left_out.append(f"Diagnosis: {error}")
+        diagnosis, why_not = diagnose_open(flow, open_laws, asked.sources)
+        found = replace(found, diagnosis=diagnosis)
+        if why_not:
+            left_out.append(f"Diagnosis: {why_not}")
     return replace(found, left_out=tuple(left_out))
