@@ -67,39 +67,67 @@ def bands(
     differ from quadratics one less: the first is the measure, the second a net
     below it, once in place of three times where the first is known.
     """
-    d23, d12 = third - second, second - first
-    apart, known = np.zeros(len(d23)), np.zeros(len(d23), bool)
-    if cross is not None:
-        apart[: len(cross)], known[: len(cross)] = cross - third[: len(cross)], True
-    outside, fell = outer_pieces(third, chosen, reaching)
-    within = ~outside
-    sampling = _half_width(d23[within], d12[within], apart[within], known[within]) + rounding
-    sampling += float(outer_widths(d23, d12, apart, known, fell)[outside].sum())
+    steps = steps_of(first, second, third, chosen, reaching, cross)
+    within, d12 = ~steps.outside, steps.d12
+    sampling = _half_width(steps, within) + rounding + float(steps.outer_widths[steps.outside].sum())
     resolution = RESOLUTION_FACTOR * sum(
-        spread(part, _RESOLUTION_COVERAGE) for part in (d12[within], d12[outside])
+        spread(part, _RESOLUTION_COVERAGE) for part in (d12[within], d12[steps.outside])
     )
     return Bands(sampling, max(resolution, sampling), rounding)
 
 
-def outer_pieces(third: Array, chosen: Array | None, reaching: Array | None) -> tuple[Array, Array]:
-    """(k,) bool: pieces whose errors add up, and those among them where the degree fell."""
+class Steps(NamedTuple):
+    """What each piece changes from degree to degree, (k,) each; see `bands`.
+
+    d12, d23 : degree 2 against 1, 3 against 2
+    apart, known : cubics of the other corners against degree 3, and where there are such
+    outside, fell : where errors add up, and where among them the degree fell
+    """
+
+    d12: Array
+    d23: Array
+    apart: Array
+    known: Array
+    outside: Array
+    fell: Array
+
+    @property
+    def outer_widths(self) -> Array:
+        """(k,) what a piece adds to the sampling band where errors add up."""
+        d12, d23, apart = np.abs(self.d12), np.abs(self.d23), np.abs(self.apart)
+        plain = np.maximum(d23, d12) + apart
+        return np.where(self.known & ~self.fell, _REACHING * (d23 + apart), plain)
+
+    @property
+    def unsettled(self) -> bool:
+        """Whether the series of degrees does not settle within: nothing may be said to cancel there."""
+        within = ~self.outside
+        return bool(np.abs(self.d23[within]).sum() > 0.5 * np.abs(self.d12[within]).sum())
+
+
+def steps_of(
+    first: Array,
+    second: Array,
+    third: Array,
+    chosen: Array | None = None,
+    reaching: Array | None = None,
+    cross: Array | None = None,
+) -> Steps:
+    """The steps of pieces; parameters as of `bands`."""
+    apart, known = np.zeros(len(third)), np.zeros(len(third), bool)
+    if cross is not None:
+        apart[: len(cross)], known[: len(cross)] = cross - third[: len(cross)], True
     fell = np.zeros(len(third), bool) if chosen is None else chosen != third
     outside = fell.copy()
     if reaching is not None:
         outside[: len(reaching)] |= reaching
-    return outside, fell
+    return Steps(second - first, third - second, apart, known, outside, fell)
 
 
-def outer_widths(d23: Array, d12: Array, apart: Array, known: Array, fell: Array) -> Array:
-    """(k,) what a piece adds to the sampling band where errors add up."""
-    plain = np.maximum(np.abs(d23), np.abs(d12)) + np.abs(apart)
-    return np.where(known & ~fell, _REACHING * (np.abs(d23) + np.abs(apart)), plain)
-
-
-def _half_width(d23: Array, d12: Array, apart: Array, known: Array) -> float:
+def _half_width(steps: Steps, within: Array) -> float:
+    d23, apart, known = steps.d23[within], steps.apart[within], steps.known[within]
     net = np.where(known, 1.0, _COVERAGE) * d23
     settled = max(abs(d23.sum()), float(np.sqrt(np.sum(net**2)))) + spread(apart)
-    if np.abs(d23).sum() > 0.5 * np.abs(d12).sum():
-        # The series of degrees does not settle: nothing may be said to cancel.
+    if steps.unsettled:
         return float(max(np.abs(d23).sum(), settled if known.any() else 0.0))
     return settled

@@ -50,11 +50,11 @@ def rows_of(
     cross = volume.crosswise(law)
     rows = []
     for c, component in enumerate(law.components):
-        pieces = [_pieces(volume, terms, c) for terms in degrees]
+        pieces = [pieces_of(volume, terms, c) for terms in degrees]
         spread = [sum(part[:, c].sum() for part in parts.values()) for parts in shaken]
         rounding = _SHAKE_COVERAGE * float(np.std(spread)) if spread else 0.0
         rounding += _ROUNDINGS * np.finfo(float).eps * float(raw)
-        chosen = _pieces(volume, best, c) if volume.falls else None
+        chosen = pieces_of(volume, best, c) if volume.falls else None
         band = bands(pieces[0], pieces[1], pieces[2], rounding, chosen, volume.reaching(law), cross[:, c])
         told_here = sum(share * source.along(component) for share, source in told)
         row = _row(law, component, volume, best, c, told_here)
@@ -72,8 +72,8 @@ def rows_of(
     return rows
 
 
-def _pieces(volume: SampledVolume, terms: Contributions, c: int) -> Array:
-    """Contributions to the imbalance, one per cell and kind: what the bands are made of."""
+def pieces_of(volume: SampledVolume, terms: Contributions, c: int) -> Array:
+    """Contributions to the imbalance, one per cell of the border, then those of the volume."""
     out = [volume.per_line_cell(terms.total)[:, c]]
     if terms.source is not None:
         out.append(-terms.source[:, c])

@@ -7,7 +7,8 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
-from fvcheck.bands import bands, outer_pieces, outer_widths
+from fvcheck.bands import bands, steps_of
+from fvcheck.entries import pieces_of
 from fvcheck.laws import Law
 from fvcheck.overlay.pieces import Overlay
 from fvcheck.sampling.quadrature import PER_PIECE
@@ -15,7 +16,7 @@ from fvcheck.sampling.sampler import DEGREES
 from fvcheck.volume import BEST
 
 if TYPE_CHECKING:
-    from fvcheck.volume import Contributions, SampledVolume
+    from fvcheck.volume import SampledVolume
 
 Array = np.ndarray
 
@@ -180,7 +181,7 @@ def along_border(volume: SampledVolume, law: Law, border: Border) -> list[Along]
     out = []
     cross = volume.crosswise(law)
     for c, component in enumerate(law.components):
-        pieces = [_terms(volume, found, c) for found in (*degrees, best)]
+        pieces = [pieces_of(volume, found, c) for found in (*degrees, best)]
         reaching = volume.reaching(law)
         first, second, third, chosen = pieces
         fallen = chosen if volume.falls else None
@@ -201,16 +202,6 @@ def along_border(volume: SampledVolume, law: Law, border: Border) -> list[Along]
     return out
 
 
-def _terms(volume: SampledVolume, found: Contributions, c: int) -> Array:
-    """What the bands are made of: one number per cell of the border, then those of the volume."""
-    out = [volume.per_line_cell(found.total)[:, c]]
-    if found.source is not None:
-        out.append(-found.source[:, c])
-    if found.storage is not None:
-        out.append(found.storage[:, c])
-    return np.concatenate(out)
-
-
 def shares(
     first: Array, second: Array, third: Array, chosen: Array | None, reaching: Array, cross: Array
 ) -> tuple[Array, Array]:
@@ -218,17 +209,13 @@ def shares(
 
     Where a band is a root of squares its terms share it by their squares, where it is a sum, by size.
     """
-    d23, d12 = third - second, second - first
-    apart, known = np.zeros(len(d23)), np.zeros(len(d23), bool)
-    apart[: len(cross)], known[: len(cross)] = cross - third[: len(cross)], True
-    outside, fell = outer_pieces(third, chosen, reaching)
+    steps = steps_of(first, second, third, chosen, reaching, cross)
     whole = bands(first, second, third, 0.0, chosen, reaching, cross)
-    sampling = np.where(outside, outer_widths(d23, d12, apart, known, fell), 0.0)
+    sampling = np.where(steps.outside, steps.outer_widths, 0.0)
     rest = max(whole.sampling - float(sampling.sum()), 0.0)
-    within = ~outside
-    unsettled = np.abs(d23[within]).sum() > 0.5 * np.abs(d12[within]).sum()
-    weights = np.abs(d23[within]) if unsettled else d23[within] ** 2 + apart[within] ** 2
-    sampling[within] = _split(rest, weights)
+    within = ~steps.outside
+    d12, d23 = steps.d12, steps.d23[within]
+    sampling[within] = _split(rest, np.abs(d23) if steps.unsettled else d23**2 + steps.apart[within] ** 2)
     return sampling, _split(whole.resolution, d12**2 if np.any(d12) else sampling)
 
 
