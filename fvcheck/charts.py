@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from io import BytesIO
 from pathlib import Path
 from typing import Any
 
@@ -9,6 +10,7 @@ import numpy as np
 
 from fvcheck.errors import SetupError
 from fvcheck.timeseries import History
+from fvcheck.wholefile import write_whole
 
 KINDS = (".png", ".svg", ".pdf")
 
@@ -76,7 +78,6 @@ def history_figure(history: History) -> Any:
 def save_history(history: History, path: str | Path) -> None:
     """Write the figure; the ending says in which format. SetupError where that cannot be."""
     check_plot_path(path)
-    try:
-        history_figure(history).savefig(path, dpi=150)
-    except OSError as error:
-        raise SetupError(f"the figure cannot be written: {error.strerror}", where=path) from None
+    drawn = BytesIO()
+    history_figure(history).savefig(drawn, format=Path(path).suffix.lstrip(".").lower(), dpi=150)
+    write_whole(path, drawn.getvalue(), "figure")

@@ -15,7 +15,7 @@ ROOT = PACKAGE.parent
 
 # From the ground up; a room may import from its own row and from those before it.
 ROWS = [
-    ["errors", "hints", "version", "pages", "notebook", "wholefile", "tasks"],
+    ["errors", "hints", "version", "pages", "notebook", "wholefile", "vtkfile", "tasks"],
     ["kernels"],
     ["mesh"],
     ["formats"],

@@ -69,6 +69,7 @@ def command(
     from fvcheck.text.history import history_text, line_text
     from fvcheck.timeseries import Entry, history
     from fvcheck.verdict import EXIT_STATUS
+    from fvcheck.wholefile import write_whole
 
     check_target(output)
     _check_csv(csv, output)
@@ -120,7 +121,7 @@ def command(
     if plot is not None:
         save_history(found, plot)
     if csv not in (None, "-"):
-        _write_csv(Path(str(csv)), found.to_csv())
+        write_whole(str(csv), found.to_csv().encode("utf-8"), "CSV")
     if csv == "-":
         show(output, found.to_dict, found.to_csv)
     else:
@@ -152,10 +153,3 @@ def _check_csv(csv: str | None, output: Output) -> None:
         path = Path(str(csv))
         if path.is_dir() or not path.parent.is_dir():
             raise SetupError("the CSV cannot be written there", where=path, mend="Give the path of a file.")
-
-
-def _write_csv(path: Path, text: str) -> None:
-    try:
-        path.write_text(text, encoding="utf-8")
-    except OSError as error:
-        raise SetupError(f"the CSV cannot be written: {error.strerror}", where=path) from None

@@ -1,34 +1,24 @@
-"""Surfaces with flux densities as VTP, quantities of cells as VTU, for any viewer that reads VTK's XML.
-
-Arrays are written in binary (base64, 64-bit headers), names of arrays and
-files without characters that a reader may stumble over.
-"""
+"""Surfaces with flux densities as VTP, quantities of cells as VTU, for any viewer that reads VTK's XML."""
 
 from __future__ import annotations
 
-import base64
 import re
 from collections.abc import Mapping, Sequence
 from pathlib import Path
-from xml.sax.saxutils import quoteattr
 
 import numpy as np
 
 from fvcheck.diagnosis.cells import CellLedgers, cell_ledgers
 from fvcheck.diagnosis.diagnosing import LAWS as DIAGNOSED
+from fvcheck.diagnosis.mapping import maps_of
 from fvcheck.laws import Law, MissingData
 from fvcheck.overlay.pieces import DRAWN
 from fvcheck.reporting.border import Along
 from fvcheck.reporting.gathering import Gathered
+from fvcheck.vtkfile import polygons, segments
 from fvcheck.wholefile import write_whole
 
 Array = np.ndarray
-
-_POLYGON = 7
-
-_KINDS = {"f": "Float64", "i": "Int64", "u": "UInt8", "b": "UInt8"}
-
-_TYPES = {"Float64": "<f8", "Int64": "<i8", "UInt8": "u1"}
 
 
 def write_vtk(folder: Path, found: Gathered, along: Mapping[str, Sequence[Along]]) -> list[Path]:
@@ -60,7 +50,7 @@ def _surface(rows: Sequence[Along]) -> bytes:
     """Pieces as lines in walking order: per law flux and bands per metre, degree, patch, normal."""
     border = rows[0].border
     n, overlay = len(border.order), border.overlay
-    ends = np.stack([overlay.start[border.order], overlay.end[border.order]], axis=1).reshape(-1, 2)
+    ends = np.stack([overlay.start[border.order], overlay.end[border.order]], axis=1)
     lengths = np.maximum(np.diff(border.at), 1e-300)
     data: dict[str, Array] = {
         "along": 0.5 * (border.at[1:] + border.at[:-1]),
@@ -75,17 +65,7 @@ def _surface(rows: Sequence[Along]) -> bytes:
         data[f"flux_density_{row.label}"] = row.density
         data[f"sampling_band_density_{row.label}"] = row.sampling / lengths
         data[f"resolution_band_density_{row.label}"] = row.resolution / lengths
-    lines = [
-        *_open("PolyData"),
-        f'<Piece NumberOfPoints="{2 * n}" NumberOfVerts="0" NumberOfLines="{n}" NumberOfStrips="0" '
-        'NumberOfPolys="0">',
-        *_points(ends),
-        "<Lines>",
-        _array("connectivity", np.arange(2 * n)),
-        _array("offsets", 2 * np.arange(1, n + 1)),
-        "</Lines>",
-    ]
-    return _close(lines, "PolyData", data)
+    return segments(ends, data)
 
 
 def _cells(found: Gathered, names: Mapping[str, str]) -> bytes:
@@ -109,20 +89,7 @@ def _cells(found: Gathered, names: Mapping[str, str]) -> bytes:
             data[f"share_inside_{name}"] = inside + cut / mesh.areas
     for name, values in _imbalances(found).items():
         data[name] = values
-    lines = [
-        *_open("UnstructuredGrid"),
-        f'<Piece NumberOfPoints="{mesh.n_points}" NumberOfCells="{mesh.n_cells}">',
-        *_points(mesh.points),
-        "<Cells>",
-        _array("connectivity", mesh.nodes),
-        _array("offsets", mesh.offsets[1:]),
-        _array("types", np.full(mesh.n_cells, _POLYGON, np.uint8)),
-        "</Cells>",
-        "<PointData>",
-        *(_array(name, values) for name, values in points.items()),
-        "</PointData>",
-    ]
-    return _close(lines, "UnstructuredGrid", data)
+    return polygons(mesh.points, mesh.offsets, mesh.nodes, data, points)
 
 
 def _imbalances(found: Gathered) -> dict[str, Array]:
@@ -140,10 +107,7 @@ def _imbalances(found: Gathered) -> dict[str, Array]:
                 name = law.name if component is None else f"{law.name}-{component}"
                 out[f"imbalance_{name}"] = values[:, c]
     if found.diagnosis is not None:
-        for place in found.diagnosis.where:
-            name = place.law if place.component is None else f"{place.law}-{place.component}"
-            out[f"imbalance_per_area_{name}"] = place.map
-            out[f"significance_{name}"] = place.significance
+        out |= maps_of(found.diagnosis)
     return out
 
 
@@ -168,34 +132,3 @@ def cell_imbalance(ledgers: CellLedgers, law: str) -> Array:
         ]
     )  # fmt: skip
     return out if column.cell is None else out + column.cell[-1]
-
-
-def _open(kind: str) -> list[str]:
-    return [
-        '<?xml version="1.0"?>',
-        f'<VTKFile type="{kind}" version="1.0" byte_order="LittleEndian" header_type="UInt64">',
-        f"<{kind}>",
-    ]
-
-
-def _points(points: Array) -> list[str]:
-    whole = np.column_stack([points, np.zeros(len(points))])
-    return ["<Points>", _array("points", whole), "</Points>"]
-
-
-def _close(lines: list[str], kind: str, data: Mapping[str, Array]) -> bytes:
-    arrays = [_array(name, values) for name, values in data.items()]
-    end = ["</CellData>", "</Piece>", f"</{kind}>", "</VTKFile>"]
-    return "\n".join([*lines, "<CellData>", *arrays, *end, ""]).encode()
-
-
-def _array(name: str, values: Array) -> str:
-    values = np.asarray(values)
-    kind = _KINDS[values.dtype.kind] if values.dtype != np.int64 else "Int64"
-    raw = np.ascontiguousarray(values, _TYPES[kind]).tobytes()
-    text = base64.b64encode(np.uint64(len(raw)).astype("<u8").tobytes() + raw).decode()
-    components = f' NumberOfComponents="{values.shape[1]}"' if values.ndim == 2 else ""
-    safe = "".join(letter if letter.isprintable() else "?" for letter in name)
-    return (
-        f'<DataArray type="{kind}" Name={quoteattr(safe)}{components} format="binary">\n{text}\n</DataArray>'
-    )
