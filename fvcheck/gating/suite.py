@@ -1,19 +1,13 @@
-"""Many check files at once, each in a process of its own."""
+"""Many check files at once, in processes of their own."""
 
 from __future__ import annotations
 
-import json
 import os
-import pickle
-import subprocess
-import sys
-import time
 from collections.abc import Callable, Iterable, Iterator, Sequence
-from concurrent.futures import ThreadPoolExecutor, as_completed
 from dataclasses import dataclass
+from functools import partial
 from glob import glob
 from pathlib import Path
-from tempfile import TemporaryDirectory
 from typing import Any
 
 from fvcheck.errors import FvcheckError, SetupError
@@ -22,22 +16,12 @@ from fvcheck.gating.running import failed, run_case
 from fvcheck.jsonout import dumps
 from fvcheck.ledger import SCHEMA
 from fvcheck.notebook import html_line, html_table
+from fvcheck.tasks import each_done
 from fvcheck.verdict import worst
 from fvcheck.version import __version__
 from fvcheck.wholefile import write_whole
 
 Work = Callable[..., Outcome]
-
-# Not multiprocessing: its processes run the caller's script once more, and one that dies breaks the pool.
-_CHILD = """
-import json, pickle, sys
-told = json.loads(sys.argv[1])
-sys.path[:] = told["path"]
-from importlib import import_module
-outcome = getattr(import_module(told["module"]), told["name"])(*told["arguments"])
-with open(told["out"], "wb") as stream:
-    pickle.dump(outcome, stream)
-"""
 
 
 @dataclass(frozen=True)
@@ -177,44 +161,17 @@ def check_files(paths: str | Path | Iterable[str | Path]) -> list[str]:
 def _run(
     named: Sequence[str], options: tuple[bool, bool], workers: int, work: Work
 ) -> Iterator[tuple[str, Outcome]]:
-    """Outcomes as they come."""
-    if workers == 0:
-        yield from ((path, work(path, *options)) for path in named)
-        return
-    with ThreadPoolExecutor(workers) as threads:
-        jobs = {threads.submit(_in_process, path, options, work): path for path in named}
-        try:
-            for job in as_completed(jobs):
-                yield jobs[job], job.result()
-        finally:
-            threads.shutdown(wait=True, cancel_futures=True)
+    """Outcomes as they come; a failure where the process of a case dies again and again."""
+    for number, outcome in each_done(partial(_worked, work, options), named, workers=workers):
+        path = named[number]
+        yield path, failed(path, str(outcome)) if isinstance(outcome, FvcheckError) else outcome
 
 
-def _in_process(path: str, options: tuple[bool, bool], work: Work) -> Outcome:
-    """What ``work`` says in a fresh interpreter; a failure where that ends without a word."""
-    start = time.perf_counter()
-    with TemporaryDirectory(prefix="fvcheck-") as folder:
-        out = Path(folder) / "outcome"
-        told = {
-            "path": sys.path,
-            "module": work.__module__,
-            "name": work.__name__,
-            "arguments": [path, *options],
-            "out": str(out),
-        }
-        done = subprocess.run(
-            [sys.executable, "-c", _CHILD, json.dumps(told)],
-            stdin=subprocess.DEVNULL,
-            stdout=subprocess.DEVNULL,
-            stderr=subprocess.PIPE,
-            check=False,
-        )
-        if done.returncode == 0 and out.is_file():
-            return pickle.loads(out.read_bytes())  # our own, from a folder of our own
-    said = done.stderr.decode("utf-8", "replace").strip().splitlines()
-    ended = f"signal {-done.returncode}" if done.returncode < 0 else f"exit status {done.returncode}"
-    text = f"the process that ran this case died ({ended})" + (f": {said[-1]}" if said else "")
-    return failed(path, text, time.perf_counter() - start)
+def _worked(work: Work, options: tuple[bool, bool], path: str) -> Outcome:
+    try:
+        return work(path, *options)
+    except Exception as error:  # a case that goes wrong in a way nobody thought of fails by itself
+        return failed(path, f"{type(error).__name__}: {error}")
 
 
 def _write_baselines(outcomes: Sequence[Outcome]) -> tuple[str, ...]:

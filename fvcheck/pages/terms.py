@@ -113,7 +113,7 @@ TERMS: dict[str, Page] = {
         "with their imbalance, degrees and shares inside (VTU). Exit status: that of the verdict.",
     ),
     "gate": Page(
-        "Everything that check files ask for, each in a process of its own: every row's verdict, every "
+        "Everything that check files ask for, in processes of their own: every row's verdict, every "
         "[[expect]], the [baseline]. Without a component or a method, an [[expect]] is about each component, "
         "each route (every control surface of one). Limits are taken as written, but a max alone "
         "limits the size of an imbalance. A row whose verdict an [[expect]] names, or whose imbalance it "
