@@ -23,14 +23,21 @@ def block_boxes(points, offsets, nodes):
     m = len(offsets) - 1
     out = np.empty(((m + PER_BLOCK - 1) // PER_BLOCK, 4))
     for b in prange(len(out)):
-        low_x = low_y = np.inf
-        high_x = high_y = -np.inf
-        for k in range(offsets[b * PER_BLOCK], offsets[min((b + 1) * PER_BLOCK, m)]):
-            x, y = points[nodes[k], 0], points[nodes[k], 1]
-            low_x, high_x = min(low_x, x), max(high_x, x)
-            low_y, high_y = min(low_y, y), max(high_y, y)
-        out[b, 0], out[b, 1], out[b, 2], out[b, 3] = low_x, low_y, high_x, high_y
+        begin, end = offsets[b * PER_BLOCK], offsets[min((b + 1) * PER_BLOCK, m)]
+        out[b, 0], out[b, 1], out[b, 2], out[b, 3] = _box(points, nodes[begin:end])
     return out
+
+
+@njit(cache=True)
+def _box(points, chosen):
+    """x0, y0, x1, y1 of some of the points."""
+    low_x = low_y = np.inf
+    high_x = high_y = -np.inf
+    for p in chosen:
+        x, y = points[p, 0], points[p, 1]
+        low_x, high_x = min(low_x, x), max(high_x, x)
+        low_y, high_y = min(low_y, y), max(high_y, y)
+    return low_x, low_y, high_x, high_y
 
 
 @njit(cache=True)
@@ -38,25 +45,15 @@ def group_boxes(points, triangles, first):
     """(c, 4) bounding boxes of groups of triangles (t, 3), group c in rows first[c]:first[c+1]."""
     out = np.empty((len(first) - 1, 4))
     for c in range(len(out)):
-        low_x = low_y = np.inf
-        high_x = high_y = -np.inf
-        for t in range(first[c], first[c + 1]):
-            for k in range(3):
-                x, y = points[triangles[t, k], 0], points[triangles[t, k], 1]
-                low_x, high_x = min(low_x, x), max(high_x, x)
-                low_y, high_y = min(low_y, y), max(high_y, y)
-        out[c, 0], out[c, 1], out[c, 2], out[c, 3] = low_x, low_y, high_x, high_y
+        corners = triangles[first[c] : first[c + 1]].ravel()
+        out[c, 0], out[c, 1], out[c, 2], out[c, 3] = _box(points, corners)
     return out
 
 
 @njit(cache=True)
 def _blocks_with(points, chosen, boxes):
     """Blocks whose box may hold one of the chosen points: by a summed-area table over the points."""
-    x0 = y0 = np.inf
-    x1 = y1 = -np.inf
-    for p in chosen:
-        x0, x1 = min(x0, points[p, 0]), max(x1, points[p, 0])
-        y0, y1 = min(y0, points[p, 1]), max(y1, points[p, 1])
+    x0, y0, x1, y1 = _box(points, chosen)
     # A margin keeps the last point within the last square.
     dx, dy = (x1 - x0) * 1.000001 / _GRID, (y1 - y0) * 1.000001 / _GRID
     sx, sy = (1.0 / dx if dx > 0.0 else 0.0), (1.0 / dy if dy > 0.0 else 0.0)
