@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator
 from itertools import pairwise
 from pathlib import Path
 from typing import Any
@@ -50,36 +49,11 @@ def circle() -> fvcheck.ControlSurface:
     return fvcheck.ControlSurface.circle(*CIRCLE, name="c")
 
 
-def partition(grid: Any, parts: int, folder: Path) -> Path:
-    """The grid in ``parts`` files of consecutive cells, and the file that lists them."""
-    files = []
-    for number, cells in enumerate(_shares(grid.n_cells, parts)):
-        piece = grid.extract_cells(cells)
-        for name in [*piece.point_data, *piece.cell_data]:
-            if name.startswith("vtk"):
-                (piece.point_data if name in piece.point_data else piece.cell_data).remove(name)
-        path = folder / f"piece_{number}.vtu"
-        piece.save(path)
-        files.append(path.name)
-    arrays = "".join(
-        f'<PDataArray type="Float64" Name="{name}" NumberOfComponents="{3 if name == "U" else 1}"/>'
-        for name in grid.point_data
-    )
-    pieces = "".join(f'<Piece Source="{name}"/>' for name in files)
-    out = folder / "parts.pvtu"
-    out.write_text(
-        '<?xml version="1.0"?><VTKFile type="PUnstructuredGrid" version="0.1" byte_order="LittleEndian">'
-        f'<PUnstructuredGrid GhostLevel="0"><PPointData>{arrays}</PPointData>'
-        '<PPoints><PDataArray type="Float64" NumberOfComponents="3"/></PPoints>'
-        f"{pieces}</PUnstructuredGrid></VTKFile>",
-        encoding="utf-8",
-    )
-    return out
-
-
-def _shares(count: int, parts: int) -> Iterator[Array]:
-    ends = np.linspace(0, count, parts + 1).astype(np.int64)
-    return (np.arange(a, b) for a, b in pairwise(ends))
+def told(path: Path, circle: tuple[float, float, float]) -> list[str]:
+    """Arguments of Python for ``fvcheck balance`` of a circle: mass and momentum."""
+    surface = f"circle({','.join(map(str, circle))})"
+    fluid = ("--density", "1", "--viscosity", "0.01")
+    return ["-m", "fvcheck", "balance", str(path), "-s", surface, *fluid, "--law", "mass,momentum", "-q"]
 
 
 def _jittered(x: Array, y: Array, by: tuple[float, float]) -> Array:

@@ -75,5 +75,12 @@ def clip_and_integrate(grid: Any) -> Callable[[], object]:
     return run
 
 
-READ = "import sys; from vtkmodules.vtkIOXML import {0} as R; r = R(); r.SetFileName(sys.argv[1]); r.Update()"
-"""A bare read, for a process of its own; to be formatted with the reader's name."""
+READ = """
+import sys
+from vtkmodules.vtkIOXML import {0}
+for path in sys.argv[1:]:
+    reader = {0}()
+    reader.SetFileName(path)
+    reader.Update()
+"""
+"""Bare reads, for a process of its own; to be formatted with the reader's name."""

@@ -36,10 +36,12 @@ def peak() -> float:
 
 def process(arguments: list[str], rounds: int = 3) -> tuple[float, float]:
     """Time [s] and peak memory [MB] of a fresh Python process; the best time, the largest memory."""
+    # A forked child starts with the peak of its parent, so the parent must be a small one.
     wrapper = (
         "import resource, subprocess, sys, time; b = time.perf_counter(); "
-        "subprocess.run(sys.argv[1:], stdout=subprocess.DEVNULL, check=False); "
-        "print(time.perf_counter() - b, resource.getrusage(resource.RUSAGE_CHILDREN).ru_maxrss / 1024)"
+        "status = subprocess.run(sys.argv[1:], stdout=subprocess.DEVNULL, check=False).returncode; "
+        "peak = resource.getrusage(resource.RUSAGE_CHILDREN).ru_maxrss / 1024; "
+        "print(status, time.perf_counter() - b, peak)"
     )
     rows = []
     for _ in range(rounds):
@@ -50,5 +52,8 @@ def process(arguments: list[str], rounds: int = 3) -> tuple[float, float]:
             cwd=ROOT,
             check=True,
         )
-        rows.append(tuple(float(word) for word in run.stdout.split()))
+        status, seconds, memory = (float(word) for word in run.stdout.split())
+        if status not in (0, 1, 3):  # verdicts
+            raise RuntimeError(f"{arguments} ended with {status:g}")
+        rows.append((seconds, memory))
     return min(row[0] for row in rows), max(row[1] for row in rows)
