@@ -293,3 +293,27 @@ def test_one_cell_is_too_few_and_no_fault():
     flow = fvcheck.Flow.from_arrays(square, [[0, 1, 2, 3]], point_data=data, fluid=fluid)
     found = fvcheck.diagnose(flow)
     assert [hint.code for hint in found.hints] == ["too-few-cells"] and not found.open
+
+
+@pytest.mark.filterwarnings("error")
+def test_a_fluid_at_rest_under_any_pressure_is_diagnosed():
+    # Sampling bands are nothing where nothing moves; weights by them must not overflow.
+    n = 12
+    x, y = np.meshgrid(np.linspace(0, 1, n), np.linspace(0, 1, n))
+    points = np.column_stack([x.ravel(), y.ravel()])
+    cells = [[k, k + 1, k + n + 1, k + n] for k in range(n * n - n) if k % n < n - 1]
+    for pressure in (9.81 * points[:, 1], np.sin(7 * points[:, 0]), np.zeros(n * n)):
+        flow = fvcheck.Flow.from_arrays(
+            points,
+            cells,
+            point_data={"U": np.zeros((n * n, 3)), "p": pressure},
+            fluid=fvcheck.Fluid(density=1.0, viscosity=1e-3),
+        )
+        why = {one.law: one for one in fvcheck.diagnose(flow).why}["momentum"]
+        assert np.isfinite(why.before)
+        # Hydrostatic pressure is what gravity would balance (or none, were its factor nothing);
+        # without any there is nothing to explain.
+        if pressure[-1] == 9.81:
+            assert "uniform-force-y" in {one.cause.name for one in why.named}
+        if not pressure.any():
+            assert not why.named

@@ -121,7 +121,9 @@ def _sigma(found: Found, kind: str = "sampling") -> Array:
     band = getattr(found, kind)
     typical = np.median(band, axis=0)
     # Components share what one of them can be sure of.
-    return np.maximum(band, _LEAST_BAND * np.maximum(typical, 0.1 * typical.max())).ravel() + 1e-300
+    least = _LEAST_BAND * np.maximum(typical, 0.1 * typical.max())
+    # Where nothing moves, bands may be nothing; squares of what is divided by them must stay numbers.
+    return np.maximum(np.maximum(band, least), 1e-14 * np.abs(found.value).max(initial=0.0)).ravel() + 1e-140
 
 
 def fit(ledgers: Ledgers, model: Model) -> Fit | None:
