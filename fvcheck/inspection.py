@@ -256,8 +256,8 @@ def _motion(flow: Flow) -> tuple[dict[str, float], dict[str, float]]:
     that were told: this is what the data say.
     """
     from fvcheck.overlay.overlay import lay_over
+    from fvcheck.sampling.compiling import compile_sampler
     from fvcheck.sampling.quadrature import PER_PIECE, along
-    from fvcheck.sampling.sampler import compile_sampler
     from fvcheck.surfaces import ControlSurface
 
     field = flow.fields.get("velocity")

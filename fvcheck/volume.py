@@ -17,7 +17,8 @@ from fvcheck.laws.law import convective
 from fvcheck.laws.state import Datum
 from fvcheck.overlay.pieces import DRAWN, Overlay, triangles_of
 from fvcheck.sampling.inner import InnerCells, inner_cells, sample_inner
-from fvcheck.sampling.probe import Probe, Samples, compile_probe, known_values, pin_walls
+from fvcheck.sampling.known import known_values, pin_walls
+from fvcheck.sampling.probe import Probe, Samples, compile_probe
 from fvcheck.sampling.quadrature import PER_PIECE, along, within
 from fvcheck.sampling.sampled import Sampled
 from fvcheck.sampling.sampler import CROSS, DEGREES

@@ -13,7 +13,7 @@ from core_cases import flow_on
 import fvcheck
 from fvcheck import ControlSurface
 from fvcheck.bands import bands
-from fvcheck.sampling.probe import stored_precision
+from fvcheck.sampling.precision import stored_precision
 from fvcheck.verdict import CLOSED, EXIT_STATUS, MESH_LIMITED, OPEN, UNDECIDED, VERDICTS, judge, worst
 
 

@@ -10,7 +10,8 @@ import trial_meshes as tm
 from core_cases import UNIT, mesh_of, meshes
 
 from fvcheck.kernels.triangulate import triangulate_cells
-from fvcheck.sampling.sampler import Known, compile_sampler
+from fvcheck.sampling.compiling import compile_sampler
+from fvcheck.sampling.sampler import Known
 
 LAYER = (0.0, 0.0, 10.0, 0.048)
 POWERS = [(i, j) for n in range(4) for i, j in ((n - k, k) for k in range(n + 1))]

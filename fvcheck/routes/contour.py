@@ -12,7 +12,7 @@ from fvcheck.laws import State
 from fvcheck.overlay.overlay import lay_over
 from fvcheck.routes.estimate import Estimate
 from fvcheck.routes.terms import WIDTH, Terms, View, estimate, fluxes, laws, rows, volume_rows
-from fvcheck.sampling.probe import known_values
+from fvcheck.sampling.known import known_values
 from fvcheck.sampling.sampler import CROSS, DEGREES
 from fvcheck.surfaces import ControlSurface
 from fvcheck.volume import BEST, SampledVolume

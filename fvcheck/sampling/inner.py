@@ -23,7 +23,8 @@ from dataclasses import dataclass
 import numpy as np
 
 from fvcheck.mesh.mesh import Mesh
-from fvcheck.sampling.probe import EXCESS, LEAST_EXTENT, Probe
+from fvcheck.sampling.jumps import EXCESS, LEAST_EXTENT
+from fvcheck.sampling.probe import Probe
 from fvcheck.sampling.sampled import Sampled
 from fvcheck.sampling.sampler import DEGREES
 
@@ -161,7 +162,7 @@ def sample_inner(mesh: Mesh, geometry: InnerCells, probe: Probe) -> Inner:
     """The fields of a probe over whole cells; see `serves`."""
     from fvcheck.kernels.inner import jumps, nodal_quadratics
     from fvcheck.kernels.threads import use_for
-    from fvcheck.sampling.sampler import compile_sampler
+    from fvcheck.sampling.compiling import compile_sampler
 
     (group,) = probe.groups
     data = np.column_stack([field.at(geometry.local_points) for field in group.fields]).astype(float)
