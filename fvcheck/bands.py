@@ -25,6 +25,10 @@ RESOLUTION_FACTOR = 3.0
 # the sampling band. The resolution band has its factor of safety already.
 _COVERAGE, _RESOLUTION_COVERAGE = 3.0, 2.0
 
+# Where what the cubics differ from one another has one sign along the surface, their error is so
+# many times that (to 1.5 in the study, on polygons with averages of a gas).
+_ONE_SIGN = 1.5
+
 # Where fits reach out of their data all errors have one sign; cubics there may be off by
 # this many times what they differ from quadratics and from one another.
 _REACHING = 2.0
@@ -50,7 +54,7 @@ def bands(
     rounding: float = 0.0,
     chosen: Array | None = None,
     reaching: Array | None = None,
-    cross: Array | None = None,
+    cross: Crosswise | None = None,
 ) -> Bands:
     """Bands of Σ third from contributions per piece by degree, (k,) each.
 
@@ -61,11 +65,11 @@ def bands(
     reaching : (m,) bool, m ≤ k, leading pieces whose errors have one sign and add
         up: where values are extrapolated (cell data on the domain boundary, all
         fits reach out on the same side), and near a jump
-    cross : (n,), n ≤ k, leading pieces by the cubics of the other corners (`Sampler.crosswise`)
+    cross : a second opinion on the leading pieces, n ≤ k
 
     What the cubics differ from one another has the order of their error, what they
     differ from quadratics one less: the first is the measure, the second a net
-    below it, once in place of three times where the first is known.
+    below it, once in place of three times where the first can be relied on.
     """
     steps = steps_of(first, second, third, chosen, reaching, cross)
     within, d12 = ~steps.outside, steps.d12
@@ -76,11 +80,24 @@ def bands(
     return Bands(sampling, max(resolution, sampling), rounding)
 
 
+class Crosswise(NamedTuple):
+    """A second opinion of the same order, (n,) each.
+
+    values : contributions by the cubics of the other corners (`Sampler.crosswise`)
+    beside : bool, in cells on the domain boundary, where all cubics reach out to the same
+        side and may agree in what they miss
+    """
+
+    values: Array
+    beside: Array
+
+
 class Steps(NamedTuple):
     """What each piece changes from degree to degree, (k,) each; see `bands`.
 
     d12, d23 : degree 2 against 1, 3 against 2
     apart, known : cubics of the other corners against degree 3, and where there are such
+    relied : where these alone would do
     outside, fell : where errors add up, and where among them the degree fell
     """
 
@@ -88,6 +105,7 @@ class Steps(NamedTuple):
     d23: Array
     apart: Array
     known: Array
+    relied: Array
     outside: Array
     fell: Array
 
@@ -111,23 +129,26 @@ def steps_of(
     third: Array,
     chosen: Array | None = None,
     reaching: Array | None = None,
-    cross: Array | None = None,
+    cross: Crosswise | None = None,
 ) -> Steps:
     """The steps of pieces; parameters as of `bands`."""
-    apart, known = np.zeros(len(third)), np.zeros(len(third), bool)
+    apart = np.zeros(len(third))
+    known, relied = np.zeros((2, len(third)), bool)
     if cross is not None:
-        apart[: len(cross)], known[: len(cross)] = cross - third[: len(cross)], True
+        leading = slice(len(cross.values))
+        apart[leading], known[leading], relied[leading] = cross.values - third[leading], True, ~cross.beside
     fell = np.zeros(len(third), bool) if chosen is None else chosen != third
     outside = fell.copy()
     if reaching is not None:
         outside[: len(reaching)] |= reaching
-    return Steps(second - first, third - second, apart, known, outside, fell)
+    return Steps(second - first, third - second, apart, known, relied, outside, fell)
 
 
 def _half_width(steps: Steps, within: Array) -> float:
-    d23, apart, known = steps.d23[within], steps.apart[within], steps.known[within]
-    net = np.where(known, 1.0, _COVERAGE) * d23
-    settled = max(abs(d23.sum()), float(np.sqrt(np.sum(net**2)))) + spread(apart)
+    d23, apart, relied = steps.d23[within], steps.apart[within], steps.relied[within]
+    net = np.where(relied, 1.0, _COVERAGE) * d23
+    settled = max(abs(d23.sum()), float(np.sqrt(np.sum(net**2))))
+    settled += max(_ONE_SIGN * abs(apart.sum()), spread(apart))
     if steps.unsettled:
-        return float(max(np.abs(d23).sum(), settled if known.any() else 0.0))
+        return float(max(np.abs(d23).sum(), settled if steps.known.any() else 0.0))
     return settled

@@ -7,7 +7,7 @@ from dataclasses import replace
 
 import numpy as np
 
-from fvcheck.bands import Bands, bands
+from fvcheck.bands import Bands, Crosswise, bands
 from fvcheck.laws import Law
 from fvcheck.ledger import Row
 from fvcheck.sampling.sampler import DEGREES
@@ -55,7 +55,8 @@ def rows_of(
         rounding = _SHAKE_COVERAGE * float(np.std(spread)) if spread else 0.0
         rounding += _ROUNDINGS * np.finfo(float).eps * float(raw)
         chosen = pieces_of(volume, best, c) if volume.falls else None
-        band = bands(pieces[0], pieces[1], pieces[2], rounding, chosen, volume.reaching(law), cross[:, c])
+        second = Crosswise(cross[:, c], volume.beside)
+        band = bands(pieces[0], pieces[1], pieces[2], rounding, chosen, volume.reaching(law), second)
         told_here = sum(share * source.along(component) for share, source in told)
         row = _row(law, component, volume, best, c, told_here)
         if closed:

@@ -5,6 +5,7 @@ from __future__ import annotations
 import copy
 from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass, replace
+from functools import cached_property
 from typing import Any
 
 import numpy as np
@@ -460,6 +461,17 @@ class SampledVolume:
     def on_boundary(self) -> Array:
         """(groups,) bool: the row is of pieces on the domain boundary, not of drawn ones."""
         return self._groups % 2 == 1
+
+    @cached_property
+    def beside(self) -> Array:
+        """(groups,) bool: the row is of a cell that the domain boundary touches."""
+        mesh = self.flow.mesh
+        rim = np.zeros(mesh.n_points, bool)
+        rim[mesh.boundary.edges] = True
+        begin, end = mesh.offsets[self.line_cells], mesh.offsets[self.line_cells + 1]
+        first = np.cumsum(end - begin) - (end - begin)
+        nodes = mesh.nodes[np.repeat(begin - first, end - begin) + np.arange((end - begin).sum())]
+        return np.logical_or.reduceat(rim[nodes], first)
 
     def degree_shares(self) -> dict[str, float]:
         """Share of the length of the surface that each degree was used on."""

@@ -12,7 +12,7 @@ from core_cases import flow_on
 
 import fvcheck
 from fvcheck import ControlSurface
-from fvcheck.bands import bands
+from fvcheck.bands import Crosswise, bands
 from fvcheck.sampling.precision import stored_precision
 from fvcheck.verdict import CLOSED, EXIT_STATUS, MESH_LIMITED, OPEN, UNDECIDED, VERDICTS, judge, worst
 
@@ -74,14 +74,33 @@ def test_where_the_degree_fell_the_larger_step_counts():
 
 def test_what_cubics_differ_from_one_another_takes_the_place_of_two_of_three_parts():
     first, second, third = arrays((3, 0.5), (-3, -0.5), (3, 0.5))
-    band = bands(first, second, third, 0.0, cross=third[:2] + np.array([0.1, -0.1]))
+    band = bands(
+        first, second, third, 0.0, cross=Crosswise(third[:2] + np.array([0.1, -0.1]), np.zeros(2, bool))
+    )
     # once 0.5 at the first two, three times at the last, which has no second opinion; 3 √(2 · 0.01)
     assert band.sampling == pytest.approx(np.sqrt(2 * 0.25 + 9 * 0.25) + 3 * np.sqrt(0.02))
 
 
+def test_beside_the_boundary_cubics_are_not_relied_on_alone():
+    first, second, third = arrays((3, 0.5), (-3, -0.5))
+    cross = Crosswise(third + np.array([0.1, -0.1]), np.array([True, False]))
+    band = bands(first, second, third, 0.0, cross=cross)
+    # 0.5 three times in the cell on the boundary, once in the other
+    assert band.sampling == pytest.approx(np.sqrt(9 * 0.25 + 0.25) + 3 * np.sqrt(0.02))
+
+
+def test_cubics_that_differ_with_one_sign_count_half_as_much_again():
+    first, second, third = arrays(*[(8.0, 0.0)] * 16)
+    cross = Crosswise(third + 0.25, np.zeros(16, bool))
+    # their sum is 4, three times the root sum of squares is 3
+    assert bands(first, second, third, 0.0, cross=cross).sampling == pytest.approx(1.5 * 4.0)
+
+
 def test_where_values_are_extrapolated_both_differences_count_twice():
     first, second, third = arrays((4, 0.5), (-4, -0.25))
-    band = bands(first, second, third, 0.0, None, np.array([True, True]), third + np.array([0.125, -0.25]))
+    reaching = np.array([True, True])
+    cross = Crosswise(third + np.array([0.125, -0.25]), reaching)
+    band = bands(first, second, third, 0.0, None, reaching, cross)
     assert band.sampling == pytest.approx(2 * (0.5 + 0.25 + 0.125 + 0.25))
 
 

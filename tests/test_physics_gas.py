@@ -233,7 +233,7 @@ def test_a_diamond_section_has_the_wave_drag_of_shock_expansion_theory():
     assert ledger["entropy"].imbalance > 0
 
 
-@pytest.mark.parametrize(("h", "error"), [(0.05, 0.15), (0.025, 0.08), (0.0125, 0.05)])
+@pytest.mark.parametrize(("h", "error"), [(0.05, 0.16), (0.025, 0.08), (0.0125, 0.04)])
 def test_pressure_on_a_wall_does_not_overshoot_where_shocks_and_fans_stand_on_it(h, error):
     flow = diamond_flow(h)
     data = flow.fields["pressure"].values

@@ -7,7 +7,7 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
-from fvcheck.bands import bands, steps_of
+from fvcheck.bands import Crosswise, bands, steps_of
 from fvcheck.entries import pieces_of
 from fvcheck.laws import Law
 from fvcheck.overlay.pieces import Overlay
@@ -185,7 +185,9 @@ def along_border(volume: SampledVolume, law: Law, border: Border) -> list[Along]
         reaching = volume.reaching(law)
         first, second, third, chosen = pieces
         fallen = chosen if volume.falls else None
-        sampling, resolution = shares(first, second, third, fallen, reaching, cross[:, c])
+        sampling, resolution = shares(
+            first, second, third, fallen, reaching, Crosswise(cross[:, c], volume.beside)
+        )
         lines = len(whole)
         out.append(
             Along(
@@ -203,7 +205,7 @@ def along_border(volume: SampledVolume, law: Law, border: Border) -> list[Along]
 
 
 def shares(
-    first: Array, second: Array, third: Array, chosen: Array | None, reaching: Array, cross: Array
+    first: Array, second: Array, third: Array, chosen: Array | None, reaching: Array, cross: Crosswise
 ) -> tuple[Array, Array]:
     """What each term adds to the sampling and to the resolution band; sums are `bands` without rounding.
 

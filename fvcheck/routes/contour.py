@@ -91,6 +91,7 @@ def line_terms(volume: SampledVolume, sign: float, counted: Array, carried: bool
         reaching=reaching(volume),
         parts=_parts(volume, border(volume.line_state(BEST)), sign),
         cross=volume.per_line_cell(rows(border(volume.line_state(CROSS)), sign)),
+        beside=volume.beside,
     )
 
 

@@ -13,7 +13,7 @@ from typing import Any
 
 import numpy as np
 
-from fvcheck.bands import Bands, bands
+from fvcheck.bands import Bands, Crosswise, bands
 from fvcheck.laws import State, find_law
 from fvcheck.routes.estimate import Estimate
 from fvcheck.sampling.sampler import CROSS, DEGREES
@@ -48,7 +48,7 @@ class Terms:
     shaken : (s, 7) sums from data with a shaken last digit
     reaching : (m,) bool, leading rows where values are extrapolated
     parts : name -> (x, y), the terms summed
-    cross : (n, 7) leading rows by `CROSS`
+    cross, beside : (n, 7) leading rows by `CROSS`, (n,) as in `Crosswise`
     """
 
     by_degree: tuple[Array, Array, Array]
@@ -57,6 +57,7 @@ class Terms:
     reaching: Array | None
     parts: Mapping[str, Any]
     cross: Array | None = None
+    beside: Array | None = None
 
 
 def laws() -> list[Any]:
@@ -131,7 +132,9 @@ def estimate(terms: Terms, view: View, method: str, **more: Any) -> Estimate:
     for c in range(best.shape[1]):
         rounding = rounding_of(shaken[:, c], best[:, c])
         chosen = None if terms.best is None else best[:, c]
-        other = None if cross is None else cross[:, c]
+        other = None
+        if cross is not None and terms.beside is not None:
+            other = Crosswise(cross[:, c], terms.beside)
         band = bands(first[:, c], second[:, c], third[:, c], rounding, chosen, terms.reaching, other)
         half.append((band.sampling, band.resolution))
 
@@ -186,5 +189,6 @@ def tally(volume: SampledVolume, number: Callable[[State], Array]) -> tuple[floa
     chosen = third if best is None else best
     shaken = np.array([number(state).sum() for state in volume.shaken_line_states()])
     rounding = rounding_of(shaken, chosen)
-    near, cross = volume.line.near_jump, rows(volume.line_state(CROSS))
-    return float(chosen.sum()), bands(first, second, third, rounding, best, near, cross)
+    cross = Crosswise(rows(volume.line_state(CROSS)), volume.beside)
+    band = bands(first, second, third, rounding, best, volume.line.near_jump, cross)
+    return float(chosen.sum()), band

@@ -9,9 +9,10 @@ Array = np.ndarray
 # A jump shows where the three polynomials of a triangle disagree by more than
 # DISAGREE of the range of the data two rings around, and the value leaves that
 # range by more than EXCESS of it. Smooth fields down to eight cells a wave
-# hardly ever do both, fits across a captured shock do so in each passage. Beside
-# the domain boundary a straight profile through cell centres leaves the range.
-DISAGREE, EXCESS, EXCESS_RIM = 0.15, 0.01, 0.25
+# hardly ever do both, fits across a captured shock do so in each passage. Beside the
+# domain boundary a straight profile through cell centres leaves the range by a quarter,
+# one that steepens towards the boundary by more.
+DISAGREE, EXCESS, EXCESS_RIM = 0.15, 0.01, 0.4
 
 # Around a jump even this excess is an overshoot, and a value on which the polynomials
 # disagree by more than APART of the range is none.
