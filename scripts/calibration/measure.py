@@ -28,11 +28,13 @@ class Trial:
     """One row of one ledger; exact fields balance, so its imbalance is its error.
 
     degrees : imbalance by polynomials of degree 1, 2, 3
+    share : of the surface that degree 3 was used on; clear : as in `Drawn`
     """
 
     row: Row
     degrees: tuple[float, float, float]
     share: float
+    clear: bool = True
 
 
 @contextmanager
@@ -62,7 +64,7 @@ def trials(setting: Setting, flow: Flow, surfaces: Sequence[Drawn]) -> dict[str,
         with listening() as heard:
             ledger = fvcheck.balance(flow, drawn.surface, setting.subject.laws)
         for row, degrees in zip(ledger.rows, heard):
-            out.setdefault(row.label, []).append(Trial(row, degrees, ledger.degrees["3"]))
+            out.setdefault(row.label, []).append(Trial(row, degrees, ledger.degrees["3"], drawn.clear))
     return out
 
 
@@ -80,6 +82,7 @@ def statistics(found: Sequence[Trial]) -> dict[str, float]:
         out[f"p95_{degree}"] = float(np.percentile(errors[:, k], 95))
     out |= {
         "median": float(np.median(reported)),
+        "median_clear": float(np.median(reported[[t.clear for t in kept]])),
         "p95": float(np.percentile(reported, 95)),
         "band": float(np.median(band)),
         "resolution_band": float(np.median(resolution)),

@@ -21,10 +21,14 @@ _TOUCHING = 0.3
 
 @dataclass(frozen=True, eq=False)
 class Drawn:
-    """A control surface; ``core`` (x, y, a, b) is an ellipse well inside the volume."""
+    """A control surface; ``core`` (x, y, a, b) is an ellipse well inside the volume.
+
+    clear : no body is cut or enclosed
+    """
 
     surface: ControlSurface
     core: tuple[float, float, float, float]
+    clear: bool = True
 
 
 def random_surfaces(subject: Subject, size: str, count: int, seed: int = 0) -> list[Drawn]:
@@ -98,9 +102,12 @@ def _against(rng, centre: Array, reach: Array, low: Array, high: Array) -> Array
 def _drawn(subject: Subject, points: Array, name: str, stretched: bool) -> Drawn | None:
     x0, y0, x1, y1 = subject.exact.domain
     volume = shapely.Polygon(points).intersection(shapely.box(x0, y0, x1, y1))
+    clear = True
     if subject.exact.hole is not None:
         x, y, r = subject.exact.hole
-        volume = volume.difference(shapely.Point(x, y).buffer(1.02 * r))
+        body = shapely.Point(x, y).buffer(1.02 * r)
+        clear = not volume.intersects(body)
+        volume = volume.difference(body)
     unit = np.array(subject.unit)
     scaled = shapely.transform(volume, lambda p: p / unit)
     if scaled.area < 0.3 * _SMALLEST**2:
@@ -108,4 +115,4 @@ def _drawn(subject: Subject, points: Array, name: str, stretched: bool) -> Drawn
     spoke = np.array(shapely.maximum_inscribed_circle(scaled, tolerance=0.01 * _SMALLEST).coords)
     radius = 0.5 * np.hypot(*(spoke[1] - spoke[0])) * unit
     x, y = spoke[0] * unit
-    return Drawn(ControlSurface.polygon(points, name=name), (x, y, radius[0], radius[1]))
+    return Drawn(ControlSurface.polygon(points, name=name), (x, y, radius[0], radius[1]), clear)
