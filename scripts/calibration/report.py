@@ -115,7 +115,7 @@ def _plants_and_floor(record: dict) -> Iterable[str]:
             f"(sampling band {record['band']:.1e}, resolution band {record['resolution_band']:.1e})"
         )
     limit = FLOOR.get(tuple(record[k] for k in ("field", "mesh", "location", "size")))
-    # Linear sampling left 7.7e-5 about the cylinder of the floor: no surface there cut the body (2.7e-3 then).
+    # Linear sampling left 7.7e-5 about the cylinder of the floor: no surface there cut the body (2.7e-3).
     if limit and record["row"] == "mass" and record["median_clear"] > limit:
         yield f"floor {limit:.1e} not reached: {cell}: {record['median_clear']:.1e}"
 
