@@ -123,6 +123,28 @@ def test_a_step_counts_from_the_end_when_negative():
     assert strict(one.out)["case"]["step"] == 3
 
 
+@pytest.mark.parametrize(
+    ("line", "offered"),
+    [
+        ("fvcheck bal", "balance"),
+        ("fvcheck balance --visc", "--viscosity"),
+        ("fvcheck balance --law mass,mom", "mass,momentum"),
+        ("fvcheck balance --pressure-kind red", "reduced"),
+        ("fvcheck explain und", "undecided"),
+    ],
+)
+def test_the_shell_is_told_how_a_line_goes_on(line, offered):
+    asked = {"_FVCHECK_COMPLETE": "complete_bash", "COMP_WORDS": line, "COMP_CWORD": str(line.count(" "))}
+    done = subprocess.run(
+        [sys.executable, "-m", "fvcheck"],
+        env={**os.environ, **asked},
+        capture_output=True,
+        text=True,
+        cwd=ROOT,
+    )
+    assert (done.stdout.split(), done.stderr, done.returncode) == ([offered], "", 0)
+
+
 def test_version_and_help_are_everywhere():
     for command in ("inspect", "balance", "demo", "explain"):
         assert fvcheck(command, "--version").out == f"fvcheck {package.__version__}\n"

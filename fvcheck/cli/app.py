@@ -28,7 +28,6 @@ _ClickError: Any = typer.BadParameter.__mro__[2]
 app = typer.Typer(
     help="Does this 2D flow field conserve mass, momentum and energy?",
     epilog="Exit status: 0 closed, 1 open, 2 unusable input, 3 undecided or mesh-limited.",
-    add_completion=False,
     pretty_exceptions_enable=False,
     rich_markup_mode="rich",
     context_settings={"help_option_names": ["-h", "--help"]},
@@ -81,8 +80,11 @@ def run(arguments: Sequence[str]) -> int:
     except (KeyboardInterrupt, typer.Abort):
         _fail("stopped from the keyboard.")
         return INTERRUPTED
-    except (BrokenPipeError, SystemExit):  # the latter is how rich tells it, from within the help
-        # The interpreter flushes once more at its end; nobody is there to read it.
+    except (BrokenPipeError, SystemExit) as leaving:
+        if isinstance(leaving, SystemExit) and not isinstance(leaving.__context__, BrokenPipeError):
+            return int(leaving.code or 0)  # the shell was told how to complete a line
+        # The interpreter flushes once more at its end; nobody is there to read it. From within
+        # the help rich tells it by leaving.
         os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
         return PIPE_CLOSED
     except MemoryError:

@@ -21,20 +21,35 @@ from fvcheck.errors import SetupError
 _READ, _FLUID, _CHECK, _SHOW = "Reading the export", "Fluid (SI or consistent units)", "Checking", "Output"
 
 
-def _read(*names: str, metavar: str | None = None, text: str) -> Any:
-    return Option(*names, metavar=metavar, help=text, rich_help_panel=_READ)
+Completion = Callable[[str], list[str]] | None
 
 
-def _fluid(metavar: str, text: str) -> Any:
-    return Option(metavar=metavar, help=text, rich_help_panel=_FLUID)
+def _read(*names: str, metavar: str | None = None, text: str, words: Completion = None) -> Any:
+    return Option(*names, metavar=metavar, help=text, rich_help_panel=_READ, autocompletion=words)
 
 
-def _check(*names: str, metavar: str, text: str) -> Any:
-    return Option(*names, metavar=metavar, help=text, rich_help_panel=_CHECK)
+def _fluid(metavar: str, text: str, words: Completion = None) -> Any:
+    return Option(metavar=metavar, help=text, rich_help_panel=_FLUID, autocompletion=words)
+
+
+def _check(*names: str, metavar: str, text: str, words: Completion = None) -> Any:
+    return Option(*names, metavar=metavar, help=text, rich_help_panel=_CHECK, autocompletion=words)
 
 
 def _show(*names: str, metavar: str | None = None, text: str) -> Any:
     return Option(*names, metavar=metavar, help=text, rich_help_panel=_SHOW)
+
+
+def _one_of(*words: str) -> Completion:
+    """What the shell offers for an option of few words."""
+    return lambda incomplete: [word for word in words if word.startswith(incomplete)]
+
+
+def _laws(incomplete: str) -> list[str]:
+    from fvcheck.pages import topics
+
+    done, comma, name = incomplete.rpartition(",")
+    return [done + comma + law for law in topics()["laws"] if law.startswith(name)]
 
 
 File = Annotated[Path, Argument(metavar="FILE", help="An export in an open format.", show_default=False)]
@@ -71,11 +86,21 @@ class Reading:
         ),
     ] = None
     cell_values: Annotated[
-        str | None, _read(metavar="average|centroid", text="What a cell value is; default average.")
+        str | None,
+        _read(
+            metavar="average|centroid",
+            text="What a cell value is; default average.",
+            words=_one_of("average", "centroid"),
+        ),
     ] = None
-    plane: Annotated[str | None, _read(metavar="auto|xy|xz|yz", text="Plane of the run; default auto.")] = (
-        None
-    )
+    plane: Annotated[
+        str | None,
+        _read(
+            metavar="auto|xy|xz|yz",
+            text="Plane of the run; default auto.",
+            words=_one_of("auto", "xy", "xz", "yz"),
+        ),
+    ] = None
     step: Annotated[str | None, _read(metavar="INDEX|last|all", text="Stored state; default last.")] = None
     axisymmetric: Annotated[bool, _read("--axisymmetric", text="The run is axisymmetric.")] = False
     axis: Annotated[
@@ -91,7 +116,12 @@ class FluidOptions:
     density: Annotated[str | None, _fluid("VALUE|ARRAY", "Density.")] = None
     viscosity: Annotated[str | None, _fluid("VALUE|ARRAY", "Dynamic viscosity.")] = None
     pressure_kind: Annotated[
-        str | None, _fluid("KIND", "static (default), kinematic (p/rho), or reduced (without the weight).")
+        str | None,
+        _fluid(
+            "KIND",
+            "static (default), kinematic (p/rho), or reduced (without the weight).",
+            words=_one_of("static", "kinematic", "reduced"),
+        ),
     ] = None
     gravity: Annotated[str | None, _fluid("GX,GY", "Gravity, in the plane of the run.")] = None
     gas_constant: Annotated[str | None, _fluid("R", "Of an ideal gas.")] = None
@@ -117,7 +147,8 @@ class Limits:
     """Which laws, and what counts as balanced."""
 
     law: Annotated[
-        list[str] | None, _check(metavar="LAW,…", text="Laws; default every law that the data allow.")
+        list[str] | None,
+        _check(metavar="LAW,…", text="Laws; default every law that the data allow.", words=_laws),
     ] = None
     about: Annotated[
         str | None, _check(metavar="X,Y", text="Point of the angular-momentum law; default 0,0.")
