@@ -41,6 +41,7 @@ def run_tasks(
     *,
     workers: int | None = None,
     scheduler: str | None = None,
+    limit: float | None = None,
     progress: Callable[[int], None] | None = None,
 ) -> list[Any]:
     """``function(item)`` of each item, in their order; where it raises an FvcheckError, that error.
@@ -48,7 +49,7 @@ def run_tasks(
     progress : called with the number of all each time that one is done; the rest as in `each_done`
     """
     found: dict[int, Any] = {}
-    for number, result in each_done(function, items, workers=workers, scheduler=scheduler):
+    for number, result in each_done(function, items, workers=workers, scheduler=scheduler, limit=limit):
         found[number] = result
         if progress is not None:
             progress(len(items))
@@ -56,13 +57,20 @@ def run_tasks(
 
 
 def each_done(
-    function: Task, items: Sequence[Any], *, workers: int | None = None, scheduler: str | None = None
+    function: Task,
+    items: Sequence[Any],
+    *,
+    workers: int | None = None,
+    scheduler: str | None = None,
+    limit: float | None = None,
 ) -> Iterator[tuple[int, Any]]:
     """(number, result or FvcheckError) of each item as it is done, in any order.
 
     function : of a module, or a `functools.partial` of one; it and the items must be possible to pickle
     workers : processes of this machine; None or 0 for this one, one item after another
     scheduler : address of a Dask scheduler, in place of ``workers``
+    limit : seconds that an item may take in a process; longer, and it is ended, and an FvcheckError
+        stands for its result
 
     A process or worker that dies is replaced and its item begun again, three
     times in all; then an FvcheckError stands for its result. Other exceptions
@@ -70,12 +78,18 @@ def each_done(
     """
     if workers is not None and workers < 0:
         raise SetupError(f"{workers} workers are asked for", mend="Give 0 or more.")
+    if limit is not None and not (limit > 0 and workers):
+        raise SetupError(
+            f"a limit of {limit:g} s is given"
+            + ("" if workers else " without processes that could be ended"),
+            mend="Give a number above 0, and workers.",
+        )
     if scheduler is not None:
         if workers:
             raise SetupError("workers and a scheduler are given", mend="A scheduler has workers of its own.")
         return _on_scheduler(function, items, scheduler)
     if workers:
-        return _in_processes(function, items, min(workers, len(items)))
+        return _in_processes(function, items, min(workers, len(items)), limit)
     return ((number, guarded(function, item)) for number, item in enumerate(items))
 
 
@@ -96,13 +110,15 @@ def _pickled(value: Any) -> bytes:
         ) from None
 
 
-def _in_processes(function: Task, items: Sequence[Any], count: int) -> Iterator[tuple[int, Any]]:
+def _in_processes(
+    function: Task, items: Sequence[Any], count: int, limit: float | None
+) -> Iterator[tuple[int, Any]]:
     head = _pickled(function)
     waiting: SimpleQueue[int] = SimpleQueue()
     for number in range(len(items)):
         waiting.put(number)
     done: SimpleQueue[tuple[int, Any]] = SimpleQueue()
-    processes = [_Process(head) for _ in range(count)]
+    processes = [_Process(head, limit) for _ in range(count)]
 
     def work(process: _Process) -> None:
         while True:
@@ -139,8 +155,8 @@ def _in_processes(function: Task, items: Sequence[Any], count: int) -> Iterator[
 class _Process:
     """An interpreter of its own that answers one item after another; begun when first asked."""
 
-    def __init__(self, head: bytes) -> None:
-        self._head = head
+    def __init__(self, head: bytes, limit: float | None) -> None:
+        self._head, self._limit = head, limit
         self._child: subprocess.Popen[bytes] | None = None
         self._said: IO[bytes] | None = None
         self._ended = False
@@ -150,14 +166,18 @@ class _Process:
         """The result or the FvcheckError of an item; whatever else it raised is raised here."""
         for _ in range(_TRIES):
             child = self._begun()
+            overdue = threading.Event()
             try:
                 assert child.stdin is not None and child.stdout is not None
-                _send(child.stdin, item)
-                kind, value = pickle.loads(_receive(child.stdout))  # our own child
+                with _ended_after(child, self._limit, overdue):
+                    _send(child.stdin, item)
+                    kind, value = pickle.loads(_receive(child.stdout))  # our own child
             except (OSError, EOFError, ValueError, pickle.UnpicklingError):
                 why = self._post_mortem(child)
                 if self._ended:
                     break
+                if overdue.is_set():
+                    return FvcheckError(f"it was ended, having taken longer than {self._limit:g} s")
                 continue
             if kind == "raised":
                 raise value
@@ -206,6 +226,27 @@ class _Process:
         if child is not None:
             child.kill()
             child.wait()
+
+
+@contextlib.contextmanager
+def _ended_after(
+    child: subprocess.Popen[bytes], limit: float | None, overdue: threading.Event
+) -> Iterator[None]:
+    """Within it a child lives no longer than ``limit`` seconds; ``overdue`` is set if it was ended."""
+    if limit is None:
+        yield
+        return
+
+    def end() -> None:
+        overdue.set()
+        child.kill()
+
+    timer = threading.Timer(limit, end)
+    timer.start()
+    try:
+        yield
+    finally:
+        timer.cancel()
 
 
 def _send(stream: IO[bytes], data: bytes) -> None:

@@ -283,6 +283,13 @@ def test_a_crash_fails_its_own_case_and_no_other(work, tmp_path):
     assert "died" in found.failures[0][1].message or "KeyError" in found.failures[0][1].message
 
 
+def test_a_case_that_hangs_fails_by_itself(tmp_path):
+    names = [check_file(tmp_path, DEMO, name) for name in ("bad.toml", "one.toml")]
+    found = fvcheck.gate(names, workers=2, diagnosis=False, work=crashing.hang_at_bad, time_limit=10.0)
+    assert [outcome.status for outcome in found.outcomes] == [2, 0]
+    assert found.failures[0][1].message == "it was ended, having taken longer than 10 s"
+
+
 def test_a_plain_script_may_call_the_gate(tmp_path):
     # No guard around the call, and once from standard input: nothing of the script runs twice.
     code = f"import fvcheck; print('once'); print(fvcheck.gate({str(check_file(tmp_path))!r}).status)"

@@ -68,6 +68,19 @@ def test_a_task_that_kills_each_process_fails_alone():
     assert "signal 9" in str(found[1])
 
 
+def test_a_task_that_takes_too_long_is_ended_and_fails_alone():
+    # a process takes a fraction of a second to begin
+    found = run_tasks(work.sleep_at_one, range(4), workers=2, limit=5.0)
+    assert [found[n] for n in (0, 2, 3)] == [0, 2, 3]
+    assert isinstance(found[1], FvcheckError) and "longer than 5 s" in str(found[1])
+
+
+@pytest.mark.parametrize("given", [{}, {"workers": 0}, {"workers": 1, "limit": 0.0}])
+def test_a_limit_needs_a_process_and_a_time(given):
+    with pytest.raises(SetupError, match="limit"):
+        run_tasks(work.square, [1], **{"limit": 1.0, **given})
+
+
 def test_leaving_early_ends_the_processes():
     for _ in each_done(work.square, range(50), workers=2):
         break

@@ -27,6 +27,10 @@ def command(
         int | None,
         Option(metavar="N", min=1, help="Processes; default one per processor.", rich_help_panel=_RUN),
     ] = None,
+    time_limit: Annotated[
+        float | None,
+        Option(metavar="SECONDS", help="A case that takes longer has failed.", rich_help_panel=_RUN),
+    ] = None,
     update_baseline: Annotated[
         bool,
         Option("--update-baseline", help="Write baselines; do not compare.", rich_help_panel=_RUN),
@@ -63,6 +67,7 @@ def command(
             workers=workers,
             update_baseline=update_baseline,
             diagnosis=not no_diagnosis,
+            time_limit=time_limit,
             on_case=lambda _outcome, total: advance(total),
         )
     if junit is not None:

@@ -106,6 +106,7 @@ def gate(
     workers: int | None = None,
     update_baseline: bool = False,
     diagnosis: bool = True,
+    time_limit: float | None = None,
     on_case: Callable[[Outcome, int], None] | None = None,
     work: Work = run_case,
 ) -> GateResult:
@@ -117,12 +118,13 @@ def gate(
     update_baseline : write the results as baselines instead of comparing with
         them; all or, where any case could not be run, none
     diagnosis : with what `fvcheck.diagnose` says of open rows
+    time_limit : seconds that a case may take; longer, and it is ended and has failed
     on_case : called with each outcome and the number of all, for a progress bar
     work : what is run for each check file, a function of a module
 
-    Raises SetupError for a
-    pattern that meets nothing, and for baselines that cannot be written; what
-    fails within a case is a finding of its outcome.
+    Raises SetupError for a pattern that meets nothing, for baselines that cannot
+    be written, and for a time limit that is none or is given with ``workers`` 0;
+    what fails within a case is a finding of its outcome.
     """
     named = check_files(paths)
     if workers is not None and workers < 0:
@@ -130,7 +132,7 @@ def gate(
     options = (diagnosis, not update_baseline)
     count = min(len(named), os.cpu_count() or 1) if workers is None else min(workers, len(named))
     found: dict[str, Outcome] = {}
-    for path, outcome in _run(named, options, count, work):
+    for path, outcome in _run(named, options, count, time_limit, work):
         found[path] = outcome
         if on_case is not None:
             on_case(outcome, len(named))
@@ -159,10 +161,10 @@ def check_files(paths: str | Path | Iterable[str | Path]) -> list[str]:
 
 
 def _run(
-    named: Sequence[str], options: tuple[bool, bool], workers: int, work: Work
+    named: Sequence[str], options: tuple[bool, bool], workers: int, limit: float | None, work: Work
 ) -> Iterator[tuple[str, Outcome]]:
     """Outcomes as they come; a failure where the process of a case dies again and again."""
-    for number, outcome in each_done(partial(_worked, work, options), named, workers=workers):
+    for number, outcome in each_done(partial(_worked, work, options), named, workers=workers, limit=limit):
         path = named[number]
         yield path, failed(path, str(outcome)) if isinstance(outcome, FvcheckError) else outcome
 
