@@ -287,7 +287,7 @@ def test_a_case_that_hangs_fails_by_itself(tmp_path):
     names = [check_file(tmp_path, DEMO, name) for name in ("bad.toml", "one.toml")]
     found = fvcheck.gate(names, workers=2, diagnosis=False, work=crashing.hang_at_bad, time_limit=10.0)
     assert [outcome.status for outcome in found.outcomes] == [2, 0]
-    assert found.failures[0][1].message == "it was ended, having taken longer than 10 s"
+    assert "longer than 10 s" in found.failures[0][1].message
 
 
 def test_a_plain_script_may_call_the_gate(tmp_path):

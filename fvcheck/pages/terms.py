@@ -126,7 +126,8 @@ TERMS: dict[str, Page] = {
         "A pipeline needs a yes or no. What is missing is never a yes: a file, a field, a surface, a row, a "
         "number, a baseline of another surface, mesh frame or unit, a process that died.",
         "fvcheck gate check.toml, or several, or a pattern; --update-baseline writes all baselines or none; "
-        "--junit, --markdown, --json PATH; --workers N; --time-limit SECONDS ends a case that hangs; --no-diagnosis leaves out why a row is open. "
+        "--junit, --markdown, --json PATH; --workers N; --time-limit SECONDS ends a case that hangs; "
+        "--no-diagnosis leaves out why a row is open. "
         "To begin: fvcheck inspect FILE --start-check CHECK.toml. In pytest: fvcheck.testing.\n"
         "Exit status: the worst, 2 (could not be checked) before 1 (missed, open, drift) before 3 before 0. "
         "In JUnit: error, failure, skipped, none.",
