@@ -145,6 +145,7 @@ class BodyEntry(Table):
     name: str = Field(description="the name of a patch")
     reference: Reference | None = Field(default=None, description="{ velocity = …, length = …, density = … }")
     about: Pair | None = Field(default=None, description="the point of its moment, a list of two numbers")
+    wake: str | None = Field(default=None, description='a line across its wake, "line(x y, x y)"')
 
 
 class Limit(Table):

@@ -283,6 +283,47 @@ def test_a_crash_fails_its_own_case_and_no_other(work, tmp_path):
     assert "died" in found.failures[0][1].message or "KeyError" in found.failures[0][1].message
 
 
+def test_the_wake_of_a_body_is_expected_with_its_line(tmp_path):
+    import pyvista
+
+    # u = 1 − a exp(−y²/b²) at the pressure of the stream: D = ρ b √π (a − a²/√2), closed form
+    x, y = np.linspace(0, 2, 41), np.linspace(-2, 2, 161)
+    grid = pyvista.RectilinearGrid(x, y, np.zeros(1))
+    height = grid.points[:, 1]
+    grid["U"] = np.stack([1 - 0.4 * np.exp(-((height / 0.3) ** 2)), 0 * height, 0 * height], axis=1)
+    grid["p"] = 0 * height
+    grid.save(tmp_path / "wake.vtr")
+    drag = 0.3 * np.sqrt(np.pi) * (0.4 - 0.4**2 / np.sqrt(2))
+    text = f"""
+[case]
+file = "wake.vtr"
+laws = ["mass"]
+[fluid]
+density = 1.0
+[[surface]]
+shape = "box(0.5, -1, 1.5, 1)"
+[[body]]
+name = "left"
+reference = {{ velocity = 1.0, length = 1.0, density = 1.0 }}
+wake = "line(1.03 -1.9, 1.03 1.9)"
+[[expect]]
+body = "left"
+method = "wake"
+drag = {{ value = {drag}, tolerance_percent = 0.1 }}
+"""
+    path = tmp_path / "check.toml"
+    path.write_text(text, encoding="utf-8")
+    found = judged(path)
+    assert found.status == 0, found.failures
+    assert [f.status for f in found.outcomes[0].findings if f.kind == "expectation"] == [0]
+    without = tmp_path / "without.toml"
+    without.write_text(text.replace("wake = ", "# wake = "), encoding="utf-8")
+    assert judged(without).status == 1
+    wrong = tmp_path / "wrong.toml"
+    wrong.write_text(text.replace("line(1.03", "lime(1.03"), encoding="utf-8")
+    assert "[[body]] left, wake" in judged(wrong).failures[0][1].message
+
+
 def test_a_case_that_hangs_fails_by_itself(tmp_path):
     names = [check_file(tmp_path, DEMO, name) for name in ("bad.toml", "one.toml")]
     found = fvcheck.gate(names, workers=2, diagnosis=False, work=crashing.hang_at_bad, time_limit=10.0)

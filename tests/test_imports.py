@@ -49,6 +49,7 @@ ROWS = [
     ],
     [
         "checkfile",
+        "settings",
         "inspection",
         "starting",
         "demo",

@@ -93,7 +93,7 @@ def command(
         "distances": [number(word, "--distance", "--distance D,D,…") for word in words(distance) or ()],
         "surfaces": settings.surfaces if surface else None,
         "band_between": None if band is None else vector(band, "--band", "--band D1,D2"),
-        "wake_line": None if wake is None else ControlSurface.parse(wake),
+        "wake_line": settings.wakes if wake is None else ControlSurface.parse(wake),
         "wake_formula": wake_formula,
         "sweep": None if sweep is None else parse_family(sweep),
         "about": settings.moment_about(names) if about is None else vector(about, "--about", "--about X,Y"),

@@ -5,8 +5,9 @@ from __future__ import annotations
 from pathlib import Path
 
 from fvcheck.cli.options import FluidOptions, Limits, Reading
-from fvcheck.cli.settings import Settings, load_check, settle
+from fvcheck.cli.settings import settle
 from fvcheck.errors import SetupError
+from fvcheck.settings import Settings, load_check
 
 
 def files_and_settings(

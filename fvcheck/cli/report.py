@@ -67,9 +67,10 @@ def command(
     """
     from fvcheck.cli.output import check_target, show
     from fvcheck.cli.progress import progress
-    from fvcheck.cli.settings import load_check, settle
+    from fvcheck.cli.settings import settle
     from fvcheck.reporting import report
     from fvcheck.reporting.output import check_page_path, folder_for
+    from fvcheck.settings import load_check
     from fvcheck.text.console import render
     from fvcheck.text.ledger import verdict_line
     from fvcheck.verdict import EXIT_STATUS
@@ -95,6 +96,7 @@ def command(
             title=title,
             bodies={name: settings.bodies.get(name) for name in names},
             moment_about=settings.moment_about(names),
+            wake_line=settings.wakes,
             tolerance=settings.tolerance,
             scale=settings.scale,
             sources=settings.sources,

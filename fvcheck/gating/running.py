@@ -18,10 +18,10 @@ from fvcheck.verdict import OPEN, worst
 
 if TYPE_CHECKING:
     from fvcheck.checkmodel import CheckFile
-    from fvcheck.cli.settings import Settings
     from fvcheck.flow import Flow
     from fvcheck.ledger import Result
     from fvcheck.mesh.mesh import Mesh
+    from fvcheck.settings import Settings
     from fvcheck.sources import Source
 
 
@@ -30,7 +30,7 @@ def run_case(path: str, diagnose_open: bool = True, compare: bool = True) -> Out
 
     compare : with the baseline, where the check file names one
     """
-    from fvcheck.cli.settings import load_check
+    from fvcheck.settings import load_check, settled
 
     start = time.perf_counter()
     baseline = ""
@@ -39,7 +39,7 @@ def run_case(path: str, diagnose_open: bool = True, compare: bool = True) -> Out
         if check.baseline is not None:
             baseline = str(check.folder / check.baseline.file)
         files = list(check.case_files())
-        settings = _settings(check, files[0])
+        settings = settled(files[0], check)
         result, flows = _found(check, files, settings)
         findings = [Finding("case", "case", PASSED, f"{result['case']['file']} could be balanced")]
         findings += list(_judged(check, result))
@@ -63,14 +63,6 @@ def run_case(path: str, diagnose_open: bool = True, compare: bool = True) -> Out
 def failed(path: str, message: str, seconds: float = 0.0, baseline: str = "") -> Outcome:
     """The outcome of a check file that could not be run."""
     return Outcome(path, (Finding("case", "case", UNUSABLE, message),), None, seconds, "", baseline)
-
-
-def _settings(check: CheckFile, file: Path) -> Settings:
-    """As every command takes them from a check file, so that numbers are the same."""
-    from fvcheck.cli.options import FluidOptions, Reading
-    from fvcheck.cli.settings import settle
-
-    return settle(file, Reading(), FluidOptions(), check=check)
 
 
 def _found(check: CheckFile, files: list[Path], settings: Settings) -> tuple[dict[str, Any], list[Flow]]:
@@ -174,7 +166,11 @@ def _forces(
     told = {name: reference for name, reference in settings.bodies.items() if reference is not None}
     for name in names:
         expected = [e.method for e in check.expect if e.body == name and e.method is not None]
-        given: dict[str, Any] = {"about": settings.moment_about([name]), "reference": told or None}
+        given: dict[str, Any] = {
+            "about": settings.moment_about([name]),
+            "reference": told or None,
+            "wake_line": settings.wakes,
+        }
         found = forces(flow, [name], **given)
         have = {estimate.method for estimate in found.estimates}
         out += found.to_dict()["forces"]

@@ -45,6 +45,7 @@ class Question:
     about: tuple[float, float] = (0.0, 0.0)
     bodies: Mapping[str, Any] | None = None
     moment_about: Any = (0.0, 0.0)
+    wake_line: Any = None
     step: int | str | None = None
     kind: str = "auto"
     steady: bool = False
@@ -224,7 +225,13 @@ def _finish(found: Gathered, tell: Callable[[str], None]) -> Gathered:
             told = {name: reference for name, reference in asked.bodies.items() if reference is not None}
             found = replace(
                 found,
-                forces=forces(flow, list(asked.bodies), about=asked.moment_about, reference=told or None),
+                forces=forces(
+                    flow,
+                    list(asked.bodies),
+                    about=asked.moment_about,
+                    reference=told or None,
+                    wake_line=asked.wake_line,
+                ),
             )
         except (FieldError, MeshError) as error:
             left_out.append(f"Forces: {error}")

@@ -99,6 +99,7 @@ def report(
     sources: Sequence[Source] = (),
     about: tuple[float, float] = (0.0, 0.0),
     moment_about: tuple[float, float] | Mapping[str, tuple[float, float]] | None = None,
+    wake_line: ControlSurface | Mapping[str, ControlSurface] | None = None,
     step: int | str | None = None,
     kind: str = "auto",
     steady: bool = False,
@@ -114,6 +115,7 @@ def report(
     path : where the page is written; without it nothing is
     bodies : patches whose forces are wanted, or patch -> reference as in `forces` (None for none)
     moment_about : point of their moments, or patch -> point; by default ``about``
+    wake_line : across their wake, or patch -> line, as in `forces`
     step : one state of a file; by default all where it holds several
     kind : "state", "history" or "study" of ``files``; "auto" tells by steps and numbers of cells
     steady : snapshots are iterations, whatever times they carry
@@ -137,6 +139,7 @@ def report(
         about=about,
         bodies=_bodies(bodies),
         moment_about=about if moment_about is None else moment_about,
+        wake_line=wake_line,
         step=step,
         kind=kind,
         steady=steady,

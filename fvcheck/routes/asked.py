@@ -17,12 +17,13 @@ DIRECT = ("body-surface", "control-surface", "band")
 """Routes that need nothing but the flow."""
 
 
-def methods_of(
-    methods: Iterable[str] | None, line: ControlSurface | None, reference: object
-) -> tuple[str, ...]:
-    if methods is None:
-        more = [*(["wake"] if line is not None else []), *(["circulation"] if reference else [])]
-        return (*DIRECT, *more)
+def default_methods(line: ControlSurface | None, reference: object) -> tuple[str, ...]:
+    """Those that need nothing more, and those for which enough is told."""
+    more = [*(["wake"] if line is not None else []), *(["circulation"] if reference else [])]
+    return (*DIRECT, *more)
+
+
+def methods_asked(methods: Iterable[str]) -> tuple[str, ...]:
     chosen = tuple(dict.fromkeys([methods] if isinstance(methods, str) else methods))
     for method in chosen:
         if method not in METHODS:

@@ -13,7 +13,15 @@ from fvcheck.hints import Hint
 from fvcheck.laws import MissingData
 from fvcheck.ledger import case_dict
 from fvcheck.plausible import field_hints
-from fvcheck.routes.asked import area_of, bodies_of, methods_of, point_of, reference_of, unit_vector
+from fvcheck.routes.asked import (
+    area_of,
+    bodies_of,
+    default_methods,
+    methods_asked,
+    point_of,
+    reference_of,
+    unit_vector,
+)
 from fvcheck.routes.band import band
 from fvcheck.routes.circulation import circulation
 from fvcheck.routes.contour import body_surface, control_surface
@@ -36,7 +44,7 @@ def forces(
     distances: Sequence[float] | None = None,
     surfaces: Sequence[ControlSurface] | None = None,
     band_between: tuple[float, float] | None = None,
-    wake_line: ControlSurface | None = None,
+    wake_line: ControlSurface | Mapping[str, ControlSurface] | None = None,
     wake_formula: str = "momentum",
     sweep: Family | None = None,
     about: tuple[float, float] | Mapping[str, tuple[float, float]] = (0.0, 0.0),
@@ -53,7 +61,7 @@ def forces(
         gap to the nearest other boundary and the size of the cells
     surfaces : control surfaces of one's own, in place of those at distances
     band_between : two distances; by default the range of the default ones
-    wake_line : an open line across the wake
+    wake_line : an open line across the wake, or body -> such a line
     sweep : a family of surfaces around the body, or of lines across its wake:
         force against position, and where it is level (`fvcheck.routes.sweep`)
     wake_formula : "momentum", "betz" or "jones" (see `fvcheck.routes.wake.wake`)
@@ -66,7 +74,7 @@ def forces(
     Raises SetupError for an unknown body or route, FieldError where velocity,
     pressure or density are missing.
     """
-    wanted = methods_of(methods, wake_line, reference)
+    asked = None if methods is None else methods_asked(methods)
     if wake_formula not in FORMULAS:
         raise SetupError(f"unknown formula {wake_formula!r}", mend=f"Known: {', '.join(FORMULAS)}.")
     along = unit_vector(direction or ((0.0, 1.0) if flow.case.axis == 1 else (1.0, 0.0)))
@@ -79,8 +87,10 @@ def forces(
     for name in bodies_of(flow, body):
         told = reference_of(reference, name)
         view = View(name, point_of(about, name), along, flow.case.axis)
-        job = _Job(flow, view, told, distances, surfaces, band_between, wake_line, wake_formula)
-        found = [e for method in wanted for e in job.run(method, asked=methods is not None)]
+        line = wake_line.get(name) if isinstance(wake_line, Mapping) else wake_line
+        job = _Job(flow, view, told, distances, surfaces, band_between, line, wake_formula)
+        wanted = default_methods(line, reference) if asked is None else asked
+        found = [e for method in wanted for e in job.run(method, asked=asked is not None)]
         estimates += [e.with_coefficients(told, area_of(flow, told)) for e in found]
         hints += remarks(flow, name, found)
         if sweep is not None:
