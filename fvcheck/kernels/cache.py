@@ -8,13 +8,16 @@ import a loop that asks for a cache; then they are kept for this process alone.
 from __future__ import annotations
 
 import atexit
+import importlib
 import os
 import shutil
+import sys
 import tempfile
 from typing import Any
 
 import numba
 from numba import njit
+from numba.np import linalg
 
 
 def _config() -> Any:
@@ -24,6 +27,7 @@ def _config() -> Any:
 
 def settle() -> None:
     """Give numba a folder it can use, before the first loop is imported."""
+    _spare_blas()
     if _usable():
         return
     # One's own, since what lies in it is run: a shared place could hold anything.
@@ -31,6 +35,25 @@ def settle() -> None:
     atexit.register(shutil.rmtree, folder, ignore_errors=True)
     os.environ["NUMBA_CACHE_DIR"] = folder
     _config().CACHE_DIR = folder
+
+
+def _spare_blas() -> None:
+    """Keep numba from loading scipy's linear algebra just to see whether it is there.
+
+    It takes longer than numba itself, and no loop here calls it. Where one does, numba asks
+    again when it compiles it; this answers only the question at its own start, with the yes
+    that a dependency of ours is.
+    """
+    if "numba.np.arraymath" in sys.modules:
+        return
+    asked = getattr(linalg, "ensure_blas", None)
+    if asked is None:
+        return
+    linalg.ensure_blas = lambda: None
+    try:
+        importlib.import_module("numba.np.arraymath")
+    finally:
+        linalg.ensure_blas = asked
 
 
 def kept() -> bool:

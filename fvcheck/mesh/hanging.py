@@ -8,7 +8,7 @@ from fvcheck.hints import Hint
 from fvcheck.mesh.edges import Edges, points_of
 from fvcheck.mesh.finder import Finder
 from fvcheck.mesh.gather import Polygons
-from fvcheck.mesh.stitch import NEAR, SPACINGS
+from fvcheck.mesh.stitch import NEAR, SPACINGS, WIDER
 
 Array = np.ndarray
 
@@ -78,7 +78,7 @@ def _on_edges(
     many points the edge is halved, so that the work follows the points near the
     edge, not those in a wide disk round it.
     """
-    from scipy.spatial import cKDTree
+    from fvcheck.kernels.vicinity import crowds
 
     step = points[end] - points[start]
     length = np.hypot(*step.T)
@@ -86,6 +86,12 @@ def _on_edges(
     edges, nodes, shares = [none], [none], [np.zeros(0)]
     if len(rim) == 0 or len(start) == 0:
         return none, none, np.zeros(0)
+    x, y = np.ascontiguousarray(points[rim].T)
+    at_x, at_y = np.ascontiguousarray((points[start] + 0.5 * step).T)
+    if crowds(x, y, at_x, at_y, WIDER * (0.5 * length * (1 + 1e-9) + tolerance)).max() <= 2:
+        return none, none, np.zeros(0)  # only its own two ends lie about each edge
+    from scipy.spatial import cKDTree
+
     tree = cKDTree(points[rim])
     row, low, high = np.arange(len(start)), np.zeros(len(start)), np.ones(len(start))
     for depth in range(_HALVINGS + 1):

@@ -7,6 +7,7 @@ import numpy as np
 from fvcheck.errors import MeshError
 from fvcheck.hints import Hint
 from fvcheck.mesh.boundary import Loops, ring_area
+from fvcheck.mesh.stitch import WIDER
 
 Array = np.ndarray
 
@@ -92,13 +93,18 @@ def seam_hints(points: Array, edges: Array, loops: Loops, patch: Array) -> list[
 
 def _facing(points: Array, edges: Array) -> int:
     """Number of edges whose middle lies close to that of another, not on it, running the other way."""
-    from scipy.spatial import cKDTree
+    from fvcheck.kernels.vicinity import crowds
 
     if len(edges) < 2:
         return 0
     step = points[edges[:, 1]] - points[edges[:, 0]]
     length = np.hypot(*step.T)
     middle = points[edges].mean(axis=1)
+    x, y = np.ascontiguousarray(middle.T)
+    if crowds(x, y, x, y, WIDER * FACING * length).max() < 2:
+        return 0  # nothing is near enough; loading the tree takes longer than the count
+    from scipy.spatial import cKDTree
+
     found = cKDTree(middle).query(middle, k=2, distance_upper_bound=FACING * float(length.max()))
     distance, other = (np.asarray(column)[:, 1] for column in found)
     near = other < len(edges)

@@ -26,6 +26,8 @@ Array = np.ndarray
 
 NEAR = 1e-6
 SPACINGS = 8
+WIDER = 1 + 1e-9
+"""A count within a distance this much wider misses none that a tree finds, which rounds otherwise."""
 
 
 @dataclass(frozen=True, eq=False)
@@ -130,10 +132,9 @@ def _tolerances(points: Array, start: Array, end: Array, rim: Array, precision: 
 
 def _coincident(points: Array, start: Array, end: Array, rim: Array, tolerance: Array) -> tuple[Array, float]:
     """Group number of each point (points at one place share it), and the largest distance bridged."""
-    from scipy.spatial import cKDTree
-
     from fvcheck.kernels.edges import ALONE, twins
     from fvcheck.kernels.merging import first_equal, groups
+    from fvcheck.kernels.vicinity import crowds
 
     n = len(points)
     group = np.arange(n)
@@ -149,6 +150,11 @@ def _coincident(points: Array, start: Array, end: Array, rim: Array, tolerance: 
     reach = np.zeros(n)
     reach[rim] = tolerance
     reach = reach[left]
+    x, y = np.ascontiguousarray(points[left].T)
+    if crowds(x, y, x, y, reach * WIDER).max() < 2:
+        return group, 0.0  # as in most files; loading the tree takes longer than the count
+    from scipy.spatial import cKDTree
+
     tree = cKDTree(points[left])
     many = min(8, len(left))
     distance, other = tree.query(points[left], k=many, distance_upper_bound=float(reach.max()) * (1 + 1e-12))
@@ -168,14 +174,14 @@ def _places(points: Array, claims: Claims, used: Array, rim: Array, group: Array
 
     A name only has to find the nearest boundary point: a thousandth of an edge will do.
     """
-    from scipy.spatial import cKDTree
-
     place = np.full(len(points), -1, np.int64)
     place[used] = group[used]
     claimed = np.concatenate([claims.ends.reshape(-1), *(ids for _, ids in claims.vertices)])
     claimed = points_of(claimed, len(points))
     claimed = claimed[~used[claimed]]
     if len(claimed) and len(rim):
+        from scipy.spatial import cKDTree
+
         distance, nearest = cKDTree(points[rim]).query(points[claimed])
         distance, nearest = np.atleast_1d(distance), np.atleast_1d(nearest)
         good = distance <= 1e-3 * shortest[nearest]
