@@ -56,6 +56,7 @@ class Case(Table):
     step: Annotated[int, Field(ge=0)] | Literal["last", "all"] = Field(
         default="last", description='a step from 0 on, "last" or "all"'
     )
+    steady: bool = Field(default=False, description="true or false")
     laws: Annotated[Names, Field(min_length=1)] | None = Field(
         default=None, description="a list of laws, at least one"
     )

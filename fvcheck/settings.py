@@ -44,6 +44,7 @@ class Settings:
     """What stands in the arguments of `open_flow` (``reading``) and `balance_all`, and the file.
 
     step : "last", "all" or the number of a step; it is not in ``reading``
+    steady : several states are iterations, whatever times they carry
     surfaces, laws : None for the default ones
     bodies : name -> reference of those in the check file
     moment_points : name -> point of the moment of those that have one of their own
@@ -53,6 +54,7 @@ class Settings:
     file: Path
     reading: dict[str, Any]
     step: int | str
+    steady: bool
     surfaces: tuple[ControlSurface, ...] | None
     laws: list[str] | None
     tolerance: dict[str, float]
@@ -95,6 +97,7 @@ def settled(file: Path, check: CheckFile, told: Told | None = None) -> Settings:
         file=file,
         reading=_reading(check, told),
         step=told.case.get("step", case.step),
+        steady=case.steady,
         surfaces=tuple(told.surfaces) or check.control_surfaces() or None,
         laws=laws,
         tolerance=tolerance,

@@ -448,6 +448,24 @@ def test_a_series_is_judged_at_every_state(tmp_path):
     assert judged(path).status == 2
 
 
+def test_a_series_of_iterations_stores_nothing_and_has_rows_of_laws_that_are_only_expected(tmp_path):
+    for step in ("0200", "0400"):
+        shutil.copy(MESHES / f"demo-coarse-{step}.vtu", tmp_path)
+    head = '[case]\nlaws = ["mass"]\nsteady = true'
+    text = DEMO.replace('"demo-coarse.vtu"', '"demo-coarse-*.vtu"').replace("[case]", head)
+    text = text.split("[[expect]]")[0] + (
+        '[[expect]]\nsurface = "channel section"\nlaw = "angular-momentum"\nflux = { min = -1.0 }\n'
+    )
+    result = judged(check_file(tmp_path, text)).outcomes[0].result
+    for state in result["history"]:
+        laws = {one["name"]: [row["law"] for row in one["laws"]] for one in state["surfaces"]}
+        assert laws == {"around the bar": ["mass"], "channel section": ["mass", "angular-momentum"]}
+        assert all(row["storage"] == 0.0 for one in state["surfaces"] for row in one["laws"])
+    timed = judged(check_file(tmp_path, text.replace("steady = true", "steady = false"))).outcomes[0].result
+    rows = [row for one in timed["surfaces"] for row in one["laws"]]
+    assert any(row["storage"] != 0.0 for row in rows)
+
+
 def test_a_path_may_be_a_pattern_and_c_is_the_same(tmp_path, capsys):
     check_file(tmp_path)
     assert run(["gate", str(tmp_path / "*.toml"), "-q"]) == 0

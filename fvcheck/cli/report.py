@@ -103,7 +103,7 @@ def command(
             about=settings.about,
             step=str(settings.step) if told else None,
             kind=kind,
-            steady=steady,
+            steady=steady or settings.steady,
             beside=[] if path is None else [path],
             on_part=lambda part: advance(None),
             **settings.reading,

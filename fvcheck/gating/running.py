@@ -14,12 +14,12 @@ from fvcheck.errors import FvcheckError, SetupError
 from fvcheck.gating.baselines import drifts, read_baseline
 from fvcheck.gating.expecting import expectations, verdicts
 from fvcheck.gating.outcome import PASSED, UNUSABLE, Finding, Outcome
+from fvcheck.gating.states import states_of
 from fvcheck.verdict import OPEN, worst
 
 if TYPE_CHECKING:
     from fvcheck.checkmodel import CheckFile
     from fvcheck.flow import Flow
-    from fvcheck.ledger import Result
     from fvcheck.mesh.mesh import Mesh
     from fvcheck.settings import Settings
     from fvcheck.sources import Source
@@ -67,13 +67,10 @@ def failed(path: str, message: str, seconds: float = 0.0, baseline: str = "") ->
 
 def _found(check: CheckFile, files: list[Path], settings: Settings) -> tuple[dict[str, Any], list[Flow]]:
     """The result file: of several states the last one, with all of them under ``history``."""
-    states = list(_states(check, files, settings))
+    states = list(states_of(check, files, settings))
     entries = []
-    for result, flow in states:
-        data = result.to_dict()
+    for data, flow in states:
         data["case"]["mesh_digest"] = mesh_digest(flow.mesh)
-        if len(states) == 1:  # of several, storage would be missing
-            _add_laws(check, settings, flow, data)
         data["forces"], hints = _forces(check, settings, flow)
         data["hints"] += [hint for hint in hints if hint not in data["hints"]]
         entries.append(data)
@@ -88,33 +85,6 @@ def _found(check: CheckFile, files: list[Path], settings: Settings) -> tuple[dic
     return last, [flow for _, flow in states]
 
 
-def _states(check: CheckFile, files: list[Path], settings: Settings) -> Iterator[tuple[Result, Flow]]:
-    from fvcheck.balancing import balance_all
-    from fvcheck.formats.registry import open_export
-    from fvcheck.plausible import open_state
-    from fvcheck.series import open_series
-    from fvcheck.timeseries import history
-
-    judged: dict[str, Any] = {
-        "tolerance": settings.tolerance,
-        "scale": settings.scale,
-        "sources": settings.sources,
-        "about": settings.about,
-    }
-    if len(files) == 1 and settings.step != "all":
-        flow = open_state(open_export(files[0]), step=settings.step, **settings.reading)
-        yield balance_all(flow, settings.surfaces, settings.laws, **judged), flow
-        return
-    if settings.step not in ("last", "all"):
-        raise SetupError(
-            "a step is told for several files", where=check.path, mend='Leave it out, or write "all".'
-        )
-    series = open_series(files, **settings.reading)
-    found = history(series, settings.surfaces, settings.laws, **judged)
-    for place, entry in enumerate(found.entries):
-        yield entry.result, series.flow(place)
-
-
 def mesh_digest(mesh: Mesh) -> str:
     """Of points and cells: equal for runs that are sampled alike."""
     from hashlib import sha256
@@ -124,34 +94,6 @@ def mesh_digest(mesh: Mesh) -> str:
         mix.update(repr((array.shape, array.dtype.str)).encode())
         mix.update(np.ascontiguousarray(array).tobytes())
     return mix.hexdigest()
-
-
-def _add_laws(check: CheckFile, settings: Settings, flow: Flow, data: dict[str, Any]) -> None:
-    """Rows of laws that are expected and not among the default ones; left out where they cannot be had."""
-    from fvcheck.balancing import balance, default_surfaces
-    from fvcheck.ledger import ledger_dict
-
-    surfaces = {one.name: one for one in settings.surfaces or default_surfaces(flow)}
-    for ledger in data["surfaces"]:
-        have = {row["law"] for row in ledger["laws"]}
-        wanted = [e.law for e in check.expect if e.surface == ledger["name"] and e.law not in have]
-        for law in dict.fromkeys(wanted):
-            if ledger["name"] not in surfaces:
-                continue
-            try:
-                more = balance(
-                    flow,
-                    surfaces[ledger["name"]],
-                    [str(law)],
-                    tolerance=settings.tolerance,
-                    sources=settings.sources,
-                    about=settings.about,
-                )
-            except FvcheckError as error:
-                data["hints"].append({"code": "law-left-out", "message": f"{law}: {error}"})
-                continue
-            ledger["laws"] += ledger_dict(more)["laws"]
-            data["verdict"] = worst([data["verdict"], more.verdict])
 
 
 def _forces(
