@@ -11,6 +11,7 @@ import numpy as np
 from fvcheck.errors import FieldError
 from fvcheck.fieldnames import is_vector
 from fvcheck.hints import Hint
+from fvcheck.mesh.stored import as_array
 
 Array = np.ndarray
 Location = Literal["point", "cell"]
@@ -82,7 +83,7 @@ class Arrays:
 
     def components(self, location: Location, name: str) -> int:
         """Number of components, 0 where the array is no list of numbers."""
-        values = np.asarray(self.at(location)[name])
+        values = as_array(self.at(location)[name])
         if values.dtype.kind not in "fiu" or values.ndim not in (1, 2):
             return 0
         return 1 if values.ndim == 1 else values.shape[1]
@@ -123,12 +124,13 @@ class Arrays:
         return vector
 
     def _column(self, role: str, location: Location, name: str) -> Array:
-        values = np.asarray(self.at(location)[name])
         if self.components(location, name) == 0:
+            values = as_array(self.at(location)[name])
             raise FieldError(
                 f"Array {name!r} ({values.dtype}, shape {values.shape}) is no list of numbers per {location}",
                 where=f"role {role}",
             )
+        values = np.asarray(self.at(location)[name])
         values = values[:, None] if values.ndim == 1 else values
         # Float precision is kept, since it bounds the imbalance that can be told from rounding.
         if values.dtype.kind != "f" or values.dtype.itemsize > 8:

@@ -13,6 +13,7 @@ from fvcheck.fields import Field, choose_fields
 from fvcheck.hints import Hint
 from fvcheck.mesh.assemble import Assembly
 from fvcheck.mesh.piece import Piece
+from fvcheck.mesh.stored import Stored, as_array, at_rows, stored
 from fvcheck.rim import line_cells, with_rim
 
 Array = np.ndarray
@@ -94,19 +95,31 @@ def _joined(pieces: Sequence[Piece], kind: str, source: Array) -> dict[str, Arra
     names = set.intersection(*(set(getattr(pieces[u], kind)) for u in used))
     # Most meshes take every value where it stands: nothing is copied then.
     as_stored = len(used) == 1 and np.array_equal(source, np.arange(first[used[0]], first[used[0] + 1]))
+    if as_stored:
+        return dict(getattr(pieces[used[0]], kind))
+    # Pieces that give nothing stay out, so numbers must skip them.
+    skipped = np.zeros(len(pieces), np.int64)
+    skipped[used] = first[used] - np.concatenate([[0], np.cumsum([sizes[u] for u in used])[:-1]])
+    piece_of = np.searchsorted(first, source, side="right") - 1
+    rows = source - skipped[piece_of]
     out = {}
     for name in getattr(pieces[used[0]], kind):
         if name not in names:
             continue
-        parts = [np.asarray(getattr(pieces[u], kind)[name]) for u in used]
-        if len({part.shape[1:] for part in parts}) > 1:
-            continue
-        if len(used) == 1:
-            out[name] = parts[0] if as_stored else parts[0][source - first[used[0]]]
-            continue
-        # Pieces that give nothing stay out, so numbers must skip them.
-        skipped = np.zeros(len(pieces), np.int64)
-        skipped[used] = first[used] - np.concatenate([[0], np.cumsum([sizes[u] for u in used])[:-1]])
-        piece_of = np.searchsorted(first, source, side="right") - 1
-        out[name] = np.concatenate(parts)[source - skipped[piece_of]]
+        parts = [as_array(getattr(pieces[u], kind)[name]) for u in used]
+        if len({part.shape[1:] for part in parts}) == 1:
+            out[name] = _behind_one_another(parts, rows)
     return out
+
+
+def _behind_one_another(parts: list[Array], rows: Array) -> Array:
+    """Rows of arrays put behind one another; read when they are wanted where one of these is."""
+    if len(parts) == 1:
+        return at_rows(parts[0], rows)
+
+    def joined() -> Array:
+        return np.concatenate([np.asarray(part) for part in parts])[rows]
+
+    if not any(isinstance(part, Stored) for part in parts):
+        return joined()
+    return stored((len(rows), *parts[0].shape[1:]), np.result_type(*(part.dtype for part in parts)), joined)

@@ -18,6 +18,7 @@ from pathlib import Path
 
 import numpy as np
 import pytest
+from whole import whole
 
 from fvcheck.errors import FormatError
 from fvcheck.formats.registry import open_export
@@ -471,7 +472,7 @@ def with_first_value(tmp_path, token):
 @pytest.mark.parametrize("token", ["1,5", "1.5-103", "abc", "1e", "--1", "0x10", "1 2", "1_0", "\u00bd"])
 def test_text_that_is_no_number_is_refused(tmp_path, token):
     with pytest.raises(FormatError, match="array 'p'"):
-        open_export(with_first_value(tmp_path, token)).load(0)
+        whole(open_export(with_first_value(tmp_path, token)).load(0))
 
 
 @pytest.mark.parametrize("token, value", [("1D+5", 1e5), ("-inf", -np.inf), ("nan", np.nan), ("+.5", 0.5)])
@@ -494,6 +495,7 @@ import json, random, resource, shutil, signal, sys, time
 from pathlib import Path
 from fvcheck.errors import FvcheckError
 from fvcheck.formats.registry import open_export
+from tests.whole import whole
 
 resource.setrlimit(resource.RLIMIT_AS, (4 << 30, 4 << 30))
 
@@ -502,7 +504,7 @@ def outcome(path):
     try:
         export = open_export(path)
         for step in range(export.steps):
-            export.load(step)
+            whole(export.load(step))
         return " ".join(["read", *(hint.code for hint in export.hints)])
     except FvcheckError as error:
         return f"refused: {error}"

@@ -12,6 +12,7 @@ import numpy as np
 
 from fvcheck.errors import FormatError
 from fvcheck.mesh.piece import Array, Faces, NamedFaces, Piece
+from fvcheck.mesh.stored import Stored, as_array
 
 DAMAGED = "The file is damaged or incomplete; export it again."
 # Cell types of the VTK file formats (https://docs.vtk.org, "VTK File Formats") and
@@ -26,6 +27,13 @@ NODE_COUNTS = {
 # Types of any size and the least number of nodes: poly vertex, poly line, triangle strip,
 # polygon, quadratic polygon, polyhedron.
 LEAST_COUNTS = {2: 1, 4: 2, 6: 3, 7: 3, 36: 6, 42: 4}
+_EXACT, _LEAST = np.full(256, -1, np.int64), np.zeros(256, np.int64)
+for _kind, _count in NODE_COUNTS.items():
+    _EXACT[_kind] = _LEAST[_kind] = _count
+for _kind, _count in LEAST_COUNTS.items():
+    _LEAST[_kind] = _count
+_KNOWN = _LEAST > 0
+_RUN = 1 << 16
 
 
 def check_piece(piece: Piece, where: object) -> Piece:
@@ -72,9 +80,8 @@ def _points(points: Array, spot: str) -> Array:
     if points.dtype.itemsize not in (4, 8):
         points = points.astype(np.float64)
     points = _native(points)
-    finite = np.isfinite(points).all(axis=1)
-    if not finite.all():
-        first = int(np.argmin(finite))
+    if not np.isfinite(points).all():
+        first = int(np.argmin(np.isfinite(points).all(axis=1)))
         raise FormatError(
             f"point {first} has a coordinate that is no finite number", where=spot, mend=DAMAGED
         )
@@ -85,7 +92,7 @@ def _types(types: Array, spot: str) -> Array:
     types = np.asarray(types)
     if types.ndim != 1 or len(types) == 0:
         raise FormatError("there are no cells", where=spot, mend="Export the mesh with its cells.")
-    known = np.isin(types, list(NODE_COUNTS) + list(LEAST_COUNTS))
+    known = _KNOWN[types] if types.dtype == np.uint8 else np.isin(types, np.flatnonzero(_KNOWN))
     if not known.all():
         first = int(np.argmin(known))
         raise FormatError(
@@ -101,7 +108,7 @@ def _offsets(offsets: Array, count: int, total: int, what: str, spot: str) -> Ar
     if offsets.shape != (count + 1,) or offsets.dtype.kind not in "iu":
         raise FormatError(f"the {what} do not fit {count} entries", where=spot, mend=DAMAGED)
     offsets = np.ascontiguousarray(offsets, dtype=np.int64)
-    if offsets[0] != 0 or offsets[-1] != total or (np.diff(offsets) < 0).any():
+    if offsets[0] != 0 or offsets[-1] != total or (offsets[1:] < offsets[:-1]).any():
         raise FormatError(
             f"the {what} do not run from 0 to {total} without falling", where=spot, mend=DAMAGED
         )
@@ -124,19 +131,17 @@ def _ids(ids: Array, limit: int, what: str, among: str, spot: str) -> Array:
 
 
 def _counts(types: Array, offsets: Array, spot: str) -> None:
-    exact = np.full(256, -1, dtype=np.int64)
-    least = np.zeros(256, dtype=np.int64)
-    for kind, count in NODE_COUNTS.items():
-        exact[kind] = least[kind] = count
-    for kind, count in LEAST_COUNTS.items():
-        least[kind] = count
-    counts = np.diff(offsets)
-    wrong = (counts < least[types]) | ((exact[types] >= 0) & (counts != exact[types]))
-    if wrong.any():
-        first = int(np.argmax(wrong))
-        raise FormatError(
-            f"cell {first} of type {types[first]} has {counts[first]} nodes", where=spot, mend=DAMAGED
-        )
+    for begin in range(0, len(types), _RUN):  # run by run, so that no temporary is as large as the mesh
+        kinds = types[begin : begin + _RUN]
+        counts = np.diff(offsets[begin : begin + _RUN + 1])
+        wrong = (counts < _LEAST[kinds]) | ((_EXACT[kinds] >= 0) & (counts != _EXACT[kinds]))
+        if wrong.any():
+            first = int(np.argmax(wrong))
+            raise FormatError(
+                f"cell {begin + first} of type {kinds[first]} has {counts[first]} nodes",
+                where=spot,
+                mend=DAMAGED,
+            )
 
 
 def _data(data: dict[str, Array], count: int, kind: str, spot: str) -> dict[str, Array]:
@@ -144,7 +149,7 @@ def _data(data: dict[str, Array], count: int, kind: str, spot: str) -> dict[str,
 
 
 def _array(name: str, values: Array, count: int, kind: str, spot: str) -> Array:
-    values = np.asarray(values)
+    values = as_array(values)
     if values.dtype.kind not in "iufb":
         raise FormatError(f"the {kind} array '{name}' holds no numbers", where=spot, mend=DAMAGED)
     if values.ndim not in (1, 2) or len(values) != count:
@@ -153,7 +158,7 @@ def _array(name: str, values: Array, count: int, kind: str, spot: str) -> Array:
             where=spot,
             mend="Export the array again for the whole mesh.",
         )
-    return _native(values)
+    return values if isinstance(values, Stored) else _native(values)
 
 
 def _ghost(ghost: Array | None, count: int, spot: str) -> Array | None:

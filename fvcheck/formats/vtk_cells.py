@@ -126,9 +126,11 @@ def streamed_faces(stream: Array, starts: Array, ends: Array, solid: Array, wher
 def ghost_cells(point_data: dict[str, Array], cell_data: dict[str, Array], cells: Cells) -> Array | None:
     """Cells to drop (m,), or None; takes the ghost arrays out of both dictionaries."""
     _types, offsets, nodes = cells
-    marks = [cell_data.pop(name, None) for name in GHOST_NAMES]
-    hidden = point_data.pop(GHOST_NAMES[0], None)
+    marks = [_taken(cell_data, name) for name in GHOST_NAMES]
+    hidden = _taken(point_data, GHOST_NAMES[0])
     point_data.pop(GHOST_NAMES[1], None)
+    if hidden is None and all(mark is None for mark in marks):
+        return None
     ghost = np.zeros(len(offsets) - 1, dtype=bool)
     kind, level = marks
     if kind is not None and kind.shape == ghost.shape and kind.dtype.kind in "iu":
@@ -140,6 +142,12 @@ def ghost_cells(point_data: dict[str, Array], cell_data: dict[str, Array], cells
         blanked = (hidden[nodes] & HIDDEN_POINT) != 0
         ghost[full] |= np.logical_or.reduceat(blanked, offsets[:-1][full])
     return ghost if ghost.any() else None
+
+
+def _taken(data: dict[str, Array], name: str) -> Array | None:
+    """An array taken out of the data, read."""
+    values = data.pop(name, None)
+    return None if values is None else np.asarray(values)
 
 
 def lattice(axes: Sequence[Array]) -> Array:

@@ -14,14 +14,17 @@ import re
 import zlib
 from bisect import bisect_right
 from collections.abc import Callable
+from itertools import accumulate
 
 import numpy as np
 
 from fvcheck.errors import FormatError
 from fvcheck.formats.check import DAMAGED
 from fvcheck.formats.number_text import parse
+from fvcheck.formats.xml_bytes import SPACE, Coded, Held, Raw, Source, Untidy
 from fvcheck.formats.xml_scan import Document, Element
 from fvcheck.mesh.piece import Array
+from fvcheck.mesh.stored import stored
 
 TYPES = {
     f"{kind}{bits}": f"{code}{bits // 8}"
@@ -34,6 +37,8 @@ MOST_COMPONENTS = 1000
 # file may expand to is this many times its size, or the fixed number of bytes if that is more.
 MOST_RATIO = 100
 FREE_BYTES = 1 << 28
+RUN = 1 << 18
+"""Bytes of a file that are decoded at a time: few enough to stay in the cache of a core."""
 Buffer = bytes | memoryview
 
 
@@ -100,28 +105,37 @@ class ArrayReader:
         if self.starts and self.starts[0] != 0:
             raise FormatError("no array starts where the appended data do", where=self.path, mend=DAMAGED)
 
+    def declared(self, element: Element) -> tuple[np.dtype, int]:
+        """Kind and components of an array, as declared. Raises `FormatError` if these cannot be."""
+        where = self._where(element)
+        kind = element.attributes.get("type", "")
+        if kind not in TYPES:
+            raise FormatError(f"values of the type '{kind}' cannot be read", where=where, mend=DAMAGED)
+        components = attribute_int(element, "NumberOfComponents", where, 1)
+        if not 1 <= components <= MOST_COMPONENTS:
+            raise FormatError(f"the array declares {components} components", where=where, mend=DAMAGED)
+        return np.dtype(TYPES[kind]), components
+
+    def later(self, element: Element, tuples: int) -> Array:
+        """The array as `values` gives it, read when it is wanted."""
+        dtype, components = self.declared(element)
+        shape = (tuples,) if components == 1 else (tuples, components)
+        return stored(shape, dtype, lambda: self.values(element, tuples))
+
     def values(self, element: Element, tuples: int | None) -> Array:
         """The array, (n,) or (n, c), in native byte order.
 
         ``tuples`` is the n that the mesh asks for; None when only the array itself
         can tell. Raises `FormatError` when what is stored differs from it.
         """
-        where = f"{self.path}, array '{element.attributes.get('Name', '')}'"
-        kind = element.attributes.get("type", "")
-        if kind not in TYPES:
-            raise FormatError(f"values of the type '{kind}' cannot be read", where=where, mend=DAMAGED)
-        dtype = np.dtype(TYPES[kind])
-        components = attribute_int(element, "NumberOfComponents", where, 1)
-        if not 1 <= components <= MOST_COMPONENTS:
-            raise FormatError(f"the array declares {components} components", where=where, mend=DAMAGED)
+        where = self._where(element)
+        dtype, components = self.declared(element)
         want = None if tuples is None else tuples * components
         form = element.attributes.get("format", "ascii")
         if form == "ascii":
-            flat = parse("".join(element.text), dtype, where)
-        elif form == "binary":
-            flat = self._binary(self._base64(_taken(element.text), where), dtype, want, where)
-        elif form == "appended":
-            flat = self._binary(self._region(element, where), dtype, want, where)
+            flat = parse(self._text(element).decode("ascii", "replace"), dtype, where)
+        elif form in ("binary", "appended"):
+            flat = self._binary(element, form == "appended", dtype, want, where)
         else:
             raise FormatError(f"unknown data format '{form}'", where=where, mend=DAMAGED)
         if want is not None:
@@ -131,6 +145,20 @@ class ArrayReader:
                 f"{len(flat)} values do not fill tuples of {components}", where=where, mend=DAMAGED
             )
         return flat if components == 1 else flat.reshape(-1, components)
+
+    def _where(self, element: Element) -> str:
+        return f"{self.path}, array '{element.attributes.get('Name', '')}'"
+
+    def _text(self, element: Element) -> bytes:
+        """The text of an element; what is no ASCII stays wrong."""
+        if element.place is None:
+            return "".join(element.text).encode("ascii", "replace")
+        return self._bytes(*element.place)
+
+    def _bytes(self, start: int, stop: int) -> bytes:
+        with self.path.open("rb") as stream:
+            stream.seek(start)
+            return stream.read(stop - start)
 
     def _offset(self, element: Element) -> int:
         offset = attribute_int(element, "offset", str(self.path))
@@ -146,25 +174,20 @@ class ArrayReader:
             )
         return offset
 
-    def _region(self, element: Element, where: str) -> bytes:
-        """The bytes from the array's start to that of the next one, base64 undone."""
+    def _region(self, element: Element) -> tuple[int, int]:
+        """Where in the file the array's bytes start, and where those of the next one do."""
         appended = self.document.appended
         assert appended is not None  # the constructor has refused it otherwise
         offset = self._offset(element)
         place = bisect_right(self.starts, offset)
         stop = appended.start + self.starts[place] if place < len(self.starts) else appended.end
-        with self.path.open("rb") as stream:
-            stream.seek(appended.start + offset)
-            region = stream.read(stop - appended.start - offset)
-        if appended.raw:
-            return region
-        return self._base64(region, where)
+        return appended.start + offset, stop
 
     def _base64(self, text: bytes, where: str) -> bytes:
         """Header and data may be encoded apart, each with its own padding."""
         text = text.strip()
-        if any(space in text for space in (b" ", b"\t", b"\r", b"\n", b"\v", b"\f")):
-            text = text.translate(None, b" \t\r\n\v\f")
+        if any(bytes([space]) in text for space in SPACE):
+            text = text.translate(None, SPACE)
         view, begin, parts = memoryview(text), 0, []
         try:
             while begin < len(text):
@@ -176,58 +199,84 @@ class ArrayReader:
         except (binascii.Error, ValueError) as error:
             raise FormatError(f"the data are no base64: {error}", where=where, mend=DAMAGED) from None
 
-    def _binary(self, blob: bytes, dtype: np.dtype, want: int | None, where: str) -> Array:
-        if not blob and want == 0:
+    def _binary(
+        self, element: Element, appended: bool, dtype: np.dtype, want: int | None, where: str
+    ) -> Array:
+        place = self._region(element) if appended else element.place
+        if place is not None:
+            raw = appended and self.document.appended is not None and self.document.appended.raw
+            with self.path.open("rb") as file:
+                try:
+                    source = Raw(file, *place) if raw else Coded.trimmed(file, *place)
+                    return self._unpacked(source, dtype, want, where)
+                except Untidy:
+                    pass  # taken whole below, where a fault is told
+        text = self._text(element) if place is None else self._bytes(*place)
+        return self._unpacked(Held(self._base64(text, where)), dtype, want, where)
+
+    def _unpacked(self, source: Source, dtype: np.dtype, want: int | None, where: str) -> Array:
+        if source.size == 0 and want == 0:
             return np.empty(0, dtype=dtype)
         decode = self._plain if self.expand is None else self._blocks
-        data, used = decode(blob, dtype, want, where)
-        if used < len(blob) and blob[used:].strip(b" \t\r\n\0"):
+        data, rest, used = decode(source, dtype, want, where)
+        if used < rest.size and bytes(rest.read(used, rest.size)).strip(b" \t\r\n\0"):
             raise FormatError("there are more bytes than the array declares", where=where, mend=DAMAGED)
-        stored = np.dtype(self.order + dtype.str[1:])
-        return data.view(stored).astype(dtype, copy=False)
+        stored_as = np.dtype(self.order + dtype.str[1:])
+        return data.view(stored_as).astype(dtype, copy=False)
 
-    def _words(self, blob: bytes, count: int, where: str) -> list[int]:
-        if len(blob) < count * self.word.itemsize:
+    def _words(self, source: Source, count: int, where: str) -> list[int]:
+        if source.size < count * self.word.itemsize:
             raise FormatError("the data end within their header", where=where, mend=DAMAGED)
-        return np.frombuffer(blob, dtype=self.word, count=count).tolist()
+        return np.frombuffer(source.read(0, count * self.word.itemsize), dtype=self.word).tolist()
 
-    def _plain(self, blob: bytes, dtype: np.dtype, want: int | None, where: str) -> tuple[Array, int]:
-        """The bytes of an array that is not compressed, and how many it takes with its header."""
-        (size,) = self._words(blob, 1, where)
+    def _plain(
+        self, source: Source, dtype: np.dtype, want: int | None, where: str
+    ) -> tuple[Array, Source, int]:
+        """The bytes of an array that is not compressed; what holds them, and how many it takes there."""
+        (size,) = self._words(source, 1, where)
         _demand_size(size, dtype, want, where)
-        used = self.word.itemsize + size
-        if used > len(blob):
-            left = len(blob) - self.word.itemsize
-            raise FormatError(f"{size} bytes are declared, {left} are there", where=where, mend=DAMAGED)
-        # A copy, since behind a header of 4 bytes nothing is aligned.
-        return np.frombuffer(blob, np.uint8, size, self.word.itemsize).copy(), used
+        body = source.behind(self.word.itemsize)
+        if size > body.size:
+            raise FormatError(f"{size} bytes are declared, {body.size} are there", where=where, mend=DAMAGED)
+        out = np.empty(size, np.uint8)
+        for at in range(0, size, RUN):
+            end = min(size, at + RUN)
+            out.data[at:end] = body.read(at, end)
+        return out, body, size
 
-    def _blocks(self, blob: bytes, dtype: np.dtype, want: int | None, where: str) -> tuple[Array, int]:
+    def _blocks(
+        self, source: Source, dtype: np.dtype, want: int | None, where: str
+    ) -> tuple[Array, Source, int]:
         """The same of an array in compressed blocks, each put where it belongs."""
-        (count,) = self._words(blob, 1, where)
+        (count,) = self._words(source, 1, where)
         if count == 0:
             _demand_size(0, dtype, want, where)
-            return np.empty(0, np.uint8), 3 * self.word.itemsize
-        if count > len(blob):
+            return np.empty(0, np.uint8), source, min(source.size, 3 * self.word.itemsize)
+        if count > source.size:
             raise FormatError(
                 f"{count} blocks are declared, more than there are bytes", where=where, mend=DAMAGED
             )
-        _count, full, last, *packed = self._words(blob, 3 + count, where)
+        _count, full, last, *packed = self._words(source, 3 + count, where)
         sizes = [full] * (count - 1) + [last or full]
         _demand_size(sum(sizes), dtype, want, where)
-        at = (3 + count) * self.word.itemsize
-        if at + sum(packed) > len(blob):
+        body = source.behind((3 + count) * self.word.itemsize)
+        ends = list(accumulate(packed, initial=0))
+        if ends[-1] > body.size:
             raise FormatError("the blocks declare more than the file holds", where=where, mend=DAMAGED)
         self.left -= sum(sizes)
         if self.left < 0:
             raise FormatError(f"the file expands to {MOST_RATIO} times its size", where=where, mend=DAMAGED)
         out = np.empty(sum(sizes), np.uint8)
-        target, stored, filled = out.data, memoryview(blob), 0
-        for size, length in zip(sizes, packed):
-            target[filled : filled + size] = self._block(stored[at : at + length], size, where)
-            filled += size
-            at += length
-        return out, at
+        target, filled, first = out.data, 0, 0
+        while first < count:  # some blocks at a time, as many as make a run
+            beyond = max(first + 1, bisect_right(ends, ends[first] + RUN) - 1)
+            run = body.read(ends[first], ends[beyond])
+            for block in range(first, beyond):
+                stored_block = run[ends[block] - ends[first] : ends[block + 1] - ends[first]]
+                target[filled : filled + sizes[block]] = self._block(stored_block, sizes[block], where)
+                filled += sizes[block]
+            first = beyond
+        return out, body, ends[-1]
 
     def _block(self, block: memoryview, size: int, where: str) -> bytes:
         assert self.expand is not None
@@ -238,13 +287,6 @@ class ArrayReader:
         if len(data) != size:
             raise FormatError("a compressed block is damaged or of another size", where=where, mend=DAMAGED)
         return data
-
-
-def _taken(text: list[str]) -> bytes:
-    """The text of an element, then dropped: it is as large as the array. What is no ASCII stays wrong."""
-    out = b"".join(part.encode("ascii", "replace") for part in text)
-    text.clear()
-    return out
 
 
 def attribute_int(element: Element, name: str, where: str, default: int | None = None) -> int:

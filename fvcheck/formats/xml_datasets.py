@@ -63,7 +63,7 @@ def _data(arrays: ArrayReader, piece: Element, section: str, tuples: int) -> dic
         if name in found:
             raise FormatError(f"there are two arrays '{name}' in {section}", where=arrays.path, mend=DAMAGED)
         if element.attributes.get("type") != "String":
-            found[name] = arrays.values(element, tuples)
+            found[name] = arrays.later(element, tuples)
     return found
 
 

@@ -2,7 +2,8 @@
 
 Scanned with expat up to the appended data. Document types and entities are
 refused, so are deep nesting and masses of elements; a file that was cut short
-does not pass.
+does not pass. The long texts of data arrays, nearly all of a file, are passed by:
+only their places are kept.
 """
 
 from __future__ import annotations
@@ -11,6 +12,7 @@ import re
 from collections.abc import Iterator
 from dataclasses import dataclass, field
 from pathlib import Path
+from typing import BinaryIO
 from xml.parsers import expat
 
 from fvcheck.errors import FormatError
@@ -19,17 +21,24 @@ from fvcheck.formats.check import DAMAGED
 MOST_DEPTH = 30
 MOST_ELEMENTS = 500_000
 CHUNK = 1 << 20
+LONG = 4096
+"""Texts of data arrays longer than this are passed by."""
+_TAG = re.compile(rb"""<DataArray(?:[^<>"']|"[^<"]*"|'[^<']*')*>""")
 TAIL = re.compile(rb"</AppendedData\s*>\s*</VTKFile\s*>\s*\Z")
 
 
-@dataclass(frozen=True, eq=False)
+@dataclass(eq=False)
 class Element:
-    """One XML element; ``text`` is kept for data arrays only."""
+    """One XML element; ``text`` is kept for data arrays only.
+
+    place : of a text that was passed by, where it starts and ends in the file
+    """
 
     tag: str
     attributes: dict[str, str]
     children: list[Element] = field(default_factory=list)
     text: list[str] = field(default_factory=list)
+    place: tuple[int, int] | None = None
 
     def all(self, tag: str) -> list[Element]:
         """The direct children with this tag."""
@@ -92,6 +101,9 @@ class _Scanner:
         self.count = 0
         self.appended_at: int | None = None
         self.appended_raw = False
+        self.latest: Element | None = None
+        self.skipped = 0  # bytes and lines passed by, which expat does not count
+        self.skipped_lines = 0
         self.parser = expat.ParserCreate()
         self.parser.buffer_text = True
         self.parser.buffer_size = CHUNK  # long texts in few parts
@@ -101,13 +113,51 @@ class _Scanner:
         self.parser.StartDoctypeDeclHandler = self.doctype
         self.parser.EntityDeclHandler = self.doctype
 
+    def run(self, stream: BinaryIO) -> None:
+        """Feed a file to expat, without the long texts of its data arrays."""
+        at, buffer = 0, b""  # the bytes at hand, and where the first of them stands
+        passing: Element | None = None
+        while chunk := stream.read(CHUNK):
+            buffer += chunk
+            fed = 0
+            while True:
+                if passing is not None:
+                    end = buffer.find(b"<", fed)
+                    stop = len(buffer) if end < 0 else end
+                    self._pass(passing, buffer[fed:stop], at + fed)
+                    fed = stop
+                    passing = None if end >= 0 else passing
+                tag = None if passing else _TAG.search(buffer, fed)
+                if tag is None:
+                    break
+                self.latest = None
+                self.parser.Parse(buffer[fed : tag.end()], False)
+                fed = tag.end()
+                # None is new where the tag stands in a comment; one that is closed already has no text.
+                new = self.stack[-1] if self.stack and self.stack[-1] is self.latest else None
+                if new is not None and new.tag == "DataArray" and buffer.find(b"<", fed, fed + LONG) < 0:
+                    passing = new
+            rest = len(buffer)
+            last = buffer.rfind(b"<", max(fed, rest - LONG))
+            if last >= 0 and b">" not in buffer[last:]:
+                rest = last  # a tag that the next bytes complete
+            self.parser.Parse(buffer[fed:rest], False)
+            at, buffer = at + rest, buffer[rest:]
+        self.parser.Parse(buffer, True)
+
+    def _pass(self, element: Element, text: bytes, at: int) -> None:
+        start = at if element.place is None else element.place[0]
+        element.place = start, at + len(text)
+        self.skipped += len(text)
+        self.skipped_lines += text.count(b"\n")
+
     def start(self, tag: str, attributes: dict[str, str]) -> None:
         self.count += 1
         if len(self.stack) >= MOST_DEPTH or self.count > MOST_ELEMENTS:
             raise FormatError(
                 "the XML is nested too deep or holds too many elements", where=self.path, mend=DAMAGED
             )
-        element = Element(tag, attributes)
+        element = self.latest = Element(tag, attributes)
         if not self.stack:
             if tag != "VTKFile":
                 raise FormatError(
@@ -117,7 +167,7 @@ class _Scanner:
         else:
             self.stack[-1].children.append(element)
         if tag == "AppendedData":
-            self.appended_at = self.parser.CurrentByteIndex
+            self.appended_at = self.parser.CurrentByteIndex + self.skipped
             self.appended_raw = attributes.get("encoding", "base64") == "raw"
             raise _Stop
         if tag == self.stop_at:
@@ -147,14 +197,13 @@ def scan(path: Path, stop_at: str = "") -> Document:
     scanner = _Scanner(path, stop_at)
     try:
         with path.open("rb") as stream:
-            while chunk := stream.read(CHUNK):
-                scanner.parser.Parse(chunk, False)
-            scanner.parser.Parse(b"", True)
+            scanner.run(stream)
     except _Stop:
         pass
     except expat.ExpatError as error:
+        line, what = error.lineno + scanner.skipped_lines, expat.ErrorString(error.code)
         raise FormatError(
-            f"the XML is damaged or cut short in line {error.lineno}: {expat.ErrorString(error.code)}",
+            f"the XML is damaged or cut short in line {line}: {what}",
             where=path,
             mend="Export the file again.",
         ) from None

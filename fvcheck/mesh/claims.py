@@ -12,6 +12,7 @@ from fvcheck.errors import MeshError
 from fvcheck.mesh.celltypes import polygons_of, segments_of
 from fvcheck.mesh.gather import Raw, expand_cells
 from fvcheck.mesh.piece import Piece
+from fvcheck.mesh.stored import as_array
 
 Array = np.ndarray
 
@@ -166,11 +167,11 @@ def tag_array(piece: Piece, local: Array) -> str | None:
     """Name of the integer cell array that marks patches on the line cells ``local``, or None."""
     best: tuple[int, int, str] | None = None
     for order, (name, array) in enumerate(piece.cell_data.items()):
-        array = np.asarray(array)
+        array = as_array(array)
         named = name in piece.tag_names
         if array.size != len(piece.types):
             continue
-        if array.dtype.kind not in "iu" and not (named and np.isfinite(array.astype(float)).all()):
+        if array.dtype.kind not in "iu" and not (named and np.isfinite(np.asarray(array, float)).all()):
             continue
         word = name.lower()
         if named:
@@ -183,7 +184,7 @@ def tag_array(piece: Piece, local: Array) -> str | None:
             rank = 1 + len(_TAG_NAMES)
         else:
             continue
-        ids = np.unique(array.reshape(-1)[local])
+        ids = np.unique(np.asarray(array).reshape(-1)[local])
         if not (ids != 0).any() and not any(int(i) in piece.tag_names.get(name, {}) for i in ids):
             continue
         if not named and len(local) > 16 and len(ids) > len(local) // 2:

@@ -24,6 +24,7 @@ from fvcheck.mesh.edges import edges_of
 from fvcheck.mesh.gather import Polygons, Raw, expand_cells, gather
 from fvcheck.mesh.piece import NamedFaces, Piece
 from fvcheck.mesh.plane import check_name, plane_of
+from fvcheck.mesh.stored import at_rows
 from fvcheck.mesh.tidy import tidy
 
 Array = np.ndarray
@@ -145,8 +146,8 @@ def _cut_down(piece: Piece, raw: Raw, kept: Array, cut: Array) -> Piece:
         types=raw.types[kept],
         offsets=np.concatenate([[0], np.cumsum(sizes[kept])]),
         nodes=number[nodes],
-        point_data={name: values[used] for name, values in piece.point_data.items()},
-        cell_data={name: values[kept] for name, values in piece.cell_data.items()},
+        point_data={name: at_rows(values, used) for name, values in piece.point_data.items()},
+        cell_data={name: at_rows(values, kept) for name, values in piece.cell_data.items()},
         ghost=None,
         faces=None,
         patches={name: renumbered(patch) for name, patch in piece.patches.items()},
