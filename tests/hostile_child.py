@@ -18,6 +18,8 @@ MEMORY, SECONDS = 4 << 30, 20
 
 
 def read(path: Path) -> None:
+    from whole import whole
+
     from fvcheck.formats import cgns, vtkhdf, xdmf
 
     module = {".cgns": cgns, ".vtkhdf": vtkhdf, ".xdmf": xdmf}[path.suffix]
@@ -25,7 +27,7 @@ def read(path: Path) -> None:
         module.sniff(stream.read(4096), path)
     export = module.open_export(path)
     for step in range(export.steps):
-        export.load(step)
+        whole(export.load(step))
 
 
 def attempt(path: Path) -> list[str]:

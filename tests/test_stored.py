@@ -2,9 +2,11 @@
 
 import pickle
 import re
+import shutil
 from dataclasses import replace
 from pathlib import Path
 
+import h5py
 import numpy as np
 import pytest
 from whole import whole
@@ -12,6 +14,7 @@ from whole import whole
 from fvcheck import Fluid, inspect_file, open_flow
 from fvcheck.errors import FormatError, FvcheckError
 from fvcheck.flow import flow_of_export
+from fvcheck.formats import hdf5_safe
 from fvcheck.formats.registry import open_export
 from fvcheck.formats.xml_arrays import ArrayReader
 from fvcheck.mesh.stored import Stored, at_rows, stored
@@ -74,6 +77,39 @@ def test_an_array_without_a_role_is_never_decoded(tmp_path, monkeypatch):
     decoded.clear()
     assert "residual" in {facts.row.name for facts in inspect_file(path, fluid=FLUID).arrays}
     assert "residual" in decoded
+
+
+# Format -> where a pressure lies in the HDF5 file of its sample, and where one more array is put.
+MORE = {
+    "vtkhdf": ("/VTKHDF/CellData/p", "/VTKHDF/CellData/residual"),
+    "cgns": ("/Base/Zone1/FlowSolution#CC/Pressure", "/Base/Zone1/FlowSolution#CC/residual"),
+    "xdmf": ("/d3", "/residual"),
+}
+
+
+@pytest.mark.parametrize("ending", MORE)
+def test_a_dataset_without_a_role_is_never_read(ending, tmp_path, monkeypatch):
+    for name in (f"poly_cell.{ending}", "poly_cell.h5"):
+        shutil.copy(SAMPLES / name, tmp_path)
+    path = tmp_path / f"poly_cell.{ending}"
+    source, target = MORE[ending]
+    with h5py.File(tmp_path / "poly_cell.h5" if ending == "xdmf" else path, "r+") as file:
+        file.copy(source, target)
+    if ending == "xdmf":
+        grid, end = path.read_text(), "</Grid>"
+        attribute = grid[grid.index('<Attribute Name="p"') : grid.index('<Attribute Name="T"')]
+        attribute = attribute.replace('"p"', '"residual"').replace("/d3", "/residual")
+        path.write_text(grid.replace(end, attribute + end))
+    names = []
+    read_dataset = hdf5_safe.read
+    monkeypatch.setattr(
+        hdf5_safe, "read", lambda data, *rest: names.append(data.name) or read_dataset(data, *rest)
+    )
+    open_flow(path, fluid=FLUID)
+    assert any(name.startswith(source) for name in names)
+    assert not any("residual" in name for name in names)
+    inspect_file(path, fluid=FLUID)
+    assert any("residual" in name for name in names)
 
 
 def test_damage_is_told_where_the_array_is_wanted_and_only_there(tmp_path):

@@ -12,8 +12,10 @@ from fvcheck.formats import hdf5_safe as safe
 from fvcheck.formats.cgns_elements import NFACE, NGON, Section, read_sections, solid_cells
 from fvcheck.formats.cgns_patches import Condition, Elements, joined, structured_patch
 from fvcheck.formats.cgns_tree import Node
+from fvcheck.formats.hdf5_later import later
 from fvcheck.formats.structured import block_cells
 from fvcheck.mesh.piece import Array, Piece
+from fvcheck.mesh.stored import stored
 
 _COORDINATES = ("CoordinateX", "CoordinateY", "CoordinateZ")
 _TAGS = "Section"
@@ -200,6 +202,11 @@ def _rind(node: Node, axes: int) -> list[int]:
 
 def _values(node: Node, size: tuple[int, ...], rind: list[int]) -> Array:
     """A data array without its rind planes, flat, the first axis fastest."""
+    return np.asarray(_later(node, size, rind))
+
+
+def _later(node: Node, size: tuple[int, ...], rind: list[int]) -> Array:
+    """The same, read when it is wanted."""
     full = tuple(n + low + high for n, low, high in zip(size, rind[::2], rind[1::2]))[::-1]
     if node.shape() != full:
         raise FormatError(
@@ -207,11 +214,8 @@ def _values(node: Node, size: tuple[int, ...], rind: list[int]) -> Array:
             where=node.where,
             mend="Export the array again for the whole zone.",
         )
-    values = node.numbers()
-    if any(rind):
-        window = [slice(low, low + n) for n, low in zip(size, rind[::2])]
-        values = values[tuple(window[::-1])]
-    return np.ascontiguousarray(values).reshape(-1)
+    window = tuple(slice(low, low + n) for n, low in zip(size, rind[::2]))[::-1]
+    return later(node.dataset(), node.where, window=window, shape=(prod(size),))
 
 
 def read_solutions(zone: Node, wanted: list[str] | None) -> tuple[dict[str, Array], dict[str, Array]]:
@@ -248,7 +252,7 @@ def read_solutions(zone: Node, wanted: list[str] | None) -> tuple[dict[str, Arra
         alone = keys.count((at_points, array.name)) == 1
         sizes = size.points if at_points else size.cells
         into = result[0] if at_points else result[1]
-        into[array.name if alone else f"{solution.name}/{array.name}"] = _values(
+        into[array.name if alone else f"{solution.name}/{array.name}"] = _later(
             array, sizes, _rind(solution, len(sizes))
         )
     return result
@@ -258,6 +262,14 @@ def filled(data: dict[str, Array], cells: int) -> dict[str, Array]:
     """Cell arrays made as long as the cells of the piece: NaN (or 0) on the boundary elements behind."""
     result = {}
     for name, values in data.items():
-        more = np.full(cells - len(values), np.nan if values.dtype.kind == "f" else 0, dtype=values.dtype)
-        result[name] = np.concatenate([values, more]) if len(more) else values
+        result[name] = values if cells == len(values) else _filled(values, cells)
     return result
+
+
+def _filled(values: Array, cells: int) -> Array:
+    filler = np.nan if values.dtype.kind == "f" else 0
+
+    def read() -> Array:
+        return np.concatenate([values, np.full(cells - len(values), filler, values.dtype)])
+
+    return stored((cells,), values.dtype, read)

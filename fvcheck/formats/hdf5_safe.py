@@ -265,10 +265,15 @@ def _name(data: Any) -> str:
 
 def plain(values: Array) -> Array:
     """In native byte order, C order and a width that numpy computes in."""
-    kind = values.dtype.newbyteorder("=")
+    return np.ascontiguousarray(values, dtype=plain_kind(values.dtype))
+
+
+def plain_kind(kind: np.dtype) -> np.dtype:
+    """The kind that `plain` brings values to."""
+    kind = kind.newbyteorder("=")
     if kind.kind == "f" and kind.itemsize not in (4, 8):
-        kind = np.dtype(np.float32 if kind.itemsize < 4 else np.float64)
-    return np.ascontiguousarray(values, dtype=kind)
+        return np.dtype(np.float32 if kind.itemsize < 4 else np.float64)
+    return kind
 
 
 def _trust(data: Any, total: tuple[int, ...], window: tuple[slice, ...], spot: str) -> None:

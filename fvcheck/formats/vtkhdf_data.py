@@ -12,6 +12,7 @@ import numpy as np
 
 from fvcheck.errors import FormatError
 from fvcheck.formats import hdf5_safe as safe
+from fvcheck.formats.hdf5_later import later
 from fvcheck.formats.hdf5_rows import read_rows
 from fvcheck.formats.vtkhdf_mesh import unstructured_parts
 from fvcheck.formats.vtkhdf_steps import Part, Steps, steps_of
@@ -90,7 +91,7 @@ def data_of(
     names: Collection[str] | None = None,
     rows: Array | None = None,
 ) -> dict[str, Array]:
-    """The ``PointData`` or ``CellData`` arrays of one part at one step.
+    """The ``PointData`` or ``CellData`` arrays of one part at one step; whole ones are read when wanted.
 
     names, rows : where not all are wanted; rows increase, from 0 within the part
     """
@@ -114,7 +115,7 @@ def data_of(
             continue
         if part.shape is not None:
             values = _image_array(data, part, kind, steps, step, where)
-            arrays[name] = values if rows is None else values[rows]
+            arrays[name] = values if rows is None else np.asarray(values)[rows]
             continue
         shape = safe.shape(data, where)
         if len(shape) not in (1, 2):
@@ -131,7 +132,7 @@ def data_of(
             own = steps.data_start(kind, name, step, total)
             first = start if own is None else own + part.before(kind)
         arrays[name] = (
-            safe.read(data, where, (first, first + count))
+            later(data, where, (first, first + count))
             if rows is None
             else read_rows(data, where, first + rows)
         )
@@ -154,8 +155,7 @@ def _image_array(data: Any, part: Part, kind: str, steps: Steps, step: int, wher
     for components in (False, True):
         axes = found[:-1] if components else found
         if [n for n in axes if n > 1] == flat and (not components or found[-1] <= 9):
-            values = safe.read(data, where, rows)
-            return values.reshape((count, found[-1]) if components else (count,))
+            return later(data, where, rows, shape=(count, found[-1]) if components else (count,))
     raise FormatError(
         f"the array '{data.name}' has the shape {found} for {sizes} values", where=where, mend=safe.DAMAGED
     )

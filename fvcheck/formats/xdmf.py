@@ -6,9 +6,8 @@ the folder of the file.
 
 from __future__ import annotations
 
-from collections.abc import Iterator, Mapping, Sequence
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, replace
-from math import prod
 from pathlib import Path
 
 import numpy as np
@@ -18,10 +17,9 @@ from fvcheck.formats.check import check_piece
 from fvcheck.formats.xdmf_items import Items
 from fvcheck.formats.xdmf_mesh import read_mesh, shape_of
 from fvcheck.formats.xdmf_tree import Element, parse
+from fvcheck.formats.xdmf_values import attributes, rows_of, values_of
 from fvcheck.hints import Hint
 from fvcheck.mesh.piece import Array, Export, Piece, RowReader, Wanted
-
-_COMPONENTS = {"scalar": (1,), "globalid": (1,), "vector": (3, 2), "tensor": (9, 4), "tensor6": (6, 3)}
 
 
 @dataclass(frozen=True)
@@ -172,21 +170,13 @@ def _grid(grid: Element, place: str, items: Items, cache: dict[str, tuple[object
     """One uniform grid with its attributes; its mesh from the cache if it is that of the step before."""
     mesh, shape = _mesh(grid, place, items, cache)
     data: dict[str, dict[str, Array]] = {"node": {}, "cell": {}}
-    for attribute, name, centre in _attributes(grid):
+    for attribute, name, centre in attributes(grid):
         if name in data[centre]:
             raise FormatError(f"two attributes are called '{name}'", where=items.where(attribute))
         count = len(mesh.points) if centre == "node" else len(mesh.types)
-        data[centre][name] = _values(attribute, count, centre, shape, items)
+        data[centre][name] = values_of(attribute, count, centre, shape, items)
     piece = replace(mesh, point_data=data["node"], cell_data=data["cell"], name=grid.get("Name"))
     return check_piece(piece, items.where(grid))
-
-
-def _attributes(grid: Element) -> Iterator[tuple[Element, str, str]]:
-    """Attributes at nodes and cells, with their names and centres."""
-    for attribute in grid.all("Attribute"):
-        centre = attribute.get("Center", default="Node").lower()
-        if centre in ("node", "cell") and not attribute.get("ItemType"):
-            yield attribute, attribute.get("Name") or "unnamed", centre
 
 
 def _mesh(
@@ -215,7 +205,7 @@ def _layout(grids: Sequence[Element]) -> object:
     arrays = [
         (centre, name, attribute.get("AttributeType", "Type"))
         for grid in grids
-        for attribute, name, centre in _attributes(grid)
+        for attribute, name, centre in attributes(grid)
     ]
     if len(keys) != 1 or len(parts[0]) != 2 or len({array[:2] for array in arrays}) < len(arrays):
         return None
@@ -232,12 +222,12 @@ def _rows(
     mesh, shape = _mesh(grids[0], "0", items, cache)
     out: dict[str, dict[str, Array]] = {location: {} for location in wanted}
     for grid in grids:
-        for attribute, name, centre in _attributes(grid):
+        for attribute, name, centre in attributes(grid):
             location = "point" if centre == "node" else "cell"
             if location in wanted and name in wanted[location].names:
                 count = len(mesh.points) if centre == "node" else len(mesh.types)
                 rows = wanted[location].rows
-                out[location][name] = _values(attribute, count, centre, shape, items, rows)
+                out[location][name] = rows_of(attribute, count, centre, shape, items, rows)
     return out
 
 
@@ -250,47 +240,6 @@ def _key(element: Element) -> object:
         id(element) if inline else element.text.strip(),
         tuple(_key(child) for child in element.children),
     )
-
-
-def _values(
-    attribute: Element,
-    count: int,
-    centre: str,
-    shape: tuple[int, ...] | None,
-    items: Items,
-    rows: Array | None = None,
-) -> Array:
-    """The values (count,) or (count, components) of an attribute, or some rows (k,) of them."""
-    where = items.where(attribute)
-    name = attribute.get("Name")
-    item = items.only(attribute)[0]
-    if rows is not None and shape is None:
-        some = items.read_rows(item, count, rows)
-        if some is not None and some[0].size in _COMPONENTS.get(_kind(attribute), (some[0].size,)):
-            return some
-    values = items.read(item)
-    kind = _kind(attribute)
-    size, rest = divmod(values.size, count)
-    if rest or size < 1 or (kind != "matrix" and size not in _COMPONENTS.get(kind, ())):
-        raise FormatError(
-            f"the attribute '{name}' ({kind[:20]}) has {values.size} values for {count} {centre}s",
-            where=where,
-            mend="The file is damaged or incomplete; export it again.",
-        )
-    sizes = (count,) if shape is None else shape if centre == "node" else tuple(max(1, n - 1) for n in shape)
-    wanted = [n for n in (*sizes, size) if n != 1]
-    found = [n for n in values.shape if n != 1]
-    if len(found) > 1 and found != wanted and not (size > 1 and found == [prod(sizes), size]):
-        raise FormatError(
-            f"the attribute '{name}' has the dimensions {values.shape} for {sizes} {centre}s",
-            where=where,
-        )
-    values = values.reshape((count, size) if size > 1 else (count,))
-    return values if rows is None else values[rows]
-
-
-def _kind(attribute: Element) -> str:
-    return attribute.get("AttributeType", "Type", default="Scalar").lower()
 
 
 def _merge(pieces: list[Piece]) -> list[Piece]:

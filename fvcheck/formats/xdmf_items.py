@@ -28,6 +28,8 @@ _KINDS = {
 _WIDTHS = {"double": 8, "char": 1, "uchar": 1, "short": 2, "long": 8}
 _ENDIAN: dict[str, Literal["=", "<", ">"]] = {"": "=", "native": "=", "little": "<", "big": ">"}
 
+_HDF = ("HDF", "HDF5", "H5")
+
 
 class Items:
     """Reads DataItems; HDF5 files stay open until the reader is closed (use as a context)."""
@@ -74,11 +76,22 @@ class Items:
         form = item.get("Format", default="XML").upper()
         if form == "XML":
             return self._inline(item, shape, where)
-        if form in ("HDF", "HDF5", "H5"):
-            return self._hdf(item, shape, where)
+        if form in _HDF:
+            return self._hdf(item, where)
         if form == "BINARY":
             return self._binary(item, shape, where)
         raise FormatError(f"the format '{form}' of a DataItem cannot be read", where=where)
+
+    def declared(self, item: Element) -> tuple[tuple[int, ...], np.dtype] | None:
+        """Shape and kind of plain values in HDF5, as `read` gives them; None where only reading tells."""
+        plain = item.get("ItemType", "Type", default="Uniform").lower() == "uniform"
+        if not plain or item.get("Format", default="XML").upper() not in _HDF or item.children:
+            return None
+        where = self.where(item)
+        data = self._dataset(item, where)
+        if not safe.is_numeric(data, where):
+            return None
+        return self._hdf_shape(item, data, where), safe.plain_kind(data.dtype)
 
     def _inline(self, item: Element, shape: tuple[int, ...], where: str) -> Array:
         text = item.text
@@ -133,8 +146,13 @@ class Items:
             )
         return self.path.parent / pure
 
-    def _hdf(self, item: Element, shape: tuple[int, ...], where: str) -> Array:
+    def _hdf(self, item: Element, where: str) -> Array:
         data = self._dataset(item, where)
+        return safe.read(data, where).reshape(self._hdf_shape(item, data, where))
+
+    def _hdf_shape(self, item: Element, data: Any, where: str) -> tuple[int, ...]:
+        """The declared dimensions, else those of the data set; FormatError where these do not go together."""
+        shape = dimensions(item, "Dimensions", where)
         found = safe.shape(data, where)
         if not fits(shape, found):
             raise FormatError(
@@ -142,7 +160,7 @@ class Items:
                 where=where,
                 mend="The file is damaged or incomplete; export it again.",
             )
-        return safe.read(data, where).reshape(shape or found)
+        return shape or found
 
     def read_rows(self, item: Element, count: int, rows: Array) -> Array | None:
         """Rows (k,) or (k, c), increasing, of plain values in HDF5; None for what must be read whole.
@@ -151,7 +169,7 @@ class Items:
         """
         kind = item.get("ItemType", "Type", default="Uniform").lower()
         form = item.get("Format", default="XML").upper()
-        if kind != "uniform" or form not in ("HDF", "HDF5", "H5") or item.children or len(rows) == 0:
+        if kind != "uniform" or form not in _HDF or item.children or len(rows) == 0:
             return None
         where = self.where(item)
         data = self._dataset(item, where)
@@ -201,7 +219,7 @@ class Items:
         if not all(inside):
             raise FormatError(f"a HyperSlab reaches beyond the dimensions {shape}", where=where)
         window = tuple(slice(a, a + s * (c - 1) + 1, s) for a, s, c in zip(start, stride, count))
-        if source.get("Format", default="XML").upper() in ("HDF", "HDF5", "H5"):
+        if source.get("Format", default="XML").upper() in _HDF:
             data = self._dataset(source, where)
             found = safe.shape(data, where)
             if found == shape:
