@@ -10,6 +10,7 @@ from __future__ import annotations
 
 import binascii
 import lzma
+import os
 import re
 import zlib
 from bisect import bisect_right
@@ -39,6 +40,8 @@ MOST_RATIO = 100
 FREE_BYTES = 1 << 28
 RUN = 1 << 18
 """Bytes of a file that are decoded at a time: few enough to stay in the cache of a core."""
+WORTH_THREADS = 4
+"""Runs from which on they are unpacked by several threads; decompressors let others run meanwhile."""
 Buffer = bytes | memoryview
 
 
@@ -267,15 +270,24 @@ class ArrayReader:
         if self.left < 0:
             raise FormatError(f"the file expands to {MOST_RATIO} times its size", where=where, mend=DAMAGED)
         out = np.empty(sum(sizes), np.uint8)
-        target, filled, first = out.data, 0, 0
-        while first < count:  # some blocks at a time, as many as make a run
-            beyond = max(first + 1, bisect_right(ends, ends[first] + RUN) - 1)
-            run = body.read(ends[first], ends[beyond])
-            for block in range(first, beyond):
-                stored_block = run[ends[block] - ends[first] : ends[block + 1] - ends[first]]
-                target[filled : filled + sizes[block]] = self._block(stored_block, sizes[block], where)
-                filled += sizes[block]
-            first = beyond
+        places = list(accumulate(sizes, initial=0))
+
+        def unpack(blocks: range) -> None:
+            begin = ends[blocks.start]
+            run = body.read(begin, ends[blocks.stop])
+            for block in blocks:
+                packed_block = run[ends[block] - begin : ends[block + 1] - begin]
+                out.data[places[block] : places[block + 1]] = self._block(packed_block, sizes[block], where)
+
+        runs = _runs(ends)
+        if len(runs) < WORTH_THREADS:
+            for blocks in runs:
+                unpack(blocks)
+        else:
+            from concurrent.futures import ThreadPoolExecutor
+
+            with ThreadPoolExecutor(min(4, os.cpu_count() or 1)) as pool:
+                list(pool.map(unpack, runs))
         return out, body, ends[-1]
 
     def _block(self, block: memoryview, size: int, where: str) -> bytes:
@@ -287,6 +299,16 @@ class ArrayReader:
         if len(data) != size:
             raise FormatError("a compressed block is damaged or of another size", where=where, mend=DAMAGED)
         return data
+
+
+def _runs(ends: list[int]) -> list[range]:
+    """Blocks, given where each starts and the last one ends, as many at a time as make a run."""
+    runs, first = [], 0
+    while first < len(ends) - 1:
+        beyond = max(first + 1, bisect_right(ends, ends[first] + RUN) - 1)
+        runs.append(range(first, beyond))
+        first = beyond
+    return runs
 
 
 def attribute_int(element: Element, name: str, where: str, default: int | None = None) -> int:
