@@ -9,7 +9,7 @@ from typing import Any
 import numpy as np
 
 from fvcheck.errors import SetupError
-from fvcheck.timeseries import History
+from fvcheck.overtime import History
 from fvcheck.wholefile import write_whole
 
 KINDS = (".png", ".svg", ".pdf")
@@ -35,12 +35,15 @@ def check_plot_path(path: str | Path) -> None:
 
 
 def history_figure(history: History) -> Any:
-    """A matplotlib Figure: imbalance with its band, and net flux, over the steps, one row per surface."""
+    """A matplotlib Figure over the steps: of each surface imbalance with its band and net flux, of each
+    body drag and lift by every route."""
     from matplotlib.figure import Figure
 
     ledgers = history.entries[-1].result.ledgers
-    figure = Figure(figsize=(10, 0.6 + 3.2 * len(ledgers)), layout="constrained")
-    panels = figure.subplots(len(ledgers), 2, squeeze=False, sharex=True)
+    bodies = list(dict.fromkeys(e.body for found in history.forces for e in found.estimates))
+    count = len(ledgers) + len(bodies)
+    figure = Figure(figsize=(10, 0.6 + 3.2 * count), layout="constrained")
+    panels = figure.subplots(count, 2, squeeze=False, sharex=True)
     steps = history.steps
     every = max(1, len(steps) // _MOST_MARKS)
     for (left, right), ledger in zip(panels, ledgers):
@@ -70,9 +73,44 @@ def history_figure(history: History) -> Any:
         right.legend(fontsize=8, frameon=False)
         for panel in (left, right):
             panel.grid(alpha=0.25)
+    for pair, body in zip(panels[len(ledgers) :], bodies):
+        _draw_forces(pair, history, body, every)
     for panel in panels[-1]:
         panel.set_xlabel("time" if history.unsteady else "iteration")
     return figure
+
+
+def _draw_forces(pair: Any, history: History, body: str, every: int) -> None:
+    labels = dict.fromkeys(e.label for found in history.forces for e in found.estimates if e.body == body)
+    for panel, name in zip(pair, ("drag", "lift")):
+        for number, label in enumerate(labels):
+            values, half = _force_over_steps(history, body, label, name)
+            style: dict[str, Any] = {
+                "marker": _MARKS[number % len(_MARKS)],
+                "markersize": 4,
+                "markevery": every,
+                "color": f"C{number % 10}",
+                "label": label,
+            }
+            panel.plot(history.steps, values, **style)
+            panel.fill_between(
+                history.steps, values - half, values + half, color=style["color"], alpha=0.15, lw=0
+            )
+        panel.set_title(f"{body}: {name} and sampling band", fontsize=10)
+        panel.set_ylabel(history.forces[-1].unit)
+        panel.grid(alpha=0.25)
+    pair[1].legend(fontsize=8, frameon=False)
+
+
+def _force_over_steps(history: History, body: str, label: str, name: str) -> tuple[Any, Any]:
+    """(n,) of a number by one route, and its half-width; NaN where there is none."""
+    values = np.full((2, len(history.forces)), np.nan)
+    for k, found in enumerate(history.forces):
+        for estimate in found.estimates:
+            if (estimate.body, estimate.label) == (body, label) and getattr(estimate, name) is not None:
+                half = estimate.band(name)
+                values[:, k] = getattr(estimate, name), half if np.isfinite(half) else np.nan
+    return values[0], values[1]
 
 
 def save_history(history: History, path: str | Path) -> None:

@@ -28,7 +28,7 @@ Array = np.ndarray
 # error of the latter to leading order; these factors cover what is beyond. Within
 # the series that of Roache 1998 for three levels does; at both ends, all times lie
 # on one side, and the error is told by what happens more than a step away.
-_TIME_FACTOR, _TIME_FACTOR_ENDS = 1.25, 2.0
+TIME_FACTOR, TIME_FACTOR_ENDS = 1.25, 2.0
 
 # Units in the last place that sums and weighted averages may be off by.
 _ROUNDINGS = 64.0
@@ -123,7 +123,7 @@ def rate_of(contents: Sequence[Content], times: Array, at: int, datum: float, hi
     else:
         # One-sided sets of four on both sides: the error of three may have a zero at one of them.
         firsts = {max(min(at - shift, n - 4), 0) for shift in (1, 2)}
-        factor = _TIME_FACTOR if 0 < at < n - 1 else _TIME_FACTOR_ENDS
+        factor = TIME_FACTOR if 0 < at < n - 1 else TIME_FACTOR_ENDS
         time = np.zeros_like(change.value)
         for first in firsts:
             four = slice(first, first + 4)

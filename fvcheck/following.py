@@ -13,9 +13,10 @@ from typing import Any
 from fvcheck.errors import FvcheckError, SetupError
 from fvcheck.hints import Hint
 from fvcheck.mesh.piece import Export
+from fvcheck.overtime import Entry, History
+from fvcheck.recording import Recorder
 from fvcheck.series import Snapshot, file_list, natural, of_exports
 from fvcheck.surfaces import ControlSurface
-from fvcheck.timeseries import Entry, History, Recorder
 
 # Files that list others: where there is one, it says what belongs to the run.
 _LISTS = (".pvd", ".xdmf", ".xmf")

@@ -255,6 +255,11 @@ PAGES: dict[str, Page] = {
         "the fluxes change.",
         "Export one more time. Over the whole interval the balance is as good as with many.",
     ),
+    "forces-at-rest": Page(
+        "Forces over time are asked for, and the mesh is another one at each snapshot, or its points move.",
+        "What the fluid around a body stores is taken from the data of a few snapshots at the same places.",
+        "Follow a surface around the body: its momentum row keeps account of a moving mesh.",
+    ),
     "mesh-moves": Page(
         "The points of the mesh move from one snapshot to the next, its cells stay the same.",
         "The domain boundary then moves with it, and what it sweeps counts; drawn surfaces stay where they "

@@ -18,9 +18,9 @@ from fvcheck.hints import Hint
 from fvcheck.laws import Law
 from fvcheck.ledger import SCHEMA, Ledger, Result
 from fvcheck.notebook import html_hints, html_line, html_table
+from fvcheck.recording import reaction
 from fvcheck.series import file_list
 from fvcheck.surfaces import ControlSurface, name_all
-from fvcheck.timeseries import reaction
 from fvcheck.version import __version__
 
 

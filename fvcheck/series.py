@@ -127,8 +127,8 @@ class Series:
                 return replace(flow, case=replace(flow.case, time=snapshot.time))
         flow = flow_of_export(snapshot.export, step=snapshot.step, assembler=self._keeper, **self.reading)
         flow = replace(flow, case=replace(flow.case, time=snapshot.time))
-        # Four neighbours are what the velocity of a moving mesh may look at.
-        self._recent = dict([*self._recent.items(), (number, flow)][-4:])
+        # A rate of change, and its error, may look at five neighbours.
+        self._recent = dict([*self._recent.items(), (number, flow)][-5:])
         # Values that line cells give on the boundary are believed or not by the whole field.
         judged = self._keeper.lines and any(field.location == "cell" for field in flow.fields.values())
         layout = None if judged else _layout(snapshot)

@@ -2,353 +2,19 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Iterable, Iterator, Sequence
-from dataclasses import asdict, dataclass
+from collections.abc import Callable, Iterable, Mapping, Sequence
+from dataclasses import replace
 from pathlib import Path
 from typing import Any
 
-import numpy as np
-
-from fvcheck.balancing import default_surfaces
-from fvcheck.errors import FvcheckError, SetupError
-from fvcheck.evolution import Evolution, Total
-from fvcheck.flow import Flow
-from fvcheck.hints import Hint
+from fvcheck.errors import FvcheckError
+from fvcheck.forceseries import force_series
 from fvcheck.laws import Law
-from fvcheck.ledger import SCHEMA, Result, Row, case_dict, ledger_dict
 from fvcheck.mesh.piece import Export
-from fvcheck.notebook import html_line, html_table
-from fvcheck.series import Series, open_series, same_cells
+from fvcheck.overtime import Entry, History
+from fvcheck.recording import Recorder
+from fvcheck.series import Series, open_series
 from fvcheck.surfaces import ControlSurface
-from fvcheck.trends import Trend, trend_of
-from fvcheck.version import __version__
-
-Array = np.ndarray
-
-
-@dataclass(frozen=True)
-class Entry:
-    """One snapshot: its number (of the step or iteration), time where it has one, and ledgers."""
-
-    file: str
-    step: int
-    time: float | None
-    number: int
-    result: Result
-
-
-@dataclass(frozen=True)
-class History:
-    """The ledgers of a run, snapshot after snapshot.
-
-    unsteady : whether the snapshots have times, so that storage counts
-    trends : of every judged row's imbalance in percent of the largest scale of
-        the run, of fluxes, and of the force on what a surface encloses
-    totals : surface -> the balance between first and last snapshot, row by row
-    hints : those of all snapshots, and what was noticed between them
-    ended : why watching a run that still writes came to its end, else ""
-    """
-
-    entries: tuple[Entry, ...]
-    unsteady: bool
-    trends: tuple[Trend, ...]
-    totals: dict[str, tuple[Total, ...]]
-    hints: tuple[Hint, ...] = ()
-    ended: str = ""
-
-    @property
-    def verdict(self) -> str | None:
-        """That of the last snapshot."""
-        return self.entries[-1].result.verdict
-
-    @property
-    def settled(self) -> bool:
-        """Whether every quantity has settled."""
-        return bool(self.trends) and all(trend.settled for trend in self.trends)
-
-    @property
-    def steps(self) -> Array:
-        """(n,) times, or numbers of iterations."""
-        return np.array([e.time if self.unsteady else e.number for e in self.entries], float)
-
-    def values(self, surface: str, label: str, what: str = "imbalance") -> Array:
-        """(n,) of one attribute of one row, NaN where there is no number.
-
-        ``values("box", "momentum-x", "sampling_band")``; SetupError for a surface or row that is not there.
-        """
-        rows = [entry.result[surface][label] for entry in self.entries]
-        return np.array([np.nan if getattr(r, what) is None else getattr(r, what) for r in rows], float)
-
-    def trend(self, surface: str, name: str) -> Trend:
-        """One trend, such as ``trend("box", "mass imbalance")``; SetupError where there is none."""
-        for trend in self.trends:
-            if (trend.surface, trend.name) == (surface, name):
-                return trend
-        have = ", ".join(f"{t.surface}: {t.name}" for t in self.trends)
-        raise SetupError(f"there is no trend {name!r} of {surface!r}", mend=f"Trends: {have}.")
-
-    def to_dict(self) -> dict[str, Any]:
-        """The result file: the last snapshot, and all of them under ``history``."""
-        last = self.entries[-1].result
-        return {
-            "schema": SCHEMA,
-            "version": __version__,
-            "case": last.case,
-            "verdict": self.verdict,
-            "surfaces": last.to_dict()["surfaces"],
-            "history": [
-                {
-                    "file": entry.file,
-                    "step": entry.step,
-                    "time": entry.time,
-                    "number": entry.number,
-                    "verdict": entry.result.verdict,
-                    "surfaces": [ledger_dict(ledger) for ledger in entry.result.ledgers],
-                }
-                for entry in self.entries
-            ],
-            "unsteady": self.unsteady,
-            "settled": self.settled,
-            "trends": [asdict(trend) for trend in self.trends],
-            "totals": {name: [asdict(total) for total in rows] for name, rows in self.totals.items()},
-            "ended": self.ended,
-            "hints": [asdict(hint) for hint in self.hints],
-        }
-
-    def to_csv(self) -> str:
-        """One line per snapshot and row, with all of its numbers, for a spreadsheet."""
-        import csv
-        import io
-
-        out = io.StringIO()
-        writer = csv.writer(out, lineterminator="\n")
-        names = [
-            *("flux", "boundary", "storage", "source", "imbalance", "scale", "imbalance_percent"),
-            *(
-                "sampling_band",
-                "resolution_band",
-                "rounding_band",
-                "time_band",
-                "tolerance_percent",
-                "verdict",
-            ),
-        ]
-        writer.writerow(["file", "step", "number", "time", "surface", "law", "component", "unit", *names])
-        for entry in self.entries:
-            for ledger in entry.result.ledgers:
-                for row in ledger.rows:
-                    place = [entry.file, entry.step, entry.number, entry.time, ledger.name]
-                    numbers = [getattr(row, name) for name in names]
-                    writer.writerow([*place, row.law, row.component, row.unit, *numbers])
-        return out.getvalue()
-
-    def _repr_html_(self) -> str:
-        kind = "times" if self.unsteady else "iterations"
-        head = html_line(f"{len(self.entries)} {kind}", "settled" if self.settled else "not settled")
-        titles = ("surface", "quantity", "unit", "level", "drift", "mean", "±95 %", "amplitude", "period", "")
-        rows = [
-            (
-                *(t.surface, t.name, t.unit, t.level, t.drift, t.mean, t.mean_band, t.amplitude, t.period),
-                "settled" if t.settled else "not settled",
-            )
-            for t in self.trends
-        ]
-        trends = html_table(titles, rows, "over the steps") if rows else ""
-        return head + trends + html_line("the last") + self.entries[-1].result._repr_html_()
-
-
-class Recorder:
-    """Takes the snapshots of a series one by one; at any time `history` gives what there is."""
-
-    def __init__(
-        self,
-        series: Series,
-        surfaces: Sequence[ControlSurface] | None = None,
-        laws: Iterable[str | Law] | None = None,
-        *,
-        reference: tuple[float, float] | None = None,
-        **settings: Any,
-    ) -> None:
-        self.series, self.reference = series, reference
-        self._surfaces = None if surfaces is None else list(surfaces)
-        self._laws = None if laws is None else list(laws)
-        self._settings = {"tolerance": {}, "scale": {}, "sources": (), "about": (0.0, 0.0)} | {
-            name: value for name, value in settings.items() if value is not None
-        }
-        self._evolutions: list[Evolution] = []
-        self._cases: list[dict[str, Any]] = []
-        self._final: list[tuple[Any, ...]] = []
-        self._hints: dict[Hint, None] = dict.fromkeys(series.hints)
-        self.unsteady = series.times is not None and len(series) > 0
-
-    @property
-    def taken(self) -> int:
-        """Number of snapshots taken so far."""
-        return len(self._cases)
-
-    def take(self, look_ahead: bool = True) -> Entry:
-        """The next snapshot. ``look_ahead``: those behind it may be read for the motion of the mesh."""
-        number = self.taken
-        velocity = None
-        if self.unsteady and len(self.series) > 1 and (look_ahead or number > 0):
-            velocity = self._velocity(number)
-        flow = self.series.flow(number, self._needed() if velocity is None else None)
-        if not self._evolutions:
-            self._start(flow)
-        if self.unsteady and any(role.startswith("rate:") for role in flow.fields):
-            self._note(
-                Hint("rates-over-series", "rates of change are in the export: storage is taken from them")
-            )
-        before = [evolution.recompiled for evolution in self._evolutions]
-        for evolution in self._evolutions:
-            evolution.take(flow, velocity)
-        if number > 0 and velocity is None and before != [e.recompiled for e in self._evolutions]:
-            self._note_mesh(number, flow)
-        self._cases.append(case_dict(flow))
-        self._hints |= dict.fromkeys(flow.hints)
-        self._settle()
-        return self.entry(number)
-
-    def _start(self, flow: Flow) -> None:
-        surfaces = self._surfaces or default_surfaces(flow)
-        names = [surface.name for surface in surfaces]
-        if len(set(names)) < len(names) or not all(names):
-            from fvcheck.surfaces import name_all
-
-            surfaces = list(name_all(surfaces))
-        self._evolutions = [
-            Evolution(surface, self._laws, unsteady=self.unsteady, **self._settings) for surface in surfaces
-        ]
-
-    def _needed(self) -> dict[str, Array | None] | None:
-        """What all volumes together take from a flow; None where one must see all of it."""
-        out: dict[str, Array | None] = {}
-        for evolution in self._evolutions:
-            needed = evolution.needed()
-            if needed is None:
-                return None
-            for location, rows in needed.items():
-                known = out.get(location, rows)
-                if known is rows or known is None or rows is None:
-                    out[location] = rows if known is rows else None
-                else:
-                    out[location] = np.union1d(known, rows)
-        return out or None
-
-    def _velocity(self, number: int) -> Array | None:
-        velocity = self.series.point_velocity(number)
-        if velocity is not None:
-            self._note_motion()
-        return velocity
-
-    def _note_motion(self) -> None:
-        self._note(Hint("mesh-moves", "the mesh moves between snapshots; the domain boundary moves with it"))
-
-    def _note_mesh(self, number: int, flow: Flow) -> None:
-        moved = any(evolution.surface.motion is not None for evolution in self._evolutions)
-        mesh_changed = number > 0 and not same_cells(flow.mesh, self.series.mesh(number - 1))
-        if mesh_changed:
-            self._note(Hint("mesh-changes", f"the mesh of snapshot {number} is another one than that before"))
-        elif not moved and flow.mesh is not self.series.mesh(number - 1):
-            self._note_motion()
-
-    def add_hint(self, hint: Hint) -> None:
-        """Take in what was noticed outside."""
-        self._hints[hint] = None
-
-    def drop(self) -> None:
-        """Leave the next snapshot out, which cannot be read."""
-        self.series.remove(self.taken)
-        for evolution in self._evolutions:
-            evolution.shorten(self.taken)
-
-    def _note(self, hint: Hint) -> None:
-        """Take in a remark of a new kind."""
-        if not any(known.code == hint.code for known in self._hints):
-            self._hints[hint] = None
-
-    def _settle(self) -> None:
-        """Keep what will not change any more, before the contents behind it are given up."""
-        while self._evolutions and len(self._final) < self.taken:
-            number = len(self._final)
-            if not all(evolution.settled(number) for evolution in self._evolutions):
-                return
-            self._final.append(tuple(evolution.ledger(number) for evolution in self._evolutions))
-
-    def entry(self, number: int) -> Entry:
-        """A snapshot's ledgers, storage by the snapshots that are there so far."""
-        if number < len(self._final):
-            ledgers = self._final[number]
-        else:
-            ledgers = tuple(evolution.ledger(number) for evolution in self._evolutions)
-        snapshot, case = self.series.snapshots[number], self._cases[number]
-        hints = tuple(dict.fromkeys(hint for ledger in ledgers for hint in ledger.hints))
-        return Entry(case["file"], case["step"], snapshot.time, snapshot.number, Result(case, ledgers, hints))
-
-    def history(self, ended: str = "") -> History:
-        """What the snapshots taken so far say together; SetupError before the first one."""
-        if not self.taken:
-            raise SetupError("no snapshot has been read", mend="Name files that hold at least one.")
-        entries = tuple(self.entry(number) for number in range(self.taken))
-        steps = np.array([e.time if self.unsteady else k for k, e in enumerate(entries)], float)
-        totals = {}
-        if self.unsteady:
-            for place, evolution in enumerate(self._evolutions):
-                scales = [[row.scale or 0.0 for row in e.result.ledgers[place].rows] for e in entries]
-                if found := evolution.totals(scales):
-                    totals[entries[0].result.ledgers[place].name] = found
-        hints = dict(self._hints)
-        for entry in entries:
-            hints |= dict.fromkeys(entry.result.hints)
-        if self.unsteady and len(steps) > 1 and np.all(steps == np.round(steps)) and steps[-1] >= 2.0:
-            note = "the times are whole numbers; they count as times, with storage"
-            hints[Hint("time-or-iteration", note)] = None
-        if self.unsteady and self.taken == 2:
-            note = "storage by fewer than three snapshots is of first order in the step"
-            hints[Hint("few-snapshots", note)] = None
-        return History(
-            entries,
-            self.unsteady,
-            tuple(_trends(entries, steps, self.reference)),
-            totals,
-            tuple(hints),
-            ended,
-        )
-
-
-def _trends(entries: Sequence[Entry], steps: Array, reference: tuple[float, float] | None) -> Iterator[Trend]:
-    for place, ledger in enumerate(entries[0].result.ledgers):
-        for number, row in enumerate(ledger.rows):
-            rows: list[Row] = [entry.result.ledgers[place].rows[number] for entry in entries]
-            scale = max((r.scale or 0.0 for r in rows), default=0.0)
-            limit = 0.01 * (row.tolerance_percent or 1.0)
-            if ledger.closed and scale > 0:
-                values = np.array([100.0 * (r.imbalance or 0.0) / scale for r in rows])
-                name = f"{row.label} imbalance"
-                yield trend_of(ledger.name, name, "%", steps, values, 100.0 * limit, reference)
-            if any(r.inflow or r.outflow for r in rows) and not _same(rows):
-                flux = np.array([r.flux for r in rows])
-                size = max(r.inflow + r.outflow for r in rows)
-                name = f"{row.label} flux"
-                yield trend_of(ledger.name, name, row.unit, steps, flux, limit * size, reference)
-            if row.law == "momentum" and ledger.closed and row.boundary:
-                force = np.array([reaction(r) for r in rows])
-                size = float(np.abs(force).max())
-                name = f"{row.label} force"
-                yield trend_of(ledger.name, name, row.unit, steps, force, limit * size, reference)
-
-
-def reaction(row: Row) -> float:
-    """Force of the fluid on all boundary within a surface, by the ledger: −(storage + flux − source)."""
-    return (row.source or 0.0) - (row.storage or 0.0) - row.flux
-
-
-def _same(rows: Sequence[Row]) -> bool:
-    """Whether a row's flux is its imbalance: nothing else enters the balance."""
-    return all(
-        row.imbalance is not None and abs(row.flux - row.imbalance) <= 1e-9 * (row.scale or 0.0)
-        for row in rows
-    )
 
 
 def history(
@@ -362,7 +28,10 @@ def history(
     about: tuple[float, float] | None = None,
     steady: bool = False,
     reference: tuple[float, float] | None = None,
+    bodies: str | Sequence[str] | None = None,
+    forces: Mapping[str, Any] | None = None,
     on_step: Callable[[Entry, int], None] | None = None,
+    on_force: Callable[[int], None] | None = None,
     **reading: Any,
 ) -> History:
     """The ledger of every snapshot of a run.
@@ -372,7 +41,10 @@ def history(
     steady : the snapshots are iterations towards a steady state, whatever times
         they carry: no storage
     reference : (length, velocity) for the Strouhal number
-    on_step : called with each entry and the number of all, for a progress bar
+    bodies : with the forces on these bodies, an empty sequence for all; forces : further arguments
+        of `fvcheck.forces` for them (see `fvcheck.forceseries`)
+    on_step : called with each entry and the number of all, for a progress bar; on_force : with
+        the number of all after the forces of each
     reading : as in `open_flow`, ``step`` left out
 
     With times, the storage of each row is the rate of change of its content by
@@ -405,4 +77,9 @@ def history(
             raise type(error)(error.what, where=f"snapshot {number}", mend=error.mend) from None
         if on_step is not None:
             on_step(entry, len(series))
-    return recorder.history()
+    found = recorder.history()
+    if bodies is None:
+        return found
+    more = force_series(series, bodies or None, strouhal=reference, on_step=on_force, **(forces or {}))
+    hints = tuple(dict.fromkeys([*found.hints, *more.hints]))
+    return replace(found, forces=more.found, trends=(*found.trends, *more.trends), hints=hints)

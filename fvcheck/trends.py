@@ -33,7 +33,7 @@ class Trend:
     """One quantity over the steps of a run.
 
     surface, name, unit : which; ``name`` is a row's label with ``imbalance`` (in % of the scale),
-        ``flux`` or ``force``
+        ``flux`` or ``force``; of a body in place of a surface "drag, ROUTE" and the like
     level : mean of the last quarter of the steps
     drift : change per step there, by a straight line
     reduction : first value over the last one, in magnitude

@@ -3,12 +3,15 @@
 from __future__ import annotations
 
 from pathlib import Path
-from typing import Annotated, Any
+from typing import TYPE_CHECKING, Annotated, Any
 
 from typer import Argument, Option
 
 from fvcheck.cli.options import FluidOptions, Limits, Output, Reading, SurfaceList, number, spread
 from fvcheck.errors import SetupError
+
+if TYPE_CHECKING:
+    from fvcheck.settings import Settings
 
 _OVER, _WATCH, _SHOW = "Over the steps", "Watching", "Output"
 
@@ -28,6 +31,14 @@ def command(
         bool,
         Option("--steady", help="Steps are iterations, whatever times they carry.", rich_help_panel=_OVER),
     ] = False,
+    forces: Annotated[
+        bool,
+        Option("--forces", help="Forces too, on the bodies of the check file or all.", rich_help_panel=_OVER),
+    ] = False,
+    body: Annotated[
+        list[str] | None,
+        Option(metavar="NAME", help="Forces on this body. Repeatable.", rich_help_panel=_OVER),
+    ] = None,
     reference_length: Annotated[
         str | None, Option(metavar="L", help="For the Strouhal number.", rich_help_panel=_OVER)
     ] = None,
@@ -66,8 +77,9 @@ def command(
     from fvcheck.cli.output import check_target, show
     from fvcheck.cli.progress import progress
     from fvcheck.following import follow as watch
+    from fvcheck.overtime import Entry
     from fvcheck.text.history import history_text, line_text
-    from fvcheck.timeseries import Entry, history
+    from fvcheck.timeseries import history
     from fvcheck.verdict import EXIT_STATUS
     from fvcheck.wholefile import write_whole
 
@@ -84,6 +96,7 @@ def command(
         "about": settings.about,
         "reference": reference,
     }
+    wanted = _bodies(forces, body, settings, follow)
     silent = output.quiet or "-" in (output.json, csv)
     if follow:
         interval = number(every, "--every", "--every SECONDS")
@@ -114,7 +127,14 @@ def command(
                 settings.surfaces,
                 settings.laws,
                 steady=steady or settings.steady,
-                on_step=lambda _entry, total: advance(total),
+                bodies=wanted,
+                forces={
+                    "about": settings.moment_about(wanted or None),
+                    "reference": {k: v for k, v in settings.bodies.items() if v is not None} or None,
+                    "wake_line": settings.wakes,
+                },
+                on_step=lambda _entry, total: advance(_steps(total, wanted)),
+                on_force=lambda total: advance(_steps(total, wanted)),
                 **judged,
                 **settings.reading,
             )
@@ -127,6 +147,23 @@ def command(
     else:
         show(output, found.to_dict, lambda: history_text(found, output.quiet))
     return 0 if found.verdict is None else EXIT_STATUS[found.verdict]
+
+
+def _bodies(forces: bool, body: list[str] | None, settings: Settings, follow: bool) -> list[str] | None:
+    """The bodies whose forces are wanted, none named for all; None for no forces."""
+    if not (forces or body):
+        return None
+    if follow:
+        raise SetupError(
+            "forces need the snapshots behind, which a run that still writes lacks",
+            mend="Leave --follow out, or take the force from the momentum row of a surface.",
+        )
+    return body or list(settings.bodies)
+
+
+def _steps(total: int, bodies: list[str] | None) -> int:
+    """Of the progress bar: for forces, snapshots are gone through once more."""
+    return total if bodies is None else 2 * total
 
 
 def _reference(length: str | None, velocity: str | None) -> tuple[float, float] | None:

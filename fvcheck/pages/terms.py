@@ -73,7 +73,8 @@ TERMS: dict[str, Page] = {
         "or period by period. mean: over whole periods where the number swings, else behind the start-up, "
         "with a 95 % band for correlated values.",
         "One state cannot say whether a run is done, nor close an unsteady balance.",
-        "fvcheck history 'run_*.vtu' -s …; --steady for iterations, --follow while the run writes; --csv, "
+        "fvcheck history 'run_*.vtu' -s …; --steady for iterations, --follow while the run writes; --forces "
+        "for drag, lift and moment by every route, with what is stored around the body; --csv, "
         "--plot.",
     ),
     "study": Page(

@@ -18,12 +18,13 @@ from fvcheck.laws import Law
 from fvcheck.ledger import Result
 from fvcheck.many import sampled_volumes
 from fvcheck.meshstudy import Study, study
+from fvcheck.overtime import History
 from fvcheck.plausible import open_state
 from fvcheck.routes import Forces, forces
 from fvcheck.series import Series, file_list, open_series
 from fvcheck.sources import Source
 from fvcheck.surfaces import ControlSurface, name_all
-from fvcheck.timeseries import History, history
+from fvcheck.timeseries import history
 from fvcheck.verdict import OPEN
 from fvcheck.volume import SampledVolume
 

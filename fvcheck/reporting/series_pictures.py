@@ -10,11 +10,11 @@ import numpy as np
 
 from fvcheck.ledger import Ledger
 from fvcheck.meshstudy import Quantity, Study
+from fvcheck.overtime import History
 from fvcheck.reporting.style import GRID, INK, MARKS, MUTED, SERIES, Drawing, plain
 from fvcheck.reporting.tables import route_name
 from fvcheck.routes import Estimate, Forces
 from fvcheck.text.numbers import exponent, percent, short, unit
-from fvcheck.timeseries import History
 
 Array = np.ndarray
 

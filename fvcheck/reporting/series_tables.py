@@ -6,12 +6,12 @@ from fvcheck.diagnosis import Diagnosis
 from fvcheck.diagnosis.where import Place
 from fvcheck.laws import find_law
 from fvcheck.meshstudy import Study
+from fvcheck.overtime import History
 from fvcheck.reporting.diagnosis_pictures import label_of
 from fvcheck.reporting.style import plain
 from fvcheck.reporting.tables import Table, in_percent, number, table, verdict, word
 from fvcheck.text.history import shown
 from fvcheck.text.numbers import percent, short
-from fvcheck.timeseries import History
 
 # Lines of the table of snapshots; what lies between is in the JSON and CSV of fvcheck history.
 _LINES = 60

@@ -86,7 +86,7 @@ class Estimate:
         """The route, with what tells several of one method apart."""
         if self.surface:
             return f"{self.method} {self.surface}"
-        if isinstance(self.distance, float):
+        if isinstance(self.distance, float) and self.distance > 0:
             return f"{self.method} {self.distance:.4g}"
         return f"{self.method} {self.formula}" if self.formula else self.method
 

@@ -13,6 +13,8 @@ from fvcheck.routes.estimate import Estimate
 from fvcheck.routes.sweep import Sweep
 from fvcheck.version import __version__
 
+NUMBERS = ("drag", "lift", "moment")
+
 
 @dataclass(frozen=True)
 class Forces:
@@ -31,6 +33,16 @@ class Forces:
                 return estimate
         have = ", ".join(dict.fromkeys(f"{e.body} {e.method}" for e in self.estimates)) or "none"
         raise SetupError(f"there is no force {key!r}", mend=f"There are: {have}.")
+
+    @property
+    def unit(self) -> str:
+        """Of forces: of a whole body where the depth is known or the run is axisymmetric, else per metre."""
+        whole = self.case["depth"] is not None or self.case["axis"] is not None
+        return "N" if whole else "N/m"
+
+    def unit_of(self, number: str) -> str:
+        """Of one of `NUMBERS`."""
+        return self.unit.replace("N", "N m", 1) if number == "moment" else self.unit
 
     def of(self, method: str) -> tuple[Estimate, ...]:
         """All estimates of a route, such as control surfaces at several distances."""

@@ -28,19 +28,14 @@ def forces_text(found: Forces, quiet: bool = False) -> str:
         x, y = mine[0].moment_about
         where = "about the axis" if case.get("axis") else f"about ({short(x)}, {short(y)})"
         parts.append(heading(body, f"force of the fluid on it, moment {where}"))
-        parts += [*_routes(mine, _unit(found)), Text()]
+        parts += [*_routes(mine, found.unit), Text()]
         if any(e.coefficients for e in mine):
             parts += [_coefficients(mine), Text()]
     if not quiet:
         for sweep in found.sweeps:
-            parts += [*_sweep(sweep, _unit(found)), Text()]
+            parts += [*_sweep(sweep, found.unit), Text()]
         parts += hint_lines(found.hints)
     return render(parts)
-
-
-def _unit(found: Forces) -> str:
-    whole = found.case.get("depth") is not None or found.case.get("axis") is not None
-    return "N" if whole else "N/m"
 
 
 def _summary(mine: Sequence[Estimate]) -> Text:

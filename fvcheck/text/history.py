@@ -8,6 +8,7 @@ from rich.console import RenderableType
 from rich.text import Text
 
 from fvcheck.ledger import Ledger
+from fvcheck.overtime import Entry, History
 from fvcheck.text.console import (
     FOLDED,
     LEFT,
@@ -20,7 +21,6 @@ from fvcheck.text.console import (
 )
 from fvcheck.text.ledger import verdict_line
 from fvcheck.text.numbers import percent, short
-from fvcheck.timeseries import Entry, History
 from fvcheck.trends import Trend
 
 # Lines of the table of steps; what is between is in the CSV and JSON.

@@ -13,8 +13,8 @@ import fvcheck
 from benchmarks.cases import FLUID, circle, make_grid
 from benchmarks.section import Case, Ratio, Section
 from benchmarks.timing import alternating
+from fvcheck.recording import Recorder
 from fvcheck.series import Series, open_series
-from fvcheck.timeseries import Recorder
 
 LAWS = ("mass", "momentum")
 TIMES = tuple(0.1 * k for k in range(8))
