@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Callable
+from dataclasses import replace
 
 import numpy as np
 
@@ -10,6 +11,7 @@ from fvcheck.errors import SurfaceError
 from fvcheck.flow import Flow
 from fvcheck.laws import State
 from fvcheck.overlay.overlay import lay_over
+from fvcheck.routes.chords import chord_rows
 from fvcheck.routes.estimate import Estimate
 from fvcheck.routes.terms import WIDTH, Terms, View, estimate, fluxes, laws, rows, volume_rows
 from fvcheck.sampling.known import known_values
@@ -36,6 +38,9 @@ def body_surface(flow: Flow, view: View) -> Estimate:
     volume = sampled(flow, ControlSurface.patch(view.body), view)
     everywhere = np.ones(len(volume.places), bool)
     terms = line_terms(volume, 1.0, everywhere, carried=False)
+    parts = fluxes(volume, volume.line_state(BEST), volume.normals, None)
+    friction = parts.get("viscous", np.zeros((len(volume.places), 3)))
+    terms = replace(terms, beyond=chord_rows(volume, view.body, friction))
     return estimate(terms, view, "body-surface", distance=0.0, degrees=volume.degree_shares())
 
 

@@ -13,7 +13,7 @@ from typing import Any
 
 import numpy as np
 
-from fvcheck.bands import Bands, Crosswise, bands
+from fvcheck.bands import Bands, Crosswise, bands, spread
 from fvcheck.laws import State, find_law
 from fvcheck.routes.estimate import Estimate
 from fvcheck.sampling.sampler import CROSS, DEGREES
@@ -49,6 +49,7 @@ class Terms:
     reaching : (m,) bool, leading rows where values are extrapolated
     parts : name -> (x, y), the terms summed
     cross, beside : (n, 7) leading rows by `CROSS`, (n,) as in `Crosswise`
+    beyond : (m, 7) each, errors that no degree shows; both bands hold them too
     """
 
     by_degree: tuple[Array, Array, Array]
@@ -58,6 +59,7 @@ class Terms:
     parts: Mapping[str, Any]
     cross: Array | None = None
     beside: Array | None = None
+    beyond: Sequence[Array] = ()
 
 
 def laws() -> list[Any]:
@@ -121,12 +123,13 @@ def directed(values: Array, view: View) -> Array:
     return np.concatenate([values, (cx * x + cy * y)[..., None], (cx * y - cy * x)[..., None]], axis=-1)
 
 
-def estimate(terms: Terms, view: View, method: str, **more: Any) -> Estimate:
+def estimate(terms: Terms, view: View, method: str, **told: Any) -> Estimate:
     """The force that the rows add up to, with bands of every number."""
     first, second, third = (directed(r, view) for r in terms.by_degree)
     best = third if terms.best is None else directed(terms.best, view)
     shaken = directed(terms.shaken, view)
     cross = None if terms.cross is None else directed(terms.cross, view)
+    beyond = [directed(rows, view) for rows in terms.beyond]
     value = best.sum(axis=0)
     half: list[tuple[float, float]] = []
     for c in range(best.shape[1]):
@@ -136,7 +139,9 @@ def estimate(terms: Terms, view: View, method: str, **more: Any) -> Estimate:
         if cross is not None and terms.beside is not None:
             other = Crosswise(cross[:, c], terms.beside)
         band = bands(first[:, c], second[:, c], third[:, c], rounding, chosen, terms.reaching, other)
-        half.append((band.sampling, band.resolution))
+        more = sum(spread(rows[:, c]) for rows in beyond)
+        sampling = band.sampling + more
+        half.append((sampling, max(band.resolution, sampling)))
 
     def pair(at: int) -> tuple[float, float]:
         return float(value[at]), float(value[at + 1])
@@ -168,7 +173,7 @@ def estimate(terms: Terms, view: View, method: str, **more: Any) -> Estimate:
             "pressure": widths([3, 4]),
             "viscous": widths([5, 6]),
         },
-        **more,
+        **told,
     )
 
 
