@@ -9,6 +9,7 @@ import numpy as np
 import pytest
 from scipy.spatial import cKDTree
 
+from fvcheck.kernels.polygons import shape_measures, sound_triangles
 from fvcheck.kernels.vicinity import crowds
 
 SAMPLES = Path(__file__).parent / "samples"
@@ -39,3 +40,22 @@ def test_a_balance_of_one_file_loads_neither_scipy_s_algebra_nor_its_trees():
 def test_a_user_s_own_loop_still_has_linear_algebra():
     matrix = np.arange(9.0).reshape(3, 3)
     assert np.array_equal(numba.njit(lambda a, b: np.dot(a, b))(matrix, np.eye(3)), matrix)
+
+
+def test_triangles_pass_at_once_exactly_where_the_tables_of_their_measures_find_no_fault():
+    rng = np.random.default_rng(8)
+    offsets, eps = np.array([0, 3]), np.finfo(float).eps
+    passed = []
+    for thin in 10.0 ** np.arange(-18.0, 1.0):
+        for _ in range(20):
+            points = rng.uniform(1.0, 2.0, (3, 2)) * [1.0, 0.0] + rng.uniform(-1.0, 1.0, (3, 2)) * [0.0, thin]
+            nodes = rng.integers(0, 3, 3)
+            area, length, size = (part[0] for part in shape_measures(points, offsets, nodes))
+            quick = sound_triangles(points, offsets, nodes, eps)
+            limit = 2.0 * eps * size * length
+            passed.append(quick)
+            # The sums are in another order, hence the margin.
+            assert quick or area < limit * (1 + 1e-9) or len(set(nodes)) < 3
+            assert not quick or area > limit * (1 - 1e-9)
+    assert 20 < sum(passed) < 200
+    assert not sound_triangles(np.eye(4, 2), np.array([0, 4]), np.arange(4), eps)

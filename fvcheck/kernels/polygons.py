@@ -64,6 +64,35 @@ def without_repeats(offsets, nodes):
     return out_offsets, out[:k].copy()
 
 
+@njit(cache=True)
+def sound_triangles(points, offsets, nodes, precision):
+    """Whether all polygons are triangles of three points that run counter-clockwise about an area.
+
+    The same measures as `shape_measures` gives, and area counts as `fvcheck.mesh.tidy` counts it, but
+    nothing is kept: most meshes pass, and need no table of their cells.
+    """
+    for i in range(len(offsets) - 1):
+        first = offsets[i]
+        if offsets[i + 1] - first != 3:
+            return False
+        p, q, r = nodes[first], nodes[first + 1], nodes[first + 2]
+        if p == q or q == r or r == p:
+            return False
+        x0, y0 = points[p, 0], points[p, 1]
+        bx, by = points[q, 0] - x0, points[q, 1] - y0
+        cx, cy = points[r, 0] - x0, points[r, 1] - y0
+        area = 0.5 * (bx * cy - by * cx)
+        length = np.sqrt(bx**2 + by**2) + np.sqrt((cx - bx) ** 2 + (cy - by) ** 2) + np.sqrt(cx**2 + cy**2)
+        size = max(abs(x0), abs(y0))
+        for k in (q, r):
+            size = max(size, max(abs(points[k, 0]), abs(points[k, 1])))
+        # Rounding may differ from that of `shape_measures` by a few last digits: twice the
+        # limit sends what is near it to the tables, which decide.
+        if not area > 2.0 * (precision * size * length):
+            return False
+    return True
+
+
 @njit(cache=True, parallel=True)
 def shape_measures(points, offsets, nodes):
     """Signed area (m,), perimeter (m,) and largest coordinate (m,) of polygons over points (n, 2)."""

@@ -13,6 +13,8 @@ from fvcheck.mesh.piece import Piece
 
 Array = np.ndarray
 
+_RUN = 1 << 16
+
 
 @dataclass(frozen=True, eq=False)
 class Raw:
@@ -136,6 +138,10 @@ def _check(piece: Piece) -> None:
 
 def expand_cells(raw: Raw, cells: Array, template_of: Callable[[int, int], list[Part]]) -> Polygons:
     """Polygons or segments of ``cells`` by templates ``template_of(type, number of nodes)``."""
+    if len(cells) == 0:
+        return Polygons(np.zeros(1, np.int64), np.zeros(0, np.int64), cells)
+    if len(cells) == len(raw.types) and _as_stored(raw, template_of):
+        return Polygons(raw.offsets, raw.nodes, cells)
     from fvcheck.kernels.polygons import expand
 
     kinds = raw.types[cells].astype(np.int64)
@@ -147,10 +153,6 @@ def expand_cells(raw: Raw, cells: Array, template_of: Callable[[int, int], list[
     else:
         distinct = np.unique(keys)
         template = np.searchsorted(distinct, keys)
-    if len(distinct) == 1 and len(cells) == len(raw.types):
-        (whole, *more) = template_of(int(distinct[0]) // factor, int(distinct[0]) % factor)
-        if not more and list(whole) == list(range(int(sizes[0]))):
-            return Polygons(raw.offsets, raw.nodes, cells)  # a mesh of one kind is its own expansion
     part_start, part_sizes, part_nodes = [0], [0], []
     for key in distinct.tolist():
         parts = template_of(key // factor, key % factor)
@@ -167,3 +169,14 @@ def expand_cells(raw: Raw, cells: Array, template_of: Callable[[int, int], list[
         raw.nodes,
     )
     return Polygons(offsets, nodes, cells[place])
+
+
+def _as_stored(raw: Raw, template_of: Callable[[int, int], list[Part]]) -> bool:
+    """Whether all cells are of one kind and size whose polygon has their nodes as they stand."""
+    kind, size = int(raw.types[0]), int(raw.offsets[1] - raw.offsets[0])
+    if not (raw.types == kind).all():
+        return False
+    for begin in range(0, len(raw.types), _RUN):  # run by run, so that no table of the mesh is made
+        if (np.diff(raw.offsets[begin : begin + _RUN + 1]) != size).any():
+            return False
+    return template_of(kind, size) == [list(range(size))]

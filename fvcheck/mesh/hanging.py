@@ -30,14 +30,16 @@ def insert_hanging(
     Edges that belong to a patch of the file are walls and stay as they are. Adds
     the hint "hanging-nodes".
     """
-    from fvcheck.kernels.edges import paths_back
-    from fvcheck.kernels.polygons import insert_nodes
-
     patch, _ = finder.find(edges.start, edges.end, number)
     wall = finder.claims.is_wall(patch)
     walls, alone = edges.start[wall], edges.open[~wall]
     start, stop, cell = edges.start[~wall], edges.end[~wall], edges.cell[~wall]
     tolerance = _tolerances(points, start, stop, precision)
+    if _bare(points, start, stop, points_of(np.concatenate([start, stop, walls]), len(points)), tolerance):
+        return cells
+    from fvcheck.kernels.edges import paths_back
+    from fvcheck.kernels.polygons import insert_nodes
+
     # Where others run back along an edge from end to end the mesh itself leads to the points ...
     x, y = np.ascontiguousarray(points.T)
     edge, node, along, done = paths_back(start, stop, x, y, tolerance)
@@ -69,6 +71,19 @@ def _tolerances(points: Array, start: Array, end: Array, precision: float) -> Ar
     return np.minimum(np.maximum(NEAR * length, SPACINGS * precision * size), 0.01 * length)
 
 
+def _bare(points: Array, start: Array, end: Array, rim: Array, tolerance: Array) -> bool:
+    """Whether the disk about each edge that just holds it holds no rim point but its two ends.
+
+    So it is with most edges of most meshes; what looks closer takes longer to load than this.
+    """
+    from fvcheck.kernels.vicinity import crowds
+
+    radius = 0.5 * np.hypot(*(points[end] - points[start]).T) + tolerance
+    x, y = np.ascontiguousarray(points[rim].T)
+    at_x, at_y = np.ascontiguousarray(0.5 * (points[start] + points[end]).T)
+    return bool(crowds(x, y, at_x, at_y, WIDER * radius).max(initial=0) <= 2)
+
+
 def _on_edges(
     points: Array, start: Array, end: Array, rim: Array, tolerance: Array
 ) -> tuple[Array, Array, Array]:
@@ -78,18 +93,12 @@ def _on_edges(
     many points the edge is halved, so that the work follows the points near the
     edge, not those in a wide disk round it.
     """
-    from fvcheck.kernels.vicinity import crowds
-
     step = points[end] - points[start]
     length = np.hypot(*step.T)
     none = np.zeros(0, np.int64)
     edges, nodes, shares = [none], [none], [np.zeros(0)]
     if len(rim) == 0 or len(start) == 0:
         return none, none, np.zeros(0)
-    x, y = np.ascontiguousarray(points[rim].T)
-    at_x, at_y = np.ascontiguousarray((points[start] + 0.5 * step).T)
-    if crowds(x, y, at_x, at_y, WIDER * (0.5 * length * (1 + 1e-9) + tolerance)).max() <= 2:
-        return none, none, np.zeros(0)  # only its own two ends lie about each edge
     from scipy.spatial import cKDTree
 
     tree = cKDTree(points[rim])

@@ -139,6 +139,8 @@ def _coincident(points: Array, start: Array, end: Array, rim: Array, tolerance: 
     n = len(points)
     group = np.arange(n)
     x, y = np.ascontiguousarray(points[rim].T)
+    if crowds(x, y, x, y, tolerance * WIDER).max(initial=0) < 2:
+        return group, 0.0  # as in most files: what follows takes longer to load than this to count
     group[rim] = rim[first_equal(x, y)]
     a, b = group[start], group[end]
     real = a != b
@@ -150,9 +152,6 @@ def _coincident(points: Array, start: Array, end: Array, rim: Array, tolerance: 
     reach = np.zeros(n)
     reach[rim] = tolerance
     reach = reach[left]
-    x, y = np.ascontiguousarray(points[left].T)
-    if crowds(x, y, x, y, reach * WIDER).max() < 2:
-        return group, 0.0  # as in most files; loading the tree takes longer than the count
     from scipy.spatial import cKDTree
 
     tree = cKDTree(points[left])

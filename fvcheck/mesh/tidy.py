@@ -17,9 +17,17 @@ def tidy(points: Array, cells: Polygons, precision: float, hints: list[Hint], *,
     points (n, 2). Adds the hints "zero-area-cells" and, where only some cells
     are clockwise and the order is the file's own (``flat_file``), "clockwise-cells".
     """
-    from fvcheck.kernels.polygons import outline_faults, select, shape_measures, without_repeats
+    from fvcheck.kernels.polygons import (
+        outline_faults,
+        select,
+        shape_measures,
+        sound_triangles,
+        without_repeats,
+    )
 
     offsets, nodes = cells.offsets, cells.nodes
+    if len(offsets) > 1 and sound_triangles(points, offsets, nodes, precision):
+        return cells
     if _repeats(offsets, nodes):
         offsets, nodes = without_repeats(offsets, nodes)
     area, perimeter, size = shape_measures(points, offsets, nodes)
