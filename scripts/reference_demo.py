@@ -1,10 +1,12 @@
 """The demo case at high order, by another method: what the finite-volume runs should tend to.
 
-Run ``python scripts/reference_demo.py [ORDER]`` (needs ngsolve). Taylor-Hood elements of
+Run ``python scripts/reference_demo.py [ORDER [FILE.npz]]`` (needs ngsolve). Taylor-Hood elements of
 order 5/4 on curved triangles, the bar with its true round corners, the outlet with the
 natural condition ν ∂u/∂n − p n = 0. Forces and heat come from the residual of the
 discrete equations, which is far more accurate than integrating derivatives over the bar.
-The values are kept in ``demo_solver.case.REFERENCE``.
+The values are kept in ``demo_solver.case.REFERENCE``. FILE gets the averages of the solution over
+the cells of the coarse demo mesh, which is what a run without any error would export;
+``tests/data/demo_exact.npz`` was made with order 4.
 
 It also follows a disturbance of the steady flow in time, by the linearised
 equations: the flow is steady in truth if, and only if, that dies out.
@@ -13,13 +15,18 @@ equations: the flow is steady in truth if, and only if, that dies out.
 from __future__ import annotations
 
 import sys
+from pathlib import Path
 
 import ngsolve as ng
 import numpy as np
+import trial_meshes as tm
 from demo_solver.case import Case
 from demo_solver.duct import MM, Bar
 from netgen.geom2d import SplineGeometry
 
+import fvcheck
+
+MESHES = Path(__file__).parent.parent / "meshes"
 CASE = Case()
 # Lengths in millimetres, velocities in mean speeds, pressures in ρ U².
 FORCE = CASE.fluid.density * CASE.mean_speed**2 * MM
@@ -120,11 +127,39 @@ def disturbance(mesh: ng.Mesh, flow: ng.GridFunction, order: int, step: float, s
     return norms
 
 
+def cell_data(mesh: ng.Mesh, flow: ng.GridFunction, file: Path) -> dict[str, np.ndarray]:
+    """``velocity`` (n, 2) and ``pressure`` (n,) averaged over the cells of a demo mesh, SI units.
+
+    Between chords and round corners of the bar there is no fluid; both count as zero there.
+    """
+    plane = fvcheck.open_flow(file).mesh
+    cells = tm.Cells(plane.points, plane.offsets, plane.nodes)
+    width, height = CASE.duct.length / MM, CASE.duct.height / MM
+    velocity, pressure = flow.components
+
+    def values(x: np.ndarray, y: np.ndarray) -> np.ndarray:
+        at = np.clip(np.stack([x, y], axis=-1) / MM, 1e-9, np.array([width, height]) - 1e-9)
+        out = np.zeros((*x.shape, 3))
+        for k in np.ndindex(x.shape):
+            if mesh.Contains(*at[k]):
+                place = mesh(*at[k])
+                out[k] = *velocity(place), pressure(place)
+        return out
+
+    mean = tm.cell_averages(values, cells, degree=7)
+    scale = CASE.fluid.density * CASE.mean_speed**2
+    return {"velocity": CASE.mean_speed * mean[:, :2], "pressure": scale * mean[:, 2]}
+
+
 def main() -> None:
     order = int(sys.argv[1]) if len(sys.argv) > 1 else 5
     with ng.TaskManager():
         mesh = curved_mesh(order)
         flow, (drag, lift) = solve_flow(mesh, order)
+        if len(sys.argv) > 2:
+            data = cell_data(mesh, flow, MESHES / "demo-coarse.vtu")
+            data = {name: values.astype(np.float32) for name, values in data.items()}
+            np.savez_compressed(sys.argv[2], force=[drag, lift], **data)
         heat = heat_rate(mesh, flow.components[0], order)
         print(f"{mesh.ne} triangles, order {order}:")
         print(f"drag {drag:.8e} N/m, lift {lift:.8e} N/m, heat {heat:.6f} W/m")

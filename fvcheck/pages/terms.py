@@ -178,6 +178,8 @@ TERMS: dict[str, Page] = {
         "moment/(rho U2 L2/2), with --reference U,L,RHO; around an axis the area is that of a "
         "disc of diameter L. A frequency times L/U (strouhal_scale) is a Strouhal number.\n"
         "pressure and viscous are those at the surface where the route measures.",
+        "+-data is what integrating these data may cost, on a round body with chords for sides too; what "
+        "the run itself fails to keep is in +-mesh. "
         "On a coarse mesh the integral over the body is the worst estimate there is, the band the best; "
         "where routes disagree beyond their bands, none is to be trusted. wake and circulation take a "
         "uniform, steady stream for granted and are refused where the data show none.",
