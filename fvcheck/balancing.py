@@ -81,7 +81,7 @@ def ledger_of(
         kind=placed.kind,
         closed=overlay.closed,
         length=float(overlay.lengths.sum()),
-        area=overlay.area(flow.mesh) if overlay.closed else None,
+        area=overlay.area if overlay.closed else None,
         degrees=volume.degree_shares(),
         rows=tuple(rows),
         ports=port_room.ports(flow, placed, overlay, volume.line_state(BEST)),

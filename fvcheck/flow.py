@@ -254,7 +254,7 @@ def _pieces(
     export: Export, step: int, near: Sequence[Drawn] | None, plane: str
 ) -> tuple[Sequence[Piece], tuple[str, ...]]:
     """The pieces of a step, or what surfaces need of them, and the spellings of these surfaces."""
-    if export.stream is None or not near or not are_drawn(near):
+    if export.parts is None or not near or not are_drawn(near):
         return export.load(step), ()
     return list(near_pieces(export.stream(step), near, plane)), tuple(surface.text for surface in near)
 

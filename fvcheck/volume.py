@@ -13,6 +13,7 @@ import numpy as np
 from fvcheck.errors import SurfaceError
 from fvcheck.flow import Flow
 from fvcheck.hints import Hint
+from fvcheck.inside import bare_state, varies_inside
 from fvcheck.laws import Law, MissingData, State
 from fvcheck.laws.law import convective
 from fvcheck.laws.state import Datum
@@ -206,23 +207,10 @@ class SampledVolume:
 
     def needs_area(self, law: Law) -> bool:
         """Whether the law's volume terms vary over the volume, so that they must be sampled."""
-        if self.has_rates:
-            return True
-        try:
-            constants = [law.source(self._bare_state())]
-            if self.unsteady:
-                constants.append(law.density(self._bare_state()))
-        except (MissingData, KeyError):
-            return True
-        there = [values for values in constants if values is not None]
-        # What depends on the place comes out as NaN; around an axis so does every volume.
-        return any(self.axis is not None or bool(np.isnan(values).any()) for values in there)
+        return varies_inside(self.flow, law, unsteady=self.unsteady, about=self.about)
 
     def _bare_state(self) -> State:
-        """One place, no fields: what can be had from it is the same everywhere."""
-        if any("source" in role or role == "body_force" for role in self.flow.fields):
-            raise MissingData("constant sources", "")
-        return self._state({}, np.full((1, 2), np.nan), Datum())
+        return bare_state(self.flow, self.about)
 
     def _extent(self, places: Array) -> Array:
         """(q,) out-of-plane extent at places: the depth, or once around the axis."""
@@ -236,6 +224,12 @@ class SampledVolume:
         if not needed:
             return
         mesh, overlay = self.flow.mesh, self.overlay
+        if mesh.hollow:
+            raise SurfaceError(
+                "the cells inside control surface "
+                f"{self.surface.name or self.surface.kind!r} were not kept, over which a law integrates",
+                mend="Open the flow for these laws.",
+            )
         whole = overlay.whole
         at_points = all(field.location == "point" for field in self.flow.fields.values())
         if self.passes and at_points and len(whole) > MANY_CELLS:
@@ -347,7 +341,7 @@ class SampledVolume:
         constant = law.source(self._bare_state())
         if constant is None:
             return None
-        return constant * self.overlay.area(self.flow.mesh) * self.depth
+        return constant * self.overlay.area * self.depth
 
     def _storage(self, law: Law, degree: int) -> Array | None:
         """∂b/∂t over the volume plus b w·n over its moving border, where rates are given.
@@ -386,7 +380,7 @@ class SampledVolume:
             held = self._over_area(("content", law, datum), law.density, degree, datum)
             assert held is not None
             return self.volume_cells, held
-        area = self.overlay.area(self.flow.mesh) * self.depth
+        area = self.overlay.area * self.depth
         return np.full(1, -1), law.density(self._bare_state()) * area
 
     def _over_area(

@@ -6,7 +6,16 @@ from typing import Annotated
 
 from typer import Option
 
-from fvcheck.cli.options import FluidOptions, Limits, OptionalFile, Output, Reading, SurfaceList, spread
+from fvcheck.cli.options import (
+    FluidOptions,
+    Limits,
+    OptionalFile,
+    Output,
+    Reading,
+    Spread,
+    SurfaceList,
+    spread,
+)
 
 
 @spread
@@ -15,6 +24,7 @@ def command(
     reading: Reading,
     fluid: FluidOptions,
     output: Output,
+    run: Spread,
     file: OptionalFile = None,
     surface: SurfaceList = None,
     patches: Annotated[
@@ -29,8 +39,9 @@ def command(
     from fvcheck.balancing import balance_all
     from fvcheck.cli.output import check_target, history_data, show
     from fvcheck.cli.settings import settle
-    from fvcheck.flow import Flow, flow_of_export, step_number
+    from fvcheck.flow import Flow, step_number
     from fvcheck.formats.registry import open_export
+    from fvcheck.opening import open_near
     from fvcheck.plausible import open_state
     from fvcheck.text.ledger import result_text, steps_text
     from fvcheck.verdict import EXIT_STATUS, worst
@@ -41,10 +52,17 @@ def command(
     numbers = range(export.steps) if settings.step == "all" else [step_number(export, settings.step)]
 
     def flow_at(number: int) -> Flow:
-        # Of several states each is held against another as a whole.
-        near = settings.surfaces if export.steps == 1 else None
-        read = flow_of_export if settings.step == "all" else open_state
-        return read(export, step=number, near=near, **settings.reading)
+        if settings.step != "all" and export.steps > 1:  # held against another state as a whole
+            return open_state(export, step=number, **settings.reading)
+        return open_near(
+            export,
+            settings.surfaces,
+            settings.laws,
+            step=number,
+            workers=run.workers,
+            scheduler=run.scheduler,
+            **settings.reading,
+        )
 
     results = [
         balance_all(

@@ -40,6 +40,10 @@ def _show(*names: str, metavar: str | None = None, text: str) -> Any:
     return Option(*names, metavar=metavar, help=text, rich_help_panel=_SHOW)
 
 
+def _run(metavar: str, text: str, **more: Any) -> Any:
+    return Option(metavar=metavar, help=text, rich_help_panel="Running", **more)
+
+
 def _one_of(*words: str) -> Completion:
     """What the shell offers for an option of few words."""
     return lambda incomplete: [word for word in words if word.startswith(incomplete)]
@@ -170,6 +174,20 @@ class Output:
         str | None, _show(metavar="PATH", text="Write the result as JSON; - is standard output.")
     ] = None
     quiet: Annotated[bool, _show("-q", "--quiet", text="No tables, the last line only.")] = False
+
+
+@dataclass(frozen=True)
+class Spread:
+    """Where long work is done."""
+
+    workers: Annotated[
+        int | None,
+        _run(metavar="N", min=1, text="Processes of this machine; default none beside this one."),
+    ] = None
+    scheduler: Annotated[
+        str | None,
+        _run(metavar="ADDRESS", text="Workers of a Dask scheduler, such as tcp://host:8786."),
+    ] = None
 
 
 def spread(command: Callable[..., int]) -> Callable[..., Callable[[], int]]:

@@ -8,6 +8,7 @@ from __future__ import annotations
 
 from collections.abc import Iterator, Sequence
 from dataclasses import dataclass, replace
+from functools import partial
 from pathlib import Path
 from typing import Any
 
@@ -19,7 +20,7 @@ from fvcheck.formats.cgns_patches import all_conditions, conditions, families, p
 from fvcheck.formats.cgns_tree import Node, root_of
 from fvcheck.formats.cgns_zone import filled, read_mesh, read_solutions
 from fvcheck.formats.check import check_piece
-from fvcheck.mesh.piece import Export, Piece
+from fvcheck.mesh.piece import Export, Part, Piece
 
 _ADF = b"ADF Database"
 _Cache = dict[tuple[str, str], tuple[str, Piece]]
@@ -52,7 +53,7 @@ def open_export(path: Path) -> Export:
         raise FormatError("the bases have different times", where=path, mend="Export one base only.")
     cache: _Cache = {}
 
-    def each(step: int, cache: _Cache | None) -> Iterator[Piece]:
+    def parts(step: int, cache: _Cache | None = None) -> Iterator[Part]:
         empty = True
         with safe.open_hdf5(path) as file:
             stored = _bases(file, path)
@@ -62,15 +63,19 @@ def open_export(path: Path) -> Export:
                         continue
                     name = f"{base.name}/{zone.name}" if len(stored) > 1 else zone.name
                     kept = {} if cache is None else cache
-                    yield _piece(base, zone, name, step, one, names, kept, path)
+                    yield partial(_read, base, zone, name, step, one, names, kept, path)
                     empty = False
         if empty:
             raise FormatError(f"there are no zones at step {step}", where=path, mend=safe.DAMAGED)
 
     def load(step: int) -> Sequence[Piece]:
-        return list(each(step, cache))
+        return [piece for part in parts(step, cache) for piece in part()]
 
-    return Export(path, "CGNS", load, times, stream=lambda step: each(step, None))
+    return Export(path, "CGNS", load, times, parts=parts)
+
+
+def _read(*of_zone: Any) -> list[Piece]:
+    return [_piece(*of_zone)]
 
 
 def _refuse_adf(path: Path) -> None:

@@ -3,15 +3,16 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Sequence
+from collections.abc import Iterator, Sequence
 from dataclasses import replace
+from functools import partial
 from pathlib import Path
 
 from fvcheck.errors import FormatError
 from fvcheck.formats import vtk_xml
 from fvcheck.formats.check import DAMAGED
 from fvcheck.formats.xml_scan import Element, scan
-from fvcheck.mesh.piece import Export, Piece
+from fvcheck.mesh.piece import Export, Part, Piece
 
 
 def sniff(head: bytes, path: Path) -> bool:
@@ -37,7 +38,13 @@ def open_export(path: Path) -> Export:
             raise FormatError("a file is listed twice for one time", where=path, mend=DAMAGED)
     times = tuple(sorted(steps))
     stated = any("timestep" in entry.attributes for entry in entries)
-    return Export(path, "PVD", lambda step: _load(path, steps[times[step]]), times if stated else ())
+    return Export(
+        path,
+        "PVD",
+        lambda step: _load(path, steps[times[step]]),
+        times if stated else (),
+        parts=lambda step: _parts(path, steps[times[step]]),
+    )
 
 
 def _time(entry: Element, path: Path) -> float:
@@ -56,7 +63,10 @@ def _name(entry: Element) -> str:
 
 
 def _load(path: Path, files: Sequence[tuple[Path, str]]) -> list[Piece]:
-    pieces: list[Piece] = []
+    return [piece for part in _parts(path, files) for piece in part()]
+
+
+def _parts(path: Path, files: Sequence[tuple[Path, str]]) -> Iterator[Part]:
     for file, name in files:
         with file.open("rb") as stream:
             kind = vtk_xml.root_type(stream.read(4096))
@@ -64,7 +74,10 @@ def _load(path: Path, files: Sequence[tuple[Path, str]]) -> list[Piece]:
             raise FormatError(
                 f"the listed file '{file.name}' is no VTK XML file of data", where=path, mend=DAMAGED
             )
-        for piece in vtk_xml.load(file):
-            full = "/".join(part for part in (name, piece.name) if part)
-            pieces.append(replace(piece, name=full))
-    return pieces
+        for part in vtk_xml.parts(file):
+            yield partial(_named, part, name)
+
+
+def _named(part: Part, name: str) -> Iterator[Piece]:
+    for piece in part():
+        yield replace(piece, name="/".join(word for word in (name, piece.name) if word))

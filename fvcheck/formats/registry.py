@@ -11,11 +11,12 @@ from __future__ import annotations
 
 from collections.abc import Callable, Iterator, Sequence
 from dataclasses import dataclass, replace
+from functools import partial
 from importlib import import_module
 from pathlib import Path
 
 from fvcheck.errors import FormatError
-from fvcheck.mesh.piece import Export, Piece
+from fvcheck.mesh.piece import Export, Part, Piece
 
 HEAD_BYTES = 4096
 
@@ -97,14 +98,21 @@ def _within_memory(export: Export) -> Export:
         except MemoryError:
             raise short() from None
 
-    def stream(step: int) -> Iterator[Piece]:
-        assert export.stream is not None
+    def whole(part: Part) -> list[Piece]:
         try:
-            yield from export.stream(step)
+            return list(part())
         except MemoryError:
             raise short() from None
 
-    return replace(export, load=load, stream=None if export.stream is None else stream)
+    def parts(step: int) -> Iterator[Part]:
+        assert export.parts is not None
+        try:
+            for part in export.parts(step):
+                yield partial(whole, part)
+        except MemoryError:
+            raise short() from None
+
+    return replace(export, load=load, parts=None if export.parts is None else parts)
 
 
 def open_export(path: str | Path) -> Export:

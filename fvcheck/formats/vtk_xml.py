@@ -11,6 +11,7 @@ import re
 from collections import Counter
 from collections.abc import Iterator
 from dataclasses import replace
+from functools import partial
 from pathlib import Path
 
 from fvcheck.errors import FormatError
@@ -19,7 +20,7 @@ from fvcheck.formats.vtk_cells import GHOST_NAMES
 from fvcheck.formats.xml_arrays import ArrayReader, attribute_int
 from fvcheck.formats.xml_datasets import READERS, pieces_of
 from fvcheck.formats.xml_scan import Document, Element, scan
-from fvcheck.mesh.piece import Array, Export, Piece
+from fvcheck.mesh.piece import Array, Export, Part, Piece
 
 BLOCKS = (
     "vtkMultiBlockDataSet",
@@ -68,26 +69,20 @@ def open_export(path: Path) -> Export:
         f"VTK XML {kind}",
         lambda _step: load(path),
         () if time is None else (time,),
-        stream=(lambda _step: stream(path)) if listed else None,
+        parts=(lambda _step: parts(path)) if listed else None,
     )
 
 
 def load(path: Path) -> list[Piece]:
     """All pieces of one VTK XML file with at least one cell, checked."""
-    return list(stream(path))
-
-
-def stream(path: Path) -> Iterator[Piece]:
-    """The same one by one, each read when it is its turn."""
-    empty = True
-    for piece in _load(path, blocks=True):
-        empty = False
-        yield piece
-    if empty:
+    pieces = [piece for part in parts(path) for piece in part()]
+    if not pieces:
         raise FormatError("the file holds no cells", where=path, mend="Export the mesh with its cells.")
+    return pieces
 
 
-def _load(path: Path, *, blocks: bool) -> Iterator[Piece]:
+def parts(path: Path, *, blocks: bool = True) -> Iterator[Part]:
+    """What reads the pieces of each file that is listed, or of a file of data itself."""
     document = scan(path)
     if document.type in BLOCKS:
         if not blocks:
@@ -95,7 +90,10 @@ def _load(path: Path, *, blocks: bool) -> Iterator[Piece]:
         yield from _blocks(document)
         return
     kind = _pieces_type(document.type)
-    yield from pieces_of(document) if kind is None else _parallel(document, kind)
+    if kind is not None:
+        yield from _parallel(document, kind)
+    else:
+        yield partial(pieces_of, document)
 
 
 def _time(document: Document) -> float | None:
@@ -133,19 +131,22 @@ def _pieces_type(kind: str) -> str | None:
     return rest if rest != kind and rest in READERS else None
 
 
-def _parallel(document: Document, kind: str) -> Iterator[Piece]:
+def _parallel(document: Document, kind: str) -> Iterator[Part]:
     sources = document.primary.all("Piece")
     if not sources:
         raise FormatError("no pieces are listed", where=document.path, mend=DAMAGED)
     for element in sources:
         source = beside(document.path, element.attributes.get("Source", ""), "piece")
-        part = scan(source)
-        if part.type != kind:
-            raise FormatError(
-                f"a piece of type '{part.type}' stands in a list of '{kind}'", where=source, mend=DAMAGED
-            )
-        for piece in pieces_of(part):
-            yield _listed(document, piece, source)
+        yield partial(_of_parallel, document, kind, source)
+
+
+def _of_parallel(document: Document, kind: str, source: Path) -> list[Piece]:
+    part = scan(source)
+    if part.type != kind:
+        raise FormatError(
+            f"a piece of type '{part.type}' stands in a list of '{kind}'", where=source, mend=DAMAGED
+        )
+    return [_listed(document, piece, source) for piece in pieces_of(part)]
 
 
 def _listed(document: Document, piece: Piece, source: Path) -> Piece:
@@ -171,15 +172,19 @@ def _listed(document: Document, piece: Piece, source: Path) -> Piece:
     return replace(piece, point_data=kept["PPointData"], cell_data=kept["PCellData"])
 
 
-def _blocks(document: Document) -> Iterator[Piece]:
+def _blocks(document: Document) -> Iterator[Part]:
     leaves = list(_leaves(document.primary, ()))
     last = Counter(names[-1] for names, _file in leaves if names)
     for names, file in leaves:
         # The last name says what a block is; the whole path only where that is ambiguous.
         name = "" if not names else names[-1] if last[names[-1]] == 1 else "/".join(names)
         source = beside(document.path, file, "block file")
-        for piece in _load(source, blocks=False):
-            yield replace(piece, name=name)
+        for part in parts(source, blocks=False):
+            yield partial(_renamed, part, name)
+
+
+def _renamed(part: Part, name: str) -> Iterator[Piece]:
+    return (replace(piece, name=name) for piece in part())
 
 
 def _leaves(element: Element, names: tuple[str, ...]) -> Iterator[tuple[tuple[str, ...], str]]:

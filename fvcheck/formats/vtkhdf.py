@@ -9,6 +9,7 @@ from __future__ import annotations
 
 from collections.abc import Iterator, Sequence
 from dataclasses import dataclass, replace
+from functools import partial
 from pathlib import Path
 from typing import Any
 
@@ -19,7 +20,7 @@ from fvcheck.formats import hdf5_safe as safe
 from fvcheck.formats.check import check_piece
 from fvcheck.formats.vtkhdf_data import PARTS, data_of, row_reader
 from fvcheck.formats.vtkhdf_steps import steps_of
-from fvcheck.mesh.piece import Export, Piece
+from fvcheck.mesh.piece import Export, Part, Piece
 
 _COMPOSITE = ("PartitionedDataSetCollection", "MultiBlockDataSet")
 # Marks of vtkGhostType that take a cell out: owned by another partition, refined, hidden.
@@ -58,19 +59,24 @@ def open_export(path: Path) -> Export:
 
     def load(step: int) -> Sequence[Piece]:
         with safe.open_hdf5(path) as file:
-            pieces = [piece for block in blocks for piece in _load(file, block, step, path, cache)]
+            pieces = [
+                piece
+                for block in blocks
+                for part in _parts(file, block, step, path, cache)
+                for piece in part()
+            ]
         if not pieces:
             raise FormatError("there are no cells", where=path, mend="Export the mesh with its cells.")
         return pieces
 
-    def stream(step: int) -> Iterator[Piece]:
+    def parts(step: int) -> Iterator[Part]:
         with safe.open_hdf5(path) as file:
             for block in blocks:
-                yield from _load(file, block, step, path, None)
+                yield from _parts(file, block, step, path, None)
 
     single = blocks[0] if len(blocks) == 1 else None
     rows = None if single is None else row_reader(path, single.path, single.kind)
-    return Export(path, "VTKHDF", load, times, stream=stream, rows=rows)
+    return Export(path, "VTKHDF", load, times, parts=parts, rows=rows)
 
 
 def _check_version(root: Any, path: Path) -> None:
@@ -136,10 +142,10 @@ def _kind(group: Any, path: Path) -> str:
     )
 
 
-def _load(
+def _parts(
     file: Any, block: _Block, step: int, path: Path, cache: dict[str, tuple[object, Piece]] | None
-) -> Iterator[Piece]:
-    """The pieces of a block, each read when it is its turn; ``cache`` keeps meshes for the next step."""
+) -> Iterator[Part]:
+    """What reads each piece of a block, while ``file`` is open; ``cache`` keeps meshes for the next step."""
     group = safe.group(file, block.path, path)
     steps = steps_of(group, path)
     step = min(step, max(0, len(steps.times) - 1))
@@ -148,20 +154,33 @@ def _load(
         if part.cells == 0:
             continue
         name = block.name if len(parts) == 1 else f"{block.name}#{number}" if block.name else f"part {number}"
-        known = None if cache is None else cache.get(name)
-        if known is not None and known[0] == part.key:
-            mesh = known[1]
-        else:
-            mesh = check_piece(replace(part.mesh(), name=name), path)
-            if cache is not None:
-                cache[name] = (part.key, mesh)
-        points = data_of(group, "PointData", steps, step, part, f"{path}, {block.path}")
-        cells = data_of(group, "CellData", steps, step, part, f"{path}, {block.path}")
-        points.pop("vtkGhostType", None)
-        marks = cells.pop("vtkGhostType", None)
-        ghost = None
-        if marks is not None:
-            if marks.dtype.kind not in "iu" or marks.ndim != 1:
-                raise FormatError("vtkGhostType holds no marks", where=path, mend=safe.DAMAGED)
-            ghost = (marks & _GHOST_BITS) != 0
-        yield check_piece(replace(mesh, point_data=points, cell_data=cells, ghost=ghost), path)
+        yield partial(_read, group, steps, step, part, name, f"{path}, {block.path}", path, cache)
+
+
+def _read(
+    group: Any,
+    steps: Any,
+    step: int,
+    part: Any,
+    name: str,
+    where: str,
+    path: Path,
+    cache: dict[str, tuple[object, Piece]] | None,
+) -> list[Piece]:
+    known = None if cache is None else cache.get(name)
+    if known is not None and known[0] == part.key:
+        mesh = known[1]
+    else:
+        mesh = check_piece(replace(part.mesh(), name=name), path)
+        if cache is not None:
+            cache[name] = (part.key, mesh)
+    points = data_of(group, "PointData", steps, step, part, where)
+    cells = data_of(group, "CellData", steps, step, part, where)
+    points.pop("vtkGhostType", None)
+    marks = cells.pop("vtkGhostType", None)
+    ghost = None
+    if marks is not None:
+        if marks.dtype.kind not in "iu" or marks.ndim != 1:
+            raise FormatError("vtkGhostType holds no marks", where=path, mend=safe.DAMAGED)
+        ghost = (marks & _GHOST_BITS) != 0
+    return [check_piece(replace(mesh, point_data=points, cell_data=cells, ghost=ghost), path)]

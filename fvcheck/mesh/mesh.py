@@ -53,6 +53,8 @@ class Mesh:
     points_left_out: int = 0
     """Cells and points not held, since no surface of ``near`` (spellings) needs them."""
     near: tuple[str, ...] = ()
+    hollow: bool = False
+    """Whether cells inside of these are among those not held."""
 
     @property
     def n_points(self) -> int:

@@ -1,10 +1,11 @@
 """What a control surface needs of a piece: the rest of it need not be held.
 
-A ledger looks at the cells that its surface cuts, at those inside, at some rings
-of cells around both, and at the boundary of the domain, whose patches and bodies
-are named by all of it. So of each piece of a partitioned export are kept the
-cells near a surface or inside, and those along the open edges of the piece, which
-are boundary or seam: that is known only when all pieces are there. The edges at
+A ledger looks at the cells that its surface cuts, at some rings of cells around
+them, at the cells inside if a law integrates over them, and at the boundary of the
+domain, whose patches and bodies are named by all of it. So of each piece of a
+partitioned export are kept the cells near a surface, those inside where they are
+wanted, and those along the open edges of the piece, which are boundary or seam:
+that is known only when all pieces are there. The edges at
 which other cells are left out start at points marked in `Piece.cut`; they lie
 rings away from any open edge of the whole piece, so that neither seams nor
 boundary ever meet them.
@@ -13,7 +14,7 @@ boundary ever meet them.
 from __future__ import annotations
 
 from collections.abc import Iterable, Iterator, Sequence
-from dataclasses import replace
+from dataclasses import dataclass, replace
 from typing import Protocol
 
 import numpy as np
@@ -52,16 +53,34 @@ _GRID = 256
 
 def are_drawn(surfaces: Sequence[Drawn] | None) -> bool:
     """Whether there are surfaces, and all of them known without the mesh."""
-    meshed = ("domain", "patch", "around")
-    return all(s.rings and s.kind not in meshed for s in surfaces or ()) and bool(surfaces)
+    return all(surface.rings for surface in surfaces or ()) and bool(surfaces)
 
 
 def near_pieces(pieces: Iterable[Piece], surfaces: Sequence[Drawn], plane: str) -> Iterator[Piece]:
     """The pieces, each cut down to what ``surfaces`` need before the next one is read."""
-    check_name(plane)
-    segments = [_segments(surface) for surface in surfaces]
-    for piece in pieces:
-        yield _near(piece, segments, plane)
+    return map(Cutter.of(surfaces, plane, True), pieces)
+
+
+@dataclass(frozen=True, eq=False)
+class Cutter:
+    """Cuts a piece down to what surfaces need of it; without surfaces to its rim.
+
+    inside : whether the cells inside of them are needed, or only those near their lines.
+        What is not drawn runs along boundary, which is kept anyway
+    """
+
+    segments: tuple[Segments, ...]
+    plane: str
+    inside: bool
+
+    @staticmethod
+    def of(surfaces: Sequence[Drawn], plane: str, inside: bool) -> Cutter:
+        """Raises SetupError for an unknown ``plane``."""
+        check_name(plane)
+        return Cutter(tuple(_segments(surface) for surface in surfaces if surface.rings), plane, inside)
+
+    def __call__(self, piece: Piece) -> Piece:
+        return _near(piece, self.segments, self.plane, self.inside)
 
 
 def _segments(surface: Drawn) -> Segments:
@@ -71,7 +90,7 @@ def _segments(surface: Drawn) -> Segments:
     return np.concatenate([ring[:-1] for ring in rings]), np.concatenate([ring[1:] for ring in rings]), False
 
 
-def _near(piece: Piece, surfaces: Sequence[Segments], plane: str) -> Piece:
+def _near(piece: Piece, surfaces: Sequence[Segments], plane: str, inside: bool) -> Piece:
     """What is needed of a piece; one that is not sound and plane is left whole, for `assemble` to judge."""
     raw = gather([piece])
     flat = raw.cells_of(2)
@@ -88,15 +107,27 @@ def _near(piece: Piece, surfaces: Sequence[Segments], plane: str) -> Piece:
     if hints or edges.crowded is not None or 2 * len(edges.open) > len(cells.nodes):
         return piece
     kept = np.zeros(len(raw.types), bool)
-    kept[cells.source[_wanted(points, cells, edges.start, surfaces)]] = True
+    kept[cells.source[_wanted(points, cells, edges.start, surfaces, inside)]] = True
     here = kept[cells.source]
     if here.all():
         return piece
     return _cut_down(piece, raw, kept, _points(cells, here, len(points)) & _points(cells, ~here, len(points)))
 
 
-def _wanted(points: Array, cells: Polygons, rim: Array, surfaces: Sequence[Segments]) -> Array:
-    """(m,) cells inside of a surface, or within `RINGS` of one or of the ``rim`` points."""
+def one_cell(piece: Piece) -> Piece | None:
+    """The first plane cell of a piece, with its data; None where there is none, or a solid one."""
+    raw = gather([piece])
+    flat = raw.cells_of(2)
+    if len(flat) == 0 or (raw.dimension == 3).any():
+        return None
+    kept = np.zeros(len(raw.types), bool)
+    kept[flat[0]] = True
+    alone = replace(raw, dimension=np.where(raw.dimension == 2, 2, -1))  # without lines
+    return _cut_down(replace(piece, patches={}), alone, kept, np.zeros(len(raw.points), bool))
+
+
+def _wanted(points: Array, cells: Polygons, rim: Array, surfaces: Sequence[Segments], within: bool) -> Array:
+    """(m,) cells within `RINGS` of a surface or of the ``rim`` points; ``within``: or inside of one."""
     from fvcheck.kernels.blocks import block_boxes, grow_rings
     from fvcheck.kernels.grid import INSIDE, NEAR, build_grid, classify_cells
     from fvcheck.kernels.threads import use_for
@@ -108,7 +139,7 @@ def _wanted(points: Array, cells: Polygons, rim: Array, surfaces: Sequence[Segme
     for start, end, closed in surfaces:
         status = classify_cells(points, cells.offsets, cells.nodes, boxes, build_grid(start, end, _GRID))
         seeds |= _points(cells, status == NEAR, len(points))
-        if closed:
+        if within and closed:
             inside |= status == INSIDE
     near, _ = grow_rings(points, cells.offsets, cells.nodes, boxes, np.flatnonzero(seeds), RINGS)
     return inside | (near > 0)

@@ -7,7 +7,7 @@ everything behind the readers knows one kind of mesh only.
 
 from __future__ import annotations
 
-from collections.abc import Callable, Iterable, Mapping, Sequence
+from collections.abc import Callable, Iterable, Iterator, Mapping, Sequence
 from dataclasses import dataclass, field
 from pathlib import Path
 
@@ -109,13 +109,17 @@ class RowReader:
     read: Callable[[int, Mapping[str, Wanted]], dict[str, dict[str, Array]]]
 
 
+Part = Callable[[], Iterable[Piece]]
+
+
 @dataclass(frozen=True)
 class Export:
     """A file, opened: what it is, its times, and how to load one step.
 
     ``load(step)`` returns the pieces of step ``step`` (0 … steps-1).
     ``times`` is empty when the file holds a single state without a time.
-    ``stream(step)``, of an export in several pieces, reads each when it is its turn.
+    ``parts(step)``, of an export in several pieces, gives what reads some of them when called,
+    in their order; making the list of these is cheap.
     ``rows``, of a format that can, reads single rows of a step.
     """
 
@@ -124,10 +128,18 @@ class Export:
     load: Callable[[int], Sequence[Piece]]
     times: tuple[float, ...] = ()
     hints: tuple[Hint, ...] = ()
-    stream: Callable[[int], Iterable[Piece]] | None = None
+    parts: Callable[[int], Iterable[Part]] | None = None
     rows: RowReader | None = None
 
     @property
     def steps(self) -> int:
         """Number of stored states, at least 1."""
         return max(1, len(self.times))
+
+    def stream(self, step: int) -> Iterator[Piece]:
+        """The pieces of a step, each read when it is its turn and not held; all at once without parts."""
+        if self.parts is None:
+            yield from self.load(step)
+            return
+        for part in self.parts(step):
+            yield from part()

@@ -55,7 +55,7 @@ def lay_over(mesh: Mesh, surface: ControlSurface) -> Overlay:
     if surface.closed:
         overlay = label_coincident(mesh, _cut(mesh, start, end, True, 1))
         # Only the sign of the area tells the fluid inside from the rounding of nothing.
-        found = overlay.area(mesh) > 1e-12 * abs(surface.area or 0.0)
+        found = overlay.held_area(mesh) > 1e-12 * abs(surface.area or 0.0)
     else:
         overlay = _open_line(mesh, start, end)
         found = len(overlay.start) > 0
@@ -84,7 +84,9 @@ def _cut(mesh: Mesh, start: Array, end: Array, closed: bool, shift: int) -> Over
     from fvcheck.kernels.overlay import cut_triangles, winding_numbers
     from fvcheck.kernels.threads import use_for
 
-    grid = build_grid(start, end, min(max(int(_RESOLUTION * mesh.n_cells**0.5), _COARSEST), _FINEST))
+    # The same grid for a mesh cut down to what is near: pieces come in the same order then.
+    cells = mesh.n_cells + mesh.left_out
+    grid = build_grid(start, end, min(max(int(_RESOLUTION * cells**0.5), _COARSEST), _FINEST))
     use_for(mesh.n_cells)
     status = classify_cells(mesh.points, mesh.offsets, mesh.nodes, mesh.boxes, grid)
     near = np.flatnonzero(status == NEAR)
