@@ -223,6 +223,45 @@ def test_fluxes_along_a_side_are_those_of_a_closed_form():
     assert mass.density == pytest.approx(6.0 * mass.border.normal[:, 0], abs=1e-12)
 
 
+def test_the_parts_beside_a_border_add_up_to_the_ledger(made, unfinished):
+    for report in (made, unfinished):
+        for name, rows in report.beside.items():
+            assert rows
+            for label, parts in rows.items():
+                row = report.found.result[name][label]
+                assert [part.number for part in parts] == list(range(8))
+                # What crosses from part to part cancels to rounding. Integrals over cells that the parts
+                # cut have an error of their own, far below the bands.
+                apart = 1e-3 * row.sampling_band if label == "kinetic-energy" else 1e-10 * row.scale
+                assert sum(part.imbalance for part in parts) == pytest.approx(row.imbalance, abs=apart)
+
+
+def test_the_parts_beside_the_stretches_of_a_square_have_the_imbalance_of_their_area():
+    """u = (x, 0) makes mass everywhere alike, ρ times the area: an eighth of it beside each half side."""
+    points = np.stack(np.meshgrid(*2 * [np.linspace(0, 1, 12)], indexing="ij"), axis=-1).reshape(-1, 2)
+    a = np.add.outer(12 * np.arange(11), np.arange(11)).ravel()
+    nodes = np.column_stack([a, a + 12, a + 13, a + 1])
+    velocity = np.column_stack([points[:, 0], np.zeros(len(points))])
+    fluid = fvcheck.Fluid(density=3.0)
+    mesh = (4 * np.arange(len(nodes) + 1), nodes.ravel())
+    flow = fvcheck.Flow.from_arrays(points, mesh, point_data={"U": velocity}, fluid=fluid)
+    box = fvcheck.ControlSurface.box(0.2, 0.2, 0.8, 0.8, name="box")
+    parts = fvcheck.report(flow, box, ["mass"]).beside["box"]["mass"]
+    # A linear field is sampled without error; the points that divide the square are moved by 1e-7 of it.
+    assert [part.imbalance for part in parts] == pytest.approx(8 * [3.0 * 0.36 / 8], rel=1e-4)
+    assert [part.begin for part in parts] == pytest.approx(0.3 * np.arange(8))
+
+
+def test_a_run_that_is_done_has_no_part_beyond_its_resolution_band(made, unfinished):
+    parts = [p for rows in made.beside.values() for found in rows.values() for p in found]
+    assert parts and not any(p.stands_out for p in parts)
+    # At iteration 20 momentum is not settled beside the bar, whose wall is the end of the walk.
+    bar = unfinished.beside["around the bar"]["momentum-x"]
+    assert max(bar, key=lambda p: abs(p.imbalance)).number == 7 and bar[7].stands_out
+    assert "beside H–A" in unfinished.html
+    assert "no part of the volume has an imbalance beyond" in made.html
+
+
 def test_an_open_row_brings_its_diagnosis_in_words_and_as_a_map(made, unfinished):
     assert unfinished.verdict == "open" and "diagnosis" in unfinished.to_dict()
     page = check_page(unfinished.html)

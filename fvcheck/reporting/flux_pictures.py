@@ -2,12 +2,14 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from typing import Any
 
 import numpy as np
 
 from fvcheck.flow import Flow
 from fvcheck.overlay.pieces import DRAWN
+from fvcheck.reporting.beside import STRETCHES, Beside, told_beside
 from fvcheck.reporting.border import Along, Border
 from fvcheck.reporting.painting import (
     cells_in,
@@ -49,8 +51,19 @@ def binned(border: Border, values: Array, count: int) -> tuple[Array, Array, Arr
     return sums, border.at[first], border.at[last]
 
 
-def flux_drawing(flow: Flow, surface: str, along: Along, name: str) -> Drawing:
-    """Arrows in and out around the surface; flux and bands along it."""
+def flux_drawing(
+    flow: Flow,
+    surface: str,
+    along: Along,
+    name: str,
+    parts: Sequence[Beside] = (),
+    scale: float | None = None,
+) -> Drawing:
+    """Arrows in and out around the surface; flux and bands along it.
+
+    parts : imbalances of the volume beside each stretch; scale : of the row, for percent
+    """
+    shown = tuple(parts) if scale else ()
     border = along.border
     sums, begin, end = binned(border, along.flux, _BARS)
     net, most = float(along.flux.sum()), float(np.abs(along.flux).sum())
@@ -60,18 +73,19 @@ def flux_drawing(flow: Flow, surface: str, along: Along, name: str) -> Drawing:
     def place(k: int) -> str:
         return f"({short(places[k, 0], 3)}, {short(places[k, 1], 3)})"
 
-    parts = []
+    said = []
     if sums[peak_out] > 0:
-        parts.append(f"most goes out near {place(peak_out)}")
+        said.append(f"most goes out near {place(peak_out)}")
     if sums[peak_in] < 0:
-        parts.append(f"most comes in near {place(peak_in)}")
-    parts.append(f"net {short(net)} {along.unit} of {short(most)} that crosses in all")
-    parts.append(_told_bands(border, along))
-    words = "; ".join(parts)
+        said.append(f"most comes in near {place(peak_in)}")
+    said.append(f"net {short(net)} {along.unit} of {short(most)} that crosses in all")
+    said.append(_told_bands(border, along))
+    said += [told] if (told := told_beside(shown, scale, _LETTERS)) else []
+    words = "; ".join(said)
     words = f"{words[:1].upper()}{words[1:]}."
 
     def draw() -> Any:
-        return _draw(flow, along)
+        return _draw(flow, along, shown, scale or 1.0)
 
     return Drawing(name, f"{along.label} through “{plain(surface)}”", words, draw)
 
@@ -99,7 +113,7 @@ def _pieces_at(border: Border, at: Array) -> Array:
     return np.clip(np.searchsorted(border.at, at, "right") - 1, 0, len(border.order) - 1)
 
 
-def _draw(flow: Flow, along: Along) -> Any:
+def _draw(flow: Flow, along: Along, parts: Sequence[Beside], scale: float) -> Any:
     from matplotlib.figure import Figure
 
     border = along.border
@@ -108,24 +122,31 @@ def _draw(flow: Flow, along: Along) -> Any:
     window = window_of(low, high, 0.2)
     if wide(window):
         map_height = height_for(window, 9.0, 4.0)
-        figure = Figure(figsize=(9.6, map_height + 4.0), layout="constrained")
-        left, upper, lower = figure.subplots(3, 1, height_ratios=[map_height + 0.5, 2.0, 1.3])
+        heights = [2.0, 1.3, 1.3][: 3 if parts else 2]
+        figure = Figure(figsize=(9.6, map_height + 0.7 + sum(heights)), layout="constrained")
+        left, *panels = figure.subplots(1 + len(heights), 1, height_ratios=[map_height + 0.5, *heights])
     else:
-        figure = Figure(figsize=(9.6, 4.3), layout="constrained")
-        grid = figure.add_gridspec(2, 2, width_ratios=[1.0, 1.3], height_ratios=[1.7, 1.0])
+        heights = [1.7, 1.0, 1.0][: 3 if parts else 2]
+        figure = Figure(figsize=(9.6, 1.6 + sum(heights)), layout="constrained")
+        grid = figure.add_gridspec(len(heights), 2, width_ratios=[1.0, 1.3], height_ratios=heights)
         left = figure.add_subplot(grid[:, 0])
-        upper, lower = figure.add_subplot(grid[0, 1]), figure.add_subplot(grid[1, 1])
-    lower.sharex(upper)
+        panels = [figure.add_subplot(grid[k, 1]) for k in range(len(heights))]
+    upper, lower = panels[:2]
+    for panel in panels[1:]:
+        panel.sharex(upper)
     power = exponent(along.density.tolist())
     _map(left, flow, along, window, power)
     _flux(upper, flow, along, power)
     _bands(lower, along)
+    if parts:
+        _imbalance(panels[2], parts, scale)
     marks = _marks(border)
-    for panel in (upper, lower):
+    for panel in panels:
         panel.set_xlim(0.0, border.length)
         panel.set_xticks(marks, list(_LETTERS[: len(marks)]))
-    upper.tick_params(labelbottom=False)
-    lower.set_xlabel(f"along the border, {short(border.length)} m, fluid of the volume on the left")
+    for panel in panels[:-1]:
+        panel.tick_params(labelbottom=False)
+    panels[-1].set_xlabel(f"along the border, {short(border.length)} m, fluid of the volume on the left")
     return figure
 
 
@@ -135,7 +156,7 @@ def wide(window: tuple[float, float, float, float]) -> bool:
 
 
 def _marks(border: Border) -> Array:
-    return border.length * np.arange(8) / 8.0
+    return border.length * np.arange(STRETCHES) / STRETCHES
 
 
 def _map(panel: Any, flow: Flow, along: Along, window: Any, power: int) -> None:
@@ -250,3 +271,24 @@ def _bands(panel: Any, along: Along) -> None:
         last = border.at[1:][along.degree < 3]
         panel.hlines(np.full(len(first), 1.12 * most), first, last, color=MUTED, lw=3)
         panel.set_title(f"grey bar: the data jump, degree 1 ({percent(low)} %)", fontsize=8, color=MUTED)
+
+
+def _imbalance(panel: Any, parts: Sequence[Beside], scale: float) -> None:
+    """Imbalance of the volume beside each stretch, over what the mesh explains of it."""
+    lines = []
+    for part in parts:
+        value, half = 100.0 * part.imbalance / scale, 100.0 * part.resolution / scale
+        panel.fill_between([part.begin, part.end], -half, half, color=GRID, alpha=0.8, lw=0)
+        panel.plot([part.begin, part.end], [value, value], color=INK, lw=2.4, solid_capstyle="butt")
+        if part.stands_out:
+            middle = 0.5 * (part.begin + part.end)
+            panel.vlines(middle, 0.0, value, color=INK, lw=1.0)
+            lines.append((middle, value))
+    for middle, value in lines:
+        panel.plot(middle, value, "o", ms=5, mfc=PAPER, mec=INK, mew=1.4, zorder=4)
+    panel.axhline(0.0, color=MUTED, lw=0.8)
+    panel.margins(y=0.15)
+    panel.set_ylabel("imbalance\n[% of scale]")
+    panel.set_title(
+        "of the volume beside it; grey: resolution band; ring: beyond it", fontsize=8, color=MUTED
+    )

@@ -10,6 +10,7 @@ from typing import Any
 
 from fvcheck.flow import Flow
 from fvcheck.laws import Law
+from fvcheck.reporting.beside import Beside, beside_border
 from fvcheck.reporting.border import Along, along_border, border_of
 from fvcheck.reporting.diagnosis_pictures import map_drawings
 from fvcheck.reporting.field_pictures import field_drawing, window_drawing
@@ -34,11 +35,13 @@ class Report:
 
     found : the numbers; drawings : the figures; html : the page
     along : surface -> rows of its laws along its border, pieces in walking order
+    beside : surface -> row label -> the imbalance of the volume beside each stretch of the border
     """
 
     found: Gathered
     drawings: tuple[Drawing, ...]
     along: Mapping[str, tuple[Along, ...]]
+    beside: Mapping[str, Mapping[str, tuple[Beside, ...]]]
     record: Record
     html: str
 
@@ -147,11 +150,12 @@ def report(
     )
     found = gather(files, asked, tell)
     along = _along(found)
-    drawings = _drawings(found, along)
+    parts = _beside(found, along, tell)
+    drawings = _drawings(found, along, parts)
     record = record_of([*found.files, *beside], date)
     name = title or Path(found.flow.case.file).name
     html = page_html(found, drawings, record, name, lambda drawing: tell(f"figure {drawing.name}"))
-    made = Report(found, drawings.all, along, record, html)
+    made = Report(found, drawings.all, along, parts, record, html)
     if path is not None:
         made.write(path)
     return made
@@ -174,14 +178,35 @@ def _along(found: Gathered) -> dict[str, tuple[Along, ...]]:
     return out
 
 
-def _drawings(found: Gathered, along: Mapping[str, tuple[Along, ...]]) -> Drawings:
+def _beside(
+    found: Gathered, along: Mapping[str, tuple[Along, ...]], tell: Callable[[str], None]
+) -> dict[str, dict[str, tuple[Beside, ...]]]:
+    """Of the surfaces that are drawn."""
+    out = {}
+    for ledger, volume in list(zip(found.result.ledgers, found.volumes))[:DRAWN_SURFACES]:
+        if rows := along[ledger.name]:
+            tell(f"parts of {ledger.name}")
+            sources = found.question.sources
+            out[ledger.name] = beside_border(volume, rows[0].border, ledger, found.laws, sources)
+    return out
+
+
+def _drawings(
+    found: Gathered,
+    along: Mapping[str, tuple[Along, ...]],
+    parts: Mapping[str, Mapping[str, tuple[Beside, ...]]],
+) -> Drawings:
     overlays = [(ledger.name, v.overlay) for ledger, v in zip(found.result.ledgers, found.volumes)]
     outlined = [(name, overlay) for name, overlay in overlays if name != "domain"][:DRAWN_SURFACES]
     fields = (field_drawing(found.flow, what, outlined) for what in FIELDS)
     fluxes: dict[str, tuple[Drawing, ...]] = {}
     for number, (name, rows) in enumerate(list(along.items())[:DRAWN_SURFACES], start=1):
         drawn = [
-            flux_drawing(found.flow, name, one, f"flux-{number}-{row}")
+            flux_drawing(
+                *(found.flow, name, one, f"flux-{number}-{row}"),
+                parts.get(name, {}).get(one.label, ()),
+                found.result[name][one.label].scale,
+            )
             for row, one in enumerate(rows, start=1)
             if len(one.border.order)
         ]

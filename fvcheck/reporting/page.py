@@ -233,8 +233,12 @@ def _surfaces(found: Gathered, drawings: Drawings) -> Section:
         "Fluxes count outward positive. Numbers are shown short; the result file (--json) has all digits.",
         "In the drawings arrows point the way that each quantity is carried, for a closed surface without "
         "what none feels (the mean pressure). Letters mark places on the border, the same as below the "
-        "curves; grey stretches are walls and other boundary. The lower bars show where on the border "
-        "the bands come from.",
+        "curves; grey stretches are walls and other boundary. The bars show where on the border the bands "
+        "come from.",
+        "An imbalance is a sum over the whole border, no place on it has a share of its own. The lowest "
+        "panel therefore divides the volume into the parts nearest to each stretch between two letters: "
+        "their imbalances add up to that of the whole, and a part with more than its resolution band is "
+        "where something is missing or not yet settled.",
     ]
     if len(found.volumes) > DRAWN_SURFACES:
         words.append(f"Fluxes are drawn for the first {DRAWN_SURFACES} surfaces.")
