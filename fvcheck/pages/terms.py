@@ -105,8 +105,8 @@ TERMS: dict[str, Page] = {
         "the check file, history or study of several files, a diagnosis where a row is open, the set-up as "
         "it was understood, hints with their pages, versions and SHA-256 of the files.\n"
         "Arrows point the way a quantity is carried. Below the flux: the share of both bands that each "
-        "stretch of border adds, so it says where to move the surface or to refine; and the imbalances of the "
-        "parts of the volume nearest to each stretch, which add up to that of the whole.\n"
+        "stretch of border adds, so it says where to move the surface or to refine; and the imbalances of "
+        "the parts of the volume nearest to each stretch, which add up to that of the whole.\n"
         "Several files: snapshots where their meshes are alike, else meshes of one case; --kind settles it. "
         "A file with several states is a series; --step INDEX takes one.",
         "A number in a mail loses its band, its surface and its settings; a page keeps them together.",
