@@ -7,11 +7,11 @@ import re
 import sys
 import traceback
 from collections.abc import Iterator, Sequence
+from importlib import import_module
 from typing import Annotated, Any
 
 import typer
 
-from fvcheck.cli import balance, demo, diagnose, explain, forces, gate, history, inspect, report, study
 from fvcheck.errors import FvcheckError, nearest
 from fvcheck.version import __version__
 
@@ -32,8 +32,19 @@ app = typer.Typer(
     rich_markup_mode="rich",
     context_settings={"help_option_names": ["-h", "--help"]},
 )
-for _module in (inspect, balance, forces, history, study, diagnose, gate, report, demo, explain):
-    app.command(_module.__name__.rpartition(".")[2])(_module.command)
+COMMANDS = (
+    "inspect", "balance", "forces", "history", "study", "diagnose", "gate", "report", "demo", "explain",
+)  # fmt: skip
+
+
+def _register(arguments: Sequence[str]) -> None:
+    """The command that a line names; all where it names none, and for the completion of the shell."""
+    named = arguments[:1] if arguments and arguments[0] in COMMANDS else COMMANDS
+    known = {info.name for info in app.registered_commands}
+    for name in COMMANDS if "_FVCHECK_COMPLETE" in os.environ else named:
+        if name not in known:
+            app.command(name)(import_module(f"fvcheck.cli.{name}").command)
+    app.registered_commands.sort(key=lambda info: COMMANDS.index(str(info.name)))
 
 
 def _show_version(wanted: bool) -> None:
@@ -64,6 +75,7 @@ def run(arguments: Sequence[str]) -> int:
             stream.reconfigure(errors="replace")
     if "--version" in arguments and not any(a == "--" for a in arguments):
         arguments = ["--version"]  # everywhere, as the contract has it
+    _register(arguments)
     try:
         todo = typer.main.get_command(app).main(
             args=list(arguments) or ["--help"], prog_name="fvcheck", standalone_mode=False
