@@ -17,7 +17,7 @@ from fvcheck.errors import FvcheckError
 from fvcheck.flow import Flow, flow_of_export, step_number
 from fvcheck.inside import varies_inside
 from fvcheck.laws import Law
-from fvcheck.mesh.near import Cutter, one_cell
+from fvcheck.mesh.near import Cutter, lone, one_cell
 from fvcheck.mesh.piece import Export, Piece
 from fvcheck.surfaces import ControlSurface
 from fvcheck.tasks import run_tasks
@@ -87,7 +87,7 @@ def _sampled_inside(
         return True
     try:
         bare = {name: value for name, value in reading.items() if name != "walls"}
-        return needs_inside(flow_of_export(_with(export, [cell]), **bare), laws)
+        return needs_inside(flow_of_export(_with(export, [cell]), assembler=lone, **bare), laws)
     except FvcheckError:
         return True  # what is wrong is told when all is read
 

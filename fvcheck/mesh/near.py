@@ -20,9 +20,11 @@ from typing import Protocol
 import numpy as np
 
 from fvcheck.hints import Hint
+from fvcheck.mesh.assemble import Assembly
 from fvcheck.mesh.celltypes import polygons_of
 from fvcheck.mesh.edges import edges_of
 from fvcheck.mesh.gather import Polygons, Raw, expand_cells, gather
+from fvcheck.mesh.mesh import Boundary, Mesh
 from fvcheck.mesh.piece import NamedFaces, Piece
 from fvcheck.mesh.plane import check_name, plane_of
 from fvcheck.mesh.stored import at_rows
@@ -107,11 +109,11 @@ def _near(piece: Piece, surfaces: Sequence[Segments], plane: str, inside: bool) 
     if hints or edges.crowded is not None or 2 * len(edges.open) > len(cells.nodes):
         return piece
     kept = np.zeros(len(raw.types), bool)
-    kept[cells.source[_wanted(points, cells, edges.start, surfaces, inside)]] = True
-    here = kept[cells.source]
-    if here.all():
+    wanted = _wanted(points, cells, edges.start, surfaces, inside)
+    if wanted.all():
         return piece
-    return _cut_down(piece, raw, kept, _points(cells, here, len(points)) & _points(cells, ~here, len(points)))
+    kept[cells.source[wanted]] = True
+    return _cut_down(piece, raw, kept)
 
 
 def one_cell(piece: Piece) -> Piece | None:
@@ -123,7 +125,18 @@ def one_cell(piece: Piece) -> Piece | None:
     kept = np.zeros(len(raw.types), bool)
     kept[flat[0]] = True
     alone = replace(raw, dimension=np.where(raw.dimension == 2, 2, -1))  # without lines
-    return _cut_down(replace(piece, patches={}), alone, kept, np.zeros(len(raw.points), bool))
+    return _cut_down(replace(piece, patches={}), alone, kept)
+
+
+def lone(pieces: Sequence[Piece], *, plane: str, keep_centres: bool) -> Assembly:
+    """What `assemble` makes of `one_cell`, without the search for boundary and hanging nodes."""
+    raw = gather(pieces)
+    where = plane_of(raw.points, plane, raw.precision)
+    none = np.empty(0, np.int64)
+    rim = Boundary(none.reshape(0, 2), none, none, ())
+    mesh = Mesh(where.coordinates(raw.points), raw.offsets, raw.nodes, rim)
+    number = np.arange(len(raw.points))
+    return Assembly(mesh, number, number[:1], where.name, where.axes, where.origin, 0.0, ())
 
 
 def _wanted(points: Array, cells: Polygons, rim: Array, surfaces: Sequence[Segments], within: bool) -> Array:
@@ -146,20 +159,23 @@ def _wanted(points: Array, cells: Polygons, rim: Array, surfaces: Sequence[Segme
 
 
 def _points(cells: Polygons, which: Array, n_points: int) -> Array:
-    """(n,) points of the cells ``which`` (m,) bool."""
+    """(n,) points of the cells ``which`` (m,) bool, few of them."""
     out = np.zeros(n_points, bool)
-    out[cells.nodes[np.repeat(which, np.diff(cells.offsets))]] = True
+    chosen = np.flatnonzero(which)
+    first, sizes = cells.offsets[chosen], cells.offsets[chosen + 1] - cells.offsets[chosen]
+    place = np.arange(sizes.sum()) + np.repeat(first - (np.cumsum(sizes) - sizes), sizes)
+    out[cells.nodes[place]] = True
     return out
 
 
-def _cut_down(piece: Piece, raw: Raw, kept: Array, cut: Array) -> Piece:
+def _cut_down(piece: Piece, raw: Raw, kept: Array) -> Piece:
     """The piece with the 2D cells ``kept``, all lines and patches, and the points that these use."""
-    flat = raw.dimension == 2
-    left_out = int(np.count_nonzero(flat & ~kept))
+    dropped = (raw.dimension == 2) & ~kept
     sizes = np.diff(raw.offsets)
-    lost = np.zeros(len(raw.points), bool)
-    lost[raw.nodes[np.repeat(flat & ~kept, sizes)]] = True
-    lost[raw.nodes[np.repeat(flat & kept, sizes)]] = False
+    here, gone = np.zeros(len(raw.points), bool), np.zeros(len(raw.points), bool)
+    here[raw.nodes[np.repeat(kept, sizes)]] = True
+    gone[raw.nodes[np.repeat(dropped, sizes)]] = True
+    cut, lost = here & gone, gone & ~here
     kept = kept | (raw.dimension == 0) | (raw.dimension == 1)
     nodes = raw.nodes[np.repeat(kept, sizes)]
     used = np.zeros(len(raw.points), bool)
@@ -183,6 +199,6 @@ def _cut_down(piece: Piece, raw: Raw, kept: Array, cut: Array) -> Piece:
         faces=None,
         patches={name: renumbered(patch) for name, patch in piece.patches.items()},
         cut=cut[used],
-        left_out=left_out,
+        left_out=int(np.count_nonzero(dropped)),
         points_left_out=int(np.count_nonzero(lost)),
     )
