@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Iterable, Mapping, Sequence
+from dataclasses import replace
 
 import numpy as np
 
@@ -14,7 +15,7 @@ from fvcheck.hints import Hint
 from fvcheck.laws import Law, MissingData, find_law, law_names
 from fvcheck.ledger import Ledger, Result, Row, case_dict
 from fvcheck.many import sampled_volumes
-from fvcheck.plausible import field_hints, force_hints, still_hints
+from fvcheck.plausible import change_hints, field_hints, force_hints, still_hints
 from fvcheck.sources import Source
 from fvcheck.surfaces import ControlSurface
 from fvcheck.volume import BEST, SampledVolume
@@ -45,7 +46,8 @@ def balance(
     """
     chosen = choose_laws(flow, laws)
     (volume,) = sampled_volumes(flow, [surface], chosen, about)
-    return ledger_of(volume, chosen, tolerance, scale, sources, strict=laws is not None)
+    ledger = ledger_of(volume, chosen, tolerance, scale, sources, strict=laws is not None)
+    return replace(ledger, hints=(*ledger.hints, *change_hints(flow)))
 
 
 def ledger_of(

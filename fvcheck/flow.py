@@ -10,7 +10,7 @@ from typing import Any, Literal
 
 import numpy as np
 
-from fvcheck.errors import SetupError
+from fvcheck.errors import FvcheckError, SetupError
 from fvcheck.fields import Field
 from fvcheck.flowfields import read_fields
 from fvcheck.fluid import Fluid
@@ -65,6 +65,7 @@ class Flow:
     case : where it comes from
     walls : patch -> velocity or spin of a no-slip wall
     hints : what was noticed on the way
+    beside : reads the state stored next to this one; None where there is none
     """
 
     mesh: Mesh
@@ -74,6 +75,7 @@ class Flow:
     walls: Mapping[str, Wall]
     hints: tuple[Hint, ...]
     assembly: Assembly
+    beside: Callable[[], Flow] | None = None
 
     @property
     def location(self) -> str:
@@ -85,6 +87,26 @@ class Flow:
     def out_of_plane(self) -> bool:
         """Whether a velocity out of the plane is there and not negligible."""
         return self._swirl_ratio > 1e-6
+
+    @cached_property
+    def change(self) -> tuple[Case, float] | None:
+        """The state stored next to this one, and by what share (rms) its velocity, else momentum, differs.
+
+        None where none is stored, where it cannot be read or is another mesh's, and where nothing moves.
+        It is read when this is first asked for.
+        """
+        role = "velocity" if "velocity" in self.fields else "momentum"
+        if self.beside is None or role not in self.fields:
+            return None
+        try:
+            other = self.beside()
+        except FvcheckError:
+            return None  # that state is not what was asked for
+        if role not in other.fields or self.fields[role].values.shape != other.fields[role].values.shape:
+            return None
+        here, there = (np.asarray(flow.fields[role].values, float) for flow in (self, other))
+        size, apart = (float(np.sqrt(np.nanmean(values**2))) for values in (here, here - there))
+        return (other.case, apart / size) if size > 0.0 else None
 
     @cached_property
     def _swirl_ratio(self) -> float:
@@ -169,7 +191,25 @@ def open_flow(path: str | Path, **settings: Any) -> Flow:
     """
     from fvcheck.formats.registry import open_export
 
-    return flow_of_export(open_export(Path(path)), **settings)
+    return stored_flow(open_export(Path(path)), **settings)
+
+
+def stored_flow(export: Export, *, step: int | str = "last", **settings: Any) -> Flow:
+    """A flow by `flow_of_export` that can be held against the state stored beside it (`Flow.change`)."""
+    number = step_number(export, step)
+    flow = flow_of_export(export, step=number, **settings)
+    if export.steps < 2:
+        return flow
+
+    def same_mesh(pieces: Sequence[Piece], **options: Any) -> Assembly:
+        """A mesh that did not change is not made twice."""
+        points, cells = (sum(len(getattr(p, name)) for p in pieces) for name in ("points", "types"))
+        fits = flow.assembly.point_source.max() < points and flow.assembly.cell_source.max() < cells
+        return flow.assembly if fits else assemble(pieces, **options)
+
+    settings = settings | {"assembler": same_mesh, "near": None}
+    next_to = number - 1 if number > 0 else 1
+    return replace(flow, beside=lambda: flow_of_export(export, step=next_to, **settings))
 
 
 def flow_of_export(

@@ -57,7 +57,7 @@ def later_flow(first: Flow, export: Export, step: int, needed: Mapping[str, Arra
             return None
         fields[role] = replace(new, values=in_plane(role, new, first.assembly), rows=needed.get(old.location))
     case = replace(first.case, step=step, time=export.times[step] if export.times else None)
-    flow = replace(first, fields=fields, case=case, hints=())
+    flow = replace(first, fields=fields, case=case, hints=(), beside=None)
     return flow if flow.out_of_plane == first.out_of_plane else None
 
 

@@ -3,20 +3,14 @@
 from __future__ import annotations
 
 import shlex
-from collections.abc import Callable, Mapping, Sequence
-from dataclasses import replace
-from typing import Any
+from collections.abc import Callable, Sequence
 
 import numpy as np
 
-from fvcheck.errors import FvcheckError
-from fvcheck.flow import Flow, flow_of_export, step_number
+from fvcheck.flow import Flow
 from fvcheck.hints import Hint
 from fvcheck.laws import MissingData, State, find_law
 from fvcheck.ledger import Row
-from fvcheck.mesh.assemble import Assembly, assemble
-from fvcheck.mesh.near import Drawn
-from fvcheck.mesh.piece import Export, Piece
 from fvcheck.sampling.sampled import Sampled
 from fvcheck.volume import BEST, SampledVolume
 from fvcheck.walls import wall_velocity
@@ -51,8 +45,8 @@ _CHANGE = 1e-2
 
 
 def field_hints(flow: Flow) -> list[Hint]:
-    """What the fields themselves say: a gas that breaks its law, a density that varies, walls that leak."""
-    return [*_gas_hints(flow), *_density_hints(flow), *_wall_hints(flow)]
+    """What fields say: a gas that breaks its law, a density that varies, leaking walls, a change in time."""
+    return [*_gas_hints(flow), *_density_hints(flow), *_wall_hints(flow), *change_hints(flow)]
 
 
 def _gas_hints(flow: Flow) -> list[Hint]:
@@ -239,43 +233,19 @@ def force_hints(volume: SampledVolume, rows: Sequence[Row]) -> list[Hint]:
     return [Hint(code, f"{where}: {share:.3g} % of the imbalance of momentum would vanish if {text}")]
 
 
-def open_state(
-    export: Export, *, step: int | str = "last", near: Sequence[Drawn] | None = None, **reading: Any
-) -> Flow:
-    """A flow by `fvcheck.flow.flow_of_export`, held against the state stored beside it (`change_hints`)."""
-    number = step_number(export, step)
-    flow = flow_of_export(export, step=number, near=near, **reading)
-    return replace(flow, hints=(*flow.hints, *change_hints(export, number, flow, reading)))
-
-
-def change_hints(export: Export, step: int, flow: Flow, reading: Mapping[str, Any]) -> list[Hint]:
-    """Whether the stored state next to this one differs, so that a steady balance misses what is stored."""
+def change_hints(flow: Flow) -> list[Hint]:
+    """Whether the state stored next to this one differs, so that a steady balance misses what is stored."""
+    if any(role.startswith("rate:") for role in flow.fields) or flow.change is None:
+        return []
+    other, share = flow.change
+    if share <= _CHANGE:
+        return []
     role = "velocity" if "velocity" in flow.fields else "momentum"
-    rates = any(name.startswith("rate:") for name in flow.fields)
-    if export.steps < 2 or rates or role not in flow.fields:
-        return []
-
-    def same_mesh(pieces: Sequence[Piece], **options: Any) -> Assembly:
-        """A mesh that did not change is not made twice."""
-        points, cells = (sum(len(getattr(p, name)) for p in pieces) for name in ("points", "types"))
-        fits = flow.assembly.point_source.max() < points and flow.assembly.cell_source.max() < cells
-        return flow.assembly if fits else assemble(pieces, **options)
-
-    try:
-        other = flow_of_export(export, step=step - 1 if step > 0 else 1, assembler=same_mesh, **reading)
-    except FvcheckError:
-        return []  # that state cannot be read, which is not what was asked for
-    here, there = flow.fields[role].values, other.fields[role].values if role in other.fields else None
-    if there is None or here.shape != there.shape:
-        return []
-    size = float(np.sqrt(np.nanmean(np.asarray(here, float) ** 2)))
-    change = float(np.sqrt(np.nanmean((np.asarray(here, float) - there) ** 2)))
-    if size == 0.0 or change <= _CHANGE * size:
-        return []
+    beside = f"step {other.step}" if other.file == flow.case.file else other.file
     return [
         Hint(
             "not-steady",
-            f"the {role} differs from that of step {other.case.step} by {100 * change / size:.3g} % (rms), "
+            f"the {role} differs from that of {beside} by {100 * share:.3g} % (rms), "
             "but no rates of change are known: what the volume stores is left out",
         )
     ]

@@ -127,6 +127,8 @@ class Series:
                 return replace(flow, case=replace(flow.case, time=snapshot.time))
         flow = flow_of_export(snapshot.export, step=snapshot.step, assembler=self._keeper, **self.reading)
         flow = replace(flow, case=replace(flow.case, time=snapshot.time))
+        if len(self) > 1 and self.times is not None:
+            flow = replace(flow, beside=lambda: self.flow(number - 1 if number > 0 else 1))
         # A rate of change, and its error, may look at five neighbours.
         self._recent = dict([*self._recent.items(), (number, flow)][-5:])
         # Values that line cells give on the boundary are believed or not by the whole field.

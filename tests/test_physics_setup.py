@@ -176,6 +176,18 @@ def test_a_state_that_differs_from_the_one_before_is_told_as_not_steady(tmp_path
                 flow = exact.taylor_green(time=time)
                 u = np.column_stack([flow.velocity(x, y), 0 * x])
                 writer.write_data(float(number), point_data={"U": u, "p": flow.p(x, y)})
+        # the library says it too: of one state, and of one snapshot of a series
+        one, fluid = (
+            fvcheck.ControlSurface.box(1.0, 1.0, 5.0, 5.0),
+            fvcheck.Fluid(density=1.0, viscosity=0.05),
+        )
+        series = fvcheck.open_series(path, fluid=fluid)
+        for state in (fvcheck.open_flow(path, fluid=fluid), series.flow(0), series.flow(1)):
+            told = fvcheck.balance(state, one, ["mass"]).hints
+            assert ("not-steady" in {hint.code for hint in told}) == (name == "decaying")
+            told = fvcheck.balance_all(state, [one], ["mass"]).hints
+            assert ("not-steady" in {hint.code for hint in told}) == (name == "decaying")
+        assert not fvcheck.balance(series.steady().flow(1), one, ["mass"]).hints
         out = tmp_path / f"{name}.json"
         run(["balance", str(path), "--density", "1", "--viscosity", "0.05", "--json", str(out), "-q"])
         entries[name] = "not-steady" in out.read_text(encoding="utf-8")

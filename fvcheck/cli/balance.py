@@ -39,10 +39,9 @@ def command(
     from fvcheck.balancing import balance_all
     from fvcheck.cli.output import check_target, history_data, show
     from fvcheck.cli.settings import settle
-    from fvcheck.flow import Flow, step_number
+    from fvcheck.flow import Flow, step_number, stored_flow
     from fvcheck.formats.registry import open_export
     from fvcheck.opening import open_near
-    from fvcheck.plausible import open_state
     from fvcheck.text.ledger import result_text, steps_text
     from fvcheck.verdict import EXIT_STATUS, worst
 
@@ -53,7 +52,7 @@ def command(
 
     def flow_at(number: int) -> Flow:
         if settings.step != "all" and export.steps > 1:  # held against another state as a whole
-            return open_state(export, step=number, **settings.reading)
+            return stored_flow(export, step=number, **settings.reading)
         return open_near(
             export,
             settings.surfaces,

@@ -75,8 +75,8 @@ def command(
     """
     from fvcheck.cli.output import check_target, show
     from fvcheck.cli.settings import settle
+    from fvcheck.flow import stored_flow
     from fvcheck.formats.registry import open_export
-    from fvcheck.plausible import open_state
     from fvcheck.routes import forces
     from fvcheck.surfaces import ControlSurface
     from fvcheck.surfaces.family import parse_family
@@ -100,7 +100,7 @@ def command(
         "direction": None if direction is None else vector(direction, "--direction", "--direction X,Y"),
         "reference": settings.bodies if reference is None else _reference(reference),
     }
-    flow = open_state(open_export(settings.file), step=settings.step, **settings.reading)
+    flow = stored_flow(open_export(settings.file), step=settings.step, **settings.reading)
     found = forces(flow, names, **options)
     show(output, found.to_dict, lambda: forces_text(found, output.quiet))
     # A body whose every route was refused is left undecided.

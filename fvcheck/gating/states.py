@@ -22,11 +22,11 @@ def states_of(
 
     A law that is only expected, on request that is, has rows on the surfaces it is expected on.
     """
+    from fvcheck.flow import stored_flow
     from fvcheck.formats.registry import open_export
-    from fvcheck.plausible import open_state
 
     if len(files) == 1 and settings.step != "all":
-        flow = open_state(open_export(files[0]), step=settings.step, **settings.reading)
+        flow = stored_flow(open_export(files[0]), step=settings.step, **settings.reading)
         yield _one_state(check, settings, flow), flow
         return
     if settings.step not in ("last", "all"):

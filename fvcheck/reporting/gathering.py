@@ -12,14 +12,13 @@ from fvcheck.diagnosis import Diagnosis
 from fvcheck.diagnosis.diagnosing import diagnose_open
 from fvcheck.errors import FieldError, MeshError, SetupError
 from fvcheck.evolution import moved
-from fvcheck.flow import Flow, flow_of_export
+from fvcheck.flow import Flow, flow_of_export, stored_flow
 from fvcheck.hints import Hint
 from fvcheck.laws import Law
 from fvcheck.ledger import Result
 from fvcheck.many import sampled_volumes
 from fvcheck.meshstudy import Study, study
 from fvcheck.overtime import History
-from fvcheck.plausible import open_state
 from fvcheck.routes import Forces, forces
 from fvcheck.series import Series, file_list, open_series
 from fvcheck.sources import Source
@@ -136,7 +135,7 @@ def _state(path: Path, asked: Question) -> Flow:
     from fvcheck.formats.registry import open_export
 
     step = "last" if asked.step in (None, "all") else asked.step
-    return open_state(open_export(path), step=step, **asked.reading)
+    return stored_flow(open_export(path), step=step, **asked.reading)
 
 
 def _of_flow(flow: Flow, asked: Question, tell: Callable[[str], None]) -> Gathered:
