@@ -1,109 +1,36 @@
-"""Set-up errors that may be named, what each would do to a ledger, and the setting that would mend it."""
+"""Set-up errors that may be named, by the law that tells them."""
 
 from __future__ import annotations
 
 from collections.abc import Callable
-from dataclasses import dataclass, field, replace
-from typing import Any
+from dataclasses import replace
 
 import numpy as np
 
-from fvcheck.diagnosis.fitting import Fit, Model
-from fvcheck.fields import Field
-from fvcheck.flow import Flow
+from fvcheck.diagnosis.cause import (
+    Cause,
+    Setting,
+    Told,
+    is_number,
+    linear,
+)
+from fvcheck.diagnosis.energy_causes import energy_causes, heat_causes
+from fvcheck.diagnosis.fitting import Fit
+from fvcheck.diagnosis.momentum_causes import momentum_causes
 
 Array = np.ndarray
-Change = Callable[[Flow], Flow]
-
-# A coefficient that should be one number may be off by this share, or by its interval.
-_NEAR = 0.02
-
-_PRESSURE_UNITS = {1e3: "kPa", 1e2: "hPa or mbar", 1e5: "bar", 1e6: "MPa", 101325.0: "atm"}
-
-
-@dataclass(frozen=True, eq=False)
-class Told:
-    """A cause in words: coefficient and interval, the setting that would express it, the flow with it."""
-
-    cause: str
-    coefficient: float
-    interval: tuple[float, float]
-    setting: str
-    change: Change | None = None
-
-
-@dataclass(frozen=True, eq=False)
-class Cause:
-    """One candidate.
-
-    makes_idle : others that say the same in a vaguer way
-    fixed : its coefficient can be one number only
-    """
-
-    name: str
-    model: Model
-    tell: Callable[[Fit], Told | None]
-    makes_idle: frozenset[str] = field(default=frozenset())
-    fixed: bool = False
-
-
-@dataclass(frozen=True, eq=False)
-class Setting:
-    """What is known of the flow: density, level of temperature on the border."""
-
-    flow: Flow
-    density: float
-    temperature: float
 
 
 def causes_of(law: str, known: Setting, columns: set[str]) -> list[Cause]:
     """The candidates of a law whose signatures are there."""
-    make = {"momentum": _momentum, "heat": _heat, "total-energy": _energy, "mass": _mass}.get(law)
+    make = {
+        "mass": mass_causes,
+        "momentum": momentum_causes,
+        "heat": heat_causes,
+        "total-energy": energy_causes,
+    }.get(law)
     found = [] if make is None else make(known)
     return [cause for cause in found if set(cause.model.columns) <= columns]
-
-
-def _linear(*columns: str) -> Model:
-    return Model(columns, len(columns))
-
-
-def _factor(fit: Fit, number: int = 0) -> tuple[float, float, float] | None:
-    """A factor 1 + α and its interval; None unless it may be positive and is not 1."""
-    value, half = 1.0 + float(fit.theta[number]), float(fit.half[number])
-    if value + half <= 0.0 or abs(value - 1.0) <= half:
-        return None
-    return value, value - half, value + half
-
-
-def _is(value: float, half: float, wanted: float) -> bool:
-    return abs(value - wanted) <= max(half, _NEAR * abs(wanted))
-
-
-def _scaled(role: str, factor: float) -> Change:
-    def change(flow: Flow) -> Flow:
-        old: Field = flow.fields[role]
-        rim = None if old.rim is None else np.asarray(old.rim, float) * factor
-        new = replace(old, values=np.asarray(old.values, float) * factor, rim=rim)
-        return replace(flow, fields={**flow.fields, role: new})
-
-    return change
-
-
-def _fluid(**changes: Any) -> Change:
-    return lambda flow: replace(flow, fluid=replace(flow.fluid, **changes))
-
-
-def _both(*changes: Change | None) -> Change | None:
-    there = [change for change in changes if change is not None]
-    if len(there) < len(changes):
-        return None
-
-    def change(flow: Flow) -> Flow:
-        for one in there:
-            flow = one(flow)
-        return flow
-
-    return change
 
 
 def storage_cause() -> Cause:
@@ -111,7 +38,7 @@ def storage_cause() -> Cause:
 
     def tell(fit: Fit) -> Told | None:
         value, half = float(fit.theta[0]), float(fit.half[0])
-        if not _is(value, half, 1.0) or half > 0.5:
+        if not is_number(value, half, 1.0) or half > 0.5:
             return None
         return Told(
             "storage: the run is unsteady, and what the volumes store is missing",
@@ -120,405 +47,14 @@ def storage_cause() -> Cause:
             "fvcheck history, which takes storage from the snapshots",
         )
 
-    return Cause("storage", _linear("storage"), tell, frozenset({"resistance"}), fixed=True)
+    return Cause("storage", linear("storage"), tell, frozenset({"resistance"}), fixed=True)
 
 
-# ---- momentum
-
-
-def _momentum(known: Setting) -> list[Cause]:
-    gas, gravity = known.flow.fluid.ideal_gas, known.flow.fluid.gravity
-    weight = known.density * np.asarray(gravity)
-    out = [
-        Cause("pressure-factor", _linear("pressure"), lambda f: _pressure(known, f)),
-        Cause("viscosity-factor", _linear("viscous"), lambda f: _viscosity(known, f)),
-    ]
-    if np.any(weight) and known.flow.fluid.pressure_kind in ("static", "reduced"):
-        out.append(
-            Cause(
-                "hydrostatic-pressure",
-                Model(("force-x", "force-y"), 1, lambda t: -t[0] * weight),
-                lambda f: _hydrostatic(known, f),
-                frozenset({"uniform-force-x", "uniform-force-y", "uniform-force"}),
-                fixed=True,
-            )
-        )
-    if not np.any(weight) and not gas:
-        out.append(Cause("density-factor", _linear("convective"), lambda f: _density(known, f, "momentum")))
-    out += [
-        Cause("uniform-force-x", _linear("force-x"), lambda f: _force(known, f, (0,))),
-        Cause("uniform-force-y", _linear("force-y"), lambda f: _force(known, f, (1,))),
-        Cause("uniform-force", _linear("force-x", "force-y"), lambda f: _force(known, f, (0, 1))),
-        Cause("buoyancy-x", _linear("warmth-x", "force-x"), lambda f: _buoyancy(known, f, 0)),
-        Cause("buoyancy-y", _linear("warmth-y", "force-y"), lambda f: _buoyancy(known, f, 1)),
-        Cause("resistance", _linear("resistance"), lambda f: _resistance(f, 1)),
-        Cause("resistance-quadratic", _linear("resistance-2"), lambda f: _resistance(f, 2)),
-        Cause(
-            "rotating-frame",
-            Model(
-                ("coriolis", "centrifugal", "force-x", "force-y"),
-                3,
-                lambda t: np.array([t[0], t[0] ** 2, t[1], t[2]]),
-                lambda free: [np.array([free[0], free[2], free[3]])],
-            ),
-            lambda f: _frame(known, f),
-        ),
-        Cause(
-            "velocity-factor",
-            Model(
-                ("convective", "viscous"),
-                1,
-                lambda t: np.array([t[0] ** 2 - 1.0, t[0] - 1.0]),
-                lambda free: [np.array([f]) for f in np.geomspace(1e-3, 1e3, 13)],
-            ),
-            _velocity,
-        ),
-        Cause("turbulence-energy", _linear("turbulence"), _turbulence),
-    ]
-    one = {cause.name: cause for cause in out}
-    for first, second in (
-        ("pressure-factor", "viscosity-factor"),
-        ("pressure-factor", "uniform-force"),
-        ("viscosity-factor", "uniform-force"),
-        ("pressure-factor", "buoyancy-y"),
-        ("viscosity-factor", "buoyancy-y"),
-        ("resistance", "resistance-quadratic"),
-    ):
-        out.append(_pair(one[first], one[second]))
-    return out
-
-
-def _pair(first: Cause, second: Cause) -> Cause:
-    split = first.model.unknowns
-
-    def tell(fit: Fit) -> Told | None:
-        parts = [
-            c.tell(replace(fit, theta=fit.theta[s], half=fit.half[s]))
-            for c, s in ((first, slice(None, split)), (second, slice(split, None)))
-        ]
-        if parts[0] is None or parts[1] is None:
-            return None
-        a, b = parts[0], parts[1]
-        return Told(
-            f"{a.cause}, and {b.cause}",
-            a.coefficient,
-            a.interval,
-            f"{a.setting}; {b.setting}",
-            _both(a.change, b.change),
-        )
-
-    model = Model(first.model.columns + second.model.columns, split + second.model.unknowns)
-    return Cause(f"{first.name}+{second.name}", model, tell)
-
-
-def _pressure(known: Setting, fit: Fit) -> Told | None:
-    found = _factor(fit)
-    if found is None:
-        return None
-    f, low, high = found
-    half, rho, kind = high - f, known.density, known.flow.fluid.pressure_kind
-    text, setting = f"pressure factor {f:.4g}", f"multiply the pressure array by {f:.4g}"
-    change: Change = _scaled("pressure", f)
-    told = rho != 1.0 and not isinstance(known.flow.fluid.density, type(None))
-    if kind == "static" and told and _is(f, half, rho):
-        text += ": the pressure is kinematic (p/rho)"
-        setting, change = "--pressure-kind kinematic", _fluid(pressure_kind="kinematic")
-    elif kind == "kinematic" and told and _is(f, half, 1.0 / rho):
-        text += ": the pressure is static, not p/rho"
-        setting, change = "--pressure-kind static", _fluid(pressure_kind="static")
-    else:
-        for size, unit in _PRESSURE_UNITS.items():
-            if _is(f, half, size):
-                text += f", as of a pressure in {unit}"
-    return Told(text, f, (low, high), setting, change if "pressure" in known.flow.fields else None)
-
-
-def _viscosity(known: Setting, fit: Fit) -> Told | None:
-    found = _factor(fit)
-    if found is None:
-        return None
-    f, low, high = found
-    half, rho, told = high - f, known.density, known.flow.fluid.viscosity
-    text = f"viscosity factor {f:.4g}"
-    if rho != 1.0 and _is(f, half, rho):
-        text += ": it was given as kinematic (mu/rho)"
-    elif rho != 1.0 and _is(f, half, 1.0 / rho):
-        text += ": it was divided by the density"
-    if isinstance(told, int | float) and told > 0:
-        value = max(f, 0.0) * told
-        return Told(text, f, (low, high), f"--viscosity {value:.5g}", _fluid(viscosity=value))
-    roles = [r for r in known.flow.fields if r.removeprefix("kinematic_") in ("viscosity", "eddy_viscosity")]
-    change = _both(*(_scaled(role, max(f, 0.0)) for role in roles)) if roles else None
-    return Told(text, f, (low, high), f"multiply the viscosity array by {f:.4g}", change)
-
-
-def _density(known: Setting, fit: Fit, law: str) -> Told | None:
-    found = _factor(fit)
-    if found is None:
-        return None
-    f, low, high = found
-    fluid = known.flow.fluid
-    if fluid.ideal_gas:
-        if "density" in known.flow.fields or fluid.gas_constant is None:
-            return None
-        value = fluid.gas_constant / max(f, 1e-300)
-        text = f"density factor {f:.4g}, gas constant {value:.5g}"
-        return Told(text, f, (low, high), f"--gas-constant {value:.5g}", _fluid(gas_constant=value))
-    text = f"density factor {f:.4g}"
-    if isinstance(fluid.density, int | float):
-        value = max(f, 1e-300) * fluid.density
-        return Told(text, f, (low, high), f"--density {value:.5g}", _fluid(density=value))
-    return Told(text, f, (low, high), f"multiply the density array by {f:.4g}", _scaled("density", f))
-
-
-def _hydrostatic(known: Setting, fit: Fit) -> Told | None:
-    value, half = float(fit.theta[0]), float(fit.half[0])
-    wanted = 1.0 if known.flow.fluid.pressure_kind == "static" else -1.0
-    if not _is(value, half, wanted) or half > 0.5:
-        return None
-    kind = "reduced" if wanted > 0 else "static"
-    text = "the pressure lacks the weight of the fluid" if wanted > 0 else "the pressure holds the weight"
-    return Told(
-        text,
-        value,
-        (value - half, value + half),
-        f"--pressure-kind {kind}",
-        _fluid(pressure_kind=kind),
-    )
-
-
-def _force(known: Setting, fit: Fit, which: tuple[int, ...]) -> Told | None:
-    size, half = np.zeros(2), np.zeros(2)
-    size[list(which)], half[list(which)] = fit.theta, fit.half
-    if np.any(np.abs(fit.theta) <= fit.half):
-        return None
-    lead = which[int(np.argmax(np.abs(fit.theta)))]
-    parts = " and ".join(f"{size[c]:.4g} in {'xy'[c]}" for c in which)
-    g = np.asarray(known.flow.fluid.gravity) + size / known.density
-    setting = f"--gravity {g[0]:.4g},{g[1]:.4g}, or a force of that size as --field body_force=ARRAY"
-    change = _fluid(gravity=(float(g[0]), float(g[1])))
-    if known.flow.fluid.pressure_kind == "reduced" or known.flow.fluid.expansion:
-        setting, change = "--field body_force=ARRAY of that size", _with_force(lambda flow, where: size)
-    interval = (float(size[lead] - half[lead]), float(size[lead] + half[lead]))
-    return Told(f"uniform force per volume {parts}", float(size[lead]), interval, setting, change)
-
-
-def _with_force(force: Callable[[Flow, Field], Array]) -> Change:
-    """A body force field added, at the location of the velocity."""
-
-    def change(flow: Flow) -> Flow:
-        u = flow.fields["velocity"]
-        values = np.zeros((len(u.values), 3))
-        values[:, :2] = force(flow, u)
-        old = flow.fields.get("body_force")
-        if old is not None:
-            if old.location != u.location:
-                return flow
-            values = values + old.values
-        added = Field(name="body_force", location=u.location, values=values)
-        return replace(flow, fields={**flow.fields, "body_force": added})
-
-    return change
-
-
-def _buoyancy(known: Setting, fit: Fit, c: int) -> Told | None:
-    b, even = (float(v) for v in fit.theta)
-    half = float(fit.half[0])
-    if abs(b) <= half:
-        return None
-    neutral = known.temperature - even / b
-    fluid, rho = known.flow.fluid, known.density
-    along = fluid.gravity[c]
-    changes: dict[str, Any] = {}
-    if along == 0.0:
-        # Gravity is not told: its own for SI values, else 1, with the product right.
-        along = -9.81 if 1e-5 < abs(b) / (rho * 9.81) < 0.1 else -1.0
-        along = along if b > 0 else -along
-        pair = [0.0, 0.0]
-        pair[c] = along
-        if any(fluid.gravity):
-            return Told(
-                f"buoyancy in {'xy'[c]}, coefficient {b:.5g} per unit of T", b, (b - half, b + half), ""
-            )
-        changes |= {"gravity": (pair[0], pair[1])}
-        if fluid.pressure_kind == "static":
-            changes |= {"pressure_kind": "reduced"}
-    before = fluid.expansion or 0.0
-    beta = before - b / (rho * along)
-    level = before * (fluid.reference_temperature or 0.0) - b / (rho * along) * neutral
-    level = level / beta if beta else neutral
-    if along and "gravity" in changes and fluid.pressure_kind == "kinematic":
-        level -= 1.0 / beta
-    changes |= {"expansion": beta, "reference_temperature": level}
-    words = [f"--expansion {beta:.5g} --reference-temperature {level:.5g}"]
-    if "gravity" in changes:
-        g = changes["gravity"]
-        words.insert(0, f"--gravity {g[0]:.4g},{g[1]:.4g}")
-    if "pressure_kind" in changes:
-        words.insert(0, "--pressure-kind reduced")
-    text = f"buoyancy in {'xy'[c]}, coefficient {b:.5g} per volume and unit of T, none at T = {neutral:.5g}"
-    return Told(text, b, (b - half, b + half), " ".join(words), _fluid(**changes))
-
-
-def _resistance(fit: Fit, power: int) -> Told | None:
-    k, half = float(fit.theta[0]), float(fit.half[0])
-    if abs(k) <= half or (power == 2 and k < 0):
-        return None
-    law = "velocity" if power == 1 else "velocity squared"
-    text = f"resistance proportional to {law}, {k:.4g} per volume"
-    if power == 1:
-        what = "dies away" if k < 0 else "grows"
-        text += f" (or storage: a flow that {what} as a whole; a single state cannot tell)"
-
-    def force(flow: Flow, where: Field) -> Array:
-        u = np.asarray(where.values[:, :2], float)
-        return -k * u * np.linalg.norm(u, axis=1, keepdims=True) ** (power - 1)
-
-    return Told(
-        text,
-        k,
-        (k - half, k + half),
-        f"--field body_force=ARRAY that holds {-k:.4g} times {'u' if power == 1 else '|u| u'}",
-        _with_force(force),
-    )
-
-
-def _frame(known: Setting, fit: Fit) -> Told | None:
-    rate, half = float(fit.theta[0]), float(fit.half[0])
-    if abs(rate) <= half:
-        return None
-    centre = -fit.theta[1:] / (known.density * rate**2)
-    x, y = float(centre[0]), float(centre[1])
-    return Told(
-        f"rotating frame, {rate:.4g} rad/s about ({x:.4g}, {y:.4g})",
-        rate,
-        (rate - half, rate + half),
-        f"--frame-rate {rate:.5g} --frame-centre {x:.4g},{y:.4g}",
-        _fluid(frame_rate=rate, frame_centre=(x, y)),
-    )
-
-
-def _velocity(fit: Fit) -> Told | None:
-    f, half = float(fit.theta[0]), float(fit.half[0])
-    if f + half <= 0.0 or abs(f - 1.0) <= half or f == 0.0:
-        return None
-    text = f"velocity factor {f:.4g}, as of another unit"
-    return Told(
-        text, f, (f - half, f + half), f"multiply the velocity array by {f:.4g}", _scaled("velocity", f)
-    )
-
-
-def _turbulence(fit: Fit) -> Told | None:
-    value, half = float(fit.theta[0]), float(fit.half[0])
-    if not _is(value, half, -1.0) or half > 0.5:
-        return None
-    return Told(
-        "the pressure holds the turbulence energy (2/3 rho k) already",
-        value,
-        (value - half, value + half),
-        "leave the turbulence energy out of the fields",
-        lambda flow: replace(
-            flow, fields={role: f for role, f in flow.fields.items() if role != "turbulence_energy"}
-        ),
-    )
-
-
-# ---- energies and mass
-
-
-def _heat(known: Setting) -> list[Cause]:
-    fluid = known.flow.fluid
-
-    def carried(fit: Fit) -> Told | None:
-        found = _factor(fit)
-        if found is None:
-            return None
-        f, low, high = found
-        c = fluid.specific_heat
-        if c is None:
-            return None
-        value = max(f, 1e-300) * c
-        text = f"specific-heat (or density) factor {f:.4g}"
-        return Told(text, f, (low, high), f"--specific-heat {value:.5g}", _fluid(specific_heat=value))
-
-    return [
-        Cause("conductivity-factor", _linear("conductive"), lambda f: _conductivity(known, f)),
-        Cause("specific-heat-factor", _linear("convective"), carried),
-        Cause("dissipation", _linear("dissipation"), _dissipation),
-        Cause("uniform-heat-source", _linear("heating"), _heating),
-    ]
-
-
-def _conductivity(known: Setting, fit: Fit) -> Told | None:
-    found = _factor(fit)
-    if found is None:
-        return None
-    f, low, high = found
-    told = known.flow.fluid.conductivity
-    text = f"conductivity factor {f:.4g}"
-    if isinstance(told, int | float) and told > 0:
-        value = max(f, 0.0) * told
-        return Told(text, f, (low, high), f"--conductivity {value:.5g}", _fluid(conductivity=value))
-    change = _scaled("conductivity", max(f, 0.0)) if "conductivity" in known.flow.fields else None
-    return Told(text, f, (low, high), f"multiply the conductivity by {f:.4g}", change)
-
-
-def _dissipation(fit: Fit) -> Told | None:
-    value, half = float(fit.theta[0]), float(fit.half[0])
-    if not _is(value, half, 1.0) or half > 0.5:
-        return None
-    return Told(
-        "the heat of dissipation is missing",
-        value,
-        (value - half, value + half),
-        "viscous_heating = true in [fluid] of the check file",
-        _fluid(viscous_heating=True),
-    )
-
-
-def _heating(fit: Fit) -> Told | None:
-    q, half = float(fit.theta[0]), float(fit.half[0])
-    if abs(q) <= half:
-        return None
-
-    def change(flow: Flow) -> Flow:
-        like = flow.fields["temperature"] if "temperature" in flow.fields else flow.fields["velocity"]
-        if "heat_source" in flow.fields:
-            return flow
-        added = Field(name="heat_source", location=like.location, values=np.full(len(like.values), q))
-        return replace(flow, fields={**flow.fields, "heat_source": added})
-
-    text = f"uniform heat source {q:.4g} per volume"
-    return Told(
-        text, q, (q - half, q + half), "[[source]] with law and shape, or --field heat_source=ARRAY", change
-    )
-
-
-def _energy(known: Setting) -> list[Cause]:
-    def gamma(fit: Fit) -> Told | None:
-        told = known.flow.fluid.gamma
-        if told is None or "total_energy" in known.flow.fields:
-            return None
-        ends = [1.0 / (told - 1.0) + float(fit.theta[0]) + s * float(fit.half[0]) for s in (-1, 0, 1)]
-        if ends[0] <= 0.0 or abs(fit.theta[0]) <= fit.half[0]:
-            return None
-        high, value, low = (1.0 + 1.0 / end for end in ends)
-        return Told(f"gamma {value:.5g}", value, (low, high), f"--gamma {value:.5g}", _fluid(gamma=value))
-
-    return [
-        Cause("gamma", _linear("pressure-carried"), gamma),
-        Cause("gas-constant", _linear("kinetic-carried"), lambda f: _density(known, f, "total-energy")),
-        Cause("conductivity-factor", _linear("conductive"), lambda f: _conductivity(known, f)),
-        Cause("viscosity-factor", _linear("viscous"), lambda f: _viscosity(known, f)),
-        Cause("uniform-heat-source", _linear("heating"), _heating),
-    ]
-
-
-def _mass(known: Setting) -> list[Cause]:
+def mass_causes(known: Setting) -> list[Cause]:
     def turned(axis: str) -> Callable[[Fit], Told | None]:
         def tell(fit: Fit) -> Told | None:
             value, half = float(fit.theta[0]), float(fit.half[0])
-            if not _is(value, half, 1.0) or half > 0.5:
+            if not is_number(value, half, 1.0) or half > 0.5:
                 return None
             return Told(
                 f"the run is axisymmetric about the {axis} axis and was read as plane",
@@ -532,4 +68,4 @@ def _mass(known: Setting) -> list[Cause]:
 
         return tell
 
-    return [Cause(f"axisymmetric-{a}", _linear(f"spreading-{a}"), turned(a)) for a in "xy"]
+    return [Cause(f"axisymmetric-{a}", linear(f"spreading-{a}"), turned(a)) for a in "xy"]

@@ -9,7 +9,8 @@ from typing import Any
 import numpy as np
 
 from fvcheck.balancing import balance_all, default_surfaces
-from fvcheck.diagnosis.causes import Cause, Setting, Told, causes_of, storage_cause
+from fvcheck.diagnosis.cause import Cause, Setting, Told
+from fvcheck.diagnosis.causes import causes_of, storage_cause
 from fvcheck.diagnosis.cells import CellLedgers, Column, cell_ledgers
 from fvcheck.diagnosis.columns import terms_of
 from fvcheck.diagnosis.fitting import Ledgers

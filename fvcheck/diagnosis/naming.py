@@ -7,7 +7,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from fvcheck.diagnosis.causes import Cause, Told
+from fvcheck.diagnosis.cause import Cause, Told
 from fvcheck.diagnosis.fitting import Fit, Ledgers, fit, in_bands
 
 Array = np.ndarray

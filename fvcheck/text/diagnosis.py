@@ -6,7 +6,7 @@ from rich.console import RenderableType
 from rich.text import Text
 
 from fvcheck.diagnosis import Diagnosis
-from fvcheck.diagnosis.causes import Told
+from fvcheck.diagnosis.cause import Told
 from fvcheck.diagnosis.naming import Why
 from fvcheck.diagnosis.where import Place
 from fvcheck.laws import find_law
