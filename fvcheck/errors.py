@@ -15,6 +15,9 @@ from __future__ import annotations
 
 from collections.abc import Iterable
 
+LARGEST = 1e50
+"""Beyond every number of a flow, in any units; products of several such are numbers still."""
+
 
 class FvcheckError(Exception):
     """An error that says what is wrong, where, and how to mend it.

@@ -2,12 +2,11 @@
 
 from __future__ import annotations
 
-import math
 from collections.abc import Mapping
 from dataclasses import dataclass, field, fields
 from typing import Literal
 
-from fvcheck.errors import SetupError, nearest
+from fvcheck.errors import LARGEST, SetupError, nearest
 
 PressureKind = Literal["static", "kinematic", "reduced"]
 Value = float | str | None
@@ -65,8 +64,8 @@ class Fluid:
     def __post_init__(self) -> None:
         for item in fields(self):
             value = getattr(self, item.name)
-            if isinstance(value, int | float) and not math.isfinite(value):
-                raise SetupError(f"{item.name} is {value}", mend="Give a finite number.")
+            if isinstance(value, int | float) and not abs(value) < LARGEST:
+                raise SetupError(f"{item.name} is {value}", mend="Give a finite number, of a flow's size.")
         for name in _POSITIVE + _NOT_NEGATIVE:
             value = getattr(self, name)
             if isinstance(value, int | float) and (value < 0 or (value == 0 and name in _POSITIVE)):
@@ -77,11 +76,11 @@ class Fluid:
         if self.model is not None:
             _one_of("fluid model", self.model, MODELS)
         for scalar, value in self.diffusivity.items():
-            if not (math.isfinite(value) and value >= 0):
+            if not 0.0 <= value < LARGEST:
                 raise SetupError(f"the diffusivity of {scalar} is {value:g}", mend="Give a positive number.")
         for name, form in (("gravity", "GX,GY"), ("frame_centre", "X,Y")):
             pair = getattr(self, name)
-            if len(pair) != 2 or not all(math.isfinite(part) for part in pair):
+            if len(pair) != 2 or not all(abs(part) < LARGEST for part in pair):
                 what = name.replace("_", " ")
                 raise SetupError(f"{what} is {pair}", mend=f"Give its two components {form}.")
             object.__setattr__(self, name, (float(pair[0]), float(pair[1])))

@@ -2,13 +2,12 @@
 
 from __future__ import annotations
 
-import math
 from collections.abc import Mapping, Sequence
 from typing import Any, NamedTuple
 
 import numpy as np
 
-from fvcheck.errors import SetupError, nearest
+from fvcheck.errors import LARGEST, SetupError, nearest
 
 Array = np.ndarray
 
@@ -61,7 +60,7 @@ def _wall(name: str, motion: Any) -> Wall:
     except (TypeError, ValueError, KeyError):
         numbers = []
     spins = isinstance(motion, Spin)
-    if len(numbers) != (3 if spins else 2) or not all(math.isfinite(value) for value in numbers):
+    if len(numbers) != (3 if spins else 2) or not all(abs(value) < LARGEST for value in numbers):
         raise SetupError(
             f"the motion of the wall {name!r} is {motion}",
             mend="Give a velocity (VX, VY), or omega and centre of a spin.",

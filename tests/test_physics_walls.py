@@ -127,6 +127,12 @@ def test_a_rotor_is_told_the_same_in_command_and_check_file(tmp_path):
         (["--wall", "body-1=spin(a, 0, 0)"], "no finite number"),
         (["--wall", "body-1=turn(1)"], "no pair of numbers"),
         (["--wall", "rotor=spin(1, 0, 0)"], "no patch 'rotor'"),
+        (["--wall", "body-1=spin(1e300, 0, 0)"], "omega and centre"),
+        (["--wall", "body-1=1e300,0"], "velocity"),
+        (["--frame-rate", "1e300"], "frame_rate"),
+        (["--viscosity", "1e300"], "viscosity"),
+        (["--about", "1e300,0"], "point of the moment"),
+        (["-s", "circle(0.2, 0.2, 0.1) @ spin(1e300, 0, 0)"], "flow's size"),
     ],
 )
 def test_a_motion_that_cannot_be_read_is_one_line(capsys, words, match):

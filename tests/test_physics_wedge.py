@@ -197,6 +197,16 @@ def test_a_wedge_from_a_file_in_single_precision_is_recognised(tmp_path):
         assert row.verdict == "closed", row.label
 
 
+@pytest.mark.parametrize("how", ["beside", "aslant"])
+def test_a_wedge_about_another_axis_is_refused_with_what_to_do(how):
+    mesh = wedge(FRAMES["x"], np.radians(2.0))
+    c, s = np.cos(0.3), np.sin(0.3)
+    turn = np.array([[c, -s, 0.0], [s, c, 0.0], [0.0, 0.0, 1.0]])
+    mesh.points = mesh.points + np.array([0.0, 0.5, 0.0]) if how == "beside" else mesh.points @ turn.T
+    with pytest.raises(fvcheck.MeshError, match="coordinate axis"):
+        fvcheck.Flow.from_meshio(mesh, fluid=Fluid(**VORTEX.fluid))
+
+
 def test_a_wedge_as_wide_as_a_quarter_is_refused():
     mesh = wedge(FRAMES["x"], np.radians(45.0))
     with pytest.raises(fvcheck.MeshError):

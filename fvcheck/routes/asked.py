@@ -6,7 +6,7 @@ import math
 from collections.abc import Iterable, Mapping, Sequence
 from typing import Any
 
-from fvcheck.errors import SetupError, nearest
+from fvcheck.errors import LARGEST, SetupError, nearest
 from fvcheck.flow import Flow
 from fvcheck.routes.estimate import Reference
 from fvcheck.surfaces import ControlSurface
@@ -78,6 +78,6 @@ def point_of(
 ) -> tuple[float, float]:
     """The point that moments on a body count from; (0, 0) where none is told for it."""
     x, y = about.get(body, (0.0, 0.0)) if isinstance(about, Mapping) else about
-    if not (math.isfinite(x) and math.isfinite(y)):
+    if not (abs(x) < LARGEST and abs(y) < LARGEST):
         raise SetupError(f"the point of the moment is ({x}, {y})", mend="Give two finite numbers.")
     return float(x), float(y)

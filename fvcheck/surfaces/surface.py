@@ -10,7 +10,7 @@ from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
-from fvcheck.errors import SurfaceError, nearest
+from fvcheck.errors import LARGEST, SurfaceError, nearest
 from fvcheck.surfaces import rings as _rings
 
 if TYPE_CHECKING:
@@ -31,6 +31,8 @@ class Motion:
         if len(self.velocity) != 2 or len(self.centre) != 2:
             raise SurfaceError("A motion needs a velocity (wx, wy) and a centre (x, y)")
         wx, wy, omega, x, y = _rings.finite([*self.velocity, self.omega, *self.centre], "The motion")
+        if max(map(abs, (wx, wy, omega, x, y))) >= LARGEST:
+            raise SurfaceError(f"the motion {self.text} is none of a flow's size")
         object.__setattr__(self, "velocity", (wx, wy))
         object.__setattr__(self, "omega", omega)
         # Without a spin the centre means nothing; equal motions then compare and are spelled alike.
