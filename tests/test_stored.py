@@ -121,6 +121,14 @@ def test_damage_is_told_where_the_array_is_wanted_and_only_there(tmp_path):
         inspect_file(path, fluid=FLUID)
 
 
+def test_an_array_that_the_memory_cannot_hold_is_refused_in_one_line():
+    def give():
+        raise MemoryError
+
+    with pytest.raises(FormatError, match="not enough memory"):
+        np.asarray(stored((10**12,), np.dtype(float), give))
+
+
 def test_a_stored_array_is_read_once_and_behaves_as_what_it_stands_for():
     reads = []
 

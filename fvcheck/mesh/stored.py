@@ -8,6 +8,8 @@ from typing import Any, cast
 import numpy as np
 from numpy.lib.mixins import NDArrayOperatorsMixin
 
+from fvcheck.errors import FormatError
+
 Array = np.ndarray
 
 
@@ -37,8 +39,7 @@ class Stored(NDArrayOperatorsMixin):
         return self.shape[0]
 
     def __array__(self, dtype: Any = None, copy: bool | None = None) -> Array:
-        if self._values is None:
-            self._values = self._read()
+        self._values = self.passing()
         return np.array(self._values, dtype=dtype) if copy else np.asarray(self._values, dtype=dtype)
 
     def __getitem__(self, key: Any) -> Any:
@@ -58,7 +59,15 @@ class Stored(NDArrayOperatorsMixin):
 
     def passing(self) -> Array:
         """The values, not kept for the next time."""
-        return self._read() if self._values is None else self._values
+        if self._values is not None:
+            return self._values
+        try:
+            return self._read()
+        except MemoryError:
+            raise FormatError(
+                f"there is not enough memory for an array of the shape {self.shape}",
+                mend="Check the size of the file; export less of the domain.",
+            ) from None
 
 
 def stored(shape: tuple[int, ...], dtype: np.dtype, read: Callable[[], Array]) -> Array:
