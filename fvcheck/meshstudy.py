@@ -5,14 +5,16 @@ from __future__ import annotations
 import itertools
 from collections.abc import Callable, Iterable, Sequence
 from dataclasses import asdict, dataclass
+from functools import partial
+from itertools import chain
 from pathlib import Path
 from typing import Any
 
 import numpy as np
 
-from fvcheck.balancing import balance_all
+from fvcheck.balancing import balance_all, default_surfaces
 from fvcheck.convergence import Convergence, grid_convergence
-from fvcheck.errors import SetupError
+from fvcheck.errors import FvcheckError, SetupError
 from fvcheck.flow import Flow, flow_of_export
 from fvcheck.hints import Hint
 from fvcheck.laws import Law
@@ -21,6 +23,7 @@ from fvcheck.notebook import html_hints, html_line, html_table
 from fvcheck.recording import reaction
 from fvcheck.series import file_list
 from fvcheck.surfaces import ControlSurface, name_all
+from fvcheck.tasks import each_done
 from fvcheck.version import __version__
 
 
@@ -119,19 +122,20 @@ def study(
     sources: Sequence[Any] = (),
     about: tuple[float, float] = (0.0, 0.0),
     on_case: Callable[[Result, int], None] | None = None,
+    workers: int | None = None,
+    scheduler: str | None = None,
     **reading: Any,
 ) -> Study:
     """Imbalances and fluxes of one case on two or more meshes, in any order.
 
     files : exports, or flows; the rest as in `balance_all` and `open_flow`
     on_case : called with each result and the number of all, for a progress bar
+    workers, scheduler : files are read and balanced there, as in `fvcheck.tasks.each_done`
 
     Without surfaces: the whole domain, and one around each body at the distance
     that suits the first mesh. Raises SetupError for fewer than two meshes or two
     of the same size, and what `balance` and `open_flow` raise.
     """
-    from fvcheck.formats.registry import open_export
-
     given = [files] if isinstance(files, str | Path) else list(files)
     named = [f for f in given if not isinstance(f, Flow)]
     cases: list[Any] = [f for f in given if isinstance(f, Flow)] + (file_list(named) if named else [])
@@ -139,26 +143,49 @@ def study(
         raise SetupError("a study needs two or more meshes, better three", mend="Name one FILE for each.")
     chosen = [surfaces] if isinstance(surfaces, ControlSurface) else surfaces
     names = None if laws is None else list(laws)
-    found: list[tuple[float, Result]] = []
-    hints: dict[Hint, None] = {}
-    for case in cases:
-        flow = case if isinstance(case, Flow) else flow_of_export(open_export(case), step=step, **reading)
-        if chosen is None:
-            from fvcheck.balancing import default_surfaces
-
-            chosen = default_surfaces(flow)
-        result = balance_all(
-            flow, name_all(chosen), names, tolerance=tolerance, scale=scale, sources=sources, about=about
-        )
-        found.append((mesh_size(flow), result))
-        hints |= dict.fromkeys(result.hints)
+    if chosen is None:
+        cases[0] = _flow(cases[0], step, reading)
+        chosen = default_surfaces(cases[0])
+    judged = {"tolerance": tolerance, "scale": scale, "sources": sources, "about": about}
+    function = partial(_balanced, step, reading, list(name_all(chosen)), names, judged)
+    spread = [number for number, case in enumerate(cases) if not isinstance(case, Flow)]
+    elsewhere = each_done(function, [cases[n] for n in spread], workers=workers, scheduler=scheduler)
+    by_number: dict[int, tuple[float, Result]] = {}
+    for number, pair in chain(
+        ((n, function(case)) for n, case in enumerate(cases) if isinstance(case, Flow)),
+        ((spread[n], pair) for n, pair in elsewhere),
+    ):
+        if isinstance(pair, FvcheckError):
+            raise pair
+        by_number[number] = pair
         if on_case is not None:
-            on_case(result, len(cases))
+            on_case(pair[1], len(cases))
+    found = [by_number[number] for number in range(len(cases))]
+    hints = dict.fromkeys(hint for _, result in found for hint in result.hints)
     found.sort(key=lambda pair: pair[0])
     sizes, results = tuple(size for size, _ in found), tuple(result for _, result in found)
     quantities, missing = _quantities(results, sizes)
     hints |= dict.fromkeys(_remarks(sizes, quantities, missing))
     return Study(results, sizes, quantities, missing, tuple(hints))
+
+
+def _flow(case: Flow | Path, step: int | str, reading: dict[str, Any]) -> Flow:
+    from fvcheck.formats.registry import open_export
+
+    return case if isinstance(case, Flow) else flow_of_export(open_export(case), step=step, **reading)
+
+
+def _balanced(
+    step: int | str,
+    reading: dict[str, Any],
+    surfaces: Sequence[ControlSurface],
+    laws: Sequence[str | Law] | None,
+    judged: dict[str, Any],
+    case: Flow | Path,
+) -> tuple[float, Result]:
+    """Cell size and ledgers of one mesh."""
+    flow = _flow(case, step, reading)
+    return mesh_size(flow), balance_all(flow, surfaces, laws, **judged)
 
 
 def mesh_size(flow: Flow) -> float:

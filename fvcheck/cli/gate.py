@@ -27,6 +27,10 @@ def command(
         int | None,
         Option(metavar="N", min=1, help="Processes; default one per processor.", rich_help_panel=_RUN),
     ] = None,
+    scheduler: Annotated[
+        str | None,
+        Option(metavar="ADDRESS", help="Workers of a Dask scheduler.", rich_help_panel=_RUN),
+    ] = None,
     time_limit: Annotated[
         float | None,
         Option(metavar="SECONDS", help="A case that takes longer has failed.", rich_help_panel=_RUN),
@@ -65,6 +69,7 @@ def command(
         found = gate(
             [*(checks or ()), *(check or ())],
             workers=workers,
+            scheduler=scheduler,
             update_baseline=update_baseline,
             diagnosis=not no_diagnosis,
             time_limit=time_limit,

@@ -7,7 +7,7 @@ from typing import Annotated
 
 from typer import Argument
 
-from fvcheck.cli.options import FluidOptions, Limits, Output, Reading, SurfaceList, spread
+from fvcheck.cli.options import FluidOptions, Limits, Output, Reading, Spread, SurfaceList, spread
 
 INCOMPLETE = 2
 
@@ -18,6 +18,7 @@ def command(
     reading: Reading,
     fluid: FluidOptions,
     output: Output,
+    run: Spread,
     files: Annotated[
         list[str] | None,
         Argument(metavar="FILE FILE …", help="One export for each mesh, three or more, in any order."),
@@ -48,6 +49,8 @@ def command(
             sources=settings.sources,
             about=settings.about,
             on_case=lambda _result, total: advance(total),
+            workers=run.workers,
+            scheduler=run.scheduler,
             **settings.reading,
         )
     show(output, found.to_dict, lambda: study_text(found, output.quiet))

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import os
 from collections.abc import Callable, Iterable, Iterator, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from functools import partial
 from glob import glob
 from pathlib import Path
@@ -104,6 +104,7 @@ def gate(
     paths: str | Path | Iterable[str | Path],
     *,
     workers: int | None = None,
+    scheduler: str | None = None,
     update_baseline: bool = False,
     diagnosis: bool = True,
     time_limit: float | None = None,
@@ -115,6 +116,8 @@ def gate(
     paths : check files, or patterns of them
     workers : processes at a time, by default as many as there are processors; 0
         runs all in this process, where a crash of a reader would end it
+    scheduler : address of a Dask scheduler whose workers run the cases, in place of ``workers``;
+        they see check files by their absolute paths
     update_baseline : write the results as baselines instead of comparing with
         them; all or, where any case could not be run, none
     diagnosis : with what `fvcheck.diagnose` says of open rows
@@ -130,9 +133,11 @@ def gate(
     if workers is not None and workers < 0:
         raise SetupError(f"{workers} workers are asked for", mend="Give 0 or more.")
     options = (diagnosis, not update_baseline)
-    count = min(len(named), os.cpu_count() or 1) if workers is None else min(workers, len(named))
+    if workers is None and scheduler is None:
+        workers = os.cpu_count() or 1
+    where = {"workers": workers, "scheduler": scheduler, "limit": time_limit}
     found: dict[str, Outcome] = {}
-    for path, outcome in _run(named, options, count, time_limit, work):
+    for path, outcome in _run(named, options, where, work):
         found[path] = outcome
         if on_case is not None:
             on_case(outcome, len(named))
@@ -161,12 +166,16 @@ def check_files(paths: str | Path | Iterable[str | Path]) -> list[str]:
 
 
 def _run(
-    named: Sequence[str], options: tuple[bool, bool], workers: int, limit: float | None, work: Work
+    named: Sequence[str], options: tuple[bool, bool], where: dict[str, Any], work: Work
 ) -> Iterator[tuple[str, Outcome]]:
     """Outcomes as they come; a failure where the process of a case dies again and again."""
-    for number, outcome in each_done(partial(_worked, work, options), named, workers=workers, limit=limit):
+    paths = [str(Path(path).absolute()) for path in named] if where["scheduler"] else named
+    for number, outcome in each_done(partial(_worked, work, options), paths, **where):
         path = named[number]
-        yield path, failed(path, str(outcome)) if isinstance(outcome, FvcheckError) else outcome
+        if isinstance(outcome, FvcheckError):
+            yield path, failed(path, str(outcome))
+        else:
+            yield path, replace(outcome, check=path)
 
 
 def _worked(work: Work, options: tuple[bool, bool], path: str) -> Outcome:
