@@ -40,7 +40,7 @@ def history_figure(history: History) -> Any:
     from matplotlib.figure import Figure
 
     ledgers = history.entries[-1].result.ledgers
-    bodies = list(dict.fromkeys(e.body for found in history.forces for e in found.estimates))
+    bodies = history.bodies
     count = len(ledgers) + len(bodies)
     figure = Figure(figsize=(10, 0.6 + 3.2 * count), layout="constrained")
     panels = figure.subplots(count, 2, squeeze=False, sharex=True)
@@ -81,10 +81,10 @@ def history_figure(history: History) -> Any:
 
 
 def _draw_forces(pair: Any, history: History, body: str, every: int) -> None:
-    labels = dict.fromkeys(e.label for found in history.forces for e in found.estimates if e.body == body)
+    labels = history.routes_of(body)
     for panel, name in zip(pair, ("drag", "lift")):
         for number, label in enumerate(labels):
-            values, half = _force_over_steps(history, body, label, name)
+            values, half = history.force_values(body, label, name)
             style: dict[str, Any] = {
                 "marker": _MARKS[number % len(_MARKS)],
                 "markersize": 4,
@@ -100,17 +100,6 @@ def _draw_forces(pair: Any, history: History, body: str, every: int) -> None:
         panel.set_ylabel(history.forces[-1].unit)
         panel.grid(alpha=0.25)
     pair[1].legend(fontsize=8, frameon=False)
-
-
-def _force_over_steps(history: History, body: str, label: str, name: str) -> tuple[Any, Any]:
-    """(n,) of a number by one route, and its half-width; NaN where there is none."""
-    values = np.full((2, len(history.forces)), np.nan)
-    for k, found in enumerate(history.forces):
-        for estimate in found.estimates:
-            if (estimate.body, estimate.label) == (body, label) and getattr(estimate, name) is not None:
-                half = estimate.band(name)
-                values[:, k] = getattr(estimate, name), half if np.isfinite(half) else np.nan
-    return values[0], values[1]
 
 
 def save_history(history: History, path: str | Path) -> None:

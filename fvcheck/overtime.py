@@ -75,6 +75,26 @@ class History:
         rows = [entry.result[surface][label] for entry in self.entries]
         return np.array([np.nan if getattr(r, what) is None else getattr(r, what) for r in rows], float)
 
+    def force_values(self, body: str, route: str, name: str) -> tuple[Array, Array]:
+        """(n,) drag, lift or moment of a body by a route, and its sampling band; NaN where there is none."""
+        values = np.full((2, len(self.entries)), np.nan)
+        for k, found in enumerate(self.forces):
+            for estimate in found.estimates:
+                if (estimate.body, estimate.label) == (body, route) and getattr(estimate, name) is not None:
+                    half = estimate.band(name)
+                    values[:, k] = getattr(estimate, name), half if np.isfinite(half) else np.nan
+        return values[0], values[1]
+
+    def routes_of(self, body: str) -> tuple[str, ...]:
+        """Labels of the routes that tell a force on a body at some snapshot."""
+        all_of = (e for found in self.forces for e in found.estimates)
+        return tuple(dict.fromkeys(e.label for e in all_of if e.body == body and not e.refused))
+
+    @property
+    def bodies(self) -> tuple[str, ...]:
+        """Those whose forces are told."""
+        return tuple(dict.fromkeys(e.body for found in self.forces for e in found.estimates))
+
     def trend(self, surface: str, name: str) -> Trend:
         """One trend, such as ``trend("box", "mass imbalance")``; SetupError where there is none."""
         for trend in self.trends:

@@ -8,7 +8,7 @@ from pathlib import Path
 from typing import Any
 
 from fvcheck.errors import FvcheckError
-from fvcheck.forceseries import force_series
+from fvcheck.forceseries import ForceSeries, force_series
 from fvcheck.laws import Law
 from fvcheck.mesh.piece import Export
 from fvcheck.overtime import Entry, History
@@ -81,5 +81,10 @@ def history(
     if bodies is None:
         return found
     more = force_series(series, bodies or None, strouhal=reference, on_step=on_force, **(forces or {}))
+    return with_forces(found, more)
+
+
+def with_forces(found: History, more: ForceSeries) -> History:
+    """The history with the forces of the same snapshots and their trends."""
     hints = tuple(dict.fromkeys([*found.hints, *more.hints]))
     return replace(found, forces=more.found, trends=(*found.trends, *more.trends), hints=hints)

@@ -9,8 +9,10 @@ from pathlib import Path
 
 import numpy as np
 import pytest
+import trial_meshes as tm
 from forked import fvcheck as command
 from pages import Page
+from write_case import write_case
 
 import fvcheck
 from fvcheck.checkfile import load
@@ -287,6 +289,30 @@ def test_a_series_gives_a_history_with_the_numbers_of_fvcheck_history():
             row.imbalance_percent for ledger in entry.result.ledgers for row in ledger.rows
         } <= page.numbers
     assert {trend.level for trend in history.trends} <= page.numbers
+
+
+def test_forces_of_an_unsteady_series_hold_what_is_stored_and_are_drawn_over_time(tmp_path):
+    """A fluid pushed as a whole: the force on any part of it is ρ u̇ times its area (Archimedes)."""
+    cells = tm.with_hole((-1.0, -1.0, 1.0, 1.0), (0.0, 0.0, 0.2), 0.15, 0.06, seed=1)
+    files = []
+    for k, time in enumerate((0.0, 0.1, 0.2)):
+        files.append(tmp_path / f"run_{k}.vtu")
+        velocity = np.tile([1.0 + 2.0 * time, 0.0], (len(cells.points), 1))
+        fields = {"U": velocity, "p": -1.5 * 2.0 * cells.points[:, 0]}
+        write_case(files[-1], cells, point_data=fields)
+    listed = "".join(f'<DataSet timestep="{0.1 * k}" file="run_{k}.vtu"/>' for k in range(3))
+    run = tmp_path / "run.pvd"
+    run.write_text(f'<VTKFile type="Collection"><Collection>{listed}</Collection></VTKFile>')
+    box = fvcheck.ControlSurface.box(-0.6, -0.5, 0.7, 0.6, name="box")
+    fluid = fvcheck.Fluid(density=1.5, viscosity=0.0)
+    found = fvcheck.report(run, box, ["mass"], bodies=["body-1"], fluid=fluid)
+    drag = [e.drag for e in found.found.forces.estimates]
+    # all is linear in space and time; the hole is a polygon in the circle of radius 0.2
+    assert len(drag) >= 3 and drag == pytest.approx(len(drag) * [drag[0]], abs=1e-9)
+    assert drag[0] == pytest.approx(1.5 * 2.0 * np.pi * 0.04, rel=0.05)
+    assert found.found.forces == found.found.history.forces[-1]
+    page = check_page(found.html)
+    assert "figure-force-history-1" in page.ids
 
 
 def test_files_on_other_meshes_give_a_study():

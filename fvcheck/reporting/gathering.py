@@ -13,6 +13,7 @@ from fvcheck.diagnosis.diagnosing import diagnose_open
 from fvcheck.errors import FieldError, MeshError, SetupError
 from fvcheck.evolution import moved
 from fvcheck.flow import Flow, flow_of_export, stored_flow
+from fvcheck.forceseries import force_series
 from fvcheck.hints import Hint
 from fvcheck.laws import Law
 from fvcheck.ledger import Result
@@ -23,7 +24,7 @@ from fvcheck.routes import Forces, forces
 from fvcheck.series import Series, file_list, open_series
 from fvcheck.sources import Source
 from fvcheck.surfaces import ControlSurface, name_all
-from fvcheck.timeseries import history
+from fvcheck.timeseries import history, with_forces
 from fvcheck.verdict import OPEN
 from fvcheck.volume import SampledVolume
 
@@ -50,6 +51,12 @@ class Question:
     kind: str = "auto"
     steady: bool = False
     reading: Mapping[str, Any] = field(default_factory=dict)
+
+    @property
+    def of_forces(self) -> dict[str, Any]:
+        """The settings of `forces`."""
+        told = {name: reference for name, reference in (self.bodies or {}).items() if reference is not None}
+        return {"about": self.moment_about, "reference": told or None, "wake_line": self.wake_line}
 
     @property
     def judged(self) -> dict[str, Any]:
@@ -174,6 +181,16 @@ def _of_series(named: Sequence[Path], asked: Question, tell: Callable[[str], Non
         on_step=lambda entry, total: tell(f"snapshot {entry.number}"),
         **asked.judged,
     )
+    last_forces: Forces | None = None
+    left_out: tuple[str, ...] = ()
+    if asked.bodies:
+        try:
+            more = force_series(
+                series, list(asked.bodies), on_step=lambda total: tell("forces"), **asked.of_forces
+            )
+            found, last_forces = with_forces(found, more), more.found[-1]
+        except (FieldError, MeshError) as error:
+            left_out = (f"Forces: {error}",)
     flow = series.flow(len(series) - 1)
     chosen = list(asked.surfaces or default_surfaces(series.flow(0)))
     if len({one.name for one in chosen}) < len(chosen) or not all(one.name for one in chosen):
@@ -182,7 +199,12 @@ def _of_series(named: Sequence[Path], asked: Question, tell: Callable[[str], Non
     files = tuple(dict.fromkeys(str(snapshot.export.path) for snapshot in series.snapshots))
     last = found.entries[-1].result
     result = Result(last.case, last.ledgers, found.hints)
-    return Gathered(asked, flow, result, volumes, laws, files, history=found)
+    return Gathered(
+        *(asked, flow, result, volumes, laws, files),
+        history=found,
+        forces=last_forces,
+        left_out=left_out,
+    )
 
 
 def _moved(surface: ControlSurface, series: Series) -> ControlSurface:
@@ -218,21 +240,11 @@ def _of_meshes(named: Sequence[Path], asked: Question, tell: Callable[[str], Non
 def _finish(found: Gathered, tell: Callable[[str], None]) -> Gathered:
     """With forces on the bodies that were named, and a diagnosis where a row is open."""
     asked, flow = found.question, found.flow
-    left_out: list[str] = []
-    if asked.bodies:
+    left_out = list(found.left_out)
+    if asked.bodies and found.history is None:
         tell("forces")
         try:
-            told = {name: reference for name, reference in asked.bodies.items() if reference is not None}
-            found = replace(
-                found,
-                forces=forces(
-                    flow,
-                    list(asked.bodies),
-                    about=asked.moment_about,
-                    reference=told or None,
-                    wake_line=asked.wake_line,
-                ),
-            )
+            found = replace(found, forces=forces(flow, list(asked.bodies), **asked.of_forces))
         except (FieldError, MeshError) as error:
             left_out.append(f"Forces: {error}")
     open_laws = [row.law for ledger in found.result.ledgers for row in ledger.rows if row.verdict == OPEN]

@@ -12,7 +12,6 @@ from fvcheck.ledger import Ledger
 from fvcheck.meshstudy import Quantity, Study
 from fvcheck.overtime import History
 from fvcheck.reporting.style import GRID, INK, MARKS, MUTED, SERIES, Drawing, plain
-from fvcheck.reporting.tables import route_name
 from fvcheck.routes import Estimate, Forces
 from fvcheck.text.numbers import exponent, percent, short, unit
 
@@ -36,7 +35,48 @@ def history_drawings(history: History) -> list[Drawing]:
         title = f"{plain(ledger.name)} over the {kind}s"
         draw = partial(_history, history, ledger)
         out.append(Drawing(f"history-{number}", title, words, draw))
+    for number, body in enumerate(history.bodies, start=1):
+        if history.routes_of(body):
+            out.append(_forces_over_steps(history, body, number))
     return out
+
+
+def _forces_over_steps(history: History, body: str, number: int) -> Drawing:
+    """Drag and lift by every route, one panel each."""
+    name, steps = history.forces[-1].unit, f"{_over(history)}s"
+    told = []
+    for route in history.routes_of(body):
+        drag, lift = (history.force_values(body, route, what)[0] for what in ("drag", "lift"))
+        told.append(f"{route}: drag {_range(drag)}, lift {_range(lift)} {name}.")
+    words = f"Drag and lift on {plain(body)} over {len(history.entries)} {steps}, by route. "
+
+    def draw() -> Any:
+        from matplotlib.figure import Figure
+
+        figure = Figure(figsize=(9.6, 5.2), layout="constrained")
+        panels = figure.subplots(2, 1, sharex=True)
+        for panel, what in zip(panels, ("drag", "lift")):
+            lines = {route: history.force_values(body, route, what) for route in history.routes_of(body)}
+            power = exponent([v for values, _ in lines.values() for v in values.tolist() if np.isfinite(v)])
+            for k, (route, (values, half)) in enumerate(lines.items()):
+                values, half, look = values / 10.0**power, half / 10.0**power, _look(history, k)
+                panel.plot(history.steps, values, label=plain(route)[:34], **look)
+                panel.fill_between(
+                    history.steps, values - half, values + half, color=look["color"], alpha=0.16, lw=0
+                )
+            panel.set_title(f"{what}, sampling bands shaded")
+            panel.set_ylabel(unit(name, power, True))
+            panel.grid(True, lw=0.6)
+        panels[0].legend(loc="center left", bbox_to_anchor=(1.0, 0.5))
+        panels[1].set_xlabel(_over(history))
+        return figure
+
+    title = f"Force on {plain(body)} over the {steps}"
+    return Drawing(f"force-history-{number}", title, words + plain(" ".join(told)), draw)
+
+
+def _range(values: Array) -> str:
+    return f"{short(float(np.nanmin(values)))} to {short(float(np.nanmax(values)))}"
 
 
 def _first(history: History, ledger: Ledger, label: str) -> float | None:
@@ -169,9 +209,9 @@ def forces_drawing(found: Forces, number: int, body: str) -> Drawing | None:
     mine = [e for e in found.estimates if e.body == body and e.drag is not None]
     if not mine:
         return None
-    name = "N" if found.case.get("depth") is not None or found.case.get("axis") else "N/m"
+    name = found.unit
     words = f"Drag and lift on {plain(body)} by {len(mine)} routes. " + " ".join(
-        f"{plain(route_name(e))}: drag {short(e.drag)} ±{short(e.band('drag'), 2)}, "
+        f"{plain(e.label)}: drag {short(e.drag)} ±{short(e.band('drag'), 2)}, "
         f"lift {short(e.lift)} ±{short(e.band('lift'), 2)} {name}."
         for e in mine
     )
@@ -183,7 +223,7 @@ def forces_drawing(found: Forces, number: int, body: str) -> Drawing | None:
         panels = figure.subplots(1, 2, sharey=True)
         for panel, what in zip(panels, ("drag", "lift")):
             _routes(panel, mine, what, name)
-        panels[0].set_yticks(range(len(mine)), [plain(route_name(e))[:34] for e in mine])
+        panels[0].set_yticks(range(len(mine)), [plain(e.label)[:34] for e in mine])
         panels[0].set_ylim(len(mine) - 0.4, -0.6)
         return figure
 

@@ -199,7 +199,7 @@ def routes(found: Forces, body: str) -> list[Table]:
     titles += ["moment [N m]" if name == "N" else "moment [N m/m]", "±data", "±mesh"]
     rows = []
     for e in mine:
-        cells = [word(f"{route_name(e)}: {e.refused}" if e.refused else route_name(e))]
+        cells = [word(f"{e.label}: {e.refused}" if e.refused else e.label)]
         for what in ("drag", "lift", "moment"):
             cells.append(number(getattr(e, what)))
             cells += [_band(e, what, kind) for kind in ("sampling", "resolution")]
@@ -210,7 +210,7 @@ def routes(found: Forces, body: str) -> list[Table]:
             (f"{what}{band}", k) for what in ("drag", "lift", "moment") for band, k in (("", 5), ("_band", 2))
         ]
         rows = [
-            [word(route_name(e)), *(number(e.coefficients[n], short(e.coefficients[n], k)) for n, k in names)]
+            [word(e.label), *(number(e.coefficients[n], short(e.coefficients[n], k)) for n, k in names)]
             for e in mine
             if e.coefficients and not e.refused
         ]
@@ -218,11 +218,6 @@ def routes(found: Forces, body: str) -> list[Table]:
             table("Coefficients", ("route", "drag", "±data", "lift", "±data", "moment", "±data"), rows)
         )
     return out
-
-
-def route_name(e: Estimate) -> str:
-    """The route, with the distance where it is measured away from the body."""
-    return e.method if e.method == "body-surface" else e.label
 
 
 def _band(e: Estimate, what: str, kind: str) -> Cell:
