@@ -121,6 +121,17 @@ def test_damage_is_told_where_the_array_is_wanted_and_only_there(tmp_path):
         inspect_file(path, fluid=FLUID)
 
 
+def test_a_file_written_anew_between_mesh_and_field_is_refused(tmp_path):
+    path = with_another_array(tmp_path, "")
+    (piece,) = open_export(path).load(0)
+    path.write_text(path.read_text() + "\n")
+    with pytest.raises(FormatError, match="written anew"):
+        np.asarray(piece.point_data["p"])
+    path.unlink()
+    with pytest.raises(FormatError, match="written anew"):
+        np.asarray(piece.point_data["T"])
+
+
 def test_an_array_that_the_memory_cannot_hold_is_refused_in_one_line():
     def give():
         raise MemoryError

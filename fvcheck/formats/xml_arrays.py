@@ -23,7 +23,7 @@ from fvcheck.errors import FormatError
 from fvcheck.formats.check import DAMAGED
 from fvcheck.formats.number_text import parse
 from fvcheck.formats.xml_bytes import SPACE, Coded, Held, Raw, Source, Untidy
-from fvcheck.formats.xml_scan import Document, Element
+from fvcheck.formats.xml_scan import Document, Element, state_of
 from fvcheck.mesh.piece import Array
 from fvcheck.mesh.stored import stored
 
@@ -133,6 +133,8 @@ class ArrayReader:
         """
         where = self._where(element)
         dtype, components = self.declared(element)
+        if state_of(self.path) != self.document.state:
+            raise FormatError("the file was written anew meanwhile", where=where, mend="Read it again.")
         want = None if tuples is None else tuples * components
         form = element.attributes.get("format", "ascii")
         if form == "ascii":

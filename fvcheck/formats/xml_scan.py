@@ -66,11 +66,15 @@ class Appended:
 
 @dataclass(frozen=True, eq=False)
 class Document:
-    """A scanned file: its root element ``VTKFile`` and its appended data, if any."""
+    """A scanned file: its root element ``VTKFile`` and its appended data, if any.
+
+    state : of the file when it was scanned, see `state_of`
+    """
 
     path: Path
     root: Element
     appended: Appended | None
+    state: tuple[int, int]
 
     @property
     def type(self) -> str:
@@ -196,6 +200,7 @@ def scan(path: Path, stop_at: str = "") -> Document:
     """
     scanner = _Scanner(path, stop_at)
     try:
+        state = state_of(path)
         with path.open("rb") as stream:
             scanner.run(stream)
     except _Stop:
@@ -214,7 +219,16 @@ def scan(path: Path, stop_at: str = "") -> Document:
     appended = None
     if scanner.appended_at is not None:
         appended = _locate(path, scanner.appended_at, scanner.appended_raw)
-    return Document(path, scanner.root, appended)
+    return Document(path, scanner.root, appended, state)
+
+
+def state_of(path: Path) -> tuple[int, int]:
+    """What tells that a file was written anew: its time of change and its size; zeros where it is gone."""
+    try:
+        found = path.stat()
+    except OSError:
+        return 0, 0
+    return found.st_mtime_ns, found.st_size
 
 
 def _locate(path: Path, tag_at: int, raw: bool) -> Appended:
