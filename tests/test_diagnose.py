@@ -127,6 +127,44 @@ def test_conductivity_and_specific_heat_are_named_both_as_only_their_ratio_shows
         assert told[name].interval[0] <= value <= told[name].interval[1]
 
 
+def test_a_plane_run_read_as_axisymmetric_is_named():
+    flow = trials.exact_flow(exact.hiemenz(), 1500, "point", symmetry="axisymmetric", axis="x")
+    (why,) = fvcheck.diagnose(flow, ["mass"]).why
+    _, told = only(why)
+    assert told.coefficient == pytest.approx(1.0, abs=1e-5) and "planar" in told.setting
+    before, after = try_cause(flow, told, laws=["mass"])
+    assert before.verdict == "open" and after.verdict == "closed"
+
+
+@pytest.mark.parametrize(
+    ("name", "back"), [("celsius", lambda t: t - 273.15), ("fahrenheit", lambda t: 1.8 * t - 459.67)]
+)
+@pytest.mark.parametrize("where", ["point", "average"])
+def test_a_gas_whose_temperature_is_not_in_kelvin_is_named(name, back, where):
+    # the isentropic vortex at 300 K; its density follows from pressure and temperature
+    vortex = replace(exact.isentropic_vortex(), domain=(-3.5, -3.5, 3.5, 3.5))
+    flow = trials.exact_flow(vortex, 3000, where)
+    pressure, density = flow.fields["pressure"], flow.fields["density"]
+    ratio = pressure.values / density.values
+    kelvin = 300.0 * ratio / ratio.mean()
+    fluid = replace(flow.fluid, gas_constant=float(ratio.mean() / 300.0))
+    fields = {role: field for role, field in flow.fields.items() if role != "density"}
+
+    def read(temperature):
+        field = replace(pressure, name="T", values=temperature)
+        return replace(flow, fluid=fluid, fields={**fields, "temperature": field})
+
+    (why,) = fvcheck.diagnose(read(back(kelvin)), ["mass"]).why
+    assert name in {c.cause.name for c in why.named}
+    told = next(c.told for c in why.named if c.cause.name == name)
+    assert abs(told.coefficient - 1.0) < 0.02
+    # with the change it is the right flow
+    np.testing.assert_allclose(
+        told.change(read(back(kelvin))).fields["temperature"].values, kelvin, rtol=1e-12
+    )
+    assert not fvcheck.diagnose(read(kelvin), ["mass"]).open
+
+
 def test_an_axisymmetric_run_read_as_plane_is_named():
     flow = trials.exact_flow(exact.landau_jet(), 1500, "point")
     (why,) = fvcheck.diagnose(flow, ["mass"]).why

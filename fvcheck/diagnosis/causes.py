@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Callable
 from dataclasses import replace
+from functools import partial
 
 import numpy as np
 
@@ -14,9 +15,11 @@ from fvcheck.diagnosis.cause import (
     is_number,
     linear,
 )
+from fvcheck.diagnosis.columns import KELVIN
 from fvcheck.diagnosis.energy_causes import energy_causes, heat_causes
 from fvcheck.diagnosis.fitting import Fit
 from fvcheck.diagnosis.momentum_causes import momentum_causes
+from fvcheck.flow import Flow
 
 Array = np.ndarray
 
@@ -29,7 +32,7 @@ def causes_of(law: str, known: Setting, columns: set[str]) -> list[Cause]:
         "heat": heat_causes,
         "total-energy": energy_causes,
     }.get(law)
-    found = [] if make is None else make(known)
+    found = [] if make is None else [*make(known), *scale_causes(law)]
     return [cause for cause in found if set(cause.model.columns) <= columns]
 
 
@@ -68,4 +71,44 @@ def mass_causes(known: Setting) -> list[Cause]:
 
         return tell
 
-    return [Cause(f"axisymmetric-{a}", linear(f"spreading-{a}"), turned(a)) for a in "xy"]
+    def flat(fit: Fit) -> Told | None:
+        value, half = float(fit.theta[0]), float(fit.half[0])
+        if not is_number(value, half, 1.0) or half > 0.5:
+            return None
+        return Told(
+            "the run is plane and was read as axisymmetric",
+            value,
+            (value - half, value + half),
+            'symmetry = "planar": leave --axisymmetric out',
+            lambda flow: replace(flow, case=replace(flow.case, symmetry="planar", axis=None)),
+        )
+
+    return [
+        *(Cause(f"axisymmetric-{a}", linear(f"spreading-{a}"), turned(a)) for a in "xy"),
+        Cause("plane", linear("gathering"), flat, fixed=True),
+    ]
+
+
+def scale_causes(law: str) -> list[Cause]:
+    """A temperature of a gas that is not in kelvin, as the law sees it."""
+    return [Cause(name, linear(f"{name}:{law}"), partial(_not_kelvin, name), fixed=True) for name in KELVIN]
+
+
+def _not_kelvin(name: str, fit: Fit) -> Told | None:
+    value, half = float(fit.theta[0]), float(fit.half[0])
+    if not is_number(value, half, 1.0) or half > 0.5:
+        return None
+
+    def change(flow: Flow) -> Flow:
+        old = flow.fields["temperature"]
+        rim = None if old.rim is None else KELVIN[name](np.asarray(old.rim, float))
+        new = replace(old, values=KELVIN[name](np.asarray(old.values, float)), rim=rim)
+        return replace(flow, fields={**flow.fields, "temperature": new})
+
+    return Told(
+        f"the temperature is in degrees {name.capitalize()}, a gas needs kelvin",
+        value,
+        (value - half, value + half),
+        "export the temperature in kelvin",
+        change,
+    )

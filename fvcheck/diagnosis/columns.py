@@ -58,6 +58,36 @@ def _spread_from(axis: int) -> Callable[[State], Array]:
     return amount
 
 
+# Scales that a temperature may be in, and what they are in kelvin.
+KELVIN: dict[str, Callable[[Array], Array]] = {
+    "celsius": lambda t: t + 273.15,
+    "fahrenheit": lambda t: (t + 459.67) / 1.8,
+}
+
+
+def _denser(kelvin: Callable[[Array], Array]) -> Callable[[State], Array]:
+    """Share by which the density of a gas changes whose temperature is not in kelvin: ρ = p/(R T)."""
+    return lambda s: s.temperature / kelvin(s.temperature) - 1.0
+
+
+def _rescaled(kelvin: Callable[[Array], Array], law: str) -> Callable[[State, Array], Array]:
+    """What all that the flow carries changes by with that density: ρ, ρu or ½ρu²."""
+    share = _denser(kelvin)
+
+    def flux(s: State, n: Array) -> Array:
+        mass = column(share(s) * s.density * _through(s, n))
+        if law == "momentum":
+            return mass * s.velocity[:, :2]
+        return mass if law == "mass" else mass * column(0.5 * s.speed2)
+
+    return flux
+
+
+def _from_pressure_and_temperature(flow: Flow) -> bool:
+    """Whether the density follows from both."""
+    return flow.fluid.ideal_gas and not {"density", "momentum"} & set(flow.fields)
+
+
 def terms_of(flow: Flow, laws: tuple[str, ...]) -> dict[str, Term]:
     """The signatures that the laws, and the fields of the flow, give a sense to."""
     out: dict[str, Term] = {}
@@ -86,6 +116,13 @@ def terms_of(flow: Flow, laws: tuple[str, ...]) -> dict[str, Term]:
         out["heating"] = Term(area=lambda s: np.full((len(s.x), 1), -1.0))
         out["pressure-carried"] = Term(line=lambda s, n: column(s.pressure * _through(s, n)))
         out["kinetic-carried"] = Term(line=lambda s, n: column(0.5 * s.density * s.speed2 * _through(s, n)))
+    if "temperature" in flow.fields and _from_pressure_and_temperature(flow):
+        for name, kelvin in KELVIN.items():
+            for law in {"mass", "momentum", "total-energy"} & set(laws):
+                out[f"{name}:{law}"] = Term(line=_rescaled(kelvin, law))
+    if "mass" in laws and flow.case.axis is not None:
+        spread = _spread_from(flow.case.axis)
+        out["gathering"] = Term(area=lambda s: -spread(s))
     if "mass" in laws and flow.case.axis is None:
         x0, y0, _, _ = flow.mesh.bounds
         size = max(abs(bound) for bound in flow.mesh.bounds)

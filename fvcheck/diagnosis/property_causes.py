@@ -39,7 +39,7 @@ def tell_viscosity(known: Setting, fit: Fit) -> Told | None:
 
 def tell_density(known: Setting, fit: Fit) -> Told | None:
     found = factor_of(fit)
-    if found is None:
+    if found is None or found[1] <= 0.0:  # no density may as well be zero
         return None
     f, low, high = found
     fluid = known.flow.fluid
