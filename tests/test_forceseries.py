@@ -139,6 +139,7 @@ def test_history_carries_forces_into_every_form(tmp_path, capsys):
     options += ["--json", str(out), "--csv", str(table), "--plot", str(plot)]
     assert run(["history", *files, "-c", check, *options]) in (0, 3)
     text = capsys.readouterr().out
+    assert "patch-4  ·  drag by route, N/m" in text and max(map(len, text.splitlines())) <= 80
     assert "drag, band [N/m]" in text and "lift, control-surface" in " ".join(text.split())
     told = json.loads(out.read_text(encoding="utf-8"))
     flow = fvcheck.open_flow(

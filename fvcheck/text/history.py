@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Iterator
 
 from rich.console import RenderableType
@@ -28,6 +29,7 @@ _LINES = 24
 
 # Columns of numbers beside step, time and verdict that 80 columns hold.
 _COLUMNS = 5
+_ROUTES = 6
 
 _ABBREVIATED = {"momentum": "mom.", "kinetic-energy": "kinetic", "total-energy": "energy", "angular": "ang."}
 
@@ -42,6 +44,7 @@ def history_text(history: History, quiet: bool = False) -> str:
     parts: list[RenderableType] = [heading(str(last.case["file"]), *facts), Text()]
     for number, ledger in enumerate(last.ledgers):
         parts += [*_steps(history, number, ledger), Text()]
+    parts += [*_forces(history)]
     if history.trends:
         parts += [*_trends(history)]
     if history.totals:
@@ -90,6 +93,36 @@ def _steps(history: History, number: int, ledger: Ledger) -> Iterator[Renderable
     left = len(history.entries) - len(chosen)
     if left or len(ledger.rows) > _COLUMNS:
         yield Text(f"({left} steps between are in --csv and --json, with all laws)", style="dim")
+
+
+def _forces(history: History) -> Iterator[RenderableType]:
+    """Drag and lift of each body, step by step, route beside route."""
+    for body in history.bodies:
+        told = history.routes_of(body)
+        routes = told[:_ROUTES]
+        heads = [_broken(route) for route in routes]
+        lines = max((head.count("\n") for head in heads), default=0)
+        for number in ("drag", "lift"):
+            values = [history.force_values(body, route, number)[0] for route in routes]
+            yield heading(body, f"{number} by route, {history.forces[-1].unit_of(number)}")
+            first = "time" if history.unsteady else "iteration"
+            titles = ("step", first, *heads)
+            table = plain_table(*("\n" * (lines - title.count("\n")) + title for title in titles))
+            for k in shown(len(history.entries), _LINES):
+                entry = history.entries[k]
+                at = short(entry.time) if history.unsteady else str(entry.number)
+                mine = [None if math.isnan(of_route[k]) else of_route[k] for of_route in values]
+                table.add_row(str(k), at, *(short(value) for value in mine))
+            yield table
+            if len(told) > len(routes):
+                yield Text(f"({len(told) - len(routes)} more routes are in --csv and --json)", style="dim")
+            yield Text()
+
+
+def _broken(route: str) -> str:
+    """A route in lines that a column of numbers has room for."""
+    method, _, place = route.partition(" ")
+    return "\n".join([*method.replace("-", "-\n").split("\n"), *([place[:10]] if place else [])])
 
 
 def _heading(label: str) -> str:
