@@ -27,6 +27,16 @@ _REACH = 2
 
 
 @dataclass(frozen=True)
+class Taken:
+    """What a snapshot by itself says of one surface: ledger without storage, levels, contents by law."""
+
+    time: float
+    ledger: Ledger
+    levels: dict[str, float]
+    contents: dict[str, Content] | None
+
+
+@dataclass(frozen=True)
 class Total:
     """A law between two times: change of content = time integral of what enters and is made.
 
@@ -78,7 +88,8 @@ class Evolution:
         self._volume: SampledVolume | None = None
         self._moved = False  # whether the mesh moved when it was compiled
         self._laws: list[Law] = []
-        self._start: tuple[ControlSurface, float] | None = None
+        self.start: tuple[ControlSurface, float] | None = None
+        """The surface as it is placed at the first snapshot, and the time of that."""
         self.times: list[float] = []
         self.bare: list[Ledger] = []
         self._contents: dict[int, dict[str, Content]] = {}
@@ -87,27 +98,40 @@ class Evolution:
 
     def take(self, flow: Flow, point_velocity: Array | None = None) -> Ledger:
         """The ledger of the next snapshot, without what its neighbours in time have to say."""
+        taken = self.measured(flow, point_velocity)
+        self.add(taken, f"{flow.case.file}, step {flow.case.step}")
+        return taken.ledger
+
+    def measured(self, flow: Flow, point_velocity: Array | None = None) -> Taken:
+        """What a snapshot says; it is not taken in."""
         volume = self._sample(flow, point_velocity)
         ledger = ledger_of(volume, self._laws, *self._settings, strict=self._names is not None)
+        contents = None
+        if self.unsteady and ledger.closed and not volume.has_rates:
+            judged = {row.law for row in ledger.rows}
+            contents = {law.name: content_of(volume, law) for law in self._laws if law.name in judged}
+        time = np.nan if flow.case.time is None else flow.case.time
+        levels = {law.name: volume.level(law) or 0.0 for law in self._laws}
+        return Taken(time, ledger, levels, contents)
+
+    def add(self, taken: Taken, where: str) -> None:
+        """Take in the next snapshot, measured here or elsewhere; FieldError for one with other laws."""
+        ledger = taken.ledger
         if self.bare and [row.label for row in ledger.rows] != [row.label for row in self.bare[0].rows]:
             raise FieldError(
                 "this snapshot has other fields than the first, so that other laws can be evaluated",
-                where=f"{flow.case.file}, step {flow.case.step}",
+                where=where,
                 mend="Name the laws that all of them allow, such as --law mass,momentum.",
             )
-        self.times.append(np.nan if flow.case.time is None else flow.case.time)
+        self.times.append(taken.time)
         self.bare.append(ledger)
-        self._levels.append({law.name: volume.level(law) or 0.0 for law in self._laws})
-        if self.unsteady and ledger.closed and not volume.has_rates:
+        self._levels.append(taken.levels)
+        if taken.contents is not None:
             number = len(self.bare) - 1
-            judged = {row.law for row in ledger.rows}
-            self._contents[number] = {
-                law.name: content_of(volume, law) for law in self._laws if law.name in judged
-            }
+            self._contents[number] = taken.contents
             # The first one stays, for the change over all.
             for old in [k for k in self._contents if 0 < k < number - 2 * _REACH]:
                 del self._contents[old]
-        return ledger
 
     def needed(self) -> dict[str, Array | None] | None:
         """`SampledVolume.needed` of the volume compiled last; None before, and for one that moves."""
@@ -144,9 +168,9 @@ class Evolution:
 
     def _placed(self, flow: Flow) -> ControlSurface:
         """The surface at this time: drawn at the first snapshot, moved on from there."""
-        if self._start is None:
-            self._start = (self.surface.resolve(flow.mesh), flow.case.time or 0.0)
-        placed, start = self._start
+        if self.start is None:
+            self.start = (self.surface.resolve(flow.mesh), flow.case.time or 0.0)
+        placed, start = self.start
         if not self.unsteady:
             return self.surface.resolve(flow.mesh) if self.surface.kind == "around" else placed
         return moved(placed, (flow.case.time or 0.0) - start)

@@ -2,14 +2,15 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterable, Iterator, Sequence
-from typing import Any
+from collections.abc import Callable, Iterable, Iterator, Sequence
+from dataclasses import dataclass
+from typing import Any, TypeVar
 
 import numpy as np
 
 from fvcheck.balancing import default_surfaces
-from fvcheck.errors import SetupError
-from fvcheck.evolution import Evolution
+from fvcheck.errors import FvcheckError, SetupError
+from fvcheck.evolution import Evolution, Taken
 from fvcheck.flow import Flow
 from fvcheck.hints import Hint
 from fvcheck.laws import Law
@@ -20,6 +21,27 @@ from fvcheck.surfaces import ControlSurface
 from fvcheck.trends import Trend, trend_of
 
 Array = np.ndarray
+T = TypeVar("T")
+
+
+@dataclass(frozen=True)
+class Record:
+    """What a snapshot says by itself: of each surface, its case, remarks of the series and of the flow."""
+
+    taken: tuple[Taken, ...]
+    case: dict[str, Any]
+    notes: tuple[Hint, ...]
+    hints: tuple[Hint, ...]
+
+
+def named_at(number: int, function: Callable[..., T], *arguments: Any) -> T:
+    """``function(*arguments)``; an error of a later snapshot that does not say where names it."""
+    try:
+        return function(*arguments)
+    except FvcheckError as error:
+        if number == 0 or error.where:
+            raise
+        raise type(error)(error.what, where=f"snapshot {number}", mend=error.mend) from None
 
 
 class Recorder:
@@ -44,6 +66,7 @@ class Recorder:
         self._cases: list[dict[str, Any]] = []
         self._final: list[tuple[Any, ...]] = []
         self._hints: dict[Hint, None] = dict.fromkeys(series.hints)
+        self._notes: list[Hint] = []
         self.unsteady = series.times is not None and len(series) > 0
 
     @property
@@ -53,7 +76,28 @@ class Recorder:
 
     def take(self, look_ahead: bool = True) -> Entry:
         """The next snapshot. ``look_ahead``: those behind it may be read for the motion of the mesh."""
-        number = self.taken
+        return self.add(self._measured(self.taken, look_ahead))
+
+    def measured(self, first: int, last: int, starts: Sequence[tuple[ControlSurface, float]]) -> list[Record]:
+        """What snapshots first … last-1 say, for another recorder to add, which began with ``starts``."""
+        self._begin([surface for surface, _ in starts])
+        for evolution, start in zip(self._evolutions, starts):
+            evolution.start = start
+        # The one before is looked at too, so that mesh and fits are those of one that comes from there.
+        return [named_at(number, self._measured, number) for number in range(first - 1, last)][1:]
+
+    @property
+    def judged(self) -> dict[str, Any]:
+        """Laws and settings, as arguments of another recorder."""
+        return {"laws": self._laws} | self._settings
+
+    @property
+    def starts(self) -> list[tuple[ControlSurface, float]]:
+        """Surfaces as they were placed at the first snapshot, and its time."""
+        return [evolution.start for evolution in self._evolutions if evolution.start is not None]
+
+    def _measured(self, number: int, look_ahead: bool = True) -> Record:
+        self._notes = []
         velocity = None
         if self.unsteady and len(self.series) > 1 and (look_ahead or number > 0):
             velocity = self._velocity(number)
@@ -65,14 +109,22 @@ class Recorder:
                 Hint("rates-over-series", "rates of change are in the export: storage is taken from them")
             )
         before = [evolution.recompiled for evolution in self._evolutions]
-        for evolution in self._evolutions:
-            evolution.take(flow, velocity)
+        taken = tuple(evolution.measured(flow, velocity) for evolution in self._evolutions)
         if number > 0 and velocity is None and before != [e.recompiled for e in self._evolutions]:
             self._note_mesh(number, flow)
-        self._cases.append(case_dict(flow))
-        self._hints |= dict.fromkeys(flow.hints)
+        return Record(taken, case_dict(flow), tuple(self._notes), flow.hints)
+
+    def add(self, record: Record) -> Entry:
+        """Take in the next snapshot."""
+        for evolution, taken in zip(self._evolutions, record.taken):
+            evolution.add(taken, f"{record.case['file']}, step {record.case['step']}")
+        for note in record.notes:
+            if not any(known.code == note.code for known in self._hints):
+                self._hints[note] = None
+        self._cases.append(record.case)
+        self._hints |= dict.fromkeys(record.hints)
         self._settle()
-        return self.entry(number)
+        return self.entry(self.taken - 1)
 
     def _start(self, flow: Flow) -> None:
         surfaces = self._surfaces or default_surfaces(flow)
@@ -81,6 +133,9 @@ class Recorder:
             from fvcheck.surfaces import name_all
 
             surfaces = list(name_all(surfaces))
+        self._begin(surfaces)
+
+    def _begin(self, surfaces: Sequence[ControlSurface]) -> None:
         self._evolutions = [
             Evolution(surface, self._laws, unsteady=self.unsteady, **self._settings) for surface in surfaces
         ]
@@ -128,9 +183,8 @@ class Recorder:
             evolution.shorten(self.taken)
 
     def _note(self, hint: Hint) -> None:
-        """Take in a remark of a new kind."""
-        if not any(known.code == hint.code for known in self._hints):
-            self._hints[hint] = None
+        """A remark of the snapshot at hand; one of its kind is kept."""
+        self._notes.append(hint)
 
     def _settle(self) -> None:
         """Keep what will not change any more, before the contents behind it are given up."""

@@ -7,13 +7,13 @@ from dataclasses import replace
 from pathlib import Path
 from typing import Any
 
-from fvcheck.errors import FvcheckError
 from fvcheck.forceseries import ForceSeries, force_series
 from fvcheck.laws import Law
 from fvcheck.mesh.piece import Export
 from fvcheck.overtime import Entry, History
 from fvcheck.recording import Recorder
 from fvcheck.series import Series, open_series
+from fvcheck.spreading import entries_of
 from fvcheck.surfaces import ControlSurface
 
 
@@ -32,6 +32,8 @@ def history(
     forces: Mapping[str, Any] | None = None,
     on_step: Callable[[Entry, int], None] | None = None,
     on_force: Callable[[int], None] | None = None,
+    workers: int | None = None,
+    scheduler: str | None = None,
     **reading: Any,
 ) -> History:
     """The ledger of every snapshot of a run.
@@ -45,6 +47,8 @@ def history(
         of `fvcheck.forces` for them (see `fvcheck.forceseries`)
     on_step : called with each entry and the number of all, for a progress bar; on_force : with
         the number of all after the forces of each
+    workers, scheduler : snapshots are taken there, all but the first, as in
+        `fvcheck.spreading.entries_of`; forces are taken here
     reading : as in `open_flow`, ``step`` left out
 
     With times, the storage of each row is the rate of change of its content by
@@ -68,13 +72,7 @@ def history(
         about=about,
         reference=reference,
     )
-    for number in range(len(series)):
-        try:
-            entry = recorder.take()
-        except FvcheckError as error:
-            if number == 0 or error.where:
-                raise
-            raise type(error)(error.what, where=f"snapshot {number}", mend=error.mend) from None
+    for entry in entries_of(recorder, files, reading, workers=workers, scheduler=scheduler):
         if on_step is not None:
             on_step(entry, len(series))
     found = recorder.history()

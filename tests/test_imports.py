@@ -62,6 +62,7 @@ ROWS = [
         "trends",
         "overtime",
         "recording",
+        "spreading",
         "timeseries",
         "following",
         "convergence",

@@ -3,6 +3,7 @@
 import json
 from pathlib import Path
 
+import numpy as np
 import pytest
 
 import fvcheck
@@ -61,6 +62,77 @@ def test_check_files_on_workers_give_what_they_give_here(where, capsys):
     status, found = told(capsys, *words, *arguments(where))
     here, alone = told(capsys, *words, "--workers", "1")
     assert (status, without_times(found)) == (here, without_times(alone))
+
+
+def write_series(folder, moves=False):
+    """Twelve snapshots of a vortex that decays, at points of a mesh at rest or one that breathes."""
+    import pyvista
+
+    rng = np.random.default_rng(1)
+    n = 24
+    x, y = (part.ravel() for part in np.meshgrid(*2 * [np.linspace(0, 1, n + 1)]))
+    inner = (np.minimum(x, y) > 0) & (np.maximum(x, y) < 1)
+    x, y = (part + inner * rng.uniform(-0.2, 0.2, len(x)) / n for part in (x, y))
+    number = np.arange((n + 1) ** 2).reshape(n + 1, n + 1)
+    a, b, c, d = (
+        part.ravel() for part in (number[:-1, :-1], number[:-1, 1:], number[1:, 1:], number[1:, :-1])
+    )
+    cells = np.concatenate([np.stack([a, b, c], axis=1), np.stack([a, c, d], axis=1)])
+    lists = np.column_stack([np.full(len(cells), 3), cells]).ravel()
+    listed = ""
+    for step in range(12):
+        time = 0.07 * step + 0.01 * step**2
+        at = np.column_stack([x * (1 + 0.1 * moves * np.sin(time)), y, 0 * x])
+        grid = pyvista.UnstructuredGrid(lists, np.full(len(cells), 5, np.uint8), at)
+        u, v, decay = 2 * np.pi * at[:, 0], 2 * np.pi * at[:, 1], np.exp(-time)
+        grid.point_data["U"] = decay * np.column_stack([np.sin(u) * np.cos(v), -np.cos(u) * np.sin(v), 0 * u])
+        grid.point_data["p"] = 0.3 * decay**2 * (np.cos(2 * u) + np.cos(2 * v))
+        grid.save(folder / f"s{step:02d}.vtu")
+        listed += f'<DataSet timestep="{time}" file="s{step:02d}.vtu"/>'
+    path = folder / "run.pvd"
+    path.write_text(
+        f'<?xml version="1.0"?><VTKFile type="Collection"><Collection>{listed}</Collection></VTKFile>'
+    )
+    return path
+
+
+@pytest.mark.parametrize("case", ["times", "iterations", "moving mesh", "moving surface"])
+def test_snapshots_taken_on_workers_have_the_numbers_of_those_taken_here(case, where, tmp_path, capsys):
+    path = write_series(tmp_path, case == "moving mesh")
+    words = ["history", path, "-s", "o=circle(0.52, 0.48, 0.2)", "--density", "1.2", "--viscosity", "0.02"]
+    if case == "moving surface":
+        words[3] += " @ velocity(0.1, 0.05)"
+    if case == "iterations":
+        words += ["--steady", "-s", "domain()"]
+    assert told(capsys, *words, *arguments(where)) == told(capsys, *words)
+
+
+def test_a_snapshot_that_fails_on_a_worker_is_named_as_here(tmp_path, capsys):
+    path = write_series(tmp_path)
+    damaged = tmp_path / "s09.vtu"
+    damaged.write_bytes(damaged.read_bytes()[:-400])
+    words = ["history", str(path), "-s", "circle(0.5, 0.5, 0.2)", "--density", "1.2", "--law", "mass"]
+    said = []
+    for more in ([], ["--workers", "2"]):
+        assert run([*words, *more]) == 2
+        said.append(capsys.readouterr().err.splitlines()[-1])
+    assert said[0] == said[1]
+
+
+def test_a_run_that_still_writes_is_not_followed_by_workers(tmp_path, capsys):
+    words = [
+        "history",
+        str(tmp_path),
+        "--follow",
+        "-s",
+        "circle(0, 0, 1)",
+        "--density",
+        "1",
+        "--workers",
+        "2",
+    ]
+    assert run(words) == 2
+    assert "followed here" in capsys.readouterr().err
 
 
 def test_without_dask_a_scheduler_is_refused_by_naming_the_extra(monkeypatch, capsys):

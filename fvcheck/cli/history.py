@@ -7,7 +7,7 @@ from typing import TYPE_CHECKING, Annotated, Any
 
 from typer import Argument, Option
 
-from fvcheck.cli.options import FluidOptions, Limits, Output, Reading, SurfaceList, number, spread
+from fvcheck.cli.options import FluidOptions, Limits, Output, Reading, Spread, SurfaceList, number, spread
 from fvcheck.errors import SetupError
 
 if TYPE_CHECKING:
@@ -22,6 +22,7 @@ def command(
     reading: Reading,
     fluid: FluidOptions,
     output: Output,
+    run: Spread,
     files: Annotated[
         list[str] | None,
         Argument(metavar="FILES", help="A file with steps, files, or a pattern; a directory with --follow."),
@@ -98,6 +99,8 @@ def command(
     }
     wanted = _bodies(forces, body, settings, follow)
     silent = output.quiet or "-" in (output.json, csv)
+    if follow and (run.workers or run.scheduler):
+        raise SetupError("a run that still writes is followed here", mend="Leave --workers or --follow out.")
     if follow:
         interval = number(every, "--every", "--every SECONDS")
         if interval <= 0:
@@ -135,6 +138,8 @@ def command(
                 },
                 on_step=lambda _entry, total: advance(_steps(total, wanted)),
                 on_force=lambda total: advance(_steps(total, wanted)),
+                workers=run.workers,
+                scheduler=run.scheduler,
                 **judged,
                 **settings.reading,
             )
