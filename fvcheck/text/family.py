@@ -4,15 +4,18 @@ from __future__ import annotations
 
 import re
 from collections.abc import Sequence
+from typing import TYPE_CHECKING
 
 import numpy as np
 from rich.console import RenderableType
 from rich.text import Text
 
 from fvcheck.ledger import Ledger, Row
-from fvcheck.routes.sweep import Plateau, plateau
 from fvcheck.text.console import LEFT, heading, plain_table, rich_characters, verdict_text
 from fvcheck.text.numbers import decimals, exponent, scaled, short, unit
+
+if TYPE_CHECKING:
+    from fvcheck.routes.sweep import Plateau
 
 _MEMBER = re.compile(r"(.*)@([-+0-9.eE]+)")
 
@@ -74,5 +77,7 @@ def _has(ledger: Ledger, label: str) -> bool:
 
 
 def _level(positions: Sequence[float], column: Sequence[Row]) -> Plateau | None:
+    from fvcheck.routes.sweep import plateau  # with all routes of forces, which few ledgers need
+
     size = float(np.median([0.5 * (row.inflow + row.outflow) for row in column]))
     return plateau(positions, [row.flux for row in column], [row.sampling_band for row in column], size)
