@@ -232,7 +232,8 @@ PAGES: dict[str, Page] = {
         "A polynomial across a jump overshoots. There, values are interpolated linearly within the "
         "range of the "
         "data around, and the band takes the larger of the two steps between degrees.",
-        "Nothing for a shock. For a thin layer, refine there, or draw the surface where the flow is smooth.",
+        "Nothing for a shock. For a thin layer, refine there, or draw the surface where the flow is smooth. "
+        "On a coarse mesh a cell beside an axis or a corner may be taken for a jump: its band holds that.",
     ),
     "times-unused": Page(
         "Several files were given, and not each of them has a time of its own.",

@@ -477,7 +477,7 @@ class SampledVolume:
         """Remarks on what the laws left out, and on data that support less than the highest degree."""
         out = []
         low = 1.0 - self.degree_shares()[str(DEGREES[-1])]
-        if low > 0.0:
+        if low > 1e-9:
             out.append(
                 Hint(
                     "degree-fell",

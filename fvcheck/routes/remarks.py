@@ -23,7 +23,7 @@ def remarks(flow: Flow, body: str, found: Sequence[Estimate]) -> list[Hint]:
     direct = [e for e in found if e.method in DIRECT and not e.refused]
     if direct and not any("viscous" in e.parts for e in direct):
         out.append(Hint("inviscid", f"{body}: no viscosity is known: the force is without friction"))
-    low = {e.label: 1.0 - e.degrees["3"] for e in found if e.degrees.get("3", 1.0) < 1.0}
+    low = {e.label: 1.0 - e.degrees["3"] for e in found if e.degrees.get("3", 1.0) < 1.0 - 1e-9}
     if low:
         shares = ", ".join(f"{100 * share:.2g} % of {label}" for label, share in low.items())
         message = f"{body}: on {shares} the data jump, and plain linear sampling is used there"
