@@ -22,12 +22,16 @@ from fvcheck.mesh.piece import Export, Piece
 from fvcheck.surfaces import ControlSurface
 from fvcheck.tasks import run_tasks
 
+# Surfaces that run along boundary, which is kept anyway.
+_ALONG = ("domain", "patch")
+
 
 def open_near(
     export: Export,
-    surfaces: Sequence[ControlSurface] | None,
+    surfaces: Sequence[ControlSurface] | Callable[[Flow], Sequence[ControlSurface]] | None,
     laws: Iterable[str | Law] | None = None,
     *,
+    inside: bool | None = None,
     step: int | str = "last",
     read: Callable[..., Flow] = flow_of_export,
     workers: int | None = None,
@@ -36,10 +40,12 @@ def open_near(
 ) -> Flow:
     """A flow with what ledgers of ``surfaces`` need; of an export in one piece all of it.
 
-    surfaces : None for those of `fvcheck.balance_all`; what is drawn around a patch needs
-        the boundary first, so that the pieces are read twice
+    surfaces : None for those of `fvcheck.balance_all`, or what gives them for a flow that holds
+        the cells at the boundary only; what is drawn around a patch needs these first, too, so that
+        the pieces are read twice
     laws : as in `fvcheck.balance_all`. Where none of them integrates over the volume, cells
         inside of surfaces are dropped too
+    inside : whether these are needed, in place of what the laws say
     read : `flow_of_export`, or what takes its arguments
     workers, scheduler : pieces are read there, as in `fvcheck.tasks.each_done`
     reading : as in `flow_of_export`
@@ -55,17 +61,21 @@ def open_near(
     names = None if laws is None else list(laws)
     take = partial(_pieces, export, number, workers, scheduler)
     plane = reading.get("plane", "auto")
-    if surfaces and all(s.rings or s.kind in ("domain", "patch") for s in surfaces):
+    told = inside
+    if surfaces and not callable(surfaces) and all(s.rings or s.kind in _ALONG for s in surfaces):
         drawn = list(surfaces)
-        inside = _sampled_inside(export, number, names, reading)
+        if inside is None:
+            inside = _sampled_inside(export, number, names, reading)
     else:
         rim = flow_of_export(_with(export, take(Cutter.of((), plane, False))), **reading)
-        drawn = [surface.resolve(rim.mesh) for surface in surfaces or default_surfaces(rim)]
-        inside = needs_inside(rim, names)
+        wanted = surfaces(rim) if callable(surfaces) else surfaces or default_surfaces(rim)
+        drawn = [surface.resolve(rim.mesh) for surface in wanted]
+        if inside is None:
+            inside = needs_inside(rim, names)
         del rim
     if not inside:
         flow = read(_with(export, take(Cutter.of(drawn, plane, False))), **reading)
-        if not needs_inside(flow, names):
+        if told is False or not needs_inside(flow, names):
             return _near(flow, drawn, hollow=True)
         del flow  # the first cell misled
     if any(surface.kind == "domain" for surface in drawn):

@@ -168,3 +168,35 @@ def test_a_part_that_cannot_be_read_elsewhere_is_told_as_here(file, tmp_path):
     for spread in ({}, {"workers": 2}):
         with pytest.raises(fvcheck.FormatError, match=r"gone\.vtu"):
             open_near(open_export(tmp_path / "all.pvtu"), DRAWN, ["mass"], fluid=FLUID, **spread)
+
+
+def test_forces_need_the_boundary_first_and_then_what_lies_around_the_body(file):
+    from fvcheck.routes.region import surfaces_near
+
+    asked = {"wake_line": fvcheck.ControlSurface.line([(0.45, 0.05), (0.45, 0.45)])}
+    whole = fvcheck.forces(flow_of_export(open_export(file), fluid=FLUID), **asked)
+    for spread in ({}, {"workers": 2}):
+        flow = open_near(
+            open_export(file), partial(surfaces_near, **asked), inside=True, fluid=FLUID, **spread
+        )
+        assert flow.mesh.left_out > 0 and not flow.mesh.hollow
+        found = numbers(fvcheck.forces(flow, **asked).to_dict())
+        assert len(found) == len(numbers(whole.to_dict()))
+        for (name, value), (other_name, other) in zip(found, numbers(whole.to_dict()), strict=True):
+            assert name == other_name
+            if isinstance(value, float):
+                # Cells of a band are the same ones, summed with the same neighbours in other places.
+                assert value == pytest.approx(other, rel=1e-9, abs=1e-12), name
+            else:
+                assert value == other, name
+
+
+def test_the_forces_command_reads_a_partitioned_file_near_the_body(file, capsys):
+    from fvcheck.cli.app import run
+
+    words = ["forces", str(file), "--density", "1.2", "--viscosity", "0.02", "--json", "-"]
+    texts = []
+    for more in ([], ["--workers", "2"]):
+        assert run([*words, *more]) == 0
+        texts.append(capsys.readouterr().out)
+    assert texts[0] == texts[1]

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from functools import partial
 from typing import Annotated, Any
 
 from typer import Option
@@ -11,6 +12,7 @@ from fvcheck.cli.options import (
     OptionalFile,
     Output,
     Reading,
+    Spread,
     SurfaceList,
     number,
     spread,
@@ -35,6 +37,7 @@ def command(
     reading: Reading,
     fluid: FluidOptions,
     output: Output,
+    run: Spread,
     file: OptionalFile = None,
     body: Annotated[
         list[str] | None, _body(metavar="NAME", text="A body or patch; default every body. Repeatable.")
@@ -77,7 +80,9 @@ def command(
     from fvcheck.cli.settings import settle
     from fvcheck.flow import stored_flow
     from fvcheck.formats.registry import open_export
+    from fvcheck.opening import open_near
     from fvcheck.routes import forces
+    from fvcheck.routes.region import surfaces_near
     from fvcheck.surfaces import ControlSurface
     from fvcheck.surfaces.family import parse_family
     from fvcheck.text.forces import forces_text
@@ -100,7 +105,21 @@ def command(
         "direction": None if direction is None else vector(direction, "--direction", "--direction X,Y"),
         "reference": settings.bodies if reference is None else _reference(reference),
     }
-    flow = stored_flow(open_export(settings.file), step=settings.step, **settings.reading)
+    export = open_export(settings.file)
+    if export.steps > 1:  # held against another state as a whole
+        flow = stored_flow(export, step=settings.step, **settings.reading)
+    else:
+        drawn = ("distances", "surfaces", "band_between", "wake_line", "sweep")
+        near = partial(surfaces_near, body=names, **{name: options[name] for name in drawn})
+        flow = open_near(
+            export,
+            near,
+            inside=True,
+            step=settings.step,
+            workers=run.workers,
+            scheduler=run.scheduler,
+            **settings.reading,
+        )
     found = forces(flow, names, **options)
     show(output, found.to_dict, lambda: forces_text(found, output.quiet))
     # A body whose every route was refused is left undecided.
