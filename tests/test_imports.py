@@ -47,6 +47,8 @@ ROWS = [
         "ports",
         "plausible",
         "sources",
+        "checktable",
+        "checklimits",
         "checkmodel",
     ],
     [

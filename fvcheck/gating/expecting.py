@@ -10,7 +10,8 @@ from fvcheck.gating.outcome import MISSED, PASSED, UNUSABLE, Finding
 from fvcheck.verdict import EXIT_STATUS, MEANING
 
 if TYPE_CHECKING:
-    from fvcheck.checkmodel import CheckFile, Expectation, Limit
+    from fvcheck.checklimits import Expectation, Limit
+    from fvcheck.checkmodel import CheckFile
 
 Result = Mapping[str, Any]
 
