@@ -18,12 +18,15 @@ import pytest
 from forked import fvcheck as command
 
 import fvcheck
+from fvcheck import ControlSurface
 from fvcheck.cli.app import run
 from fvcheck.diagnosis import try_cause
 from fvcheck.diagnosis.cells import cell_ledgers
 from fvcheck.diagnosis.diagnosing import NONE_EXPLAINS
+from fvcheck.diagnosis.mapping import maps_of
 from fvcheck.diagnosis.tree import bisect
 from fvcheck.diagnosis.volumes import blocks_by_label, measure
+from fvcheck.diagnosis.where import _cell_values
 from fvcheck.laws import find_law
 
 CAVITY = trials.cavity("1e4")
@@ -274,6 +277,42 @@ def test_a_missing_force_is_spread_over_the_domain():
     assert [place.kind for place in found.where] == ["spread", "nowhere"]
 
 
+def test_a_chosen_region_is_diagnosed_by_itself():
+    flow = trials.exact_flow(exact.kovasznay(), 3000, "point")
+    x0, y0, x1, y1 = flow.mesh.bounds
+    h, rate = np.sqrt((x1 - x0) * (y1 - y0) / flow.mesh.n_cells), 0.02
+    centre = np.array([x0 + 0.75 * (x1 - x0), 0.5 * (y0 + y1)])
+    wrong = trials.with_source(flow, centre, 2.5 * h, rate)
+    middle = 0.5 * (x0 + x1)
+    left = ControlSurface.box(x0, y0, middle, y1)
+    right = ControlSurface.box(middle, y0, x1, y1)
+    assert not fvcheck.diagnose(wrong, ["mass"], region=left).open
+    found = fvcheck.diagnose(wrong, ["mass"], region=right)
+    (place,) = found.where
+    assert [np.hypot(*(np.array(r.centre) - centre)) < 2 * h for r in place.regions] == [True]
+    assert abs(place.regions[0].amount - rate) < max(place.regions[0].band, 0.01 * rate)
+    # cells keep the ledgers that they have in the whole; what was not looked at is told as unknown
+    whole = fvcheck.diagnose(wrong, ["mass"]).cells
+    one = _cell_values(found.cells, found.cells.columns["mass"], 0)
+    all_of_them = _cell_values(whole, whole.columns["mass"], 0)[found.cells.cells]
+    np.testing.assert_allclose(one, all_of_them, atol=1e-12 * rate)
+    outside = np.isnan(maps_of(found)["imbalance_per_area_mass"])
+    assert outside.sum() == flow.mesh.n_cells - len(found.cells.cells) > 0
+
+
+def test_a_cause_is_named_in_a_region_too():
+    wrong = trials.told(CAVITY, expansion=None, reference_temperature=None)
+    (why,) = fvcheck.diagnose(wrong, ["momentum"], region=ControlSurface.box(0.1, 0.1, 0.9, 0.7)).why
+    name, told = only(why)
+    assert name == "buoyancy-y" and told.interval[0] <= 7100.0 <= told.interval[1]
+
+
+@pytest.mark.parametrize("shape", ["line(0.1 0.1, 0.9 0.9)", "box(0.1, 0.1, 0.15, 0.15)", "box(7, 7, 8, 8)"])
+def test_a_region_that_cannot_be_divided_is_refused(shape):
+    with pytest.raises(fvcheck.SurfaceError):
+        fvcheck.diagnose(CAVITY, ["mass"], region=ControlSurface.parse(shape))
+
+
 def test_a_source_that_is_told_leaves_no_region():
     flow = trials.exact_flow(exact.kovasznay(), 2000, "point")
     centre, radius, rate = np.array([0.31, 0.87]), 0.15, 0.02
@@ -317,6 +356,25 @@ def test_the_command_ends_with_zero_where_nothing_is_beyond_the_mesh():
     done = command("diagnose", "meshes/demo-coarse.vtu", "-c", "meshes/demo.toml", cwd=trials.ROOT)
     assert done.status == 0, done.err
     assert "momentum: nothing to explain" in done.out
+
+
+def test_laws_of_a_check_file_that_are_not_diagnosed_are_left_out(tmp_path, capsys):
+    text = (trials.ROOT / "meshes/demo.toml").read_text(encoding="utf-8")
+    export = str(trials.ROOT / "meshes/demo-coarse.vtu")
+    check = tmp_path / "check.toml"
+    for laws, status in (('"mass", "kinetic-energy"', 0), ('"kinetic-energy"', 2)):
+        head = f"[case]\nlaws = [{laws}]\n"
+        check.write_text(text.replace("[case]\n", head, 1), encoding="utf-8")
+        assert run(["diagnose", export, "-c", str(check)]) == status
+        told = capsys.readouterr()
+        assert "kinetic-energy is not diagnosed" in " ".join((told.out + told.err).split())
+
+
+def test_the_command_takes_a_region(capsys):
+    file = str(trials.ROOT / "tests/data/cavity_1e4.vtu")
+    told = ["--density", "1", "--viscosity", "0.71", "--law", "momentum", "--region", "box(0.1,0.1,0.9,0.9)"]
+    assert run(["diagnose", file, *told]) == 1
+    assert "buoyancy in y, coefficient 7100" in capsys.readouterr().out
 
 
 def test_a_law_that_is_not_diagnosed_is_an_error(capsys):

@@ -4,12 +4,16 @@ from __future__ import annotations
 
 from dataclasses import replace
 from pathlib import Path
-from typing import Annotated, Any
+from typing import TYPE_CHECKING, Annotated, Any
 
 from typer import Option
 
 from fvcheck.cli.options import FluidOptions, Limits, OptionalFile, Output, Reading, SurfaceList, spread
 from fvcheck.errors import SetupError
+
+if TYPE_CHECKING:
+    from fvcheck.hints import Hint
+    from fvcheck.surfaces import ControlSurface
 
 _HELP = "Diagnosis"
 
@@ -22,6 +26,10 @@ def command(
     output: Output,
     file: OptionalFile = None,
     surface: SurfaceList = None,
+    region: Annotated[
+        str | None,
+        Option(metavar="SHAPE", help='Only cells within, such as "box(0, 0, 1, 1)".', rich_help_panel=_HELP),
+    ] = None,
     attempt: Annotated[
         bool,
         Option("--try", help="Balance again with the first proposal: before, after.", rich_help_panel=_HELP),
@@ -55,7 +63,9 @@ def command(
     previous = None
     if step > 0 and export.times:
         previous = flow_of_export(export, step=step - 1, **settings.reading)
-    found = diagnose(flow, settings.laws, sources=settings.sources, previous=previous)
+    laws, left_out = (settings.laws, ()) if limits.law else _diagnosed(settings.laws)
+    found = diagnose(flow, laws, sources=settings.sources, previous=previous, region=_region(region))
+    found = replace(found, hints=(*found.hints, *left_out))
     tried = None
     if attempt and found.proposals:
         law, candidate = found.proposals[0]
@@ -85,6 +95,23 @@ def command(
 
     show(output, data, lambda: diagnosis_text(replace_hints(found, output.quiet), tried, output.quiet))
     return 1 if found.open else 0
+
+
+def _diagnosed(laws: list[str] | None) -> tuple[list[str] | None, tuple[Hint, ...]]:
+    """Of the laws of a check file, which are there to be balanced, those that are diagnosed."""
+    from fvcheck.diagnosis.diagnosing import LAWS
+    from fvcheck.hints import Hint
+
+    if laws is None or not set(laws) & set(LAWS):
+        return laws, ()
+    hints = [Hint("law-left-out", f"{law} is not diagnosed") for law in laws if law not in LAWS]
+    return [law for law in laws if law in LAWS], tuple(hints)
+
+
+def _region(text: str | None) -> ControlSurface | None:
+    from fvcheck.surfaces import ControlSurface
+
+    return None if text is None else ControlSurface.parse(text)
 
 
 def replace_hints(found: Any, quiet: bool) -> Any:

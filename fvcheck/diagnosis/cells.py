@@ -90,7 +90,8 @@ class CellLedgers:
     outside : (e,) bool, edges whose errors have one sign and add up
     shaken : law name -> (s, e, c) what a shaken last digit changes
     magnitude : law name -> (e, c) |flux| without what cannot matter
-    centres : (m, 2) of the cells; datum : levels on the border of the domain, for all cells alike
+    cells : (m,) which cells of the mesh; centres : (m, 2) of them
+    datum : levels on the border of the domain, for all cells alike
     missing : terms that the data do not allow
     """
 
@@ -103,8 +104,14 @@ class CellLedgers:
     shaken: dict[str, Array]
     magnitude: dict[str, Array]
     centres: Array
+    cells: Array
     datum: Datum
     missing: tuple[str, ...] = field(default=())
+
+    @property
+    def areas(self) -> Array:
+        """(m,) of the cells."""
+        return self.flow.mesh.areas[self.cells]
 
 
 class _SampledCells(SampledVolume):
@@ -175,8 +182,12 @@ def centres_of(mesh: Mesh) -> Array:
     return total / np.diff(mesh.offsets)[:, None]
 
 
-def cell_ledgers(flow: Flow, laws: Sequence[Law], terms: dict[str, Term]) -> CellLedgers:
+def cell_ledgers(
+    flow: Flow, laws: Sequence[Law], terms: dict[str, Term], only: Array | None = None
+) -> CellLedgers:
     """Ledgers of all cells, and further terms; terms whose data are missing are left out.
+
+    only : cells whose ledgers are wanted; those of others are then not what they would be
 
     Raises MissingData for a law that cannot be evaluated.
     """
@@ -192,9 +203,16 @@ def cell_ledgers(flow: Flow, laws: Sequence[Law], terms: dict[str, Term]) -> Cel
     owner_chunk = chunk_of[edges.owner]
     build = _Build(len(edges.owner), mesh.n_cells)
     outside = np.zeros(len(edges.owner), bool)
+    wanted = np.ones(mesh.n_cells + 1, bool)
+    if only is not None:
+        wanted[:] = False
+        wanted[only] = True
+    needed = wanted[edges.owner] | (wanted[edges.other] & (edges.other >= 0))
     missing: dict[str, None] = {}
-    for number, cells in enumerate(chunks):
-        chosen = np.flatnonzero(owner_chunk == number)
+    for number, all_cells in enumerate(chunks):
+        chosen, cells = np.flatnonzero((owner_chunk == number) & needed), all_cells[wanted[all_cells]]
+        if len(chosen) == 0:
+            continue
         volume = _SampledCells(flow, _overlay_of(mesh, edges, chosen, cells), laws, datum)
         _take(volume, laws, terms, chosen, build, missing)
         group = volume.line_group[::PER_PIECE]
@@ -217,6 +235,7 @@ def cell_ledgers(flow: Flow, laws: Sequence[Law], terms: dict[str, Term]) -> Cel
         shaken={law.name: build.shaken[law.name] for law in laws if law.name in build.shaken},
         magnitude={law.name: build.magnitude[law.name] for law in laws},
         centres=centres,
+        cells=np.arange(mesh.n_cells),
         datum=datum,
         missing=tuple(missing),
     )

@@ -15,6 +15,7 @@ from fvcheck.diagnosis.cells import CellLedgers, Column, cell_ledgers
 from fvcheck.diagnosis.columns import terms_of
 from fvcheck.diagnosis.fitting import Ledgers
 from fvcheck.diagnosis.naming import Candidate, Why, explain
+from fvcheck.diagnosis.region import cells_in, part_of
 from fvcheck.diagnosis.volumes import random_blocks
 from fvcheck.diagnosis.where import Place, Tiling, where
 from fvcheck.errors import FieldError, FvcheckError, SetupError, SurfaceError
@@ -187,6 +188,7 @@ def diagnose(
     sources: Sequence[Source] = (),
     previous: Flow | None = None,
     volumes: int = _VOLUMES,
+    region: ControlSurface | None = None,
 ) -> Diagnosis:
     """Where the imbalances of a flow sit, and which set-up errors would explain them.
 
@@ -194,24 +196,32 @@ def diagnose(
     sources : what enters the domain otherwise
     previous : the stored state before, by which missing storage can be told
     volumes : blocks of cells that causes are fitted to
+    region : a closed surface; only the cells within are looked at
 
     Nothing is changed: `try_cause` shows what a proposal would do. Raises FieldError
-    or SetupError for a law that was asked for and cannot be evaluated.
+    or SetupError for a law that was asked for and cannot be evaluated,
+    SurfaceError for a region without cells.
     """
     hints: list[Hint] = []
     chosen = _chosen(flow, laws, hints)
     names = tuple(law.name for law in chosen)
-    ledgers = cell_ledgers(flow, chosen, terms_of(flow, names))
+    inside = None if region is None else cells_in(flow.mesh, region)
+    ledgers = cell_ledgers(flow, chosen, terms_of(flow, names), inside)
     ledgers = _with_sources(ledgers, sources)
+    stored = _storage(flow, previous, chosen, ledgers)
+    if inside is not None:
+        ledgers, part = part_of(ledgers, inside)
+        stored = {law: part(column) for law, column in stored.items()}
     blocks = random_blocks(ledgers, volumes, _SEED)
     tiling = Tiling.of(ledgers)
     known = _known(ledgers)
-    stored = _storage(flow, previous, chosen, ledgers)
     why, places = [], []
     for law in chosen:
         places += where(ledgers, law.name, law.components, tiling)
         if len(blocks.size) == 0:
-            hints.append(Hint("too-few-cells", f"{flow.mesh.n_cells} cells are too few to tell causes apart"))
+            hints.append(
+                Hint("too-few-cells", f"{len(ledgers.cells)} cells are too few to tell causes apart")
+            )
             why.append(Why(law.name, 0.0, 0.0, (), ()))
             continue
         columns = {**ledgers.parts[law.name], **ledgers.terms}

@@ -16,13 +16,19 @@ Array = np.ndarray
 def maps_of(found: Diagnosis) -> dict[str, Array]:
     """Per law and component ``imbalance_per_area_…`` and ``significance_…`` (in resolution bands) at cells.
 
-    Of each cell's smallest block that stands out.
+    Of each cell's smallest block that stands out; NaN outside the region that was looked at.
     """
     out = {}
+
+    def spread(values: Array) -> Array:
+        whole = np.full(found.cells.flow.mesh.n_cells, np.nan)
+        whole[found.cells.cells] = values
+        return whole
+
     for place in found.where:
         name = place.law if place.component is None else f"{place.law}-{place.component}"
-        out[f"imbalance_per_area_{name}"] = place.map
-        out[f"significance_{name}"] = place.significance
+        out[f"imbalance_per_area_{name}"] = spread(place.map)
+        out[f"significance_{name}"] = spread(place.significance)
     return out
 
 

@@ -119,9 +119,9 @@ def random_blocks(ledgers: CellLedgers, count: int, seed: int) -> Blocks:
     """
     from scipy import sparse
 
-    mesh, centres = ledgers.flow.mesh, ledgers.centres
+    centres = ledgers.centres
     rng = np.random.default_rng(seed)
-    near = _beside_boundary(mesh)
+    near = _beside_boundary(ledgers.flow.mesh)[ledgers.cells]
     # Places by the cells' own density, so that fine regions have their share.
     sets: list[Array] = []
     for _ in range(20 * count):
@@ -136,7 +136,7 @@ def random_blocks(ledgers: CellLedgers, count: int, seed: int) -> Blocks:
             sets.append(found)
     rows = np.repeat(np.arange(len(sets)), [len(s) for s in sets])
     columns = np.concatenate(sets) if sets else np.empty(0, np.int64)
-    shape = (len(sets), mesh.n_cells)
+    shape = (len(sets), len(centres))
     return blocks_of(ledgers.edges, sparse.csr_matrix((np.ones(len(rows)), (rows, columns)), shape=shape))
 
 

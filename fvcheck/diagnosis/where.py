@@ -123,7 +123,7 @@ def _place(
     windows: list[Blocks],
     seen: list[Found],
 ) -> Place:
-    areas = ledgers.flow.mesh.areas
+    areas = ledgers.areas
     density, significance = _map(levels, areas, c)
     tested = sum(len(f.value) for f in seen) + sum(len(level.found.value) for level in levels)
     tiles = min(int(np.log2(_TILES)), len(levels) - 1)
@@ -262,7 +262,7 @@ def _settle(ledgers: CellLedgers, alone: Array, start: Array, taken: Array) -> t
     cells = start
     centre, size = _moments(centres[cells], alone[cells])
     for _ in range(8):
-        spacing = np.sqrt(np.median(ledgers.flow.mesh.areas[cells]))
+        spacing = np.sqrt(np.median(ledgers.areas[cells]))
         reach = 0.6 * size + 2.5 * spacing
         wider = np.flatnonzero((np.hypot(*(centres - centre).T) < reach) & ~taken)
         if len(wider) < 4 or np.array_equal(wider, cells):
@@ -321,7 +321,7 @@ def _quarters(
     ledgers: CellLedgers, law: str, component: str | None, c: int, level: Level
 ) -> tuple[Region, ...]:
     """The blocks of a level that stand out, as regions."""
-    areas, found = ledgers.flow.mesh.areas, level.found
+    areas, found = ledgers.areas, level.found
     count = len(found.value)
     totals = np.bincount(level.labels, areas, count)
     x, y = (np.bincount(level.labels, areas * ledgers.centres[:, k], count) / totals for k in range(2))

@@ -96,7 +96,8 @@ TERMS: dict[str, Page] = {
         "bands (0.5 % where up to three bands are left), and all that leave about as little.",
         "An open verdict leaves the question whether the run or the set-up is at fault. A wrong depth "
         "multiplies every flux and cannot be seen in a balance.",
-        "fvcheck diagnose run.vtu -c check.toml; --try balances again with the first proposal, --vtu FILE "
+        "fvcheck diagnose run.vtu -c check.toml; --region SHAPE looks at its inside only, "
+        "--try balances again with the first proposal, --vtu FILE "
         "writes the imbalance per cell. Exit status 1 where something is beyond what the mesh explains.",
     ),
     "report": Page(
