@@ -344,6 +344,11 @@ PAGES: dict[str, Page] = {
         "Coefficients of drag, lift and moment need them; forces do not.",
         "--reference VELOCITY,LENGTH,DENSITY, or reference = { … } in [[body]] of the check file.",
     ),
+    "reference-far-off": Page(
+        "A reference velocity, length or density differs from what is in the data by a factor above 50.",
+        "Coefficients are made with it; a length in millimetres makes them a thousand times too small.",
+        "Tell it in the units of the run. If it is meant so, nothing.",
+    ),
     "storage-unknown": Page(
         "An imbalance that no setting explains was found in a single state.",
         "In an unsteady run, what the volumes store is missing from each ledger; one state cannot show it.",

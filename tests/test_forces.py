@@ -229,6 +229,23 @@ def test_unknown_bodies_routes_and_references_are_errors_that_name_the_nearest(b
         fvcheck.forces(benchmark, direction=(0.0, 0.0))
 
 
+@pytest.mark.parametrize(("name", "factor"), [("velocity", 3.6e3), ("length", 1e3), ("density", 1e-3)])
+def test_a_reference_in_other_units_is_remarked_on(benchmark, name, factor):
+    def codes(reference):
+        found = fvcheck.forces(benchmark, methods="body-surface", reference=reference)
+        return {hint.code for hint in found.hints}
+
+    # the largest speed is some twice the mean one, the length a diameter or a radius
+    assert not {"reference-far-off", "no-reference"} & codes(REFERENCE)
+    assert "reference-far-off" not in codes(REFERENCE | {"length": 0.05})
+    assert "reference-far-off" in codes(REFERENCE | {name: factor * REFERENCE[name]})
+
+
+def test_a_band_beyond_the_domain_is_refused_with_what_to_do(benchmark):
+    found = fvcheck.forces(benchmark, methods="band", band_between=(5.0, 9.0))
+    assert "between 5 and 9" in found["band"].refused and "within the domain" in found["band"].refused
+
+
 def test_routes_that_differ_by_more_than_a_percent_within_the_mesh_are_remarked_on():
     from fvcheck.routes.estimate import Estimate
     from fvcheck.routes.remarks import disagreements

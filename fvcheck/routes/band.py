@@ -93,7 +93,10 @@ class _BandVolume(SampledVolume):
         self._step = lambda x: smooth_step(distances(mesh, view.body, x, outer), inner, outer)
         cells = _cells_between(mesh, view.body, 0.0 if _has_sources(flow) else inner, outer)
         if len(cells) == 0:
-            raise SurfaceError(f"no cell lies within {outer:g} of {view.body}")
+            raise SurfaceError(
+                f"no cell lies between {inner:g} and {outer:g} from {view.body}",
+                mend="Choose distances within the domain.",
+            )
         mine = mesh.boundary.names.index(view.body)
         # Others count wherever ψ is above zero, up to where they meet the body.
         ends = mesh.points[mesh.boundary.edges]

@@ -28,7 +28,7 @@ from fvcheck.routes.contour import body_surface, control_surface
 from fvcheck.routes.estimate import Estimate, Reference
 from fvcheck.routes.found import Forces
 from fvcheck.routes.reach import band_range, default_distances, surface_range
-from fvcheck.routes.remarks import remarks
+from fvcheck.routes.remarks import reference_remarks, remarks
 from fvcheck.routes.sweep import Sweep
 from fvcheck.routes.terms import View
 from fvcheck.routes.wake import FORMULAS, wake
@@ -97,8 +97,7 @@ def forces(
             swept = job.sweep(sweep)
             sweeps.append(swept)
             hints += swept.hints()
-        if told is None:
-            hints.append(Hint("no-reference", f"{name}: no reference is told, so there are no coefficients"))
+        hints += reference_remarks(flow, name, told)
     return Forces(case_dict(flow), tuple(estimates), tuple(dict.fromkeys(hints)), tuple(sweeps))
 
 

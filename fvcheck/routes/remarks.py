@@ -10,11 +10,15 @@ from fvcheck.flow import Flow
 from fvcheck.hints import Hint
 from fvcheck.mesh.boundary import clearance
 from fvcheck.routes.asked import DIRECT
-from fvcheck.routes.estimate import Estimate
-from fvcheck.routes.reach import is_closed
+from fvcheck.routes.estimate import Estimate, Reference
+from fvcheck.routes.reach import body_size, is_closed
 
 # Forces by near and far surfaces agree to a percent in sound work (common practice, no source).
 _PRACTICE = 0.01
+
+# A reference off by more than this factor is more likely in other units than meant. Lengths of
+# sections, spans and radii are within it.
+_FAR_OFF = 50.0
 
 
 def remarks(flow: Flow, body: str, found: Sequence[Estimate]) -> list[Hint]:
@@ -38,6 +42,27 @@ def remarks(flow: Flow, body: str, found: Sequence[Estimate]) -> list[Hint]:
         out.append(Hint("open-body", message))
     out += _enclosed(flow, body, found)
     return out + disagreements(found, _arm(flow, found))
+
+
+def reference_remarks(flow: Flow, body: str, told: Reference | None) -> list[Hint]:
+    """No reference, or one far from the body's size, the fastest datum and the density told."""
+    if told is None:
+        return [Hint("no-reference", f"{body}: no reference is told, so there are no coefficients")]
+    velocity, density = flow.fields.get("velocity"), flow.fluid.density
+    found = {"length": body_size(flow.mesh, body)}
+    if velocity is not None:
+        found["velocity"] = float(np.sqrt(np.nanmax(np.sum(np.square(velocity.values, dtype=float), axis=1))))
+    if isinstance(density, int | float):
+        found["density"] = float(density)
+    far = [
+        f"{name} {getattr(told, name):g} against {size:.3g}"
+        for name, size in found.items()
+        if size > 0.0 and not 1.0 / _FAR_OFF < getattr(told, name) / size < _FAR_OFF
+    ]
+    if not far:
+        return []
+    against = "the body's size, the largest speed, the density of the fluid"
+    return [Hint("reference-far-off", f"{body}: the reference is far from {against}: {', '.join(far)}")]
 
 
 def _arm(flow: Flow, found: Sequence[Estimate]) -> float:
