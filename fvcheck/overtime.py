@@ -63,6 +63,12 @@ class History:
         return bool(self.trends) and all(trend.settled for trend in self.trends)
 
     @property
+    def counted(self) -> str:
+        """How many there are, such as "6 iterations"."""
+        count, kind = len(self.entries), "time" if self.unsteady else "iteration"
+        return f"{count} {kind}" if count == 1 else f"{count} {kind}s"
+
+    @property
     def steps(self) -> Array:
         """(n,) times, or numbers of iterations."""
         return np.array([e.time if self.unsteady else e.number for e in self.entries], float)
@@ -174,8 +180,7 @@ class History:
         return out.getvalue()
 
     def _repr_html_(self) -> str:
-        kind = "times" if self.unsteady else "iterations"
-        head = html_line(f"{len(self.entries)} {kind}", "settled" if self.settled else "not settled")
+        head = html_line(self.counted, "settled" if self.settled else "not settled")
         titles = ("surface", "quantity", "unit", "level", "drift", "mean", "±95 %", "amplitude", "period", "")
         rows = [
             (

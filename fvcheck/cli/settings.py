@@ -58,6 +58,8 @@ def settle(
 
 def _file(given: Path | None, check: CheckFile, check_path: Path | None) -> Path:
     if given is not None:
+        if given.suffix.lower() == ".toml":
+            raise SetupError("a check file is no export", where=given, mend=f"Give it with -c {given}.")
         return given
     if check_path is None:
         raise SetupError("no export is given", mend="Name a FILE, or a check file with -c.")

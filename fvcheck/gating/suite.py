@@ -132,6 +132,8 @@ def gate(
     named = check_files(paths)
     if workers is not None and workers < 0:
         raise SetupError(f"{workers} workers are asked for", mend="Give 0 or more.")
+    if time_limit is not None and not time_limit > 0:
+        raise SetupError(f"a time limit of {time_limit:g} s is given", mend="Give a number above 0.")
     options = (diagnosis, not update_baseline)
     if workers is None and scheduler is None:
         workers = os.cpu_count() or 1

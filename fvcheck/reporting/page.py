@@ -141,8 +141,7 @@ def _head(found: Gathered) -> Head:
     result, case = found.result, found.flow.case
     facts = [f"{found.flow.mesh.n_cells} cells", f"{found.flow.location} data"]
     if found.history is not None:
-        kind = "times" if found.history.unsteady else "iterations"
-        facts.append(f"{len(found.history.entries)} {kind}, the verdict is that of the last")
+        facts.append(f"{found.history.counted}, the verdict is that of the last")
     if found.study is not None:
         facts.append(f"{len(found.study.sizes)} meshes, the verdict is that of the finest")
     if case.time is not None:

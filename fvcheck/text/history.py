@@ -39,8 +39,7 @@ def history_text(history: History, quiet: bool = False) -> str:
     if quiet:
         return render(verdict_line(history.verdict))
     last = history.entries[-1].result
-    kind = "times" if history.unsteady else "iterations"
-    facts = [f"{len(history.entries)} {kind}", f"{last.case['cells']} cells, {last.case['location']} data"]
+    facts = [history.counted, f"{last.case['cells']} cells, {last.case['location']} data"]
     parts: list[RenderableType] = [heading(str(last.case["file"]), *facts), Text()]
     for number, ledger in enumerate(last.ledgers):
         parts += [*_steps(history, number, ledger), Text()]
