@@ -5,6 +5,7 @@ from __future__ import annotations
 import csv
 import io
 import json
+import signal
 import threading
 import time
 from pathlib import Path
@@ -16,6 +17,7 @@ from exact import taylor_green
 from exact_data import flow_data
 from forked import fvcheck as command
 from series_cases import export_of, series_of
+from test_formats_fem_cases import med_file
 from write_case import write_case
 
 import fvcheck
@@ -287,6 +289,34 @@ def test_following_ends_on_the_limit_and_when_nothing_comes(tmp_path):
     (tmp_path / "empty").mkdir()
     with pytest.raises(SetupError, match="no snapshot"):
         fvcheck.follow(tmp_path / "empty", [box], every=0.02, patience=0.1)
+
+
+def test_ctrl_c_while_following_keeps_what_was_found(tmp_path):
+    for number in range(3):
+        write_step(tmp_path, number)
+
+    def stop(entry):
+        if entry.number == 1:
+            signal.raise_signal(signal.SIGINT)
+
+    box = ControlSurface.box(0.71, 0.43, 1.83, 1.39, name="box")
+    before = signal.getsignal(signal.SIGINT)
+    found = fvcheck.follow(
+        tmp_path, [box], ["mass"], every=0.02, on_step=stop, reading={"fluid": Fluid(density=1.0)}
+    )
+    assert [entry.number for entry in found.entries] == [0, 1]
+    assert "keyboard" in found.ended and found.to_dict()["history"]
+    assert signal.getsignal(signal.SIGINT) is before
+
+
+def test_steps_of_a_med_file_are_a_history(tmp_path):
+    # the square and the polygon hold u = t (1, 10): what leaves the square is told by arithmetic
+    path = med_file(tmp_path / "run.med", steps=((1, 1.0), (2, 1.5), (3, 2.5)))
+    line = ControlSurface.line([(0.5, 0.2), (0.5, 0.8)], name="line")
+    found = fvcheck.history(path, [line], ["mass"], fluid=Fluid(density=2.0))
+    assert found.steps.tolist() == [1.0, 1.5, 2.5] and found.unsteady
+    # normal to the right of upwards: x; a constant is sampled without error
+    np.testing.assert_allclose(found.values("line", "mass", "flux"), 2.0 * 0.6 * found.steps, rtol=1e-9)
 
 
 def test_a_damaged_last_file_is_left_out_with_a_hint(tmp_path):
