@@ -109,13 +109,16 @@ def assemble(pieces: Sequence[Piece], *, plane: str = "auto", keep_centres: bool
     cut = _cut_points(pieces)
     edges = _real_edges(cells, cut)
     seams = stitch(points, cells, edges, raw, pieces, claims, hints)
-    number, finder = seams.number, seams.finder
+    number, finder, precision = seams.number, seams.finder, raw.precision
+    del raw
     if seams.merged:
+        del edges  # no two of each at a time
         merged = Polygons(cells.offsets, number[cells.nodes], cells.source)
-        cells = tidy(points, merged, raw.precision, hints, flat_file=False)
+        cells = tidy(points, merged, precision, hints, flat_file=False)
+        del merged
         edges = _real_edges(cells, cut)
     check_joined(len(cells.source), len(edges.open), len(cells.nodes))
-    filled = insert_hanging(points, cells, edges, finder, number, raw.precision, hints)
+    filled = insert_hanging(points, cells, edges, finder, number, precision, hints)
     if filled is not cells:
         cells, edges = filled, _real_edges(filled, cut)
     mesh, point_source = _mesh(points, cells, edges, finder, number, hints)

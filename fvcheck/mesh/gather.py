@@ -81,20 +81,23 @@ def gather(pieces: Sequence[Piece]) -> Raw:
     if ghost.any():
         dimension = np.where(ghost, np.int8(-1), dimension)
     node_start = np.cumsum([0, *(len(piece.nodes) for piece in pieces)])
-    offsets, nodes = (
-        [np.asarray(p.offsets, np.int64) for p in pieces],
-        [np.asarray(p.nodes, np.int64) for p in pieces],
-    )
-    if len(pieces) > 1:  # a single piece is taken as it is, without copies
-        first = np.zeros(1, np.int64)
-        offsets = [first, *(part[1:] + start for part, start in zip(offsets, node_start))]
-        nodes = [part + start for part, start in zip(nodes, point_start)]
+    if len(pieces) == 1:  # taken as it is, without copies
+        offsets, nodes = (np.asarray(part, np.int64) for part in (pieces[0].offsets, pieces[0].nodes))
+    else:
+        offsets, nodes = np.zeros(cell_start[-1] + 1, np.int64), np.empty(node_start[-1], np.int64)
+        for k, piece in enumerate(pieces):
+            cells_here = slice(cell_start[k] + 1, cell_start[k + 1] + 1)
+            offsets[cells_here] = piece.offsets[1:]
+            offsets[cells_here] += node_start[k]
+            nodes_here = slice(node_start[k], node_start[k + 1])
+            nodes[nodes_here] = piece.nodes
+            nodes[nodes_here] += point_start[k]
     single = any(np.asarray(piece.points).dtype == np.float32 for piece in pieces)
     return Raw(
         points=_joined([np.asarray(piece.points, np.float64) for piece in pieces]),
         types=types,
-        offsets=_joined(offsets),
-        nodes=_joined(nodes),
+        offsets=offsets,
+        nodes=nodes,
         dimension=dimension,
         point_start=point_start,
         cell_start=cell_start,

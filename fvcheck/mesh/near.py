@@ -182,7 +182,8 @@ def _cut_down(piece: Piece, raw: Raw, kept: Array) -> Piece:
     used[nodes] = True
     for patch in piece.patches.values():
         used[patch.nodes] = True
-    number = np.cumsum(used) - 1
+    short = np.int32 if max(len(raw.nodes), len(used)) < 1 << 31 else np.int64
+    number = (np.cumsum(used) - 1).astype(short)
 
     def renumbered(patch: NamedFaces) -> NamedFaces:
         return replace(patch, nodes=number[patch.nodes])
@@ -191,7 +192,7 @@ def _cut_down(piece: Piece, raw: Raw, kept: Array) -> Piece:
         piece,
         points=piece.points[used],
         types=raw.types[kept],
-        offsets=np.concatenate([[0], np.cumsum(sizes[kept])]),
+        offsets=np.concatenate([[0], np.cumsum(sizes[kept])]).astype(short),
         nodes=number[nodes],
         point_data={name: at_rows(values, used) for name, values in piece.point_data.items()},
         cell_data={name: at_rows(values, kept) for name, values in piece.cell_data.items()},

@@ -20,9 +20,12 @@ PARTS = 16
 OWN_READ = """
 import sys
 from pathlib import Path
+import numpy as np
 from fvcheck.formats.registry import open_export
 for path in sys.argv[1:]:
-    open_export(Path(path)).load(0)
+    for piece in open_export(Path(path)).load(0):
+        for values in piece.point_data.values():  # read when they are wanted
+            np.asarray(values)
 """
 
 
@@ -81,7 +84,12 @@ def measure(case: Case) -> dict[str, float]:
     figures["vtk read parts"], _ = process([*read, *every], 2)
     _, figures["read largest MB"] = process(["-c", OWN_READ, every[0]], 2)
     _, figures["vtk read largest MB"] = process([*read, every[0]], 2)
-    _, figures["command on largest MB"] = process(told(files[0], (0.12, 0.12, 0.05)), 2)
+    figures["command on largest"], figures["command on largest MB"] = process(
+        told(files[0], (0.12, 0.12, 0.05)), 2
+    )
+    figures["command, 2 workers"], figures["command, 2 workers MB"] = process(
+        [*told(whole, CIRCLE), "--workers", "2"], 2
+    )
     return figures
 
 
