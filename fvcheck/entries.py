@@ -47,7 +47,7 @@ def rows_of(
         if source.law == law.name and closed
     ]
     shaken = [volume.fluxes(law, state) for state in volume.shaken_line_states()]
-    cross = volume.crosswise(law)
+    cross, reaching = volume.crosswise(law), volume.reaching(law)
     rows = []
     for c, component in enumerate(law.components):
         pieces = [pieces_of(volume, terms, c) for terms in degrees]
@@ -56,7 +56,7 @@ def rows_of(
         rounding += _ROUNDINGS * np.finfo(float).eps * float(raw)
         chosen = pieces_of(volume, best, c) if volume.falls else None
         second = Crosswise(cross[:, c], volume.beside)
-        band = bands(pieces[0], pieces[1], pieces[2], rounding, chosen, volume.reaching(law), second)
+        band = bands(pieces[0], pieces[1], pieces[2], rounding, chosen, reaching, second)
         told_here = sum(share * source.along(component) for share, source in told)
         row = _row(law, component, volume, best, c, told_here)
         if closed:
@@ -75,7 +75,7 @@ def rows_of(
 
 def pieces_of(volume: SampledVolume, terms: Contributions, c: int) -> Array:
     """Contributions to the imbalance, one per cell of the border, then those of the volume."""
-    out = [volume.per_line_cell(terms.total)[:, c]]
+    out = [volume.per_line_cell(terms.total[:, c : c + 1])[:, 0]]
     if terms.source is not None:
         out.append(-terms.source[:, c])
     if terms.storage is not None:

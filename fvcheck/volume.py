@@ -7,6 +7,7 @@ from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass, replace
 from functools import cached_property
 from typing import Any
+from weakref import WeakKeyDictionary
 
 import numpy as np
 
@@ -15,7 +16,7 @@ from fvcheck.flow import Flow
 from fvcheck.hints import Hint
 from fvcheck.inside import bare_state, varies_inside
 from fvcheck.laws import Law, MissingData, State
-from fvcheck.laws.law import convective
+from fvcheck.laws.law import throughflow
 from fvcheck.laws.state import Datum
 from fvcheck.overlay.pieces import DRAWN, Overlay, triangles_of
 from fvcheck.sampling.inner import InnerCells, inner_cells, sample_inner
@@ -54,7 +55,7 @@ class Contributions:
     source: Array | None
     storage: Array | None
 
-    @property
+    @cached_property
     def total(self) -> Array:
         return sum(self.parts.values())  # type: ignore[return-value]
 
@@ -171,6 +172,8 @@ class SampledVolume:
         self._states: dict[tuple[str, int], State] = {}
         self._inner_sums: dict[tuple[Any, ...], dict[int, Array]] = {}
         self._shaken: list[State] | None = None
+        # The same for all laws.
+        self._through: WeakKeyDictionary[State, Array] = WeakKeyDictionary()
 
     def _with_averages(self, samples: Samples) -> Samples:
         """Samples shifted so that each whole cell has the average that the file gives it.
@@ -316,7 +319,10 @@ class SampledVolume:
 
     def fluxes(self, law: Law, state: State) -> dict[str, Array]:
         """Part -> (q, c) flux through each line quadrature point."""
-        parts = {"convective": convective(law, state, self.normals, self.surface_velocity)}
+        through = self._through.get(state)
+        if through is None:
+            through = self._through[state] = throughflow(state, self.normals, self.surface_velocity)
+        parts = {"convective": law.density(state) * through[:, None]}
         for name, flux in law.fluxes.items():
             value = flux(state, self.normals)
             if value is not None:

@@ -104,7 +104,13 @@ def find_law(name: str) -> Law:
 
 def convective(law: Law, state: State, n: Array, surface_velocity: Array | None) -> Array:
     """(q, c) b (u − w)·n through unit normals n (q, 2)."""
+    return law.density(state) * throughflow(state, n, surface_velocity)[:, None]
+
+
+def throughflow(state: State, n: Array, surface_velocity: Array | None) -> Array:
+    """(q,) (u − w)·n through unit normals n (q, 2)."""
     relative = state.velocity[:, :2]
     if surface_velocity is not None:
         relative = relative - surface_velocity
-    return law.density(state) * np.einsum("qi,qi->q", relative, n)[:, None]
+    through: Array = np.einsum("qi,qi->q", relative, n)
+    return through

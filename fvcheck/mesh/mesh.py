@@ -86,6 +86,20 @@ class Mesh:
         use_for(self.n_cells)
         return block_boxes(self.points, self.offsets, self.nodes)
 
+    @cached_property
+    def boundary_by_cell(self) -> tuple[Array, Array]:
+        """Numbers (e,) of the boundary edges sorted by cell, and these cells (e,)."""
+        order = np.argsort(self.boundary.cells, kind="stable")
+        return order, self.boundary.cells[order]
+
+    @cached_property
+    def boundary_rounding(self) -> float:
+        """How far the boundary's points may be off by the digits they are stored with, judged by these."""
+        points = self.points[self.boundary.edges]
+        single = np.array_equal(points.astype(np.float32).astype(float), points)
+        epsilon = float(np.finfo(np.float32 if single else np.float64).eps)
+        return float(4.0 * epsilon * np.abs(points).max(initial=0.0))
+
     def patch_edges(self, name: str) -> Array:
         """(e, 2) directed edges of one patch, fluid on their left."""
         index = self.boundary.names.index(name)

@@ -81,8 +81,7 @@ def _coincident(mesh: Mesh, overlay: Overlay) -> tuple[Array, Array, Array, Arra
     edge, whether it runs in the edge's direction.
     """
     boundary = mesh.boundary
-    order = np.argsort(boundary.cells, kind="stable")
-    sorted_cells = boundary.cells[order]
+    order, sorted_cells = mesh.boundary_by_cell
     drawn = np.flatnonzero(overlay.patch == DRAWN)
     low = np.searchsorted(sorted_cells, overlay.cell[drawn], "left")
     count = np.searchsorted(sorted_cells, overlay.cell[drawn], "right") - low
@@ -109,12 +108,4 @@ def _slack(mesh: Mesh, length: Array) -> Array:
 
     Meshes stored in single precision are off a drawn line by their own rounding.
     """
-    reach = np.abs(mesh.points[mesh.boundary.edges]).max(initial=0.0)
-    return 1e-9 * length + 4.0 * _coordinate_epsilon(mesh) * reach
-
-
-def _coordinate_epsilon(mesh: Mesh) -> float:
-    """Relative precision the coordinates were stored with, judged by the boundary points."""
-    points = mesh.points[mesh.boundary.edges]
-    single = np.array_equal(points.astype(np.float32).astype(float), points)
-    return float(np.finfo(np.float32 if single else np.float64).eps)
+    return 1e-9 * length + mesh.boundary_rounding

@@ -147,8 +147,7 @@ def boundary_sides(mesh: Mesh, cells: Array, triangles: Array, first: Array) -> 
     """(t, 3) number of the boundary edge on each triangle side, or -1."""
     from fvcheck.kernels.overlay import find_sides
 
-    order = np.argsort(mesh.boundary.cells, kind="stable")
-    sorted_cells = mesh.boundary.cells[order]
+    order, sorted_cells = mesh.boundary_by_cell
     low = np.searchsorted(sorted_cells, cells, "left")
     count = np.searchsorted(sorted_cells, cells, "right") - low
     edge_first = np.concatenate([[0], np.cumsum(count)])
