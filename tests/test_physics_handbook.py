@@ -161,3 +161,62 @@ def test_the_entropy_that_a_shock_makes_is_the_drag_of_oswatitsch(mach, ratio):
     far = np.sqrt(5.0 * (total ** (2 / 7) - 1.0))  # Mach number at ambient pressure
     speed = far * np.sqrt((1 + 0.2 * mach**2) / (1 + 0.2 * far**2))
     assert made / mach / (mass * (mach - speed)) == pytest.approx(ratio, rel=2e-5)  # the digits of the table
+
+
+def test_a_plate_under_a_slanting_jet_parts_it_and_feels_its_normal_momentum():
+    # White: F = ρQV sinθ, branches ½(1 ± cosθ)Q. The whole field by its hodograph ζ = u − iv in the
+    # upper half disc: source at e^(iθ), sinks at ±1, and dz = dw/ζ (Kirchhoff; derived here). θ = 30°
+    angle = np.radians(30.0)
+    cells = tm.quads((-9.0, 0.0, 9.0, 0.5 * np.pi), 0.1, jitter=0.0)
+    jet = np.array([np.log(1.0 / np.tan(0.5 * angle)), 0.5 * np.pi])  # where ζ = e^(iθ)
+    kept = np.hypot(*(cells.centroids - jet).T) > 0.15
+    used, nodes = np.unique(cells.nodes.reshape(-1, 4)[kept], return_inverse=True)
+    zeta = np.tanh(0.5 * (cells.points[used, 0] + 1j * cells.points[used, 1]))
+    turn, right, left = np.exp(1j * angle), 0.5 * (1 + np.cos(angle)), 0.5 * (1 - np.cos(angle))
+    z = np.log(1 - zeta / turn) / turn + np.log(1 - zeta * turn) * turn
+    z = (z - 2 * right * np.log(1 - zeta) + 2 * left * np.log(1 + zeta)) / np.pi
+    places = tm.from_table(np.column_stack([z.real, z.imag]), nodes.reshape(-1, 4))
+    data = {"U": np.column_stack([zeta.real, -zeta.imag]), "p": 0.5 * (1 - np.abs(zeta) ** 2)}
+    flow = flow_of(places, data, Fluid(density=1.0, viscosity=0.0))
+    mesh = flow.mesh
+    plate = [n for n in mesh.boundary.names if np.abs(mesh.points[mesh.patch_edges(n)][..., 1]).max() < 1e-12]
+    for x, high, branch in ((2.0, 2.0, right), (-0.42, 0.15, -left)):
+        (mass,) = fluxes(flow, [(x, -1.0), (x, high)], "mass")
+        assert mass == pytest.approx(branch, rel=2e-3)  # sixteen cells across, the free surface one of them
+    found = fvcheck.forces(flow, plate, methods="body-surface")
+    # all the pressure there is: e^(−9) of it lies beyond the ends
+    assert found["body-surface"].force == pytest.approx((0.0, -np.sin(angle)), abs=1e-3)
+    for row in fvcheck.balance(flow, ControlSurface.domain(), laws=["mass", "momentum"]).rows:
+        assert abs(row.imbalance) <= row.sampling_band and abs(row.imbalance) < 1e-2, row.label
+
+
+def test_a_boundary_layer_has_the_thicknesses_and_friction_of_blasius():
+    # f''' + ½ f f'' = 0, f''(0) .3320573: δ* 1.7207877, θ .6641147, δ₃ 1.0443755 times √(νx/U); D = ρU²θ
+    # (Blasius 1908). Layer equations: pressure and the friction along the stream are left out
+    from scipy.integrate import solve_ivp
+
+    nu = 1e-4
+    cells = tm.channel(np.linspace(1.0, 2.0, 21), np.linspace(0.0, 0.14, 141))
+    x, y = cells.points.T
+    eta = y / np.sqrt(nu * x)
+    profile = solve_ivp(
+        lambda _, s: [s[1], s[2], -0.5 * s[0] * s[2]],
+        (0, 15),
+        [0, 0, 0.3320573],
+        rtol=1e-10,
+        dense_output=True,
+    ).sol
+    f, slope = profile(eta)[:2]
+    data = {"U": np.column_stack([slope, 0.5 * np.sqrt(nu / x) * (eta * slope - f)]), "p": 0 * x}
+    flow = flow_of(cells, data, Fluid(density=1.0, viscosity=nu))
+    still = flow_of(cells, data, Fluid(density=1.0, viscosity=0.0))
+    for at in (1.2, 1.8):
+        station, scale = [(at, 0.0), (at, 0.14)], np.sqrt(nu * at)
+        (mass,) = fluxes(still, station, "mass")
+        (energy,) = fluxes(still, station, "kinetic-energy")
+        momentum = fluxes(still, station, "momentum")[0]
+        thick = np.array([0.14 - mass, mass - momentum, mass - 2 * energy]) / scale
+        # ten to fourteen cells to √(νx/U): by cubics to 6e-4
+        assert thick == pytest.approx((1.7207877, 0.6641147, 1.0443755), rel=1e-3)
+    drag = fvcheck.forces(flow, "bottom", methods="body-surface")["body-surface"].force[0]
+    assert drag == pytest.approx(0.5 * 1.3282293 * np.sqrt(nu) * (np.sqrt(2.0) - 1.0), rel=1e-3)
