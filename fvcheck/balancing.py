@@ -14,6 +14,7 @@ from fvcheck.flow import Flow
 from fvcheck.hints import Hint
 from fvcheck.laws import Law, MissingData, find_law, law_names
 from fvcheck.ledger import Ledger, Result, Row, case_dict
+from fvcheck.leftout import sampling_hints
 from fvcheck.many import sampled_volumes
 from fvcheck.plausible import change_hints, field_hints, force_hints, still_hints
 from fvcheck.sources import Source
@@ -77,7 +78,7 @@ def ledger_of(
             "no law can be evaluated with these data",
             where="; ".join(hint.message for hint in hints if hint.code == "law-left-out"),
         )
-    hints += [*volume.hints(laws), *still_hints(volume), *force_hints(volume, rows)]
+    hints += [*sampling_hints(volume, laws), *still_hints(volume), *force_hints(volume, rows)]
     return Ledger(
         name=placed.name or placed.kind,
         kind=placed.kind,

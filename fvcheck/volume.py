@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import copy
 from collections.abc import Callable, Mapping, Sequence
-from dataclasses import dataclass, replace
+from dataclasses import dataclass
 from functools import cached_property
 from typing import Any
 from weakref import WeakKeyDictionary
@@ -13,16 +13,16 @@ import numpy as np
 
 from fvcheck.errors import SurfaceError
 from fvcheck.flow import Flow
-from fvcheck.hints import Hint
 from fvcheck.inside import bare_state, varies_inside
+from fvcheck.interior import interior_of, keep_averages, sum_groups
 from fvcheck.laws import Law, MissingData, State
 from fvcheck.laws.law import throughflow
 from fvcheck.laws.state import Datum
-from fvcheck.overlay.pieces import DRAWN, Overlay, triangles_of
-from fvcheck.sampling.inner import InnerCells, inner_cells, sample_inner
+from fvcheck.overlay.pieces import DRAWN, Overlay
+from fvcheck.sampling.inner import InnerCells, sample_inner
 from fvcheck.sampling.known import known_values, pin_walls
 from fvcheck.sampling.probe import Probe, Samples, compile_probe
-from fvcheck.sampling.quadrature import PER_PIECE, along, within
+from fvcheck.sampling.quadrature import PER_PIECE, along
 from fvcheck.sampling.sampled import Sampled
 from fvcheck.sampling.sampler import CROSS, DEGREES
 from fvcheck.surfaces import ControlSurface
@@ -156,13 +156,15 @@ class SampledVolume:
         """Sample a flow by fits about ``centres`` and others."""
         self.flow, self.probe = flow, probe
         self.line = self.probe.samples(self.triangle, self.places, self.line_group, cross=True)
-        self.area = (
-            None
-            if self.area_triangle is None
-            else self._with_averages(
-                self.probe.samples(self.area_triangle, self.area_places, self.area_group)
-            )
-        )
+        self.area: Samples | None = None
+        if self.area_triangle is not None:
+            self.area = probe.samples(self.area_triangle, self.area_places, self.area_group)
+            if flow.case.cell_values == "average":
+                # A cut cell may have a part of no area; only whole ones are shifted.
+                whole = ~np.isin(self.area_cells, self.overlay.corner_cell)
+                self.area = keep_averages(
+                    self.area, probe, self.area_cells, self.area_group, self.area_weights, whole
+                )
         self.datum = Datum()
         if self.overlay.closed:
             self.datum = self._find_datum()
@@ -174,39 +176,6 @@ class SampledVolume:
         self._shaken: list[State] | None = None
         # The same for all laws.
         self._through: WeakKeyDictionary[State, Array] = WeakKeyDictionary()
-
-    def _with_averages(self, samples: Samples) -> Samples:
-        """Samples shifted so that each whole cell has the average that the file gives it.
-
-        Blended fits keep averages only to their order: too little across a
-        shock, where a volume would seem to gain or lose what it holds.
-        """
-        if self.flow.case.cell_values != "average":
-            return samples
-        # A cut cell may have a part of no area; only whole ones are shifted.
-        whole = ~np.isin(self.area_cells, self.overlay.corner_cell)
-        weight = _sum_groups(self.area_group, len(self.area_cells), self.area_weights[:, None])[whole]
-        known = {
-            role: field.at(self.area_cells).astype(float)
-            for group in self.probe.groups
-            if group.sampler.location == "cell"
-            for role, field in zip(group.roles, group.fields)
-        }
-
-        def shifted(sampled: Mapping[str, Sampled]) -> dict[str, Sampled]:
-            out = dict(sampled)
-            for role, average in known.items():
-                value = sampled[role].value.reshape(len(self.area_group), -1)
-                total = self._per_cell(value * self.area_weights[:, None])
-                shift = np.zeros_like(total)
-                columns = average.shape[1]
-                shift[whole, :columns] = average[whole] - total[whole, :columns] / weight
-                moved = (value + shift[self.area_group]).reshape(sampled[role].value.shape)
-                out[role] = Sampled(moved, sampled[role].gradient)
-            return out
-
-        by_degree = {degree: shifted(sampled) for degree, sampled in samples.by_degree.items()}
-        return replace(samples, by_degree=by_degree, best=shifted(samples.best))
 
     def needs_area(self, law: Law) -> bool:
         """Whether the law's volume terms vary over the volume, so that they must be sampled."""
@@ -233,23 +202,12 @@ class SampledVolume:
                 f"{self.surface.name or self.surface.kind!r} were not kept, over which a law integrates",
                 mend="Open the flow for these laws.",
             )
-        whole = overlay.whole
         at_points = all(field.location == "point" for field in self.flow.fields.values())
-        if self.passes and at_points and len(whole) > MANY_CELLS:
-            self._inner_cells = inner_cells(mesh, whole, np.unique(overlay.corner_cell))
-            whole = whole[:0]
-        triangles, first = triangles_of(mesh, whole)
-        corners = np.concatenate([mesh.points[triangles], overlay.corners])
-        u, v = corners[:, 1] - corners[:, 0], corners[:, 2] - corners[:, 0]
-        sizes = 0.5 * (u[:, 0] * v[:, 1] - u[:, 1] * v[:, 0])
-        sizes[len(triangles) :] *= overlay.corner_weight
-        # In the few cut cells of a large volume two orders more would not show.
-        self.area_places, weights = within(corners, coarse=self._inner_cells is not None)
-        per = len(weights)
-        self.area_triangle = np.repeat(np.concatenate([triangles, overlay.corner_triangle]), per, axis=0)
-        self.area_weights = (sizes[:, None] * weights).ravel() * self._extent(self.area_places)
-        cells = np.concatenate([np.repeat(whole, np.diff(first)), overlay.corner_cell])
-        self.area_cells, self.area_group = np.unique(np.repeat(cells, per), return_inverse=True)
+        by_pass = self.passes and at_points and len(overlay.whole) > MANY_CELLS
+        inside = interior_of(mesh, overlay, self._extent, by_pass=by_pass)
+        self._inner_cells = inside.inner
+        self.area_triangle, self.area_places = inside.triangle, inside.places
+        self.area_weights, self.area_cells, self.area_group = inside.weights, inside.cells, inside.group
 
     def _find_datum(self) -> Datum:
         state = self._line_state_of(self.line.best)
@@ -423,11 +381,11 @@ class SampledVolume:
 
     def _per_cell(self, values: Array) -> Array:
         """(q, c) at the area places, summed per cell of ``area_cells``."""
-        return _sum_groups(self.area_group, len(self.area_cells), values)
+        return sum_groups(self.area_group, len(self.area_cells), values)
 
     def per_line_cell(self, values: Array) -> Array:
         """(q, c) summed per mesh cell."""
-        return _sum_groups(self.line_group, len(self._groups), values)
+        return sum_groups(self.line_group, len(self._groups), values)
 
     @property
     def falls(self) -> bool:
@@ -479,36 +437,6 @@ class SampledVolume:
         used = self.line.supported[self.line_group]
         return {str(degree): float(length[used == degree].sum() / length.sum()) for degree in DEGREES}
 
-    def hints(self, laws: Sequence[Law]) -> list[Hint]:
-        """Remarks on what the laws left out, and on data that support less than the highest degree."""
-        out = []
-        low = 1.0 - self.degree_shares()[str(DEGREES[-1])]
-        if low > 1e-9:
-            out.append(
-                Hint(
-                    "degree-fell",
-                    f"{self.surface.name or self.surface.kind}: on {100 * low:.2g} % of its length the data "
-                    "jump, and plain linear sampling within their range is used there",
-                )
-            )
-        state = self.line_state(BEST)
-        if state.viscosity is None and any("viscous" in law.fluxes for law in laws):
-            out.append(Hint("inviscid", "no viscosity is known: momentum and energy are taken as inviscid"))
-        conducting = any("conductive" in law.fluxes for law in laws)
-        frictionless = state.viscosity is not None and not np.any(state.viscosity)
-        unknown = conducting and state.conductivity is None and not frictionless
-        if unknown and "temperature" in state.fields:
-            out.append(Hint("no-conduction", "no conductivity is known: heat is carried by the flow only"))
-        told = self.has_rates or self.unsteady
-        if self.surface_velocity is not None and not told and self.overlay.closed:
-            out.append(
-                Hint(
-                    "steady-in-moving-frame",
-                    f"{self.surface.name}: the content of the moving surface is taken as constant",
-                )
-            )
-        return out
-
 
 def _check_motion(surface: ControlSurface, axis: int | None) -> None:
     """SurfaceError for a motion that an axisymmetric surface cannot make."""
@@ -531,7 +459,3 @@ def _barycentric(corners: Array, places: Array) -> Array:
     twice = cross(b - a, c - a)
     second, third = cross(places - a, c - a) / twice, cross(b - a, places - a) / twice
     return np.column_stack([1.0 - second - third, second, third])
-
-
-def _sum_groups(group: Array, count: int, values: Array) -> Array:
-    return np.column_stack([np.bincount(group, column, count) for column in values.T])

@@ -40,6 +40,8 @@ ROWS = [
         "verdict",
         "entries",
         "inside",
+        "interior",
+        "leftout",
         "volume",
         "many",
         "balancing",
