@@ -277,7 +277,9 @@ def _take(
     missing: dict[str, None],
 ) -> None:
     def per_edge(values: Array) -> Array:
-        return values.reshape(len(chosen), PER_PIECE, -1).sum(axis=1)
+        shaped = values.reshape(len(chosen), PER_PIECE, -1)
+        # Adding slices is ten times as fast as numpy's sum along so short an axis.
+        return sum((shaped[:, k] for k in range(1, PER_PIECE)), start=shaped[:, 0])
 
     cells = volume.area_cells
     for level, degree in enumerate(LEVELS):

@@ -13,8 +13,10 @@ from fvcheck.mesh.mesh import Mesh
 
 Array = np.ndarray
 
-# As in `fvcheck.bands`.
-_SAMPLING, _RESOLUTION = 3.0, 2.0
+SAMPLING_DEVIATIONS = 3.0
+"""A sampling band in standard deviations of independent errors, as in `fvcheck.bands`."""
+
+_RESOLUTION = 2.0
 
 FIRST, SECOND, THIRD, CHOSEN = range(4)
 """Rows of a `Column` by what they are."""
@@ -95,7 +97,7 @@ def measure(blocks: Blocks, column: Column, outside: Array, shaken: Array | None
 
     net23, root23, size23 = spread_of(THIRD, SECOND)
     net12, root12, size12 = spread_of(SECOND, FIRST)
-    sampling = np.where(size23 > 0.5 * size12, size23, np.maximum(net23, _SAMPLING * root23))
+    sampling = np.where(size23 > 0.5 * size12, size23, np.maximum(net23, SAMPLING_DEVIATIONS * root23))
     resolution = np.maximum(net12, _RESOLUTION * root12)
     if out.any():
         d23, d12 = np.abs(edge[THIRD] - edge[SECOND]), np.abs(edge[SECOND] - edge[FIRST])
@@ -124,11 +126,12 @@ def random_blocks(ledgers: CellLedgers, count: int, seed: int) -> Blocks:
     near = _beside_boundary(ledgers.flow.mesh)[ledgers.cells]
     # Places by the cells' own density, so that fine regions have their share.
     sets: list[Array] = []
+    extent = np.maximum(np.ptp(centres, axis=0), 1e-300)
     for _ in range(20 * count):
         if len(sets) == count:
             break
         share = rng.uniform(0.004, 0.35)
-        inside = _box(centres, centres[rng.integers(len(centres))], rng.uniform(0.4, 2.5), share)
+        inside = _box(centres, extent, centres[rng.integers(len(centres))], rng.uniform(0.4, 2.5), share)
         if rng.uniform() < 0.75:
             inside = inside & ~near
         found = np.flatnonzero(inside)
@@ -140,9 +143,8 @@ def random_blocks(ledgers: CellLedgers, count: int, seed: int) -> Blocks:
     return blocks_of(ledgers.edges, sparse.csr_matrix((np.ones(len(rows)), (rows, columns)), shape=shape))
 
 
-def _box(centres: Array, middle: Array, aspect: float, share: float) -> Array:
+def _box(centres: Array, extent: Array, middle: Array, aspect: float, share: float) -> Array:
     """(m,) bool: the box about ``middle`` that holds a share of all cells."""
-    extent = np.maximum(np.ptp(centres, axis=0), 1e-300)
     scaled = np.abs(centres - middle) / extent * np.array([np.sqrt(aspect), 1.0 / np.sqrt(aspect)])
     reach = np.maximum(scaled[:, 0], scaled[:, 1])
     rank = int(share * (len(reach) - 1))

@@ -3,18 +3,30 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
+from statistics import NormalDist
+from typing import Any
 
 import numpy as np
 
 from fvcheck.diagnosis.cells import CellLedgers, Column
 from fvcheck.diagnosis.tree import bisect
-from fvcheck.diagnosis.volumes import Blocks, Found, blocks_by_label, blocks_of, measure
+from fvcheck.diagnosis.volumes import (
+    SAMPLING_DEVIATIONS,
+    Blocks,
+    Found,
+    blocks_by_label,
+    blocks_of,
+    measure,
+)
 
 Array = np.ndarray
 
 # A block stands out when its imbalance is beyond its resolution band, which no
-# converged run of second order leaves, and beyond so many sampling bands: in clean
-# exact fields the largest of thousands of windows reach 0.8 (scripts/diagnose_study.py).
+# converged run of second order leaves, and so far beyond its sampling band that a
+# single one by chance, among all that are looked at, is at most so likely.
+_FALSE = 0.01
+
+# Sampling bands that are asked for at least, however few blocks there are.
 _BANDS = 1.5
 
 # Radii of windows in cells, and the distance between their centres in radii.
@@ -84,11 +96,20 @@ class Tiling:
     blocks: list[Blocks]
     windows: list[Blocks]
 
+    @property
+    def size(self) -> int:
+        """How many blocks and windows there are."""
+        return sum(len(some.size) for some in (*self.blocks, *self.windows))
+
     @classmethod
     def of(cls, ledgers: CellLedgers) -> Tiling:
+        from scipy.spatial import cKDTree
+
         labels = bisect(ledgers.centres)
         blocks = [blocks_by_label(ledgers.edges, label, 2**number) for number, label in enumerate(labels)]
-        windows = [window for radius in _RADII if (window := _windows(ledgers, radius)) is not None]
+        tree, order = cKDTree(ledgers.centres), _walk(ledgers.centres)
+        found = (_windows(ledgers, radius, tree, order) for radius in _RADII)
+        windows = [window for window in found if window is not None]
         return cls(labels, blocks, windows)
 
 
@@ -100,16 +121,29 @@ def where(ledgers: CellLedgers, law: str, components: tuple[str | None, ...], ti
         for label, block in zip(tiling.labels, tiling.blocks)
     ]
     seen = [measure(window, column, ledgers.outside, shaken) for window in tiling.windows]
+    limit = family_limit(tiling.size * sum(each.edge.shape[2] for each in ledgers.columns.values()))
     return [
-        _place(ledgers, law, component, c, column, shaken, levels, tiling.windows, seen)
+        _place(ledgers, law, component, c, column, shaken, levels, tiling.windows, seen, limit)
         for c, component in enumerate(components)
     ]
 
 
-def stands_out(found: Found, c: int) -> Array:
+def family_limit(tests: int) -> float:
+    """Sampling bands beyond which an imbalance counts, where so many are looked at.
+
+    By Bonferroni's inequality (O. J. Dunn, Multiple comparisons among means, Journal
+    of the American Statistical Association 56, 1961): each test has its share of the
+    chance of a false one in all, `_FALSE`, both signs, normal errors. It holds however
+    the tests depend on each other, and blocks overlap.
+    """
+    share = _FALSE / (2.0 * max(tests, 1))
+    return max(_BANDS, -NormalDist().inv_cdf(share) / SAMPLING_DEVIATIONS)
+
+
+def stands_out(found: Found, c: int, limit: float) -> Array:
     """(k,) bool."""
     size = np.abs(found.value[:, c])
-    return (size > found.resolution[:, c]) & (size > _BANDS * found.sampling[:, c])
+    return (size > found.resolution[:, c]) & (size > limit * found.sampling[:, c])
 
 
 def _place(
@@ -122,29 +156,30 @@ def _place(
     levels: list[Level],
     windows: list[Blocks],
     seen: list[Found],
+    limit: float,
 ) -> Place:
     areas = ledgers.areas
-    density, significance = _map(levels, areas, c)
+    density, significance = _map(levels, areas, c, limit)
     tested = sum(len(f.value) for f in seen) + sum(len(level.found.value) for level in levels)
     tiles = min(int(np.log2(_TILES)), len(levels) - 1)
-    out = stands_out(levels[tiles].found, c)
+    out = stands_out(levels[tiles].found, c, limit)
     covered = float(areas[out[levels[tiles].labels]].sum() / areas.sum())
     if covered > _SPREAD:
-        regions = _quarters(ledgers, law, component, c, levels[min(2, len(levels) - 1)])
+        regions = _quarters(ledgers, law, component, c, levels[min(2, len(levels) - 1)], limit)
         return Place(law, component, "spread", tuple(levels), regions, density, significance, tested)
-    regions = _peel(ledgers, law, component, c, column, shaken, windows, seen)
+    regions = _peel(ledgers, law, component, c, column, shaken, windows, seen, limit)
     kind = "nowhere" if not regions else "concentrated"
     if regions and sum(r.share for r in regions if r.patch) > _ALONG:
         kind = "along a patch"
     return Place(law, component, kind, tuple(levels), regions, density, significance, tested)
 
 
-def _map(levels: list[Level], areas: Array, c: int) -> tuple[Array, Array]:
+def _map(levels: list[Level], areas: Array, c: int, limit: float) -> tuple[Array, Array]:
     """Per cell, of the smallest block that stands out, or of the smallest there is."""
     density, ratio = _per_cell(levels[-1], areas, c)
-    done = stands_out(levels[-1].found, c)[levels[-1].labels]
+    done = stands_out(levels[-1].found, c, limit)[levels[-1].labels]
     for level in levels[-2::-1]:
-        here = stands_out(level.found, c)[level.labels] & ~done
+        here = stands_out(level.found, c, limit)[level.labels] & ~done
         if here.any():
             wider, stronger = _per_cell(level, areas, c)
             density[here], ratio[here] = wider[here], stronger[here]
@@ -159,10 +194,9 @@ def _per_cell(level: Level, areas: Array, c: int) -> tuple[Array, Array]:
     return (value / np.bincount(level.labels, areas))[level.labels], ratio[level.labels]
 
 
-def _windows(ledgers: CellLedgers, radius: float) -> Blocks | None:
+def _windows(ledgers: CellLedgers, radius: float, tree: Any, order: Array) -> Blocks | None:
     """Sets of neighbouring cells, about as many as a disc of so many cells in radius holds."""
     from scipy import sparse
-    from scipy.spatial import cKDTree
 
     centres = ledgers.centres
     n, k = len(centres), int(np.pi * radius**2)
@@ -170,9 +204,8 @@ def _windows(ledgers: CellLedgers, radius: float) -> Blocks | None:
         return None
     # Cells far apart in number lie anywhere; a walk through the plane picks evenly.
     step = max(1, int((_SPACING * radius) ** 2))
-    order = _walk(centres)
     chosen = order[step // 2 :: step]
-    _, near = cKDTree(centres).query(centres[chosen], k=k)
+    _, near = tree.query(centres[chosen], k=k, workers=2)
     rows = np.repeat(np.arange(len(chosen)), k)
     shape = (len(chosen), n)
     return blocks_of(
@@ -200,6 +233,7 @@ def _peel(
     shaken: Array | None,
     windows: list[Blocks],
     seen: list[Found],
+    limit: float,
 ) -> tuple[Region, ...]:
     """The window that stands out most, measured and taken away, then the next."""
     n = len(ledgers.centres)
@@ -207,7 +241,7 @@ def _peel(
     alone = _cell_values(ledgers, column, c)
     taken = np.zeros(n, bool)
     found: list[tuple[Array, Array, float, float, float]] = []
-    candidates = [np.flatnonzero(stands_out(f, c)) for f in seen]
+    candidates = [np.flatnonzero(stands_out(f, c, limit)) for f in seen]
     while len(found) < _MOST:
         best, which = 0.0, None
         for number, (window, f) in enumerate(zip(windows, seen)):
@@ -318,14 +352,14 @@ def _patch_beside(ledgers: CellLedgers, cells: Array) -> str | None:
 
 
 def _quarters(
-    ledgers: CellLedgers, law: str, component: str | None, c: int, level: Level
+    ledgers: CellLedgers, law: str, component: str | None, c: int, level: Level, limit: float
 ) -> tuple[Region, ...]:
     """The blocks of a level that stand out, as regions."""
     areas, found = ledgers.areas, level.found
     count = len(found.value)
     totals = np.bincount(level.labels, areas, count)
     x, y = (np.bincount(level.labels, areas * ledgers.centres[:, k], count) / totals for k in range(2))
-    rows = np.flatnonzero(stands_out(found, c))
+    rows = np.flatnonzero(stands_out(found, c, limit))
     sizes = np.abs(found.value[:, c])
     whole = max(float(sizes.sum()), 1e-300)
     return tuple(
