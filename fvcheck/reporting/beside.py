@@ -71,18 +71,18 @@ def beside_border(
     """Row label -> its parts; empty for what bounds no volume, or stores something."""
     if not ledger.closed or any(row.storage for row in ledger.rows) or len(border.order) < STRETCHES:
         return {}
+    from shapely.errors import GEOSException
+
     flow = volume.flow
-    kept: list[tuple[int, ControlSurface]] = []
-    for number, shape in enumerate(_shapes(volume, border)):
-        part = _surface(shape, volume.surface)
-        if part is not None:
-            kept.append((number, part))
     told = {row.law for row in ledger.rows}
     chosen = [law for law in laws if law.name in told]
     scales = {row.law: row.scale for row in ledger.rows if row.scale}
     try:
+        shapes = enumerate(_shapes(volume, border))
+        found_parts = [(number, _surface(shape, volume.surface)) for number, shape in shapes]
+        kept = [(number, part) for number, part in found_parts if part is not None]
         sampled = list(sampled_volumes(flow, [part for _, part in kept], chosen, volume.about))
-    except SurfaceError:  # a part that holds no fluid: rounding, or a gap in the mesh
+    except (SurfaceError, GEOSException):  # no fluid in a part, or outlines that cannot be divided
         return {}
     whole = volume.overlay.area
     if abs(sum(held.overlay.area for held in sampled) - whole) > _GAP * abs(whole):
