@@ -116,15 +116,6 @@ def test_domain_and_patches_with_a_law_over_the_volume_are_read_whole(parts):
     assert fvcheck.balance(flow, surfaces[1], ["mass"]).rows
 
 
-@pytest.fixture(scope="module")
-def scheduler():
-    distributed = pytest.importorskip("distributed")
-    with distributed.LocalCluster(
-        n_workers=2, threads_per_worker=1, processes=True, dashboard_address=None
-    ) as cluster:
-        yield cluster.scheduler_address
-
-
 @pytest.mark.parametrize("where", ["processes", "dask"])
 def test_pieces_read_elsewhere_give_the_same_digits(file, where, request):
     spread = {"workers": 2} if where == "processes" else {"scheduler": request.getfixturevalue("scheduler")}

@@ -14,15 +14,6 @@ FLUID = fvcheck.Fluid(density=1.2, viscosity=0.012)
 BOX = fvcheck.ControlSurface.box(0.2, 0.1, 0.9, 0.3, name="box")
 
 
-@pytest.fixture(scope="module")
-def scheduler():
-    distributed = pytest.importorskip("distributed")
-    with distributed.LocalCluster(
-        n_workers=2, threads_per_worker=1, processes=True, dashboard_address=None
-    ) as cluster:
-        yield cluster.scheduler_address
-
-
 @pytest.fixture(params=["processes", "dask"])
 def where(request):
     if request.param == "processes":

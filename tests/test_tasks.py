@@ -9,16 +9,6 @@ from fvcheck.errors import FieldError, FvcheckError, SetupError
 from fvcheck.tasks import each_done, run_tasks
 
 
-@pytest.fixture(scope="module")
-def scheduler():
-    """Address of a scheduler with two workers, processes of their own that a nanny begins again."""
-    distributed = pytest.importorskip("distributed")
-    with distributed.LocalCluster(
-        n_workers=2, threads_per_worker=1, processes=True, dashboard_address=None
-    ) as cluster:
-        yield cluster.scheduler_address
-
-
 @pytest.fixture(params=["here", "processes", "dask"])
 def where(request):
     if request.param == "here":
