@@ -22,11 +22,11 @@ from fvcheck import ControlSurface
 from fvcheck.cli.app import run
 from fvcheck.diagnosis import try_cause
 from fvcheck.diagnosis.cells import cell_ledgers
-from fvcheck.diagnosis.diagnosing import NONE_EXPLAINS
 from fvcheck.diagnosis.mapping import maps_of
+from fvcheck.diagnosis.regions import cell_values
+from fvcheck.diagnosis.result import NONE_EXPLAINS
 from fvcheck.diagnosis.tree import bisect
 from fvcheck.diagnosis.volumes import blocks_by_label, measure
-from fvcheck.diagnosis.where import _cell_values
 from fvcheck.laws import find_law
 
 CAVITY = trials.cavity("1e4")
@@ -293,8 +293,8 @@ def test_a_chosen_region_is_diagnosed_by_itself():
     assert abs(place.regions[0].amount - rate) < max(place.regions[0].band, 0.01 * rate)
     # cells keep the ledgers that they have in the whole; what was not looked at is told as unknown
     whole = fvcheck.diagnose(wrong, ["mass"]).cells
-    one = _cell_values(found.cells, found.cells.columns["mass"], 0)
-    all_of_them = _cell_values(whole, whole.columns["mass"], 0)[found.cells.cells]
+    one = cell_values(found.cells, found.cells.columns["mass"], 0)
+    all_of_them = cell_values(whole, whole.columns["mass"], 0)[found.cells.cells]
     np.testing.assert_allclose(one, all_of_them, atol=1e-12 * rate)
     outside = np.isnan(maps_of(found)["imbalance_per_area_mass"])
     assert outside.sum() == flow.mesh.n_cells - len(found.cells.cells) > 0

@@ -6,7 +6,7 @@ from pathlib import Path
 
 import numpy as np
 
-from fvcheck.diagnosis.diagnosing import Diagnosis
+from fvcheck.diagnosis.result import Diagnosis
 from fvcheck.vtkfile import polygons
 from fvcheck.wholefile import write_whole
 
