@@ -77,7 +77,7 @@ def bands(
     resolution = RESOLUTION_FACTOR * sum(
         spread(part, _RESOLUTION_COVERAGE) for part in (d12[within], d12[steps.outside])
     )
-    return Bands(sampling, max(resolution, sampling), rounding)
+    return Bands(float(sampling), float(max(resolution, sampling)), float(rounding))
 
 
 class Crosswise(NamedTuple):
@@ -147,7 +147,7 @@ def steps_of(
 def _half_width(steps: Steps, within: Array) -> float:
     d23, apart, relied = steps.d23[within], steps.apart[within], steps.relied[within]
     net = np.where(relied, 1.0, _COVERAGE) * d23
-    settled = max(abs(d23.sum()), float(np.sqrt(np.sum(net**2))))
+    settled = float(max(abs(d23.sum()), np.sqrt(np.sum(net**2))))
     settled += max(_ONE_SIGN * abs(apart.sum()), spread(apart))
     if steps.unsettled:
         return float(max(np.abs(d23).sum(), settled if steps.known.any() else 0.0))

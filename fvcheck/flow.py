@@ -53,7 +53,7 @@ class Case:
         return self.depth is None and self.axis is None
 
 
-@dataclass(frozen=True, eq=False)
+@dataclass(frozen=True, eq=False, repr=False)
 class Flow:
     """One state of a run, in its plane.
 
@@ -116,6 +116,10 @@ class Flow:
         speed = np.nanmax(np.abs(field.values[:, :2]), initial=0.0)
         normal = np.nanmax(np.abs(field.values[:, 2]), initial=0.0)
         return float(normal / speed) if speed > 0 else float(normal > 0)
+
+    def __repr__(self) -> str:
+        of = ", ".join(f"{role}={field.name}" for role, field in self.fields.items())
+        return f"<Flow {self.case.file}, step {self.case.step}: {self.mesh!r}, {of}>"
 
     def _repr_html_(self) -> str:
         from fvcheck.notebook import html_hints, html_line, html_table

@@ -7,6 +7,7 @@ import pytest
 from pages import Page
 
 import fvcheck
+from fvcheck import ControlSurface
 
 ROOT = Path(__file__).parent.parent
 COARSE, FINE = (ROOT / "meshes" / f"demo-{kind}.vtu" for kind in ("coarse", "fine"))
@@ -53,6 +54,12 @@ def test_a_result_shows_its_verdict_ledgers_and_hints(flow):
     assert f"verdict: {result.verdict}" in page.said("p")[-1]
     assert len(page.of("table")) == 1
     assert [text.partition(":")[0] for text in page.said("li")] == [hint.code for hint in result.hints] != []
+
+
+def test_what_is_printed_at_a_prompt_is_a_line(flow):
+    for thing in (flow, flow.mesh, ControlSurface.circle(0.5, 0.5, 0.2, name="a")):
+        assert len(repr(thing)) < 300 and "\n" not in repr(thing)
+    assert repr(ControlSurface.circle(0.5, 0.5, 0.2, name="a")) == "<ControlSurface a=circle(0.5, 0.5, 0.2)>"
 
 
 def test_forces_show_every_route_with_bands(flow):

@@ -24,16 +24,17 @@ def tell_viscosity(known: Setting, fit: Fit) -> Told | None:
         return None
     f, low, high = found
     half, rho, told = high - f, known.density, known.flow.fluid.viscosity
+    f, low = max(f, 0.0), max(low, 0.0)
     text = f"viscosity factor {f:.4g}"
     if rho != 1.0 and is_number(f, half, rho):
         text += ": it was given as kinematic (mu/rho)"
     elif rho != 1.0 and is_number(f, half, 1.0 / rho):
         text += ": it was divided by the density"
     if isinstance(told, int | float) and told > 0:
-        value = max(f, 0.0) * told
+        value = f * told
         return Told(text, f, (low, high), f"--viscosity {value:.5g}", with_fluid(viscosity=value))
     roles = [r for r in known.flow.fields if r.removeprefix("kinematic_") in ("viscosity", "eddy_viscosity")]
-    change = both(*(scaled(role, max(f, 0.0)) for role in roles)) if roles else None
+    change = both(*(scaled(role, f) for role in roles)) if roles else None
     return Told(text, f, (low, high), f"multiply the viscosity array by {f:.4g}", change)
 
 

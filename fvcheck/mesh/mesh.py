@@ -27,7 +27,7 @@ class Boundary:
     names: tuple[str, ...]
 
 
-@dataclass(frozen=True, eq=False)
+@dataclass(frozen=True, eq=False, repr=False)
 class Mesh:
     """Plane polygonal mesh, conforming and counter-clockwise.
 
@@ -55,6 +55,9 @@ class Mesh:
     near: tuple[str, ...] = ()
     hollow: bool = False
     """Whether cells inside of these are among those not held."""
+
+    def __repr__(self) -> str:
+        return f"<Mesh of {self.n_cells} cells, {self.n_points} points, {', '.join(self.boundary.names)}>"
 
     @property
     def n_points(self) -> int:

@@ -54,7 +54,7 @@ class Motion:
         return " ".join(parts)
 
 
-@dataclass(frozen=True, eq=False)
+@dataclass(frozen=True, eq=False, repr=False)
 class ControlSurface:
     """What the user draws: closed outlines of a volume, or open lines.
 
@@ -80,6 +80,9 @@ class ControlSurface:
     target: str = ""
     distance: float = 0.0
     shape: str = ""
+
+    def __repr__(self) -> str:
+        return f"<ControlSurface {self.text}>"
 
     def __post_init__(self) -> None:
         if any(mark in self.name for mark in '"\n\r'):
