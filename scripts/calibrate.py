@@ -17,6 +17,7 @@ the error, given relative to the row's scale:
     open         false alarms: surfaces called `open` at the default tolerance
     deg3         share of the surface that degree 3 was used on
     0.5 %        share of planted sources of 0.5 % of throughflow called `open` at a tolerance of 0.1 %
+    able         surfaces whose resolution band is less than that; of these: sources found there
     smallest     smallest planted source, as a share of throughflow, called `open` in 95 of 100
                  at the default tolerance
 """

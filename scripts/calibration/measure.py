@@ -19,7 +19,8 @@ from fvcheck.verdict import OPEN
 Array = np.ndarray
 
 # A source of this share of the throughflow must be found at this tolerance
-# [percent]: at the default one, 0.5 %, half a percent is within tolerance.
+# [percent]: at the default one, 0.5 %, half a percent is within tolerance. A surface is able to
+# tell if its resolution band is less: beyond that the verdict is `mesh-limited` by definition.
 PLANTED, TIGHT = 0.005, 0.1
 
 
@@ -132,7 +133,7 @@ def planted(setting: Setting, flow: Flow, cells: Cells, drawn: Drawn, rate: floa
     return replace(flow, fields={**flow.fields, "velocity": replace(field, values=values)})
 
 
-def share_found(
+def found_each(
     setting: Setting,
     flow: Flow,
     cells: Cells,
@@ -140,18 +141,18 @@ def share_found(
     base: Sequence[Trial],
     share: float,
     tolerance: float | None = None,
-) -> float:
-    """Share of surfaces whose mass row is `open` with a source of ``share`` of its throughflow."""
+) -> Array:
+    """(k,) bool: surfaces whose mass row is `open` with a source of ``share`` of its throughflow."""
     told = {} if tolerance is None else {"mass": tolerance}
-    found = 0
+    found = np.zeros(len(surfaces), bool)
     for k, (drawn, trial) in enumerate(zip(surfaces, base)):
         rho = _density_at(setting, drawn)
         rate = (-1) ** k * share * trial.row.scale / rho
         ledger = fvcheck.balance(
             planted(setting, flow, cells, drawn, rate), drawn.surface, ["mass"], tolerance=told
         )
-        found += ledger["mass"].verdict == OPEN
-    return found / len(surfaces)
+        found[k] = ledger["mass"].verdict == OPEN
+    return found
 
 
 def _density_at(setting: Setting, drawn: Drawn) -> float:
@@ -173,7 +174,7 @@ def smallest_found(
         needed.append((allowed - (-1) ** k * row.imbalance) / row.scale)
     share = float(np.percentile(needed, 95))
     for _ in range(12):
-        found = share_found(setting, flow, cells, surfaces, base, share)
+        found = float(found_each(setting, flow, cells, surfaces, base, share).mean())
         if found >= 0.95:
             return share, found
         share *= 1.1
@@ -186,14 +187,16 @@ def measure(setting: Setting, count: int, plants: int, seed: int = 0) -> list[di
     flow = flow_of(setting, cells)
     surfaces = random_surfaces(setting.subject, setting.size, count, seed)
     out = []
-    found = trials(setting, flow, surfaces)
-    for label, rows in found.items():
+    for label, rows in trials(setting, flow, surfaces).items():
         record = dict(zip(("field", "mesh", "location", "precision", "size"), setting.key))
         record |= {"resolved": setting.resolved, "smooth": setting.subject.smooth, "row": label}
         record |= {"cells": flow.mesh.n_cells} | statistics(rows)
         if label == "mass" and plants:
             few, base = surfaces[:plants], rows[:plants]
-            record["planted_found"] = share_found(setting, flow, cells, few, base, PLANTED, TIGHT)
+            found = found_each(setting, flow, cells, few, base, PLANTED, TIGHT)
+            able = np.array([t.row.resolution_band < PLANTED * t.row.scale for t in base])
+            record["planted_found"] = float(found.mean())
+            record |= {"planted_able": int(able.sum()), "planted_found_able": int(found[able].sum())}
             record["smallest_found"], record["smallest_found_share"] = smallest_found(
                 setting, flow, cells, few, base
             )

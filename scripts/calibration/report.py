@@ -45,6 +45,8 @@ _COLUMNS = (
     ("open", "open", "{:4d}"),
     ("degree_3_share", "deg3", "{:5.2f}"),
     ("planted_found", "0.5 %", "{:5.2f}"),
+    ("planted_able", "able", "{:4d}"),
+    ("planted_found_able", "of these", "{:8d}"),
     ("smallest_found", "smallest", "{:8.4f}"),
 )
 
@@ -109,9 +111,11 @@ def _widths_and_alarms(cell: str, members: list[dict]) -> Iterable[str]:
 
 def _plants_and_floor(record: dict) -> Iterable[str]:
     cell = " · ".join(record[k] for k in ("field", "mesh", "location", "precision", "size"))
-    if record["resolved"] and record.get("planted_found", 1.0) < FOUND:
+    able = record.get("planted_able", 0)
+    if record["resolved"] and able and record["planted_found_able"] < FOUND * able:
         yield (
-            f"{100 * PLANTED:g} % of throughflow found in {record['planted_found']:.2f} at {TIGHT} %: {cell} "
+            f"{100 * PLANTED:g} % of throughflow found in {record['planted_found_able']} of {able} able "
+            f"to tell, at {TIGHT} %: {cell} "
             f"(sampling band {record['band']:.1e}, resolution band {record['resolution_band']:.1e})"
         )
     limit = FLOOR.get(tuple(record[k] for k in ("field", "mesh", "location", "size")))
