@@ -11,7 +11,7 @@ import json
 import calibrate
 import numpy as np
 import pytest
-from calibration.measure import measure, planted, share_found, source_field, trials
+from calibration.measure import found_each, measure, planted, source_field, trials
 from calibration.report import COVERAGE_UNDER, GAIN, GAIN_FINE, WIDTH, misses
 from calibration.shapes import random_surfaces
 from calibration.suite import UNDER, Setting, flow_of, mesh_of, settings, subjects
@@ -109,7 +109,7 @@ def test_a_planted_source_is_measured_and_called_open(subject, location):
         told = trials(setting, planted(setting, flow, cells, drawn, rate), [drawn])["mass"][0].row
         # The sources of small surfaces vary over a few cells: their own sampling error counts.
         assert told.imbalance == pytest.approx(rate, abs=told.sampling_band + 0.02 * rate)
-    assert share_found(setting, flow, cells, surfaces, base, 0.5) == 1.0
+    assert found_each(setting, flow, cells, surfaces, base, 0.5).all()
 
 
 def test_settings_can_be_picked():
