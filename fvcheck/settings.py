@@ -65,6 +65,16 @@ class Settings:
     moment_points: dict[str, tuple[float, float]]
     wakes: dict[str, ControlSurface]
 
+    @property
+    def judged(self) -> dict[str, Any]:
+        """What `balance_all`, `history` and `study` take beside surfaces and laws."""
+        return {
+            "tolerance": self.tolerance,
+            "scale": self.scale,
+            "sources": self.sources,
+            "about": self.about,
+        }
+
     def moment_about(self, bodies: Sequence[str] | None) -> Any:
         """What `fvcheck.forces` takes as ``about`` for these bodies: each one's own point, or one for all."""
         if not self.moment_points or bodies is None:

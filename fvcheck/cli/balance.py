@@ -68,10 +68,7 @@ def command(
             flow_at(number),
             settings.surfaces,
             settings.laws,
-            tolerance=settings.tolerance,
-            scale=settings.scale,
-            sources=settings.sources,
-            about=settings.about,
+            **settings.judged,
         )
         for number in numbers
     ]

@@ -90,13 +90,7 @@ def command(
         check_plot_path(plot)
     reference = _reference(reference_length, reference_velocity)
     named, settings = files_and_settings(files, reading, fluid, surface, limits)
-    judged: dict[str, Any] = {
-        "tolerance": settings.tolerance,
-        "scale": settings.scale,
-        "sources": settings.sources,
-        "about": settings.about,
-        "reference": reference,
-    }
+    judged: dict[str, Any] = {**settings.judged, "reference": reference}
     wanted = _bodies(forces, body, settings, follow)
     silent = output.quiet or "-" in (output.json, csv)
     if follow and (run.workers or run.scheduler):

@@ -70,14 +70,30 @@ def is_number(value: float, half: float, wanted: float) -> bool:
     return abs(value - wanted) <= max(half, _NEAR * abs(wanted))
 
 
-def scaled(role: str, factor: float) -> Change:
+def tell_number(
+    fit: Fit, wanted: float, cause: str, setting: str, change: Change | None = None
+) -> Told | None:
+    """A cause whose coefficient can be one number only; None where it is another, or hardly known."""
+    value, half = float(fit.theta[0]), float(fit.half[0])
+    if not is_number(value, half, wanted) or half > 0.5:
+        return None
+    return Told(cause, value, (value - half, value + half), setting, change)
+
+
+def mapped(role: str, function: Callable[[Array], Array]) -> Change:
+    """A field replaced by a function of its values."""
+
     def change(flow: Flow) -> Flow:
         old: Field = flow.fields[role]
-        rim = None if old.rim is None else np.asarray(old.rim, float) * factor
-        new = replace(old, values=np.asarray(old.values, float) * factor, rim=rim)
+        rim = None if old.rim is None else function(np.asarray(old.rim, float))
+        new = replace(old, values=function(np.asarray(old.values, float)), rim=rim)
         return replace(flow, fields={**flow.fields, role: new})
 
     return change
+
+
+def scaled(role: str, factor: float) -> Change:
+    return mapped(role, lambda values: values * factor)
 
 
 def with_fluid(**changes: Any) -> Change:

@@ -8,18 +8,11 @@ from functools import partial
 
 import numpy as np
 
-from fvcheck.diagnosis.cause import (
-    Cause,
-    Setting,
-    Told,
-    is_number,
-    linear,
-)
+from fvcheck.diagnosis.cause import Cause, Setting, Told, linear, mapped, tell_number
 from fvcheck.diagnosis.columns import KELVIN
 from fvcheck.diagnosis.energy_causes import energy_causes, heat_causes
 from fvcheck.diagnosis.fitting import Fit
 from fvcheck.diagnosis.momentum_causes import momentum_causes
-from fvcheck.flow import Flow
 
 Array = np.ndarray
 
@@ -40,13 +33,10 @@ def storage_cause() -> Cause:
     """What is stored between two states, left out."""
 
     def tell(fit: Fit) -> Told | None:
-        value, half = float(fit.theta[0]), float(fit.half[0])
-        if not is_number(value, half, 1.0) or half > 0.5:
-            return None
-        return Told(
+        return tell_number(
+            fit,
+            1.0,
             "storage: the run is unsteady, and what the volumes store is missing",
-            value,
-            (value - half, value + half),
             "fvcheck history, which takes storage from the snapshots",
         )
 
@@ -55,30 +45,21 @@ def storage_cause() -> Cause:
 
 def mass_causes(known: Setting) -> list[Cause]:
     def turned(axis: str) -> Callable[[Fit], Told | None]:
-        def tell(fit: Fit) -> Told | None:
-            value, half = float(fit.theta[0]), float(fit.half[0])
-            if not is_number(value, half, 1.0) or half > 0.5:
-                return None
-            return Told(
-                f"the run is axisymmetric about the {axis} axis and was read as plane",
-                value,
-                (value - half, value + half),
-                f"--axisymmetric --axis {axis}",
-                lambda flow: replace(
-                    flow, case=replace(flow.case, symmetry="axisymmetric", axis="xy".index(axis), depth=None)
-                ),
-            )
-
-        return tell
+        return lambda fit: tell_number(
+            fit,
+            1.0,
+            f"the run is axisymmetric about the {axis} axis and was read as plane",
+            f"--axisymmetric --axis {axis}",
+            lambda flow: replace(
+                flow, case=replace(flow.case, symmetry="axisymmetric", axis="xy".index(axis), depth=None)
+            ),
+        )
 
     def flat(fit: Fit) -> Told | None:
-        value, half = float(fit.theta[0]), float(fit.half[0])
-        if not is_number(value, half, 1.0) or half > 0.5:
-            return None
-        return Told(
+        return tell_number(
+            fit,
+            1.0,
             "the run is plane and was read as axisymmetric",
-            value,
-            (value - half, value + half),
             'symmetry = "planar": leave --axisymmetric out',
             lambda flow: replace(flow, case=replace(flow.case, symmetry="planar", axis=None)),
         )
@@ -95,20 +76,10 @@ def scale_causes(law: str) -> list[Cause]:
 
 
 def _not_kelvin(name: str, fit: Fit) -> Told | None:
-    value, half = float(fit.theta[0]), float(fit.half[0])
-    if not is_number(value, half, 1.0) or half > 0.5:
-        return None
-
-    def change(flow: Flow) -> Flow:
-        old = flow.fields["temperature"]
-        rim = None if old.rim is None else KELVIN[name](np.asarray(old.rim, float))
-        new = replace(old, values=KELVIN[name](np.asarray(old.values, float)), rim=rim)
-        return replace(flow, fields={**flow.fields, "temperature": new})
-
-    return Told(
+    return tell_number(
+        fit,
+        1.0,
         f"the temperature is in degrees {name.capitalize()}, a gas needs kelvin",
-        value,
-        (value - half, value + half),
         "export the temperature in kelvin",
-        change,
+        mapped("temperature", KELVIN[name]),
     )

@@ -11,9 +11,9 @@ from fvcheck.diagnosis.cause import (
     Setting,
     Told,
     factor_of,
-    is_number,
     linear,
     scaled,
+    tell_number,
     with_fluid,
 )
 from fvcheck.diagnosis.fitting import Fit
@@ -62,13 +62,10 @@ def _conductivity(known: Setting, fit: Fit) -> Told | None:
 
 
 def _dissipation(fit: Fit) -> Told | None:
-    value, half = float(fit.theta[0]), float(fit.half[0])
-    if not is_number(value, half, 1.0) or half > 0.5:
-        return None
-    return Told(
+    return tell_number(
+        fit,
+        1.0,
         "the heat of dissipation is missing",
-        value,
-        (value - half, value + half),
         "viscous_heating = true in [fluid] of the check file",
         with_fluid(viscous_heating=True),
     )

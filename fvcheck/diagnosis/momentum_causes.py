@@ -18,6 +18,7 @@ from fvcheck.diagnosis.cause import (
     is_number,
     linear,
     scaled,
+    tell_number,
     with_fluid,
 )
 from fvcheck.diagnosis.fitting import Fit, Model
@@ -138,16 +139,12 @@ def _pressure(known: Setting, fit: Fit) -> Told | None:
 
 
 def _hydrostatic(known: Setting, fit: Fit) -> Told | None:
-    value, half = float(fit.theta[0]), float(fit.half[0])
-    wanted = 1.0 if known.flow.fluid.pressure_kind == "static" else -1.0
-    if not is_number(value, half, wanted) or half > 0.5:
-        return None
-    kind = "reduced" if wanted > 0 else "static"
-    text = "the pressure lacks the weight of the fluid" if wanted > 0 else "the pressure holds the weight"
-    return Told(
-        text,
-        value,
-        (value - half, value + half),
+    lacks = known.flow.fluid.pressure_kind == "static"
+    kind = "reduced" if lacks else "static"
+    return tell_number(
+        fit,
+        1.0 if lacks else -1.0,
+        "the pressure lacks the weight of the fluid" if lacks else "the pressure holds the weight",
         f"--pressure-kind {kind}",
         with_fluid(pressure_kind=kind),
     )
@@ -275,13 +272,10 @@ def _velocity(fit: Fit) -> Told | None:
 
 
 def _turbulence(fit: Fit) -> Told | None:
-    value, half = float(fit.theta[0]), float(fit.half[0])
-    if not is_number(value, half, -1.0) or half > 0.5:
-        return None
-    return Told(
+    return tell_number(
+        fit,
+        -1.0,
         "the pressure holds the turbulence energy (2/3 rho k) already",
-        value,
-        (value - half, value + half),
         "leave the turbulence energy out of the fields",
         lambda flow: replace(
             flow, fields={role: f for role, f in flow.fields.items() if role != "turbulence_energy"}

@@ -36,20 +36,11 @@ def states_of(
     yield from _series(check, files, settings)
 
 
-def _judged(settings: Settings) -> dict[str, Any]:
-    return {
-        "tolerance": settings.tolerance,
-        "scale": settings.scale,
-        "sources": settings.sources,
-        "about": settings.about,
-    }
-
-
 def _one_state(check: CheckFile, settings: Settings, flow: Flow) -> dict[str, Any]:
     from fvcheck.balancing import balance, balance_all, default_surfaces
     from fvcheck.ledger import ledger_dict
 
-    judged = _judged(settings)
+    judged = settings.judged
     data = balance_all(flow, settings.surfaces, settings.laws, **judged).to_dict()
     surfaces = {one.name: one for one in settings.surfaces or default_surfaces(flow)}
     for ledger in data["surfaces"]:
@@ -75,7 +66,7 @@ def _series(check: CheckFile, files: list[Path], settings: Settings) -> Iterator
     series = open_series(files, **settings.reading)
     usual = [law.name for law in choose_laws(series.flow(0), settings.laws)]
     laws = list(dict.fromkeys([*usual, *_expected(check)]))
-    found = history(series, settings.surfaces, laws, steady=settings.steady, **_judged(settings))
+    found = history(series, settings.surfaces, laws, steady=settings.steady, **settings.judged)
     for place, entry in enumerate(found.entries):
         data = entry.result.to_dict()
         for ledger in data["surfaces"]:
