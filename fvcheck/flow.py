@@ -88,6 +88,11 @@ class Flow:
         """Whether a velocity out of the plane is there and not negligible."""
         return self._swirl_ratio > 1e-6
 
+    @property
+    def has_rates(self) -> bool:
+        """Whether the export holds rates of change."""
+        return any(role.startswith("rate:") for role in self.fields)
+
     @cached_property
     def change(self) -> tuple[Case, float] | None:
         """The state stored next to this one, and by what share (rms) its velocity, else momentum, differs.

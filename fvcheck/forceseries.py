@@ -87,8 +87,7 @@ def force_series(
 
 def _at(series: Series, number: int, body: str | Sequence[str] | None, asked: Mapping[str, Any]) -> Forces:
     times, flow = series.times, series.flow(number)
-    in_export = any(role.startswith("rate:") for role in flow.fields)
-    if times is None or len(series) < 2 or in_export:
+    if times is None or len(series) < 2 or flow.has_rates:
         return forces(flow, body, **asked)
     count = len(series)
     if any(series.flow(k).mesh is not flow.mesh for k in range(count)[window(count, number, _WIDER)]):

@@ -23,7 +23,7 @@ def varies_inside(
 
     unsteady : its density counts too, by contents that are compared over time
     """
-    if any(role.startswith("rate:") for role in flow.fields):
+    if flow.has_rates:
         return True
     try:
         constants = [law.source(bare_state(flow, about))]

@@ -235,7 +235,7 @@ def force_hints(volume: SampledVolume, rows: Sequence[Row]) -> list[Hint]:
 
 def change_hints(flow: Flow) -> list[Hint]:
     """Whether the state stored next to this one differs, so that a steady balance misses what is stored."""
-    if any(role.startswith("rate:") for role in flow.fields) or flow.change is None:
+    if flow.has_rates or flow.change is None:
         return []
     other, share = flow.change
     if share <= _CHANGE:

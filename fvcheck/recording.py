@@ -104,7 +104,7 @@ class Recorder:
         flow = self.series.flow(number, self._needed() if velocity is None else None)
         if not self._evolutions:
             self._start(flow)
-        if self.unsteady and any(role.startswith("rate:") for role in flow.fields):
+        if self.unsteady and flow.has_rates:
             self._note(
                 Hint("rates-over-series", "rates of change are in the export: storage is taken from them")
             )

@@ -92,7 +92,7 @@ class SampledVolume:
         self._levels = {law.datum for law in laws}
         _check_motion(surface, self.axis)
         self.unsteady = unsteady and overlay.closed
-        self.has_rates = any(role.startswith("rate:") for role in flow.fields)
+        self.has_rates = flow.has_rates
         self.depth = flow.case.depth or 1.0
         self.places, weights = along(overlay.start, overlay.end)
         self.triangle = np.repeat(overlay.triangle, PER_PIECE, axis=0)

@@ -110,8 +110,7 @@ def diagnose(
         )
         why.append(explain(law.name, data, causes))
     found = Diagnosis(case_dict(flow), tuple(why), tuple(places), (), ledgers)
-    rates = any(role.startswith("rate:") for role in flow.fields)
-    if not stored and not rates and any(found.state(one) == "unexplained" for one in why):
+    if not stored and not flow.has_rates and any(found.state(one) == "unexplained" for one in why):
         hints.append(
             Hint("storage-unknown", "one state alone: what the volumes store over time cannot be told")
         )
@@ -181,7 +180,7 @@ def _storage(
     if previous is None or flow.case.time is None or previous.case.time is None:
         return {}
     step = flow.case.time - previous.case.time
-    if step == 0.0 or any(role.startswith("rate:") for role in flow.fields):
+    if step == 0.0 or flow.has_rates:
         return {}
     rates: dict[str, Field] = {}
     for role in ("velocity", "momentum", "temperature", "density", "pressure", "total_energy"):

@@ -185,7 +185,7 @@ def _degrees(supported: Array) -> dict[str, float]:
 def _has_sources(flow: Flow) -> bool:
     fluid = flow.fluid
     told = any(fluid.gravity) or bool(fluid.frame_rate) or "body_force" in flow.fields
-    return told or any(role.startswith("rate:") for role in flow.fields)
+    return told or flow.has_rates
 
 
 def _cross(u: Array, v: Array) -> Array:

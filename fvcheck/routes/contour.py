@@ -7,6 +7,7 @@ from dataclasses import replace
 
 import numpy as np
 
+from fvcheck.bands import Crosswise
 from fvcheck.errors import SurfaceError
 from fvcheck.flow import Flow
 from fvcheck.laws import State
@@ -95,8 +96,7 @@ def line_terms(volume: SampledVolume, sign: float, counted: Array, carried: bool
         shaken=shaken_sums(volume, lambda state: rows(border(state), sign)),
         reaching=reaching(volume),
         parts=_parts(volume, border(volume.line_state(BEST)), sign),
-        cross=volume.per_line_cell(rows(border(volume.line_state(CROSS)), sign)),
-        beside=volume.beside,
+        cross=Crosswise(volume.per_line_cell(rows(border(volume.line_state(CROSS)), sign)), volume.beside),
     )
 
 

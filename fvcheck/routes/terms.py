@@ -48,7 +48,7 @@ class Terms:
     shaken : (s, 7) sums from data with a shaken last digit
     reaching : (m,) bool, leading rows where values are extrapolated
     parts : name -> (x, y), the terms summed
-    cross, beside : (n, 7) leading rows by `CROSS`, (n,) as in `Crosswise`
+    cross : a second opinion on leading rows, its values (n, 7)
     beyond : (m, 7) each, errors that no degree shows; both bands hold them too
     """
 
@@ -57,8 +57,7 @@ class Terms:
     shaken: Array
     reaching: Array | None
     parts: Mapping[str, Any]
-    cross: Array | None = None
-    beside: Array | None = None
+    cross: Crosswise | None = None
     beyond: Sequence[Array] = ()
 
 
@@ -128,16 +127,16 @@ def estimate(terms: Terms, view: View, method: str, **told: Any) -> Estimate:
     first, second, third = (directed(r, view) for r in terms.by_degree)
     best = third if terms.best is None else directed(terms.best, view)
     shaken = directed(terms.shaken, view)
-    cross = None if terms.cross is None else directed(terms.cross, view)
+    cross = terms.cross
+    if cross is not None:
+        cross = cross._replace(values=directed(cross.values, view))
     beyond = [directed(rows, view) for rows in terms.beyond]
     value = best.sum(axis=0)
     half: list[tuple[float, float]] = []
     for c in range(best.shape[1]):
         rounding = rounding_of(shaken[:, c], best[:, c])
         chosen = None if terms.best is None else best[:, c]
-        other = None
-        if cross is not None and terms.beside is not None:
-            other = Crosswise(cross[:, c], terms.beside)
+        other = None if cross is None else cross._replace(values=cross.values[:, c])
         band = bands(first[:, c], second[:, c], third[:, c], rounding, chosen, terms.reaching, other)
         more = sum(spread(rows[:, c]) for rows in beyond)
         sampling = band.sampling + more
